@@ -1,0 +1,197 @@
+"""The mission: one frozen tree that holds everything the user describes."""
+
+from datetime import datetime, timedelta
+from typing import Annotated, Any
+
+from pydantic import AwareDatetime, Field, field_validator, model_validator
+
+from planner.mission.base import Described, Name, NonNegative, Percent, Positive, Real
+from planner.mission.elements import ElementSet
+from planner.mission.pointing import Pointing
+from planner.mission.power import (
+    ArrayConversion,
+    Battery,
+    Load,
+    Panel,
+    Pessimistic,
+    Spread,
+    When,
+    Windows,
+    check_windows,
+)
+from planner.mission.station import Station
+from planner.mission.transmitter import Transmitter
+
+
+class StartState(Described):
+    """As telemetry last said."""
+
+    soc_pct: Percent
+    soc_error_pct: Percent = 4.0
+    stored_mbit: NonNegative = 0.0
+    commands_aboard_until: AwareDatetime | None = Field(
+        default=None, description="sessions before this need no upload in the span; None: the whole first day"
+    )
+
+
+class Policy(Described):
+    # battery
+    soc_floor_pct: Percent
+    soc_end_pct: Percent
+    # link
+    link_margin_db: Real = 3.0
+    availability_pct: Annotated[float, Field(ge=50, le=99.999)] = 99.0
+    enforce_flux_limit: bool = False
+    # sessions
+    min_session_s: Positive = 90.0
+    turnaround_s: NonNegative = 120.0
+    max_sessions_per_day: Annotated[int, Field(ge=1)] | None = None
+    longest_gap_h: Positive | None = None
+    daily_contact_modes: tuple[Name, ...] = Field(
+        default=(), description="at least one contact a UTC day in one of these"
+    )
+    cost_budget: NonNegative | None = None
+    cost_mbit: NonNegative = Field(default=0.0, description="Mbit that one unit of station cost is worth")
+    keep: tuple[str, ...] = Field(default=(), description="PASS:MODE")
+    drop: tuple[str, ...] = Field(default=(), description="PASS")
+    # elements and commands
+    elements_refresh_days: Positive = 1.0
+    elements_max_age_days: Positive = 14.0
+    upload_lead_h: NonNegative | None = Field(default=None, description="None: commands are always aboard")
+    upload_reach_h: Positive = 48.0
+
+    @model_validator(mode="after")
+    def _consistent(self):
+        if self.soc_end_pct < self.soc_floor_pct:
+            raise ValueError(
+                f"soc_end_pct must not be below soc_floor_pct, got {self.soc_end_pct:g} and {self.soc_floor_pct:g}"
+            )
+        if self.upload_lead_h is not None and self.upload_lead_h >= self.upload_reach_h:
+            raise ValueError(
+                f"upload_reach_h must be above upload_lead_h, got {self.upload_reach_h:g} and {self.upload_lead_h:g}"
+            )
+        return self
+
+
+class ElementAging(Described):
+    """In-track one-sigma error: at epoch, and growth with age (see sky/aging.py for the model and its source)."""
+
+    in_track_at_epoch_km: NonNegative = 1.0
+    in_track_km_per_day: NonNegative = 2.0
+    in_track_km_per_day2: NonNegative = 0.5
+
+
+class Source(Described):
+    """A payload that fills the recorder."""
+
+    name: Name
+    rate_mbps: NonNegative
+    when: When = "sunlit"
+    windows: Windows = ()
+    duty: Annotated[float, Field(ge=0, le=1)] = 1.0
+
+    @model_validator(mode="after")
+    def _windows(self):
+        check_windows(self.when, self.windows)
+        return self
+
+
+class Recorder(Described):
+    capacity_mbit: Positive
+    reserve_mbit: NonNegative = Field(default=0.0, description="kept free for housekeeping")
+    source: tuple[Source, ...] = ()
+
+    @model_validator(mode="after")
+    def _room(self):
+        if self.reserve_mbit >= self.capacity_mbit:
+            raise ValueError(
+                f"reserve_mbit must be below capacity_mbit, got {self.reserve_mbit:g} and {self.capacity_mbit:g}"
+            )
+        return self
+
+    @property
+    def usable_mbit(self) -> float:
+        return self.capacity_mbit - self.reserve_mbit
+
+
+class Spacecraft(Described):
+    """Everything aboard one satellite."""
+
+    transmitter: Annotated[tuple[Transmitter, ...], Field(min_length=1)]
+    battery: Battery
+    panel: Annotated[tuple[Panel, ...], Field(min_length=1)]
+    array: ArrayConversion = ArrayConversion()
+    load: tuple[Load, ...] = ()
+    recorder: Recorder
+    pointing: Pointing = Pointing()
+    pessimistic: Pessimistic = Pessimistic()
+    spread: Spread = Spread()
+    aging: ElementAging = ElementAging()
+
+    @field_validator("transmitter")
+    @classmethod
+    def _distinct_modes(cls, transmitters: tuple[Transmitter, ...]):
+        modes = [transmitter.mode for transmitter in transmitters]
+        if len(set(modes)) < len(modes):
+            raise ValueError(f"mode names must differ, got {modes}")
+        unknown = [name for transmitter in transmitters for name in transmitter.together_with if name not in modes]
+        if unknown:
+            raise ValueError(f"together_with must name modes of this satellite {modes}, got {unknown}")
+        return transmitters
+
+    def mode(self, name: str) -> Transmitter:
+        """The transmitter setting of that name; KeyError otherwise."""
+        return {transmitter.mode: transmitter for transmitter in self.transmitter}[name]
+
+
+class Satellite(Described):
+    """One satellite: its orbit, what is aboard, and its state at the start."""
+
+    name: Name
+    elements: ElementSet
+    spacecraft: Spacecraft
+    start_state: StartState
+
+
+class Mission(Described):
+    name: Name
+    start: AwareDatetime
+    days: Annotated[float, Field(gt=0, le=60)]
+    satellites: Annotated[tuple[Satellite, ...], Field(min_length=1)]
+    stations: Annotated[tuple[Station, ...], Field(min_length=1)]
+    policy: Policy
+    inputs: tuple[tuple[str, str], ...] = Field(default=(), description="(file, SHA-256) of every file read")
+
+    @property
+    def end(self) -> datetime:
+        return self.start + timedelta(days=self.days)
+
+    @property
+    def span_s(self) -> float:
+        return self.days * 86_400.0
+
+    def station(self, name: str) -> Station:
+        """The station of that name; KeyError otherwise."""
+        return {station.name: station for station in self.stations}[name]
+
+    def satellite(self, name: str) -> Satellite:
+        """The satellite of that name; KeyError otherwise."""
+        return {satellite.name: satellite for satellite in self.satellites}[name]
+
+    def with_changes(self, **tables: dict[str, Any]) -> "Mission":
+        """A copy with some keys of `policy`, and of every satellite's `start_state`, changed and checked anew.
+
+        >>> mission.with_changes(policy={"soc_floor_pct": 55.0}, start_state={"soc_pct": 80.0})
+        """
+        policy = Policy.model_validate(self.policy.model_dump() | tables.get("policy", {}))
+        satellites = tuple(
+            satellite.model_copy(
+                update={
+                    "start_state": StartState.model_validate(
+                        satellite.start_state.model_dump() | tables.get("start_state", {})
+                    )
+                }
+            )
+            for satellite in self.satellites
+        )
+        return self.model_copy(update={"policy": policy, "satellites": satellites})

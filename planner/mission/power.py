@@ -1,0 +1,160 @@
+"""The spacecraft's power side as the user describes it: panels, battery, loads, and how bad a bad day is."""
+
+from datetime import datetime
+from typing import Annotated, Literal
+
+from pydantic import AwareDatetime, Field, field_validator, model_validator
+
+from planner.mission.base import BodyAxis, Celsius, Described, Efficiency, Name, NonNegative, Percent, Positive
+
+When = Literal["always", "sunlit", "eclipse", "windows"]
+Windows = tuple[tuple[AwareDatetime, AwareDatetime], ...]
+
+
+def check_windows(when: str, windows: tuple[tuple[datetime, datetime], ...]) -> None:
+    """Windows are given exactly when `when` asks for them, and each runs forward."""
+    if (when == "windows") != bool(windows):
+        raise ValueError(
+            f'windows must be given exactly when `when` is "windows", got {when!r} and {len(windows)} windows'
+        )
+    for begin, end in windows:
+        if begin >= end:
+            raise ValueError(f"a window must end after it begins, got {begin.isoformat()} to {end.isoformat()}")
+
+
+class Panel(Described):
+    name: Name
+    normal: BodyAxis = Field(description="outward normal in body axes, before the hinge turns it")
+    cell_area_m2: Positive
+    efficiency: Efficiency = 0.298
+    temperature_coefficient_pct_k: Annotated[float, Field(ge=-2, le=0)] = -0.25
+    end_of_life_factor: Efficiency = 0.89
+    hinge_axis: BodyAxis | None = None
+    hinge_angle_deg: Annotated[float, Field(ge=-180, le=180)] = 0.0
+    shading: tuple[tuple[float, float], ...] = Field(
+        default=(), description="[incidence_deg, lit share 0..1] table; empty means never shaded"
+    )
+    temperature_sunlit_c: Celsius | None = Field(default=None, description="None: from the thermal balance")
+
+    @field_validator("shading")
+    @classmethod
+    def _table(cls, rows: tuple[tuple[float, float], ...]):
+        angles = [angle for angle, _ in rows]
+        if any(b <= a for a, b in zip(angles, angles[1:], strict=False)) or any(not 0 <= a <= 90 for a in angles):
+            raise ValueError(f"incidence angles must rise from 0 to 90 deg, got {angles}")
+        if any(not 0 <= share <= 1 for _, share in rows):
+            raise ValueError(f"lit shares must be from 0 to 1, got {[share for _, share in rows]}")
+        return rows
+
+
+class ArrayConversion(Described):
+    """What stands between the cells and the bus."""
+
+    converter_efficiency: Efficiency = 0.92
+    tracking_efficiency: Efficiency = 0.97
+    max_array_w: Positive | None = None
+
+
+class Battery(Described):
+    cells_series: Annotated[int, Field(ge=1, le=1000)]
+    cells_parallel: Annotated[int, Field(ge=1, le=1000)]
+    cell_capacity_ah: Positive
+    chemistry: Literal["LiFePO4", "Li-ion"] = "LiFePO4"
+    open_circuit: tuple[tuple[float, float], ...] = Field(
+        default=(), description="[soc_pct, cell_v] table of your own; empty takes the built-in one of the chemistry"
+    )
+    health: Annotated[float, Field(gt=0, le=1)] = 1.0
+    cell_resistance_mohm: Positive = Field(description="direct-current resistance at 25 degC and half charge")
+    resistance_by_temperature: tuple[tuple[float, float], ...] = Field(
+        default=(), description="[degC, factor] table; empty takes the built-in one"
+    )
+    resistance_by_charge: tuple[tuple[float, float], ...] = Field(default=(), description="[soc_pct, factor] table")
+    coulombic_efficiency: Efficiency = 0.995
+    self_discharge_pct_month: Percent = 2.0
+    cell_min_v: Positive = 2.8
+    cell_max_v: Positive = 3.5
+    cell_max_discharge_a: Positive
+    cell_max_charge_a: Positive
+    charge_min_c: Celsius = 0.0
+    charge_max_c: Celsius = 45.0
+    bus_trip_a: Positive | None = Field(default=None, description="over-current trip of the bus")
+    # thermal model: relaxes towards one temperature in sunlight and another in eclipse
+    sunlit_c: Celsius = 20.0
+    eclipse_c: Celsius = 10.0
+    thermal_time_constant_min: Positive = 90.0
+    # life
+    max_cycle_depth_pct: Percent | None = None
+    cycle_life: tuple[tuple[float, float], ...] = Field(
+        default=(), description="[depth_pct, cycles to end of life] table; empty takes the built-in one"
+    )
+
+    @field_validator("open_circuit", "resistance_by_temperature", "resistance_by_charge", "cycle_life")
+    @classmethod
+    def _rising_argument(cls, rows: tuple[tuple[float, float], ...]):
+        arguments = [argument for argument, _ in rows]
+        if rows and len(rows) < 2:
+            raise ValueError(f"a table needs two rows or more, got {len(rows)}")
+        if any(b <= a for a, b in zip(arguments, arguments[1:], strict=False)):
+            raise ValueError(f"the first column must rise, got {arguments}")
+        return rows
+
+    @field_validator("open_circuit")
+    @classmethod
+    def _rising_voltage(cls, rows: tuple[tuple[float, float], ...]):
+        if rows and (rows[0][0] != 0 or rows[-1][0] != 100):
+            raise ValueError(f"soc_pct must run from 0 to 100, got {rows[0][0]:g} to {rows[-1][0]:g}")
+        volts = [volt for _, volt in rows]
+        if any(b <= a for a, b in zip(volts, volts[1:], strict=False)) or any(volt <= 0 for volt in volts):
+            raise ValueError(f"cell_v must be positive and rise with charge, got {volts}")
+        return rows
+
+    @model_validator(mode="after")
+    def _floor_below_ceiling(self):
+        if self.cell_min_v >= self.cell_max_v:
+            raise ValueError(f"cell_min_v must be below cell_max_v, got {self.cell_min_v} and {self.cell_max_v}")
+        return self
+
+
+class Load(Described):
+    """A steady draw behind its converter. A thermostat holds the heater off above `on_below_c`."""
+
+    name: Name
+    power_w: NonNegative
+    when: When = "always"
+    windows: Windows = ()
+    duty: Annotated[float, Field(ge=0, le=1)] = 1.0
+    on_below_c: Celsius | None = Field(default=None, description="thermostat on the battery temperature")
+    converter_efficiency: Efficiency = 0.95
+    peak_current_a: NonNegative | None = None
+
+    @model_validator(mode="after")
+    def _windows(self):
+        check_windows(self.when, self.windows)
+        return self
+
+
+class Pessimistic(Described):
+    """The corner that every limit is held to, relative to the nominal description."""
+
+    health: Annotated[float, Field(gt=0, le=1)] = 0.85
+    resistance_factor: Annotated[float, Field(ge=1, le=100)] = 1.5
+    battery_colder_k: NonNegative = 8.0
+    array_end_of_life: bool = True
+    array_factor: Efficiency = 0.97
+    load_factor: Annotated[float, Field(ge=1, le=10)] = 1.05
+    transmitter_factor: Annotated[float, Field(ge=1, le=10)] = 1.03
+
+
+class Spread(Described):
+    """One-sigma relative spreads for the probability that a week breaks its floor."""
+
+    capacity_pct: Percent = 3.0
+    resistance_pct: Percent = 15.0
+    array_pct: Percent = 3.0
+    load_pct: Percent = 3.0
+    transmitter_pct: Percent = 2.0
+    samples: Annotated[int, Field(ge=10, le=100_000)] = 1000
+    seed: Annotated[int, Field(ge=0)] = 1
+
+
+__all__ = ["ArrayConversion", "Battery", "Load", "Panel", "Pessimistic", "Spread", "Windows", "check_windows"]
