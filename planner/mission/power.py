@@ -1,5 +1,6 @@
 """The spacecraft's power side as the user describes it: panels, battery, loads, and how bad a bad day is."""
 
+import itertools
 from datetime import datetime
 from typing import Annotated, Literal
 
@@ -40,7 +41,7 @@ class Panel(Described):
     @classmethod
     def _table(cls, rows: tuple[tuple[float, float], ...]):
         angles = [angle for angle, _ in rows]
-        if any(b <= a for a, b in zip(angles, angles[1:], strict=False)) or any(not 0 <= a <= 90 for a in angles):
+        if any(b <= a for a, b in itertools.pairwise(angles)) or any(not 0 <= a <= 90 for a in angles):
             raise ValueError(f"incidence angles must rise from 0 to 90 deg, got {angles}")
         if any(not 0 <= share <= 1 for _, share in rows):
             raise ValueError(f"lit shares must be from 0 to 1, got {[share for _, share in rows]}")
@@ -94,7 +95,7 @@ class Battery(Described):
         arguments = [argument for argument, _ in rows]
         if rows and len(rows) < 2:
             raise ValueError(f"a table needs two rows or more, got {len(rows)}")
-        if any(b <= a for a, b in zip(arguments, arguments[1:], strict=False)):
+        if any(b <= a for a, b in itertools.pairwise(arguments)):
             raise ValueError(f"the first column must rise, got {arguments}")
         return rows
 
@@ -104,7 +105,7 @@ class Battery(Described):
         if rows and (rows[0][0] != 0 or rows[-1][0] != 100):
             raise ValueError(f"soc_pct must run from 0 to 100, got {rows[0][0]:g} to {rows[-1][0]:g}")
         volts = [volt for _, volt in rows]
-        if any(b <= a for a, b in zip(volts, volts[1:], strict=False)) or any(volt <= 0 for volt in volts):
+        if any(b <= a for a, b in itertools.pairwise(volts)) or any(volt <= 0 for volt in volts):
             raise ValueError(f"cell_v must be positive and rise with charge, got {volts}")
         return rows
 

@@ -1,5 +1,6 @@
 """A ground station: where it stands, what it can hear, when it is open, what it costs."""
 
+import itertools
 from datetime import datetime, time
 from typing import Annotated, Literal
 
@@ -89,7 +90,7 @@ class Station(Described):
     def _a_circle_of_elevations(cls, points: tuple[tuple[float, float], ...]):
         azimuths = [azimuth for azimuth, _ in points]
         if any(not 0 <= azimuth < 360 for azimuth in azimuths) or any(
-            b <= a for a, b in zip(azimuths, azimuths[1:], strict=False)
+            b <= a for a, b in itertools.pairwise(azimuths)
         ):
             raise ValueError(f"azimuths must rise from 0 to below 360 deg, got {azimuths}")
         if any(not 0 <= elevation < 90 for _, elevation in points):
