@@ -1,0 +1,93 @@
+"""A plan as a file of contacts: ids, mode and transmit times are read; everything else is derived anew."""
+
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from pathlib import Path
+
+from planner.errors import InputError
+from planner.mission.models import Mission
+from planner.mission.table import read_table
+from planner.mission.text import nearest, shown
+
+REQUIRED = ("pass_id", "satellite", "station", "mode", "tx_on_utc", "tx_off_utc")
+
+
+@dataclass(frozen=True, order=True)
+class Session:
+    """One mode on one pass, radio frequency on from `tx_on_s` to `tx_off_s` (seconds of UTC after the mission's start)."""
+
+    tx_on_s: float
+    tx_off_s: float
+    satellite: str
+    station: str
+    mode: str
+    pass_id: str
+
+    @property
+    def duration_s(self) -> float:
+        return self.tx_off_s - self.tx_on_s
+
+
+@dataclass(frozen=True)
+class StatedContact:
+    """A row of a contacts file: the session, the line it stands on, and what else the row states."""
+
+    session: Session
+    line: int
+    stated: dict[str, str]
+
+
+def read_contacts(path: str | Path, mission: Mission) -> list[StatedContact]:
+    """The contacts of a CSV file in the order of their transmit times.
+
+    Raises
+    ------
+    InputError : every row at fault, with line, column, rule and value
+    """
+    path = Path(path)
+    contacts, faults = [], []
+    for line, row in read_table(path, REQUIRED):
+        found = _row_faults(row, mission)
+        if found:
+            faults.extend(f"{path}: line {line}: {fault}" for fault in found)
+        else:
+            on_s, off_s = ((_utc(row[key]) - mission.start).total_seconds() for key in ("tx_on_utc", "tx_off_utc"))
+            session = Session(on_s, off_s, row["satellite"], row["station"], row["mode"], row["pass_id"])
+            contacts.append(StatedContact(session, line, row))
+    if faults:
+        raise InputError(*faults[:50])
+    return sorted(contacts, key=lambda contact: contact.session)
+
+
+def _row_faults(row: dict[str, str], mission: Mission) -> list[str]:
+    satellites = {satellite.name: satellite for satellite in mission.satellites}
+    stations = [station.name for station in mission.stations]
+    faults = [_unknown("satellite", row["satellite"], satellites), _unknown("station", row["station"], stations)]
+    if row["satellite"] in satellites:
+        modes = [transmitter.mode for transmitter in satellites[row["satellite"]].spacecraft.transmitter]
+        faults.append(_unknown("mode", row["mode"], modes))
+    if not row["pass_id"].isprintable() or not row["pass_id"]:
+        faults.append(f"pass_id: must be a pass id, got {shown(row['pass_id'])}")
+    times = []
+    for key in ("tx_on_utc", "tx_off_utc"):
+        try:
+            times.append(_utc(row[key]))
+        except ValueError as error:
+            faults.append(f"{key}: {error}, got {shown(row[key])}")
+    if len(times) == 2 and times[1] <= times[0]:
+        faults.append(f"tx_off_utc: must be after tx_on_utc = {row['tx_on_utc']}, got {row['tx_off_utc']}")
+    return [fault for fault in faults if fault]
+
+
+def _unknown(key: str, value: str, known) -> str:
+    return "" if value in known else f"{key}: must be one of {shown(list(known))}, got {shown(value)}{nearest(value, known)}"
+
+
+def _utc(text: str) -> datetime:
+    try:
+        moment = datetime.fromisoformat(text)
+    except ValueError:
+        raise ValueError("must be a time such as 2026-12-07T09:30:00.000Z") from None
+    if moment.tzinfo is None:
+        raise ValueError("must carry a time zone (append Z for UTC)")
+    return moment.astimezone(UTC)

@@ -1,0 +1,197 @@
+"""From files to a Mission: everything read, everything checked, all faults told at once."""
+
+from collections.abc import Callable
+from pathlib import Path
+from typing import Annotated, Any, TypeVar
+
+from pydantic import AwareDatetime, Field, ValidationError
+
+from planner.errors import InputError
+from planner.mission.base import Described, Name
+from planner.mission.elements import read_elements
+from planner.mission.models import Mission, Policy, Satellite, Spacecraft, StartState
+from planner.mission.pattern import read_pattern
+from planner.mission.station import Station
+from planner.mission.text import faults_of, nearest, read_toml, sha256
+
+DEFAULT_MISSION = Path("missions/marshlight.toml")
+Model = TypeVar("Model", bound=Described)
+
+
+class SatelliteTable(Described):
+    """`[[satellite]]`: what one satellite has of its own."""
+
+    name: Name
+    spacecraft: str | None = None
+    start_state: StartState | None = None
+
+
+class MissionTables(Described):
+    """The mission file's own keys; the spacecraft's tables stand beside them."""
+
+    name: Name
+    elements: str
+    stations: Annotated[tuple[str, ...], Field(min_length=1)]
+    start: AwareDatetime
+    days: Annotated[float, Field(gt=0, le=60)]
+    policy: Policy
+    start_state: StartState | None = None
+    satellite: tuple[SatelliteTable, ...] = ()
+
+
+class _MissionFile(MissionTables, Spacecraft):
+    """All keys a mission file may hold, for "did you mean"."""
+
+
+class _Reader:
+    """Reads file after file, keeps the faults and the names of the files read."""
+
+    def __init__(self, folder: Path):
+        self.folder = folder
+        self.faults: list[str] = []
+        self.read: dict[str, Path] = {}
+
+    def attempt(self, call: Callable, *arguments: Any) -> Any:
+        try:
+            return call(*arguments)
+        except InputError as error:
+            self.faults.extend(error.faults)
+            return None
+
+    def path(self, name: str) -> Path:
+        self.read[name] = self.folder / name
+        return self.read[name]
+
+    def tables(self, name: str) -> dict[str, Any]:
+        return self.attempt(read_toml, self.path(name)) or {}
+
+    def model(self, kind: type[Model], raw: dict[str, Any], path: Path, known: type | None = None) -> Model | None:
+        try:
+            return kind.model_validate(raw)
+        except ValidationError as error:
+            self.faults.extend(faults_of(path, error, raw, known or kind))
+            return None
+
+    def stop_on_faults(self) -> None:
+        if self.faults:
+            raise InputError(*dict.fromkeys(self.faults))
+
+
+def load_mission(path: str | Path = DEFAULT_MISSION) -> Mission:
+    """Read a mission file and every file it names.
+
+    Raises
+    ------
+    InputError : with every fault of every file, each naming file, key, rule and value
+    """
+    path = Path(path)
+    reader = _Reader(path.parent)
+    raw = reader.attempt(read_toml, reader.path(path.name))
+    reader.stop_on_faults()
+    own = {key: value for key, value in raw.items() if key not in Spacecraft.model_fields}
+    shared = {key: value for key, value in raw.items() if key in Spacecraft.model_fields}
+    tables = reader.model(MissionTables, own, path, _MissionFile)
+    spacecraft = _spacecraft(reader, shared, path) if shared or not own.get("satellite") else None
+    names = tables.stations if tables else own.get("stations", ())
+    stations = [_station(reader, name) for name in names if isinstance(name, str)]
+    reader.stop_on_faults()
+    satellites = _satellites(reader, tables, spacecraft, path)
+    _check_names(reader, stations, "stations", path)
+    reader.stop_on_faults()
+    return Mission(
+        name=tables.name,
+        start=tables.start,
+        days=tables.days,
+        satellites=tuple(satellites),
+        stations=tuple(stations),
+        policy=tables.policy,
+        inputs=tuple((name, sha256(file)) for name, file in sorted(reader.read.items())),
+    )
+
+
+def _station(reader: _Reader, name: str) -> Station | None:
+    path = reader.path(name)
+    raw = reader.attempt(read_toml, path)
+    return None if raw is None else reader.model(Station, raw, path)
+
+
+def _spacecraft(reader: _Reader, raw: dict[str, Any], path: Path) -> Spacecraft | None:
+    """The spacecraft's tables, with each measured antenna pattern read into its samples."""
+    transmitters = raw.get("transmitter")
+    if isinstance(transmitters, tuple):
+        raw = raw | {"transmitter": tuple(_with_pattern(reader, transmitter) for transmitter in transmitters)}
+    return reader.model(Spacecraft, raw, path)
+
+
+def _with_pattern(reader: _Reader, transmitter: Any) -> Any:
+    antenna = transmitter.get("antenna") if isinstance(transmitter, dict) else None
+    if not isinstance(antenna, dict) or antenna.get("kind") != "measured pattern" or not isinstance(antenna.get("file"), str):
+        return transmitter
+    samples = reader.attempt(read_pattern, reader.path(antenna["file"])) or ()
+    return transmitter | {"antenna": antenna | {"samples": samples}}
+
+
+def _satellites(reader: _Reader, tables: MissionTables, shared: Spacecraft | None, path: Path) -> list[Satellite]:
+    orbits = reader.attempt(read_elements, reader.path(tables.elements), tables.start) or {}
+    own = {table.name: table for table in tables.satellite}
+    if orbits:
+        reader.faults.extend(
+            f"{path}: satellite.name: must be a satellite of {tables.elements}, got {name!r}{nearest(name, orbits)}"
+            for name in own
+            if name not in orbits
+        )
+    satellites = []
+    for name, elements in orbits.items():
+        table = own.get(name, SatelliteTable(name=name))
+        spacecraft = shared if table.spacecraft is None else _spacecraft(reader, reader.tables(table.spacecraft), path.parent / table.spacecraft)
+        start_state = table.start_state or tables.start_state
+        if start_state is None:
+            reader.faults.append(f"{path}: start_state: is required, for {name}")
+        if spacecraft is None and table.spacecraft is None:
+            reader.faults.append(f"{path}: transmitter, battery, panel and recorder: are required, for {name}")
+        _check_age(reader, name, elements, tables, path)
+        if spacecraft and start_state:
+            _check_references(reader, spacecraft, start_state, tables.policy, path)
+            satellites.append(Satellite(name=name, elements=elements, spacecraft=spacecraft, start_state=start_state))
+    _check_names(reader, satellites, "satellites", path)
+    return satellites
+
+
+def _check_age(reader: _Reader, name: str, elements: Any, tables: MissionTables, path: Path) -> None:
+    age_days = (tables.start - elements.epoch).total_seconds() / 86_400
+    limit_days = tables.policy.elements_max_age_days
+    if abs(age_days) > limit_days:
+        reader.faults.append(
+            f"{path.parent / tables.elements}: {name}: epoch {elements.epoch:%Y-%m-%dT%H:%M:%SZ} must be within"
+            f" policy.elements_max_age_days = {limit_days:g} of the start, got {age_days:.1f} days; fetch newer elements"
+        )
+
+
+def _check_references(reader: _Reader, spacecraft: Spacecraft, start_state: StartState, policy: Policy, path: Path) -> None:
+    """Names and figures that stand in one table and must fit another."""
+    modes = [transmitter.mode for transmitter in spacecraft.transmitter]
+    for name in policy.daily_contact_modes:
+        if name not in modes:
+            reader.faults.append(f"{path}: policy.daily_contact_modes: must name modes of {modes}, got {name!r}{nearest(name, modes)}")
+    for entry in policy.keep:
+        mode = entry.partition(":")[2]
+        if mode not in modes:
+            reader.faults.append(f"{path}: policy.keep: must be PASS:MODE with a mode of {modes}, got {entry!r}{nearest(mode, modes)}")
+    if start_state.stored_mbit > spacecraft.recorder.usable_mbit:
+        reader.faults.append(
+            f"{path}: start_state.stored_mbit: must fit the recorder's {spacecraft.recorder.usable_mbit:g} Mbit"
+            f" (capacity less reserve), got {start_state.stored_mbit:g}"
+        )
+
+
+def slug(name: str) -> str:
+    """The name as it stands in ids: lower case, letters and digits, hyphens between."""
+    return "-".join("".join(c if c.isalnum() else " " for c in name.lower()).split())
+
+
+def _check_names(reader: _Reader, described: list, what: str, path: Path) -> None:
+    seen: dict[str, str] = {}
+    for thing in filter(None, described):
+        other = seen.setdefault(slug(thing.name), thing.name)
+        if other is not thing.name:
+            reader.faults.append(f"{path}: {what}: names must differ in their letters and digits, got {other!r} and {thing.name!r}")

@@ -1,0 +1,157 @@
+"""Reading a user's file as text or as TOML, and saying what is wrong with it."""
+
+import difflib
+import hashlib
+import stat
+import tomllib
+from collections.abc import Iterable, Mapping
+from pathlib import Path
+from typing import Any
+
+from pydantic import ValidationError
+
+from planner.errors import InputError
+
+LARGEST_FILE_BYTES = 50_000_000
+LONGEST_VALUE_SHOWN = 60
+
+
+def read_bytes(path: Path) -> bytes:
+    """The file's bytes; InputError if it is missing, not a regular file, unreadable or over 50 MB."""
+    try:
+        status = path.stat()
+        if not stat.S_ISREG(status.st_mode):
+            raise InputError(f"{path}: must be a regular file")
+        if status.st_size > LARGEST_FILE_BYTES:
+            raise InputError(f"{path}: must be at most 50 MB, got {status.st_size / 1e6:.1f} MB")
+        return path.read_bytes()
+    except FileNotFoundError:
+        raise InputError(f"{path}: no such file{_nearest_file(path)}") from None
+    except (OSError, ValueError) as error:
+        raise InputError(f"{path}: cannot be read: {getattr(error, 'strerror', None) or error}") from None
+
+
+def read_text(path: Path) -> str:
+    """The file as text, without a byte-order mark; InputError where it is not UTF-8."""
+    try:
+        return read_bytes(path).decode("utf-8-sig")
+    except UnicodeDecodeError as error:
+        raise InputError(f"{path}: must be UTF-8 text, byte {error.start} is {error.object[error.start]:#04x}") from None
+
+
+def read_toml(path: Path) -> dict[str, Any]:
+    """The file's tables, lists as tuples; InputError with line and column where it is not TOML."""
+    try:
+        return _with_tuples(tomllib.loads(read_text(path).replace("\r\n", "\n")))
+    except tomllib.TOMLDecodeError as error:
+        raise InputError(f"{path}: must be TOML: {error}") from None
+    except RecursionError:
+        raise InputError(f"{path}: must be TOML: nested too deeply") from None
+
+
+def sha256(path: Path) -> str:
+    return hashlib.sha256(read_bytes(path)).hexdigest()
+
+
+def nearest(word: str, known: Iterable[str]) -> str:
+    """'; did you mean "soc_floor_pct"?' or nothing."""
+    by_folded = {name.casefold(): name for name in known}
+    close = difflib.get_close_matches(str(word).casefold(), by_folded, n=1, cutoff=0.6)
+    return f'; did you mean "{by_folded[close[0]]}"?' if close else ""
+
+
+def shown(value: Any) -> str:
+    """A value as a message shows it: one short line."""
+    text = value.isoformat() if hasattr(value, "isoformat") else repr(value)
+    text = text.encode("unicode_escape").decode() if not text.isprintable() else text
+    return text if len(text) <= LONGEST_VALUE_SHOWN else text[: LONGEST_VALUE_SHOWN - 1] + "…"
+
+
+def faults_of(path: Path, error: ValidationError, raw: Any, model: type | None = None) -> list[str]:
+    """One line per fault that pydantic found: file, key, rule, value received."""
+    return [_fault(path, entry, raw, model) for entry in error.errors(include_url=False)]
+
+
+def _fault(path: Path, entry: Mapping[str, Any], raw: Any, model: type | None) -> str:
+    key, holder = _key(entry["loc"], raw)
+    kind, context, value = entry["type"], entry.get("ctx", {}), entry["input"]
+    place = f"{path}: {key}" if key else f"{path}"
+    if kind == "missing":
+        return f"{place}: is required"
+    if kind == "extra_forbidden":
+        return f"{place}: unknown key{nearest(key.rsplit('.', 1)[-1], _siblings(entry['loc'], model, holder))}"
+    if kind == "value_error":
+        return f"{place}: {context['error']}" + ("" if "got " in str(context["error"]) else f", got {shown(value)}")
+    return f"{place}: {_rule(kind, context, entry['msg'])}, got {shown(value)}"
+
+
+def _rule(kind: str, context: Mapping[str, Any], message: str) -> str:
+    rules = {
+        "greater_than": "must be above {gt:g}",
+        "greater_than_equal": "must be at least {ge:g}",
+        "less_than": "must be below {lt:g}",
+        "less_than_equal": "must be at most {le:g}",
+        "float_type": "must be a number",
+        "finite_number": "must be a finite number",
+        "int_type": "must be a whole number",
+        "string_type": "must be text in quotes",
+        "bool_type": "must be true or false",
+        "tuple_type": "must be a list in brackets",
+        "model_type": "must be a table",
+        "literal_error": "must be one of {expected}",
+        "union_tag_invalid": "kind must be one of {expected_tags}",
+        "union_tag_not_found": "needs a kind",
+        "timezone_aware": "must carry a time zone (append Z for UTC)",
+        "datetime_type": "must be a date and time without quotes, such as 2026-12-07T00:00:00Z",
+        "time_type": "must be a time of day without quotes, such as 06:30:00",
+        "too_short": "must have at least {min_length} entries",
+        "missing_argument": "is required",
+    }
+    return rules[kind].format(**context) if kind in rules else message[0].lower() + message[1:]
+
+
+def _key(location: tuple, raw: Any) -> tuple[str, Any]:
+    """The dotted key as the user wrote it (list entries counted from 1, with their name), and the table that holds it."""
+    key, holder = "", raw
+    for part in location:
+        if isinstance(part, int) and isinstance(raw, tuple):
+            holder, raw = raw, raw[part] if part < len(raw) else None
+            label = next((raw[k] for k in ("name", "mode") if k in raw), "") if isinstance(raw, dict) else ""
+            key += f"[{part + 1}]" + (f' "{label}"' if isinstance(label, str) and label.isprintable() and label else "")
+        elif isinstance(raw, dict) and isinstance(part, str):
+            if part not in raw and any(part == value for value in raw.values() if isinstance(value, str)):
+                continue  # the tag of a union is no key of the file
+            holder, raw = raw, raw.get(part)
+            key += ("." if key else "") + (part if part.isprintable() else shown(part))
+    return key, holder
+
+
+def _siblings(location: tuple, model: type | None, holder: Any) -> set[str]:
+    """Keys that the table at `location` may hold."""
+    fields = getattr(model, "model_fields", {})
+    for part in location[:-1]:
+        if isinstance(part, str) and part in fields:
+            fields = _fields_within(fields[part].annotation)
+    return set(fields) - set(holder or ())
+
+
+def _fields_within(annotation: Any) -> dict:
+    if hasattr(annotation, "model_fields"):
+        return annotation.model_fields
+    found: dict = {}
+    for argument in getattr(annotation, "__args__", ()):
+        found |= _fields_within(argument)
+    return found
+
+
+def _with_tuples(value: Any) -> Any:
+    if isinstance(value, dict):
+        return {key: _with_tuples(entry) for key, entry in value.items()}
+    return tuple(_with_tuples(entry) for entry in value) if isinstance(value, list) else value
+
+
+def _nearest_file(path: Path) -> str:
+    try:
+        return nearest(path.name, (entry.name for entry in path.parent.iterdir()))
+    except (OSError, ValueError):
+        return ""
