@@ -78,6 +78,10 @@ class Battery(Described):
     cell_max_charge_a: Positive
     charge_min_c: Celsius = 0.0
     charge_max_c: Celsius = 45.0
+    charge_inhibit: bool = Field(
+        default=True,
+        description="the charger holds off outside charge_min_c..charge_max_c; false: it charges, and that is a breach",
+    )
     bus_trip_a: Positive | None = Field(default=None, description="over-current trip of the bus")
     # thermal model: relaxes towards one temperature in sunlight and another in eclipse
     sunlit_c: Celsius = 20.0
@@ -137,7 +141,9 @@ class Load(Described):
 class Pessimistic(Described):
     """The corner that every limit is held to, relative to the nominal description."""
 
-    health: Annotated[float, Field(gt=0, le=1)] = 0.85
+    health: Annotated[float, Field(gt=0, le=1)] = Field(
+        default=0.85, description="share of the new capacity that is left; the battery's own health where that is lower"
+    )
     resistance_factor: Annotated[float, Field(ge=1, le=100)] = 1.5
     battery_colder_k: NonNegative = 8.0
     array_end_of_life: bool = True
