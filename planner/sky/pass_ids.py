@@ -1,0 +1,113 @@
+"""Names of passes that outlive an element update."""
+
+import re
+
+import numpy as np
+
+from planner.sky.clock import Clock
+from planner.sky.sites import Sites
+from planner.sky.track import Track, grid_s, propagate
+
+EQUATORIAL_DEG = 1.0  # orbits flatter than this have no steady northernmost and southernmost point
+SIDEREAL_DAY_S = 86_164.0905  # from memory
+COARSE_SHARE = 0.25  # of sqrt(r^3/GM): finds the farthest point within a second or so
+
+
+def slug(name: str) -> str:
+    """Lower case, with every run of other characters than letters and digits as one hyphen."""
+    return re.sub(r"[^\w]+|_+", "-", name.lower()).strip("-") or "x"
+
+
+def pass_ids(clock: Clock, track: Track, sites: Sites, station_index, aos_s, by_day) -> np.ndarray:
+    """Ids of one satellite's passes, (n,) of str.
+
+    `satellite.station.yyyymmdd-nn`: the UTC day of the last passage of the orbit's farthest point before AOS, and
+    which passage of that day it was; a letter where several passes share it. The farthest point is the southernmost
+    for stations north of the equator and the northernmost for the others; for orbits within 1 deg of the equator it
+    is where the satellite crosses the meridian opposite the station. `by_day` (n,) marks passes without such a point
+    (geostationary), which carry the UTC day of AOS and 00.
+
+    Known limit: a passage within seconds of midnight UTC may fall on the other day with newer elements, and then the
+    ids of that day and of the day it left change their numbers.
+    """
+    day, count = np.zeros(len(aos_s), dtype=int), np.zeros(len(aos_s), dtype=int)
+    for direction, stations in _far_directions(track, sites):
+        here = np.isin(station_index, stations)
+        day[here], count[here] = _day_and_count(clock, _passages_s(clock, track, direction), aos_s[here])
+    day = np.where(by_day, clock.utc_day(aos_s + 1e-3), day)
+    count = np.where(by_day, 0, count)
+    letter = _letters(station_index, day, count)
+    first = np.datetime64(clock.start.date(), "D")
+    dates = np.strings.replace(np.datetime_as_string(first + day.astype("timedelta64[D]")), "-", "") if len(day) else []
+    satellite, stations = slug(track.satellite), [slug(station.name) for station in sites.stations]
+    return np.array(
+        [
+            f"{satellite}.{stations[s]}.{date}-{n:02d}{mark}"
+            for s, date, n, mark in zip(station_index, dates, count, letter, strict=True)
+        ],
+        dtype=object,
+    )
+
+
+def is_geostationary(track: Track) -> bool:
+    """Near the equator and turning with the Earth, within 3 %: no point of the orbit is farthest from a station."""
+    return _near_equator(track) and abs(track.period_s / SIDEREAL_DAY_S - 1) < 0.03
+
+
+def _near_equator(track: Track) -> bool:
+    return track.inclination_deg < EQUATORIAL_DEG or track.inclination_deg > 180 - EQUATORIAL_DEG
+
+
+def _far_directions(track: Track, sites: Sites):
+    """(direction, stations it serves): the orbit's farthest point is where the position reaches furthest along it."""
+    if _near_equator(track):
+        for index, station in enumerate(sites.stations):
+            longitude = np.radians(station.longitude_deg)
+            yield np.array([-np.cos(longitude), -np.sin(longitude), 0.0]), [index]
+        return
+    northern = np.array([station.latitude_deg >= 0 for station in sites.stations], dtype=bool)
+    yield np.array([0.0, 0.0, -1.0]), np.flatnonzero(northern)
+    yield np.array([0.0, 0.0, 1.0]), np.flatnonzero(~northern)
+
+
+def _passages_s(clock: Clock, track: Track, direction):
+    """Moments at which the satellite stops moving along `direction`, from a UTC midnight before the track onwards."""
+    known_s = _turning_s(track.time_s, track.velocity_km_s @ direction)
+    # a pass in progress where the track begins belongs to a passage up to a revolution earlier
+    first_day = clock.utc_day(track.time_s[0] - track.period_s)
+    earlier_s = grid_s(clock, track.elements, float(clock.midnight_s(first_day)), track.time_s[0], COARSE_SHARE)
+    _, velocity_km_s, good = propagate(clock, track.satellite, track.elements, earlier_s)
+    return np.concatenate([_turning_s(earlier_s[good], velocity_km_s[good] @ direction), known_s])
+
+
+def _turning_s(time_s, speed):
+    k = np.flatnonzero((speed[:-1] > 0) & (speed[1:] <= 0))
+    return time_s[k] + (time_s[k + 1] - time_s[k]) * speed[k] / (speed[k] - speed[k + 1])
+
+
+def _day_and_count(clock: Clock, passages_s, aos_s):
+    """Day and number within the day of the last passage before each AOS; the day of AOS and 0 where there is none."""
+    if not passages_s.size:
+        return clock.utc_day(aos_s), np.zeros(len(aos_s), dtype=int)
+    day = clock.utc_day(passages_s)
+    number = np.arange(len(day)) - np.searchsorted(day, day, side="left") + 1
+    last = np.searchsorted(passages_s, aos_s, side="right") - 1
+    has = last >= 0
+    return np.where(has, day[last], clock.utc_day(aos_s)), np.where(has, number[last], 0)
+
+
+def _letters(station_index, day, count):
+    """'' where a pass has its revolution to itself, else a, b, ... in order of time."""
+    keys = list(zip(station_index.tolist(), day.tolist(), count.tolist(), strict=True))
+    total, seen = {}, {}
+    for key in keys:
+        total[key] = total.get(key, 0) + 1
+    letters = []
+    for key in keys:
+        seen[key] = seen.get(key, -1) + 1
+        letters.append("" if total[key] == 1 else _letter(seen[key]))
+    return letters
+
+
+def _letter(k: int) -> str:
+    return _letter(k // 26 - 1) + chr(97 + k % 26) if k >= 26 else chr(97 + k)

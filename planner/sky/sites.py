@@ -1,0 +1,103 @@
+"""Stations as places: Earth-fixed position, local axes, the horizon they see over, and the look from them."""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from planner.units import EARTH_FLATTENING, EARTH_RADIUS_KM, dot
+
+
+@dataclass(frozen=True)
+class Look:
+    """From a station to a satellite, geometric (no refraction, no light time); arrays of one shape (n,)."""
+
+    azimuth_deg: np.ndarray
+    elevation_deg: np.ndarray
+    range_km: np.ndarray
+    range_rate_km_s: np.ndarray
+
+
+@dataclass(frozen=True, eq=False)
+class Sites:
+    """Stations stacked: position_km (s, 3) and axes (s, 3, 3), whose rows are east, north, up."""
+
+    stations: tuple
+    position_km: np.ndarray
+    axes: np.ndarray
+    floor_deg: np.ndarray  # (s,) lowest elevation that any azimuth allows
+
+    @classmethod
+    def of(cls, stations) -> "Sites":
+        stations = tuple(stations)
+        return cls(
+            stations,
+            np.array([station_position_km(station) for station in stations]).reshape(-1, 3),
+            np.array([local_axes(station) for station in stations]).reshape(-1, 3, 3),
+            np.array([_lowest_mask_deg(station) for station in stations]),
+        )
+
+    def mask_deg(self, station_index, azimuth_deg):
+        """The elevation a satellite must stand above at these azimuths, (n,)."""
+        mask = self.floor_deg[station_index]
+        for index, station in enumerate(self.stations):
+            if station.horizon and (here := station_index == index).any():
+                mask[here] = mask_deg(station, azimuth_deg[here])
+        return mask
+
+
+def station_position_km(station) -> np.ndarray:
+    """Earth-fixed position (3,) [km] of a station on the WGS 84 ellipsoid."""
+    latitude, longitude = np.radians(station.latitude_deg), np.radians(station.longitude_deg)
+    squeeze = (1 - EARTH_FLATTENING) ** 2
+    normal_km = EARTH_RADIUS_KM / np.sqrt(np.cos(latitude) ** 2 + squeeze * np.sin(latitude) ** 2)
+    height_km = station.altitude_m / 1000
+    out_km = (normal_km + height_km) * np.cos(latitude)
+    return np.array(
+        [out_km * np.cos(longitude), out_km * np.sin(longitude), (squeeze * normal_km + height_km) * np.sin(latitude)]
+    )
+
+
+def local_axes(station) -> np.ndarray:
+    """East, north and up (rows of a (3, 3) array) at a station; at a pole "north" is along its given longitude."""
+    latitude, longitude = np.radians(station.latitude_deg), np.radians(station.longitude_deg)
+    sin_lat, cos_lat, sin_lon, cos_lon = np.sin(latitude), np.cos(latitude), np.sin(longitude), np.cos(longitude)
+    return np.array(
+        [
+            [-sin_lon, cos_lon, 0.0],
+            [-sin_lat * cos_lon, -sin_lat * sin_lon, cos_lat],
+            [cos_lat * cos_lon, cos_lat * sin_lon, sin_lat],
+        ]
+    )
+
+
+def mask_deg(station, azimuth_deg):
+    """Lowest usable elevation at an azimuth: the horizon, straight between its points and across north, or
+    `min_elevation_deg` where that is higher. Shape of `azimuth_deg`."""
+    if not station.horizon:
+        return np.full(np.shape(azimuth_deg), float(station.min_elevation_deg))
+    azimuths, elevations = np.array(station.horizon).T
+    return np.maximum(np.interp(azimuth_deg, azimuths, elevations, period=360.0), station.min_elevation_deg)
+
+
+def _lowest_mask_deg(station) -> float:
+    lowest_point = min((elevation for _, elevation in station.horizon), default=0.0)
+    return max(float(station.min_elevation_deg), float(lowest_point))
+
+
+def look(position_km, velocity_km_s, station) -> Look:
+    """Look from a station at states (..., 3) in the Earth-fixed frame."""
+    return look_from(position_km, velocity_km_s, station_position_km(station), local_axes(station))
+
+
+def look_from(position_km, velocity_km_s, site_km, axes) -> Look:
+    """As `look`, from places (..., 3) and their local axes (..., 3, 3)."""
+    away_km = position_km - site_km
+    local_km = np.einsum("...ij,...j->...i", axes, away_km)
+    east, north, up = local_km[..., 0], local_km[..., 1], local_km[..., 2]
+    range_km = np.sqrt(dot(away_km, away_km))
+    return Look(
+        azimuth_deg=np.degrees(np.arctan2(east, north)) % 360.0,
+        elevation_deg=np.degrees(np.arctan2(up, np.hypot(east, north))),
+        range_km=range_km,
+        range_rate_km_s=dot(away_km, velocity_km_s) / range_km,
+    )
