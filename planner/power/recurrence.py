@@ -57,14 +57,19 @@ def charge_course_c(cell: Cell, start_c: float, intervals: CellIntervals) -> np.
     segments = _segments(cell)
     knots_c = cell.charge_c.tolist()
     last = len(segments) - 1
-    efficiency, leak_a, max_v = cell.coulombic_efficiency, cell.leak_a, cell.limits.cell_max_v
+    efficiency, max_v, leak_a, half_leak_a = (
+        cell.coulombic_efficiency,
+        cell.limits.cell_max_v,
+        cell.leak_a,
+        cell.leak_a / 2,
+    )
     charge_c = start_c
     low_c, high_c, start_v, slope_v_c, start_ohm, slope_ohm_c, _ = segments[
         min(bisect_right(knots_c, charge_c) - 1, last)
     ]
     course = [charge_c]
     for duration_s, power_w, factor, limit_a in zip(*(column.tolist() for column in intervals), strict=True):
-        emf_v = start_v + slope_v_c * charge_c
+        emf_v = start_v + slope_v_c * (charge_c - half_leak_a * duration_s)
         ohm = factor * (start_ohm + slope_ohm_c * charge_c)
         if power_w < 0.0:
             stiff_ohm = ohm + 0.5 * slope_v_c * duration_s
@@ -122,8 +127,9 @@ def _over_the_bend(cell, segments, knots_c, charge_c, drive) -> float:
     chord_v_c, after_c = 0.0, charge_c
     for _ in range(MOST_ITERATIONS):
         stiff_ohm = ohm + chord_v_c * gain * duration_s
-        discriminant = emf_v * emf_v + 4.0 * stiff_ohm * power_w
-        current_a = 2.0 * power_w / (emf_v + sqrt(discriminant)) if discriminant >= 0.0 else -emf_v / stiff_ohm / 2
+        start_v = emf_v - chord_v_c * cell.leak_a * duration_s
+        discriminant = start_v * start_v + 4.0 * stiff_ohm * power_w
+        current_a = 2.0 * power_w / (start_v + sqrt(discriminant)) if discriminant >= 0.0 else -start_v / stiff_ohm / 2
         moved_c = (gain * min(current_a, limit_a) - cell.leak_a) * duration_s
         before_c, after_c = after_c, min(max(charge_c + moved_c, 0.0), most_c)
         change_c = after_c - charge_c

@@ -14,7 +14,7 @@ from planner.power.recurrence import CellIntervals, charge_course_c
 JOULE_PER_WH = 3600.0
 # What the array or the load wants and the battery does not take or give counts as spill or brown-out above this;
 # below it, it is the solver's error and stays visible in the energy books
-RESOLUTION_W = 1e-6
+RESOLUTION_W = 1e-8
 
 
 @dataclass(frozen=True)

@@ -10,7 +10,7 @@ from planner.mission.pointing import Law
 from planner.power.intervals import merged_edges_s
 from planner.power.profile import Sunshine, panels_w
 from planner.sky import attitude
-from planner.sky.samples import station_position_km
+from planner.sky.sites import station_position_km
 
 LONGEST_SESSION_INTERVAL_S = 20.0  # the satellite turns up to a degree a second as it follows a station
 
