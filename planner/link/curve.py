@@ -1,0 +1,149 @@
+"""Attenuation against elevation, computed once and kept in memory and on disk.
+
+The disk copy spares the ITU-R library's slow start. It is never needed: a missing, broken or unwritable cache only
+costs the time to compute the curve again.
+"""
+
+import hashlib
+import os
+import sys
+import tempfile
+from contextlib import suppress
+from dataclasses import dataclass, fields
+from functools import lru_cache
+from pathlib import Path
+
+import numpy as np
+
+from planner.link import atmosphere
+from planner.link.atmosphere import Attenuation, Site
+from planner.link.polarisation import TILT_DEG
+from planner.mission.station import Station
+
+FORMAT = 1  # raised when atmosphere.py computes something else, so that older copies are not read
+LAYER_KM = 2.0  # a curve is nearly straight against the path through a layer of this thickness
+JUST_BELOW = 1 - 1e-9  # P.618 changes formula at 5 and 25 deg: a node on each side keeps a step a step
+ELEVATIONS_DEG = np.unique(
+    np.concatenate(
+        [np.arange(0, 5, 0.25), np.arange(5, 15, 0.5), np.arange(15, 91, 2.5), [5 * JUST_BELOW, 25 * JUST_BELOW]]
+    )
+)
+
+
+@dataclass(frozen=True)
+class CurveRequest:
+    """Everything that a set of curves depends on, one curve for each unavailability [% of the year]."""
+
+    site: Site
+    frequency_ghz: float
+    tilt_deg: float
+    diameter_m: float
+    efficiency: float
+    unavailability_pct: tuple[float, ...]
+
+    @property
+    def key(self) -> str:
+        """Name of the copy on disk: a hash of the request, the nodes, the format and the library's version."""
+        everything = (repr(self), ELEVATIONS_DEG.tolist(), FORMAT, atmosphere.library_version())
+        return hashlib.sha256(repr(everything).encode()).hexdigest()
+
+
+@dataclass(frozen=True, eq=False)
+class AttenuationCurves:
+    """Attenuation parts (4: gas, cloud, rain, scintillation; k unavailabilities; nodes) [dB] over ELEVATIONS_DEG."""
+
+    parts_db: np.ndarray
+
+    def at(self, elevation_deg) -> Attenuation:
+        """Attenuation at each elevation (n,): arrays (k, n), k as many as unavailabilities were asked for.
+
+        Linear between the nodes against the slant path of a 2 km layer: within 0.02 dB of the models themselves
+        at margins that matter (the tests measure it).
+        """
+        nodes = -atmosphere.path_factor(ELEVATIONS_DEG, LAYER_KM)
+        wanted = -atmosphere.path_factor(np.atleast_1d(elevation_deg), LAYER_KM)
+        right = np.clip(np.searchsorted(nodes, wanted), 1, len(nodes) - 1)
+        weight = (wanted - nodes[right - 1]) / (nodes[right] - nodes[right - 1])
+        return Attenuation(*(self.parts_db[..., right - 1] * (1 - weight) + self.parts_db[..., right] * weight))
+
+
+def request_curves(
+    station: Station, frequency_mhz: float, polarisation: str, unavailability_pct: tuple[float, ...]
+) -> CurveRequest:
+    """What to ask for a station's dish; below 1 GHz the models' lower end stands in, an upper bound."""
+    return CurveRequest(
+        site=Site(station.latitude_deg, station.longitude_deg, station.altitude_m / 1e3, station.rain_rate_mm_h),
+        frequency_ghz=max(frequency_mhz / 1e3, atmosphere.FREQUENCY_GHZ[0]),
+        tilt_deg=TILT_DEG[polarisation],
+        diameter_m=station.antenna.diameter_m,
+        efficiency=station.antenna.efficiency,
+        unavailability_pct=unavailability_pct,
+    )
+
+
+@lru_cache(maxsize=4096)
+def attenuation_curves(request: CurveRequest) -> AttenuationCurves:
+    """The curves, from memory, else from disk, else computed (and then written to disk where that works).
+
+    Raises
+    ------
+    InputError : frequency or unavailability outside the models' range
+    """
+    path = cache_folder() / f"attenuation-{request.key}.npy"
+    parts_db = _read(path, (len(fields(Attenuation)), len(request.unavailability_pct), len(ELEVATIONS_DEG)))
+    if parts_db is None:
+        parts_db = _compute(request)
+        _write(path, parts_db)
+    return AttenuationCurves(parts_db)
+
+
+def cache_folder() -> Path:
+    """Where the platform keeps what can be made again; under it a folder of our own."""
+    if sys.platform == "win32":
+        base = os.environ.get("LOCALAPPDATA") or Path.home() / "AppData" / "Local"
+    elif sys.platform == "darwin":
+        base = Path.home() / "Library" / "Caches"
+    else:
+        base = os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache"
+    return Path(base) / "downlink-planner"
+
+
+def _compute(request: CurveRequest) -> np.ndarray:
+    """Parts (4, k, nodes) [dB] from the models."""
+    curves = [
+        atmosphere.total_attenuation_db(
+            request.site,
+            request.frequency_ghz,
+            ELEVATIONS_DEG,
+            pct,
+            diameter_m=request.diameter_m,
+            efficiency=request.efficiency,
+            tilt_deg=request.tilt_deg,
+        )
+        for pct in request.unavailability_pct
+    ]
+    return np.array([[getattr(curve, part.name) for curve in curves] for part in fields(Attenuation)])
+
+
+def _read(path: Path, shape: tuple[int, ...]) -> np.ndarray | None:
+    """The array kept at `path`, or None where there is none that can be trusted."""
+    try:
+        parts_db = np.load(path, allow_pickle=False)
+    except (OSError, ValueError, EOFError):
+        return None
+    trusted = parts_db.shape == shape and parts_db.dtype == np.float64 and np.isfinite(parts_db).all()
+    return parts_db if trusted else None
+
+
+def _write(path: Path, parts_db: np.ndarray) -> None:
+    """Whole or not at all: written beside its place, then moved there. Failing is no error."""
+    with suppress(OSError):
+        path.parent.mkdir(parents=True, exist_ok=True)
+        handle, draft = tempfile.mkstemp(dir=path.parent, suffix=".draft")
+        try:
+            with os.fdopen(handle, "wb") as file:
+                np.save(file, parts_db)
+            os.replace(draft, path)
+        except OSError:
+            Path(draft).unlink(missing_ok=True)
+            raise
