@@ -10,6 +10,7 @@ from planner.mission.base import BodyAxis, Celsius, Described, Efficiency, Name,
 
 When = Literal["always", "sunlit", "eclipse", "windows"]
 Windows = tuple[tuple[AwareDatetime, AwareDatetime], ...]
+Table = tuple[tuple[float, float], ...]
 
 
 def check_windows(when: str, windows: tuple[tuple[datetime, datetime], ...]) -> None:
@@ -47,6 +48,14 @@ class Panel(Described):
             raise ValueError(f"lit shares must be from 0 to 1, got {[share for _, share in rows]}")
         return rows
 
+    @model_validator(mode="after")
+    def _hinge(self):
+        if self.hinge_axis is None and self.hinge_angle_deg != 0:
+            raise ValueError(
+                f"hinge_axis must be given with hinge_angle_deg, got none and {self.hinge_angle_deg:g} deg"
+            )
+        return self
+
 
 class ArrayConversion(Described):
     """What stands between the cells and the bus."""
@@ -61,15 +70,17 @@ class Battery(Described):
     cells_parallel: Annotated[int, Field(ge=1, le=1000)]
     cell_capacity_ah: Positive
     chemistry: Literal["LiFePO4", "Li-ion"] = "LiFePO4"
-    open_circuit: tuple[tuple[float, float], ...] = Field(
-        default=(), description="[soc_pct, cell_v] table of your own; empty takes the built-in one of the chemistry"
+    open_circuit: Table | None = Field(
+        default=None, description="[soc_pct, cell_v] table of your own; None: the built-in one of the chemistry"
     )
     health: Annotated[float, Field(gt=0, le=1)] = 1.0
     cell_resistance_mohm: Positive = Field(description="direct-current resistance at 25 degC and half charge")
-    resistance_by_temperature: tuple[tuple[float, float], ...] = Field(
-        default=(), description="[degC, factor] table; empty takes the built-in one"
+    resistance_by_temperature: Table | None = Field(
+        default=None, description="[degC, factor on cell_resistance_mohm] table; None: the built-in one"
     )
-    resistance_by_charge: tuple[tuple[float, float], ...] = Field(default=(), description="[soc_pct, factor] table")
+    resistance_by_charge: Table | None = Field(
+        default=None, description="[soc_pct, factor on cell_resistance_mohm] table; None: the built-in one"
+    )
     coulombic_efficiency: Efficiency = 0.995
     self_discharge_pct_month: Percent = 2.0
     cell_min_v: Positive = 2.8
@@ -89,34 +100,58 @@ class Battery(Described):
     thermal_time_constant_min: Positive = 90.0
     # life
     max_cycle_depth_pct: Percent | None = None
-    cycle_life: tuple[tuple[float, float], ...] = Field(
-        default=(), description="[depth_pct, cycles to end of life] table; empty takes the built-in one"
+    cycle_life: Table | None = Field(
+        default=None, description="[depth_pct, cycles to end of life] table; None: the built-in one"
     )
 
     @field_validator("open_circuit", "resistance_by_temperature", "resistance_by_charge", "cycle_life")
     @classmethod
-    def _rising_argument(cls, rows: tuple[tuple[float, float], ...]):
-        arguments = [argument for argument, _ in rows]
-        if rows and len(rows) < 2:
-            raise ValueError(f"a table needs two rows or more, got {len(rows)}")
+    def _a_positive_table(cls, rows: Table | None):
+        if rows is None:
+            return rows
+        if len(rows) < 2:
+            raise ValueError(
+                f"a table needs two rows or more, got {len(rows)}; leave the key out for the built-in table"
+            )
+        arguments, values = zip(*rows, strict=True)
         if any(b <= a for a, b in itertools.pairwise(arguments)):
-            raise ValueError(f"the first column must rise, got {arguments}")
+            raise ValueError(f"the first column must rise, got {list(arguments)}")
+        if min(values) <= 0:
+            raise ValueError(f"the second column must be above 0, got {list(values)}")
         return rows
 
     @field_validator("open_circuit")
     @classmethod
-    def _rising_voltage(cls, rows: tuple[tuple[float, float], ...]):
-        if rows and (rows[0][0] != 0 or rows[-1][0] != 100):
+    def _rising_voltage(cls, rows: Table | None):
+        if rows is None:
+            return rows
+        if rows[0][0] != 0 or rows[-1][0] != 100:
             raise ValueError(f"soc_pct must run from 0 to 100, got {rows[0][0]:g} to {rows[-1][0]:g}")
         volts = [volt for _, volt in rows]
-        if any(b <= a for a, b in itertools.pairwise(volts)) or any(volt <= 0 for volt in volts):
-            raise ValueError(f"cell_v must be positive and rise with charge, got {volts}")
+        if any(b <= a for a, b in itertools.pairwise(volts)):
+            raise ValueError(f"cell_v must rise with charge, got {volts}")
+        return rows
+
+    @field_validator("cycle_life")
+    @classmethod
+    def _fewer_deep_cycles(cls, rows: Table | None):
+        if rows is None:
+            return rows
+        if rows[0][0] <= 0:
+            raise ValueError(f"depth_pct must be above 0, got {rows[0][0]:g}")
+        cycles = [count for _, count in rows]
+        if any(b > a for a, b in itertools.pairwise(cycles)):
+            raise ValueError(f"cycles must not grow with depth, got {cycles}")
         return rows
 
     @model_validator(mode="after")
-    def _floor_below_ceiling(self):
+    def _floors_below_ceilings(self):
         if self.cell_min_v >= self.cell_max_v:
             raise ValueError(f"cell_min_v must be below cell_max_v, got {self.cell_min_v} and {self.cell_max_v}")
+        if self.charge_min_c >= self.charge_max_c:
+            raise ValueError(
+                f"charge_min_c must be below charge_max_c, got {self.charge_min_c} and {self.charge_max_c}"
+            )
         return self
 
 

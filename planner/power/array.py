@@ -52,7 +52,7 @@ def panel_temperature_c(panel: Panel, absorbed_flux_w_m2):
     """
     if panel.temperature_sunlit_c is not None:
         return np.full_like(absorbed_flux_w_m2, panel.temperature_sunlit_c)
-    heat_w_m2 = (SOLAR_ABSORPTIVITY - panel.efficiency) * absorbed_flux_w_m2 + EMISSIVITY * EARTH_HEAT_W_M2
+    heat_w_m2 = max(SOLAR_ABSORPTIVITY - panel.efficiency, 0.0) * absorbed_flux_w_m2 + EMISSIVITY * EARTH_HEAT_W_M2
     return (heat_w_m2 / (2 * EMISSIVITY * STEFAN_BOLTZMANN_W_M2_K4)) ** 0.25 - KELVIN_AT_0_C
 
 

@@ -7,10 +7,11 @@ import numpy as np
 from planner.mission.contacts import Session
 from planner.mission.models import Mission
 from planner.power.array import bus_power_w
+from planner.power.batch import Batch, perturb, run_batch
 from planner.power.corners import Corner, CornerName, corner_of
 from planner.power.intervals import Intervals, Overlay, interval_of, lay_over
 from planner.power.loads import session_draw
-from planner.power.profile import find_sunshine, idle_intervals, panels_w
+from planner.power.profile import find_sunshine, idle_weeks, panels_w
 from planner.power.series import BatterySeries, run_battery
 from planner.power.session import SessionCourse, SessionDraw, trace_sessions
 
@@ -83,6 +84,11 @@ class SatellitePower:
         courses = self._traced(sorted(sessions))
         return lay_over(self.idle(corner), [self._overlay(course, corner) for course in courses])
 
+    def perturbed(self, sessions, corner: CornerName = "nominal") -> Batch:
+        """Weeks spread around a corner as the mission states; `.broken(floor)` is the risk with its interval."""
+        assumed = self.corner(corner)
+        return run_batch(self.satellite, assumed, self.intervals(sessions, corner), perturb(self.satellite, assumed))
+
     def session_draw(self, session: Session, corner: CornerName = "pessimistic") -> SessionDraw:
         """Battery terminal power with and without one session, from the first slew to the last."""
         return self.session_draws([session], corner)[0]
@@ -138,7 +144,6 @@ class SatellitePower:
 
     @cached_property
     def _idle(self) -> dict[str, Intervals]:
-        return {
-            name: idle_intervals(self.mission, self.satellite, self._sunshine, self._idle_panels_w, corner)
-            for name, corner in self._corners.items()
-        }
+        corners = list(self._corners.values())
+        weeks = idle_weeks(self.mission, self.satellite, self._sunshine, self._idle_panels_w, corners)
+        return dict(zip(self._corners, weeks, strict=True))

@@ -92,37 +92,43 @@ def battery_temperature_c(battery, colder_k: float, edges_s, visible_sun):
 
 def thermostat_edges_s(loads, edges_s, edge_c):
     """Times at which the battery temperature crosses the setting of a thermostat, straight between edges."""
-    crossings_s = []
+    crossings_s = [np.zeros(0)]
     for setting_c in {load.on_below_c for load in loads if load.on_below_c is not None}:
         over_c = edge_c - setting_c
         k = np.flatnonzero(over_c[1:] * over_c[:-1] < 0)
-        crossings_s.extend(edges_s[k] + over_c[k] / (over_c[k] - over_c[k + 1]) * (edges_s[k + 1] - edges_s[k]))
-    return np.array(crossings_s)
+        crossings_s.append(edges_s[k] + over_c[k] / (over_c[k] - over_c[k + 1]) * (edges_s[k + 1] - edges_s[k]))
+    return np.concatenate(crossings_s)
 
 
-def idle_intervals(
-    mission: Mission, satellite: Satellite, sunshine: Sunshine, idle_panels_w, corner: Corner
-) -> Intervals:
-    """The week of one corner without a session; `idle_panels_w` (n, panels) and Sun on the grid of `sunshine`."""
-    craft = satellite.spacecraft
+def idle_weeks(
+    mission: Mission, satellite: Satellite, sunshine: Sunshine, idle_panels_w, corners: list[Corner]
+) -> list[Intervals]:
+    """The week without a session for each corner, all on one set of edges.
+
+    `idle_panels_w` (n, panels) are the new panels' powers under the idle law on the grid of `sunshine`.
+    """
+    craft, grid_s = satellite.spacecraft, sunshine.edges_s
     visible_sun = sunshine.at(sunshine.middle_s)[3]
-    edge_c = battery_temperature_c(craft.battery, corner.battery_colder_k, sunshine.edges_s, visible_sun)
-    crossings_s = thermostat_edges_s(craft.load, sunshine.edges_s, edge_c)
-    edges_s = merged_edges_s(sunshine.edges_s, crossings_s, span_s=mission.span_s)
+    edge_c = [battery_temperature_c(craft.battery, one.battery_colder_k, grid_s, visible_sun) for one in corners]
+    crossings_s = [thermostat_edges_s(craft.load, grid_s, course_c) for course_c in edge_c]
+    edges_s = merged_edges_s(grid_s, *crossings_s, span_s=mission.span_s)
     middle_s = 0.5 * (edges_s[1:] + edges_s[:-1])
-    index = interval_of(sunshine.edges_s, middle_s)
-    battery_c = np.interp(middle_s, sunshine.edges_s, edge_c)
-    windows = windows_s(mission, satellite)
-    return Intervals(
-        edges_s=edges_s,
-        array_w=array.bus_power_w(idle_panels_w[index], corner.panel_factor, craft.array),
-        draw=steady_draw(craft.load, middle_s, visible_sun[index], battery_c, windows, corner.load_factor),
-        session_w=np.zeros(len(middle_s)),
-        battery_c=battery_c,
-        visible_sun=visible_sun[index],
-        attitude=np.zeros(len(middle_s), dtype=int),
-        attitudes=(craft.pointing.idle.law, "slew", *dict.fromkeys(_session_laws(craft))),
-    )
+    index, windows = interval_of(grid_s, middle_s), windows_s(mission, satellite)
+
+    def week(corner: Corner, course_c) -> Intervals:
+        battery_c = np.interp(middle_s, grid_s, course_c)
+        return Intervals(
+            edges_s=edges_s,
+            array_w=array.bus_power_w(idle_panels_w[index], corner.panel_factor, craft.array),
+            draw=steady_draw(craft.load, middle_s, visible_sun[index], battery_c, windows, corner.load_factor),
+            session_w=np.zeros(len(middle_s)),
+            battery_c=battery_c,
+            visible_sun=visible_sun[index],
+            attitude=np.zeros(len(middle_s), dtype=int),
+            attitudes=(craft.pointing.idle.law, "slew", *dict.fromkeys(_session_laws(craft))),
+        )
+
+    return [week(corner, course_c) for corner, course_c in zip(corners, edge_c, strict=True)]
 
 
 def _session_laws(craft) -> list[str]:
