@@ -9,7 +9,7 @@ from planner.sky.sites import Sites
 from planner.sky.track import Track, evaluate
 from planner.units import EARTH_GM_KM3_S2, EARTH_RATE_RAD_S, dot
 
-CUT_STEP_S = 10.0  # where a horizon's line is followed, between its corners
+SEARCH_POINTS = 65
 
 
 @dataclass(frozen=True, eq=False)
@@ -141,6 +141,24 @@ def _stretches(track: Track, sites: Sites, nodes: _Nodes) -> Arcs:
             nodes.sine[k + 1] - level,
         )
     return Arcs(nodes.station_index[rises], rise_s, _peaks(nodes, rises, sets), set_s)
+
+
+def highest_s(track: Track, site_km, up, begin_s, end_s):
+    """The moment within [begin_s, end_s], (n,), of greatest elevation above places (n, 3) with zeniths `up` (n, 3)."""
+    times = np.linspace(begin_s, end_s, SEARCH_POINTS)
+    best = np.argmax(_sine_and_slope(*track.at(times), site_km, up)[0], axis=0)
+    everyone = np.arange(len(begin_s))
+    low = times[np.maximum(best - 1, 0), everyone]
+    high = times[np.minimum(best + 1, SEARCH_POINTS - 1), everyone]
+
+    def slope(time_s, k):
+        return _sine_and_slope(*track.at(time_s), site_km[k], up[k])[1]
+
+    start, end = slope(low, everyone), slope(high, everyone)
+    k = np.flatnonzero((start > 0) & (end < 0))
+    top_s = times[best, everyone]
+    top_s[k] = refine(lambda t, j: slope(t, k[j]), low[k], high[k], start[k], end[k])
+    return top_s
 
 
 def _peaks(nodes: _Nodes, rises, sets):

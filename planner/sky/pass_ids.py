@@ -10,7 +10,7 @@ from planner.sky.track import Track, grid_s, propagate
 
 EQUATORIAL_DEG = 1.0  # orbits flatter than this have no steady northernmost and southernmost point
 SIDEREAL_DAY_S = 86_164.0905  # from memory
-COARSE_SHARE = 0.25  # of sqrt(r^3/GM): finds the farthest point within a second or so
+COARSE_STEPS = 4.0  # grid steps at a time: finds the farthest point within a second or so
 
 
 def slug(name: str) -> str:
@@ -75,7 +75,7 @@ def _passages_s(clock: Clock, track: Track, direction):
     known_s = _turning_s(track.time_s, track.velocity_km_s @ direction)
     # a pass in progress where the track begins belongs to a passage up to a revolution earlier
     first_day = clock.utc_day(track.time_s[0] - track.period_s)
-    earlier_s = grid_s(clock, track.elements, float(clock.midnight_s(first_day)), track.time_s[0], COARSE_SHARE)
+    earlier_s = grid_s(clock, track.elements, float(clock.midnight_s(first_day)), track.time_s[0], COARSE_STEPS)
     _, velocity_km_s, good = propagate(clock, track.satellite, track.elements, earlier_s)
     return np.concatenate([_turning_s(earlier_s[good], velocity_km_s[good] @ direction), known_s])
 

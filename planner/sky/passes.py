@@ -6,7 +6,7 @@ import numpy as np
 import pandas as pd
 
 from planner.sky.clock import Clock
-from planner.sky.horizon import Arcs, arcs_above
+from planner.sky.horizon import Arcs, arcs_above, highest_s
 from planner.sky.pass_ids import is_geostationary, pass_ids
 from planner.sky.sites import Sites, look_from
 from planner.sky.sun import eclipse_edges_s, sun_position_km, visible_sun_fraction
@@ -96,7 +96,9 @@ def _passes_of(clock: Clock, track: Track, satellite_index: int, sites: Sites) -
     starts, ends = arcs.rise_s < 0, arcs.set_s > clock.span_s
     aos_s, los_s = np.maximum(arcs.rise_s, 0.0), np.minimum(arcs.set_s, clock.span_s)
     place = sites.position_km[arcs.station_index], sites.axes[arcs.station_index]
-    tca_s = _highest_s(track, place, aos_s, arcs.peak_s, los_s)
+    tca_s = np.clip(arcs.peak_s, aos_s, los_s)
+    cut = np.flatnonzero(tca_s != arcs.peak_s)
+    tca_s[cut] = highest_s(track, place[0][cut], place[1][cut, 2], aos_s[cut], los_s[cut])
     at_aos, at_tca, at_los = (look_from(*track.at(time_s), *place) for time_s in (aos_s, tca_s, los_s))
     names = np.array([station.name for station in sites.stations], dtype=object)
     return {
@@ -130,19 +132,8 @@ def _cut_by_day(clock: Clock, arcs: Arcs):
     rise_s = np.where(long[k], np.maximum(arcs.rise_s[k], clock.midnight_s(day)), arcs.rise_s[k])
     set_s = np.where(long[k], np.minimum(arcs.set_s[k], clock.midnight_s(day + 1)), arcs.set_s[k])
     some = set_s > rise_s
-    cut = Arcs(arcs.station_index[k], rise_s, np.clip(arcs.peak_s[k], rise_s, set_s), set_s)
+    cut = Arcs(arcs.station_index[k], rise_s, arcs.peak_s[k], set_s)
     return Arcs(*(column[some] for column in cut.columns)), long[k][some]
-
-
-def _highest_s(track: Track, place, aos_s, peak_s, los_s):
-    """The peak, or where the span or the day cut it off, the highest of the moments that are left."""
-    tca_s = np.clip(peak_s, aos_s, los_s)
-    cut = np.flatnonzero(tca_s != peak_s)
-    if cut.size:
-        times = np.linspace(aos_s[cut], los_s[cut], 101)
-        height = look_from(*track.at(times), *(part[cut] for part in place)).elevation_deg
-        tca_s[cut] = times[np.argmax(height, axis=0), np.arange(len(cut))]
-    return tca_s
 
 
 def _sunlit_fraction(clock: Clock, track: Track, aos_s, los_s):

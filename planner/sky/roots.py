@@ -1,28 +1,61 @@
-"""Zeros of many functions at once: one bracket each, all refined together."""
+"""Zeros of many functions of time at once: one bracket each, all refined together."""
 
 import numpy as np
 
+WITHIN_S = 1e-4  # how near to a zero the refinement stops
+SLOPE_STEP_S = 0.01
 
-def refine(function, low, high, f_low, f_high, tolerance=1e-4, most_steps=60):
-    """Zeros of `function` inside [low, high], all (n,), where f_low and f_high differ in sign.
 
-    False position with the stale end's value halved (the Illinois rule, Dowell and Jarratt 1971), which cannot leave
-    its bracket. `function(time, index)` gives the values of the members `index`, (m,) each.
+def refine(function, low, high, f_low, f_high):
+    """The zero of each function inside its bracket [low, high], all (n,), whose end values differ in sign.
+
+    `function(time_s, k)` gives the values (m,) of the members `k` (m,) at `time_s` (m,). False position with the stale
+    end's value halved, which cannot leave its bracket: the Illinois rule (Dowell and Jarratt, BIT 11, 1971, from memory).
     """
     a, b, fa, fb = (np.array(x, dtype=float) for x in (low, high, f_low, f_high))
     zero = np.where(fa == 0, a, b)
     active = np.flatnonzero((fa != 0) & (fb != 0))
-    for _ in range(most_steps):
-        if not active.size:
-            break
-        x0, x1, y0, y1 = a[active], b[active], fa[active], fb[active]
-        x = (x0 * y1 - x1 * y0) / (y1 - y0)
-        x = np.where((x > np.minimum(x0, x1)) & (x < np.maximum(x0, x1)), x, (x0 + x1) / 2)
+    while active.size:
+        a1, b1, fa1, fb1 = a[active], b[active], fa[active], fb[active]
+        x = b1 - fb1 * (b1 - a1) / (fb1 - fa1)
         y = function(x, active)
-        crossed = (y < 0) != (y1 < 0)
-        a[active] = np.where(crossed, x1, x0)
-        fa[active] = np.where(crossed, y1, y0 / 2)
+        crossed = (y < 0) != (fb1 < 0)
+        a[active], fa[active] = np.where(crossed, b1, a1), np.where(crossed, fb1, fa1 / 2)
         b[active], fb[active], zero[active] = x, y, x
-        done = (y == 0) | (np.abs(x - x1) < tolerance) | (np.abs(x1 - x0) < tolerance)
-        active = active[~done]
+        active = active[(y != 0) & (np.abs(x - b1) > WITHIN_S)]
     return zero
+
+
+def crossings(function, low, high):
+    """All zeros in intervals [low, high], (n,), in each of which the function turns at most once.
+
+    Returns k (m,), the interval of each zero, and its time (m,), in no order. A zero that only touches is not found.
+    """
+    everyone = np.arange(len(low))
+    f_low, f_high = function(low, everyone), function(high, everyone)
+
+    def slope(time_s, k):
+        """One-sided at the ends: the function may have a corner there."""
+        return function(np.minimum(time_s + SLOPE_STEP_S, high[k]), k) - function(
+            np.maximum(time_s - SLOPE_STEP_S, low[k]), k
+        )
+
+    same = np.flatnonzero((f_low < 0) == (f_high < 0))
+    away = np.where(f_low[same] < 0, -1.0, 1.0)
+    start, end = slope(low[same], same), slope(high[same], same)
+    turns = (away * start < 0) & (away * end > 0)
+    k = same[turns]
+    turn_s = refine(lambda t, j: slope(t, k[j]), low[k], high[k], start[turns], end[turns])
+    f_turn = function(turn_s, k)
+    over = (f_turn < 0) != (f_low[k] < 0)
+    once = np.flatnonzero((f_low < 0) != (f_high < 0))
+    twice, turn_s, f_turn = k[over], turn_s[over], f_turn[over]
+    k = np.concatenate([once, twice, twice])
+    time_s = refine(
+        lambda t, j: function(t, k[j]),
+        np.concatenate([low[once], low[twice], turn_s]),
+        np.concatenate([high[once], turn_s, high[twice]]),
+        np.concatenate([f_low[once], f_low[twice], f_turn]),
+        np.concatenate([f_high[once], f_turn, f_high[twice]]),
+    )
+    return k, time_s

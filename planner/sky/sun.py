@@ -6,8 +6,8 @@ from functools import lru_cache
 import numpy as np
 
 from planner.sky.clock import Clock, timescale
-from planner.sky.roots import refine
-from planner.sky.track import inertial_velocity_km_s, turn
+from planner.sky.roots import crossings
+from planner.sky.track import evaluate, inertial_velocity_km_s, turn
 from planner.units import DAY_S, EARTH_FLATTENING, EARTH_RADIUS_KM, SUN_RADIUS_KM, dot, unit_vector
 
 SAMPLE_S = DAY_S / 4  # a spline through these is within 0.001 arc seconds of the ephemeris
@@ -87,42 +87,35 @@ def visible_sun_fraction(position_km, sun_km):
 
 
 def eclipse_edges_s(track, clock: Clock):
-    """Moments inside the track at which the visible fraction leaves or reaches 0 or 1, sorted (n,) [s after start]."""
-    return np.sort(np.concatenate([_limb_crossings_s(track, clock, side) for side in (-1.0, 1.0)]))
+    """Moments inside the track at which the visible fraction leaves or reaches 0 or 1, sorted (n,) [s after start].
+
+    These are the moments at which the Sun's upper or lower edge stands on the Earth's limb.
+    """
+    near = np.flatnonzero(_near_the_shadow(track, sun_position_km(clock, track.time_s)))
+    interval, side = np.tile(near, 2), np.repeat([-1.0, 1.0], len(near))
+    cubics, begin_s = track.cubics[interval], track.time_s[interval]
+
+    def height_rad(time_s, k):
+        position_km, _ = evaluate(cubics[k], time_s - begin_s[k])
+        above_rad, sun_rad, _ = _shadow_angles_rad(position_km, sun_position_km(clock, time_s))
+        return above_rad + side[k] * sun_rad
+
+    return np.sort(crossings(height_rad, begin_s, track.time_s[interval + 1])[1])
 
 
-def _limb_crossings_s(track, clock: Clock, side: float):
-    """Moments at which the Sun's far (side -1) or near (+1) edge stands on the Earth's limb."""
+def _near_the_shadow(track, sun_km):
+    """Grid intervals that may hold the edge of umbra or penumbra, (n - 1,) bool.
 
-    def height_rad(time_s, _=None):
-        position_km, _velocity = track.at(time_s)
-        above_rad, sun_rad, _earth = _shadow_angles_rad(position_km, sun_position_km(clock, time_s))
-        return above_rad - side * sun_rad
-
-    time_s, height = _with_extremes(height_rad, track.time_s)
-    k = np.flatnonzero((height[:-1] < 0) != (height[1:] < 0))
-    return refine(height_rad, time_s[k], time_s[k + 1], height[k], height[k + 1])
-
-
-def _with_extremes(function, time_s):
-    """The grid and, where three points bend across a possible zero, the extreme between them too."""
-    values = function(time_s)
-    inner = values[1:-1]
-    same_sign = (inner < 0) == (values[:-2] < 0)
-    turning = (np.abs(inner) <= np.abs(values[:-2])) & (np.abs(inner) <= np.abs(values[2:])) & same_sign
-    k = np.flatnonzero(turning) + 1
-    if not k.size:
-        return time_s, values
-    low, high = time_s[k - 1], time_s[k + 1]
-    sign = np.sign(values[k])
-    golden = (np.sqrt(5) - 1) / 2
-    for _ in range(40):
-        left, right = high - golden * (high - low), low + golden * (high - low)
-        keep_left = sign * function(left) < sign * function(right)
-        low, high = np.where(keep_left, low, left), np.where(keep_left, right, high)
-    times = np.concatenate([time_s, (low + high) / 2])
-    order = np.argsort(times)
-    return times[order], np.concatenate([values, function((low + high) / 2)])[order]
+    A cylinder of the Earth's radius, and a belt around it as wide as flattening, cones and a step's bend ask for.
+    """
+    to_sun = unit_vector(sun_km)
+    behind_km = -dot(track.position_km, to_sun)
+    square_km2 = dot(track.position_km, track.position_km)
+    gap_km = np.sqrt(np.maximum(square_km2 - behind_km**2, 0.0)) - EARTH_RADIUS_KM
+    gap_km = np.where(behind_km > 0, gap_km, np.inf)
+    belt_km = 50.0 + 0.01 * np.maximum(behind_km, 0.0)
+    inside, outside = gap_km < -belt_km, gap_km > belt_km
+    return ~((inside[:-1] & inside[1:]) | (outside[:-1] & outside[1:]))
 
 
 def beta_deg(position_km, velocity_km_s, sun_km):
