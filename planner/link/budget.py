@@ -1,4 +1,7 @@
-"""The budget: every line of it as arrays, from the geometry. The week's table and the printed page both come from here."""
+"""The budget: every line of it as arrays, from the geometry.
+
+The week's table and the printed page are both made of this one function's lines.
+"""
 
 from dataclasses import dataclass
 
@@ -8,9 +11,10 @@ from planner.errors import InputError
 from planner.link import antenna, noise
 from planner.link.atmosphere import Attenuation
 from planner.link.coding import esn0_db_of
-from planner.link.curve import attenuation_curves, request_curves
+from planner.link.curve import attenuation_curves, joined_curves, request_curves
 from planner.link.flux import flux_density_dbw_m2, flux_limit, share_in_bandwidth
 from planner.link.geometry import Geometry, free_space_loss_db
+from planner.link.names import told_at
 from planner.link.polarisation import polarisation_loss_db
 from planner.mission.station import Receiver, Station
 from planner.mission.transmitter import Transmitter
@@ -85,7 +89,7 @@ def budget_lines(
     InputError : the station cannot hear the mode, a gain-only antenna has to look sideways, a G/T out of reach
     """
     if reason := cannot_hear(transmitter, station):
-        raise InputError(f"mode {transmitter.mode!r} at station {station.name!r}: {reason}")
+        raise InputError(reason)
     receiver: Receiver = station.receiver_for(transmitter.band)
     frequency_hz = transmitter.frequency_mhz * 1e6
 
@@ -140,13 +144,22 @@ def budget_lines(
 
 
 def budget_at(
-    transmitter: Transmitter, station: Station, geometry: Geometry, unavailability_pct: tuple[float, ...]
+    transmitter: Transmitter, station: Station, geometry: Geometry, *unavailability_pct: tuple[float, ...]
 ) -> Lines:
-    """The budget with the atmosphere of each unavailability [% of the year]: lines (k, n) where it touches them."""
-    request = request_curves(station, transmitter.frequency_mhz, transmitter.polarisation, unavailability_pct)
-    curves = attenuation_curves(request)
-    zenith_gas_db = float(curves.at(90.0).gas_db[0, 0])
-    return budget_lines(transmitter, station, geometry, curves.at(geometry.elevation_deg), zenith_gas_db)
+    """The budget with the atmosphere of each unavailability [% of the year]: lines (k, n) where it touches them.
+
+    Percentiles come in sets, and each set's curves are kept together; k counts through all sets. InputError as
+    `budget_lines`, and for a frequency beyond the models' range.
+    """
+    with told_at(f"mode {transmitter.mode!r} at station {station.name!r}"):
+        curves = joined_curves(
+            attenuation_curves(
+                request_curves(station, transmitter.frequency_mhz, transmitter.polarisation, percentiles)
+            )
+            for percentiles in unavailability_pct
+        )
+        zenith_gas_db = float(curves.at(90.0).gas_db[0, 0])
+        return budget_lines(transmitter, station, geometry, curves.at(geometry.elevation_deg), zenith_gas_db)
 
 
 def asked_unavailability_pct(availability_pct: float) -> float:

@@ -3,6 +3,8 @@
 Rows are numbered in rising rate and rising need, so a slower row works wherever a faster one does. -1 is none.
 """
 
+import itertools
+
 import numpy as np
 
 
@@ -25,7 +27,7 @@ def variable_rows(esn0_db, time_s, offsets, needed_db, allowed, *, hysteresis_db
     spare = fastest_row(np.asarray(esn0_db) - hysteresis_db, needed_db, allowed)
     holds = _least_ahead(best, time_s, offsets, shortest_dwell_s)
     chosen = np.full(len(best), -1)
-    for first, end in zip(offsets[:-1], offsets[1:], strict=True):
+    for first, end in itertools.pairwise(offsets):
         row, since_s = -1, -np.inf
         for k in range(first, end):
             if best[k] < 0:
@@ -43,11 +45,9 @@ def worthwhile_rows(usable, offsets):
 
     usable (m, n) : rows in rising rate, so each contains the next one's samples.
     """
-    seconds_ahead = np.add.reduceat(usable, offsets[:-1], axis=1, dtype=int)
-    faster = np.vstack([seconds_ahead[1:], np.full((1, seconds_ahead.shape[1]), -1)])
-    longest_faster = np.maximum.accumulate(faster[::-1], axis=0)[::-1]
-    offered = seconds_ahead > longest_faster
-    return usable & np.repeat(offered, np.diff(offsets), axis=1)
+    count = np.add.reduceat(usable, offsets[:-1], axis=1, dtype=int)
+    next_faster = np.vstack([count[1:], np.zeros_like(count[:1])])
+    return usable & np.repeat(count > next_faster, np.diff(offsets), axis=1)
 
 
 def share_of_year(margin_db, unavailability_pct):

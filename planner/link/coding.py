@@ -4,7 +4,7 @@ Every row counts what is left after its own framing, so that symbol rate x bits 
 handed to the layer above. Es/N0 and Eb/N0 are per symbol sent and per information bit of the code.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -30,6 +30,7 @@ class Modcod:
 
 
 DVB_S2_SOURCE = "ETSI EN 302 307-1 Table 13, normal frames, packet error 1e-7, pilots off (second-hand)"
+PILOT_FACTOR = 1440 / 1476  # 36 pilot symbols after every 16 slots of 90, EN 302 307-1 (from memory)
 # name, spectral efficiency with the physical-layer header, ideal Es/N0 [dB]
 DVB_S2 = (
     ("QPSK 1/4", 0.490243, -2.35), ("QPSK 1/3", 0.656448, -1.24), ("QPSK 2/5", 0.789412, -0.30),
@@ -106,7 +107,11 @@ def modcods_of(transmitter: Transmitter) -> tuple[Modcod, ...]:
 def find_modcod(name: str, transmitter: Transmitter) -> Modcod:
     """The row of that name, the mode's own rows first; InputError with the nearest known name."""
     own = {row.name: _own_row(row, transmitter.mode) for row in transmitter.own_modcods}
-    return look_up("modcod", name, MODCODS | own, f" to mode {transmitter.mode!r}")
+    row = look_up("modcod", name, MODCODS | own, f" to mode {transmitter.mode!r}")
+    if not transmitter.pilots or row.source != DVB_S2_SOURCE:
+        return row
+    bits = row.bits_per_symbol * PILOT_FACTOR
+    return replace(row, bits_per_symbol=bits, source=row.source.replace("pilots off", "pilots on"))
 
 
 def _own_row(row: OwnModcod, mode: str) -> Modcod:

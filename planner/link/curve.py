@@ -8,6 +8,7 @@ import hashlib
 import os
 import sys
 import tempfile
+from collections.abc import Iterable
 from contextlib import suppress
 from dataclasses import dataclass, fields
 from functools import lru_cache
@@ -95,6 +96,11 @@ def attenuation_curves(request: CurveRequest) -> AttenuationCurves:
         parts_db = _compute(request)
         _write(path, parts_db)
     return AttenuationCurves(parts_db)
+
+
+def joined_curves(curves: Iterable[AttenuationCurves]) -> AttenuationCurves:
+    """The unavailabilities of several sets in one, in their order."""
+    return AttenuationCurves(np.concatenate([each.parts_db for each in curves], axis=1))
 
 
 def cache_folder() -> Path:

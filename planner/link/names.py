@@ -1,6 +1,8 @@
 """Names the user gives, looked up; an unknown one is told with the nearest known."""
 
+import itertools
 from collections.abc import Mapping
+from contextlib import contextmanager
 from typing import TypeVar
 
 from planner.errors import InputError
@@ -10,14 +12,25 @@ from planner.mission.text import nearest
 from planner.mission.transmitter import Transmitter
 
 Thing = TypeVar("Thing")
+MOST_SHOWN = 6
 
 
 def look_up(kind: str, name: str, known: Mapping[str, Thing], where: str = "") -> Thing:
     """The thing of that name; InputError with the nearest known name, else with all of them."""
     if name in known:
         return known[name]
-    hint = nearest(name, known) or f"; known: {', '.join(known)}"
+    shown = [*itertools.islice(known, MOST_SHOWN), *(["…"] if len(known) > MOST_SHOWN else [])]
+    hint = nearest(name, known) or f"; known: {', '.join(shown)}"
     raise InputError(f"{kind} {name!r} is not known{where}{hint}")
+
+
+@contextmanager
+def told_at(place: str):
+    """Put `place` before every fault told inside."""
+    try:
+        yield
+    except InputError as error:
+        raise InputError(*(f"{place}: {fault}" for fault in error.faults)) from None
 
 
 def named_satellite(mission: Mission, name: str | None) -> Satellite:

@@ -141,7 +141,7 @@ def _evaluate(mission, sky, satellite, transmitter, sample_index, offsets, stati
     columns["esn0_db"][:] = NEVER_HEARD_DB
     fading_esn0_db = np.full((len(FADING_PCT), count), NEVER_HEARD_DB)
     station_of_sample = np.repeat(stations, np.diff(offsets))
-    percentiles = (asked_unavailability_pct(policy.availability_pct), *FADING_PCT)
+    asked = (asked_unavailability_pct(policy.availability_pct),)
     for name in np.unique(stations):
         station, mine = mission.station(name), np.flatnonzero(station_of_sample == name)
         if cannot_hear(transmitter, station):
@@ -149,7 +149,7 @@ def _evaluate(mission, sky, satellite, transmitter, sample_index, offsets, stati
         geometry = sampled_geometry(
             sky, satellite, transmitter, station, sample_index[mine], policy.elements_refresh_days
         )
-        lines = budget_at(transmitter, station, geometry, percentiles)
+        lines = budget_at(transmitter, station, geometry, asked, FADING_PCT)
         for column, values in _columns_of(lines, geometry).items():
             columns[column][mine] = values
         fading_esn0_db[:, mine] = lines.esn0_db[1:]
@@ -214,6 +214,6 @@ def _reason(policy: Policy, mine: slice, columns, trackable, allowed, options) -
         return f"power flux-density is above its limit throughout, by {excess_db:.1f} dB or more"
     best = mine.start + int(np.argmax(np.where(allowed[mine], options[0].margin_db[mine], -np.inf)))
     return (
-        f"link margin reaches {options[0].margin_db[best]:.1f} dB at {columns['elevation_deg'][best]:.0f} deg elevation,"
+        f"link margin reaches {options[0].margin_db[best]:.1f} dB at {columns['elevation_deg'][best]:.0f} deg,"
         f" {policy.link_margin_db:.1f} dB asked for"
     )

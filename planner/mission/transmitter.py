@@ -95,6 +95,7 @@ class Transmitter(Described):
     modcod_choice: Literal["fixed", "best for the pass", "variable"] = "fixed"
     hysteresis_db: NonNegative = 0.5
     shortest_dwell_s: NonNegative = 10.0
+    pilots: bool = Field(default=False, description="DVB-S2 pilot symbols are sent; other codes ignore it")
     implementation_loss_db: NonNegative = 1.0
     acquisition_s: NonNegative = 5.0
     modcod_change_s: NonNegative = 0.0
