@@ -80,7 +80,11 @@ def _row_faults(row: dict[str, str], mission: Mission) -> list[str]:
 
 
 def _unknown(key: str, value: str, known) -> str:
-    return "" if value in known else f"{key}: must be one of {shown(list(known))}, got {shown(value)}{nearest(value, known)}"
+    return (
+        ""
+        if value in known
+        else f"{key}: must be one of {shown(list(known))}, got {shown(value)}{nearest(value, known)}"
+    )
 
 
 def _utc(text: str) -> datetime:

@@ -125,7 +125,11 @@ def _spacecraft(reader: _Reader, raw: dict[str, Any], path: Path) -> Spacecraft 
 
 def _with_pattern(reader: _Reader, transmitter: Any) -> Any:
     antenna = transmitter.get("antenna") if isinstance(transmitter, dict) else None
-    if not isinstance(antenna, dict) or antenna.get("kind") != "measured pattern" or not isinstance(antenna.get("file"), str):
+    if (
+        not isinstance(antenna, dict)
+        or antenna.get("kind") != "measured pattern"
+        or not isinstance(antenna.get("file"), str)
+    ):
         return transmitter
     samples = reader.attempt(read_pattern, reader.path(antenna["file"])) or ()
     return transmitter | {"antenna": antenna | {"samples": samples}}
@@ -143,7 +147,11 @@ def _satellites(reader: _Reader, tables: MissionTables, shared: Spacecraft | Non
     satellites = []
     for name, elements in orbits.items():
         table = own.get(name, SatelliteTable(name=name))
-        spacecraft = shared if table.spacecraft is None else _spacecraft(reader, reader.tables(table.spacecraft), path.parent / table.spacecraft)
+        spacecraft = (
+            shared
+            if table.spacecraft is None
+            else _spacecraft(reader, reader.tables(table.spacecraft), path.parent / table.spacecraft)
+        )
         start_state = table.start_state or tables.start_state
         if start_state is None:
             reader.faults.append(f"{path}: start_state: is required, for {name}")
@@ -167,16 +175,22 @@ def _check_age(reader: _Reader, name: str, elements: Any, tables: MissionTables,
         )
 
 
-def _check_references(reader: _Reader, spacecraft: Spacecraft, start_state: StartState, policy: Policy, path: Path) -> None:
+def _check_references(
+    reader: _Reader, spacecraft: Spacecraft, start_state: StartState, policy: Policy, path: Path
+) -> None:
     """Names and figures that stand in one table and must fit another."""
     modes = [transmitter.mode for transmitter in spacecraft.transmitter]
     for name in policy.daily_contact_modes:
         if name not in modes:
-            reader.faults.append(f"{path}: policy.daily_contact_modes: must name modes of {modes}, got {name!r}{nearest(name, modes)}")
+            reader.faults.append(
+                f"{path}: policy.daily_contact_modes: must name modes of {modes}, got {name!r}{nearest(name, modes)}"
+            )
     for entry in policy.keep:
         mode = entry.partition(":")[2]
         if mode not in modes:
-            reader.faults.append(f"{path}: policy.keep: must be PASS:MODE with a mode of {modes}, got {entry!r}{nearest(mode, modes)}")
+            reader.faults.append(
+                f"{path}: policy.keep: must be PASS:MODE with a mode of {modes}, got {entry!r}{nearest(mode, modes)}"
+            )
     if start_state.stored_mbit > spacecraft.recorder.usable_mbit:
         reader.faults.append(
             f"{path}: start_state.stored_mbit: must fit the recorder's {spacecraft.recorder.usable_mbit:g} Mbit"
@@ -194,4 +208,6 @@ def _check_names(reader: _Reader, described: list, what: str, path: Path) -> Non
     for thing in filter(None, described):
         other = seen.setdefault(slug(thing.name), thing.name)
         if other is not thing.name:
-            reader.faults.append(f"{path}: {what}: names must differ in their letters and digits, got {other!r} and {thing.name!r}")
+            reader.faults.append(
+                f"{path}: {what}: names must differ in their letters and digits, got {other!r} and {thing.name!r}"
+            )

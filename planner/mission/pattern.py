@@ -15,10 +15,14 @@ def read_pattern(path: Path) -> tuple[tuple[float, float], ...]:
         try:
             angle_deg, gain_dbi = (float(row[column]) for column in COLUMNS)
         except ValueError:
-            faults.append(f"{path}: line {line}: off_axis_deg and gain_dbi must be numbers, got {row['off_axis_deg']!r} and {row['gain_dbi']!r}")
+            faults.append(
+                f"{path}: line {line}: off_axis_deg and gain_dbi must be numbers, got {row['off_axis_deg']!r} and {row['gain_dbi']!r}"
+            )
             continue
         if not 0 <= angle_deg <= 180 or not -200 <= gain_dbi <= 100:
-            faults.append(f"{path}: line {line}: must be 0..180 deg and -200..100 dBi, got {angle_deg:g} and {gain_dbi:g}")
+            faults.append(
+                f"{path}: line {line}: must be 0..180 deg and -200..100 dBi, got {angle_deg:g} and {gain_dbi:g}"
+            )
         elif rows and angle_deg <= rows[-1][0]:
             faults.append(f"{path}: line {line}: off_axis_deg must rise, got {angle_deg:g} after {rows[-1][0]:g}")
         else:

@@ -20,10 +20,14 @@ def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[st
     header, *rows = list(_rows(path, text)) or [(1, [])]
     columns = [column.strip() for column in header[1]]
     if len(columns) == 1 and ";" in columns[0]:
-        raise InputError(f"{path}: line {header[0]}: columns must be separated by commas, got semicolons; save as comma-separated CSV with decimal points")
+        raise InputError(
+            f"{path}: line {header[0]}: columns must be separated by commas, got semicolons; save as comma-separated CSV with decimal points"
+        )
     missing = [name for name in required if name not in columns]
     if missing:
-        raise InputError(*(f"{path}: line {header[0]}: column {name!r} is required{nearest(name, columns)}" for name in missing))
+        raise InputError(
+            *(f"{path}: line {header[0]}: column {name!r} is required{nearest(name, columns)}" for name in missing)
+        )
     if len(set(columns)) < len(columns):
         raise InputError(f"{path}: line {header[0]}: column names must differ, got {shown(columns)}")
     faults = [_width_fault(path, line, cells, columns) for line, cells in rows if len(cells) != len(columns)]

@@ -36,7 +36,9 @@ def read_text(path: Path) -> str:
     try:
         return read_bytes(path).decode("utf-8-sig")
     except UnicodeDecodeError as error:
-        raise InputError(f"{path}: must be UTF-8 text, byte {error.start} is {error.object[error.start]:#04x}") from None
+        raise InputError(
+            f"{path}: must be UTF-8 text, byte {error.start} is {error.object[error.start]:#04x}"
+        ) from None
 
 
 def read_toml(path: Path) -> dict[str, Any]:

@@ -89,7 +89,11 @@ class Programme:
 
 
 def solve(
-    programme: Programme, *, relative_gap: float, time_limit_s: float | None = None, cancelled: Callable[[], bool] = lambda: False
+    programme: Programme,
+    *,
+    relative_gap: float,
+    time_limit_s: float | None = None,
+    cancelled: Callable[[], bool] = lambda: False,
 ) -> Solution:
     """Solve one programme; see `solve_all`."""
     return solve_all([programme], relative_gap=relative_gap, time_limit_s=time_limit_s, cancelled=cancelled)[0]

@@ -1,0 +1,231 @@
+"""Every rule that a set of sessions must keep, checked on the times alone: the gate for a plan and the whole of an audit."""
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from itertools import pairwise
+
+import numpy as np
+
+from planner.mission.contacts import Session
+from planner.power.limits import Breach
+from planner.schedule.candidates import commands_until_s
+from planner.schedule.flown import Flown
+from planner.schedule.problem import DAY_S, HOUR_S
+
+# Times in files have milliseconds: what is closer than that is the same moment
+SAME_MOMENT_S = 2e-3
+
+
+@dataclass(frozen=True)
+class Fault:
+    """A rule that is broken: by which session (None: by the week), when, and by how much; `text` says it whole."""
+
+    rule: str
+    session: Session | None
+    time_s: float
+    value: float
+    bound: float
+    unit: str
+    text: str
+
+
+def find_faults(flown: Flown) -> list[Fault]:
+    """All faults, in order of time."""
+    faults = [*_single(flown), *_pairs(flown), *_policy(flown), *_battery(flown)]
+    return sorted(faults, key=lambda fault: fault.time_s)
+
+
+def _single(flown: Flown) -> Iterator[Fault]:
+    """What is wrong with a session on its own."""
+    for session in flown.sessions:
+        row = flown.week.row_of.get(session.pass_id)
+        if row is None:
+            text = f"no pass has the id {session.pass_id!r} in this span"
+            yield Fault("pass", session, session.tx_on_s, np.nan, np.nan, "", text)
+        elif (row, session.mode) not in flown.week.place_of or flown.week.sky.passes.station[row] != session.station:
+            text = f"pass {session.pass_id} is not one of {session.satellite} over {session.station}"
+            yield Fault("pass", session, session.tx_on_s, np.nan, np.nan, "", text)
+        else:
+            yield from _inside_pass(flown, session, row)
+            yield from _on_air(flown, session)
+
+
+def _inside_pass(flown: Flown, session: Session, row: int) -> Iterator[Fault]:
+    passes, iso = flown.week.sky.passes, flown.week.sky.clock.iso
+    aos_s, los_s = float(passes.aos_s[row]), float(passes.los_s[row])
+    if session.tx_on_s < aos_s - SAME_MOMENT_S:
+        early_s = aos_s - session.tx_on_s
+        text = f"tx_on_utc {iso(session.tx_on_s)} is {early_s:.1f} s before AOS {iso(aos_s)}"
+        yield Fault("inside the pass", session, session.tx_on_s, session.tx_on_s - aos_s, 0.0, "s", text)
+    if session.tx_off_s > los_s + SAME_MOMENT_S:
+        late_s = session.tx_off_s - los_s
+        text = f"tx_off_utc {iso(session.tx_off_s)} is {late_s:.1f} s after LOS {iso(los_s)}"
+        yield Fault("inside the pass", session, session.tx_off_s, late_s, 0.0, "s", text)
+
+
+def _on_air(flown: Flown, session: Session) -> Iterator[Fault]:
+    """Length, margin and opening hours of a session that lies on a known pass."""
+    policy = flown.week.mission.policy
+    if session.duration_s < policy.min_session_s - SAME_MOMENT_S:
+        text = f"{session.duration_s:.1f} s on air, the policy asks {policy.min_session_s:g} s"
+        yield Fault("shortest session", session, session.tx_on_s, session.duration_s, policy.min_session_s, "s", text)
+    profile = flown.coding[session]
+    if not _covered(profile.windows_s(), session):
+        lowest_db = profile.lowest_margin_db(session.tx_on_s, session.tx_off_s)
+        text = (
+            f"the link is not usable all through the transmission: lowest margin {lowest_db:.2f} dB, the policy asks"
+            f" {policy.link_margin_db:g} dB (or the mount is too slow, or flux above its enforced limit)"
+        )
+        yield Fault("link margin", session, session.tx_on_s, lowest_db, policy.link_margin_db, "dB", text)
+    if not _covered(flown.week.open_s[session.station], session):
+        text = f"{session.station} is closed during the transmission"
+        yield Fault("opening hours", session, session.tx_on_s, np.nan, np.nan, "", text)
+    yield from _commands(flown, session)
+
+
+def _covered(windows: list[tuple[float, float]], session: Session) -> bool:
+    return any(a - SAME_MOMENT_S <= session.tx_on_s and session.tx_off_s <= b + SAME_MOMENT_S for a, b in windows)
+
+
+def upload_contact(flown: Flown, session: Session) -> Session | None:
+    """The latest contact that could carry a session's commands up in time."""
+    policy = flown.week.mission.policy
+    found = [
+        other
+        for other in flown.of(session.satellite)
+        if flown.week.mission.satellite(other.satellite).spacecraft.mode(other.mode).uplink
+        and flown.week.mission.station(other.station).uplink
+        and other.tx_off_s <= session.tx_on_s - policy.upload_lead_h * HOUR_S
+        and other.tx_on_s >= session.tx_off_s - policy.upload_reach_h * HOUR_S
+    ]
+    return found[-1] if found else None
+
+
+def needs_upload(flown: Flown, session: Session) -> bool:
+    """Whether the session ends after what was commanded before the span."""
+    satellite = flown.week.mission.satellite(session.satellite)
+    return (
+        flown.week.mission.policy.upload_lead_h is not None
+        and session.tx_off_s > commands_until_s(flown.week, satellite) + SAME_MOMENT_S
+    )
+
+
+def _commands(flown: Flown, session: Session) -> Iterator[Fault]:
+    if needs_upload(flown, session) and upload_contact(flown, session) is None:
+        policy = flown.week.mission.policy
+        text = (
+            f"no contact with uplink between {policy.upload_reach_h:g} h and {policy.upload_lead_h:g} h before it can"
+            " carry its commands"
+        )
+        yield Fault("commands aboard", session, session.tx_on_s, np.nan, policy.upload_lead_h, "h", text)
+
+
+def _pairs(flown: Flown) -> Iterator[Fault]:
+    """Sessions too close to one another, on one satellite or on one station."""
+    mission = flown.week.mission
+    for name in [satellite.name for satellite in mission.satellites]:
+        own = flown.of(name)
+        for index, first in enumerate(own):
+            for second in own[index + 1 :]:
+                yield from _too_close(flown, first, second, f"satellite {name}")
+    for name in [station.name for station in mission.stations]:
+        own = [session for session in flown.sessions if session.station == name]
+        for first, second in pairwise(own):
+            if first.satellite != second.satellite:
+                yield from _too_close(flown, first, second, f"station {name}")
+
+
+def _too_close(flown: Flown, first: Session, second: Session, what: str) -> Iterator[Fault]:
+    craft = flown.week.mission.satellite(first.satellite).spacecraft
+    if first.pass_id == second.pass_id and first.mode != second.mode:
+        if second.mode in craft.mode(first.mode).together_with and first.mode in craft.mode(second.mode).together_with:
+            return
+    warmup_s = flown.week.mission.satellite(second.satellite).spacecraft.mode(second.mode).warmup_s
+    pause_s = second.tx_on_s - warmup_s - first.tx_off_s
+    least_s = flown.week.mission.policy.turnaround_s
+    if first.satellite == second.satellite:
+        least_s = max(least_s, _busy_s(flown, first, second) - warmup_s)
+    if pause_s < least_s - SAME_MOMENT_S:
+        text = (
+            f"{what}: {pause_s:.1f} s from tx_off of {first.pass_id} ({first.mode}) to power_on of {second.pass_id}"
+            f" ({second.mode}), {least_s:.1f} s needed"
+        )
+        yield Fault("turnaround", second, second.tx_on_s, pause_s, least_s, "s", text)
+
+
+def _busy_s(flown: Flown, first: Session, second: Session) -> float:
+    """How long one satellite is busy after the first's tx_off and before the second's tx_on."""
+    power = flown.week.powers[first.satellite]
+    before, after = power.session_draws([first, second])
+    return float(before.edges_s[-1] - first.tx_off_s + second.tx_on_s - after.edges_s[0])
+
+
+def _policy(flown: Flown) -> Iterator[Fault]:
+    """Rules that speak of the week's contacts together."""
+    mission, policy, iso = flown.week.mission, flown.week.mission.policy, flown.week.sky.clock.iso
+    midnight_s = flown.week.sky.clock.midnight_s(np.arange(int(np.ceil(mission.days)) + 2))
+    for satellite in mission.satellites:
+        own = flown.of(satellite.name)
+        for begin_s in midnight_s.tolist():
+            today = [s for s in own if begin_s <= s.tx_on_s < begin_s + DAY_S]
+            whole = begin_s >= 0 and begin_s + DAY_S <= mission.span_s
+            most = policy.max_sessions_per_day
+            if most is not None and len(today) > most:
+                text = f"{satellite.name}: {len(today)} sessions on {iso(begin_s)[:10]}, the policy allows {most}"
+                yield Fault("sessions a day", None, begin_s, len(today), most, "", text)
+            if whole and policy.daily_contact_modes and not any(s.mode in policy.daily_contact_modes for s in today):
+                modes = ", ".join(policy.daily_contact_modes)
+                text = f"{satellite.name}: no contact in {modes} on {iso(begin_s)[:10]}, the policy asks one a day"
+                yield Fault("daily contact", None, begin_s, 0, 1, "", text)
+        if policy.longest_gap_h is not None:
+            yield from _gaps(flown, satellite.name, own)
+    if policy.cost_budget is not None and (cost := cost_of(flown)) > policy.cost_budget + 1e-6:
+        text = f"station cost {cost:.2f} is above the budget {policy.cost_budget:g}"
+        yield Fault("station budget", None, mission.span_s, cost, policy.cost_budget, "", text)
+
+
+def _gaps(flown: Flown, satellite: str, own: tuple[Session, ...]) -> Iterator[Fault]:
+    longest_s, iso = flown.week.mission.policy.longest_gap_h * HOUR_S, flown.week.sky.clock.iso
+    ends = [0.0, *(s.tx_off_s for s in own)]
+    begins = [*(s.tx_on_s for s in own), flown.week.mission.span_s]
+    for end_s, begin_s in zip(ends, begins, strict=True):
+        if begin_s - end_s > longest_s + SAME_MOMENT_S:
+            gap_h = (begin_s - end_s) / HOUR_S
+            text = f"{satellite}: {gap_h:.2f} h without contact from {iso(end_s)}, the policy allows {longest_s / HOUR_S:g} h"
+            yield Fault("longest gap", None, end_s, gap_h, longest_s / HOUR_S, "h", text)
+
+
+def cost_of(flown: Flown) -> float:
+    """Station cost of all sessions."""
+    costs = [(flown.week.mission.station(s.station).cost, s) for s in flown.sessions]
+    return float(sum(cost.per_pass + cost.per_minute * s.duration_s / 60 for cost, s in costs))
+
+
+def _battery(flown: Flown) -> Iterator[Fault]:
+    """Limits of battery and bus at the pessimistic corner."""
+    for satellite, series in flown.worst.items():
+        for breach in series.breaches(flown.week.mission.policy):
+            yield Fault(
+                breach.limit,
+                session_at(flown, satellite, breach.time_s),
+                breach.time_s,
+                breach.value,
+                breach.bound,
+                breach.unit,
+                breach_text(flown, satellite, breach),
+            )
+
+
+def breach_text(flown: Flown, satellite: str, breach: Breach) -> str:
+    """A battery limit's breach as one sentence."""
+    size = f"{breach.value:.2f} {breach.unit} against the limit {breach.bound:.2f} {breach.unit}"
+    return f"{satellite}: {breach.limit}: {size} from {flown.week.sky.clock.iso(breach.time_s)}"
+
+
+def session_at(flown: Flown, satellite: str, time_s: float) -> Session | None:
+    """The session on air, warming up or cooling down at a moment."""
+    for session in flown.of(satellite):
+        transmitter = flown.week.mission.satellite(satellite).spacecraft.mode(session.mode)
+        if session.tx_on_s - transmitter.warmup_s - 1 <= time_s <= session.tx_off_s + transmitter.cooldown_s + 1:
+            return session
+    return None

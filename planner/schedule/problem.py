@@ -1,0 +1,105 @@
+"""The week as the optimiser sees it."""
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from itertools import groupby
+
+import numpy as np
+
+from planner.mission.contacts import Session
+from planner.mission.models import Policy
+from planner.mission.station import Station
+from planner.schedule.sessions import Candidate
+from planner.schedule.states import SatelliteStates
+
+HOUR_S, DAY_S = 3600.0, 86_400.0
+
+
+@dataclass(frozen=True)
+class Problem:
+    """Everything that constrains the choice.
+
+    keep : (pass_id, mode) that must fly;  frozen : sessions that must fly just as they are
+    midnight_s : the UTC midnights within the span [s]
+    commands_until_s : sessions that end before need no upload in the span, by satellite
+    """
+
+    candidates: tuple[Candidate, ...]
+    states: tuple[SatelliteStates, ...]
+    stations: dict[str, Station]
+    policy: Policy
+    span_s: float
+    midnight_s: np.ndarray
+    commands_until_s: dict[str, float]
+    keep: frozenset[tuple[str, str]] = frozenset()
+    frozen: tuple[Session, ...] = ()
+
+    def day_of(self, time_s: float) -> int:
+        """Which UTC day of the span (0 is the first, perhaps a short one)."""
+        return int(np.searchsorted(self.midnight_s, time_s, side="right"))
+
+    def days(self) -> list[tuple[float, float]]:
+        """(begin, end) of each UTC day of the span, the first and last perhaps cut."""
+        edges = np.unique(np.concatenate([[0.0], self.midnight_s, [self.span_s]]))
+        return list(zip(edges[:-1].tolist(), edges[1:].tolist(), strict=True))
+
+    def needs_upload(self, candidate: Candidate) -> bool:
+        return self.policy.upload_lead_h is not None and candidate.closes_s > self.commands_until_s[candidate.satellite]
+
+    def uploads_for(self, index: int) -> list[int]:
+        """Candidates whose contact could carry this one's commands, whatever start and stop are chosen."""
+        wanted, policy = self.candidates[index], self.policy
+        latest_s = wanted.opens_s - policy.upload_lead_h * HOUR_S
+        earliest_s = wanted.closes_s - policy.upload_reach_h * HOUR_S
+        return [
+            i
+            for i, c in enumerate(self.candidates)
+            if c.carries_commands
+            and c.satellite == wanted.satellite
+            and c.closes_s <= latest_s
+            and c.opens_s >= earliest_s
+        ]
+
+    def apart_s(self, first: Candidate, second: Candidate) -> float:
+        """Least time from `first`'s tx_off to `second`'s tx_on; -inf where the two may overlap."""
+        if first.satellite == second.satellite:
+            if first.row == second.row and _together(first, second):
+                return -np.inf
+            turn_s = self.policy.turnaround_s + second.transmitter.warmup_s
+            rest_s = first.transmitter.cooldown_s if first.mode == second.mode else 0.0
+            return max(turn_s, first.tail_s + second.lead_s, rest_s + second.transmitter.warmup_s)
+        if first.station == second.station:
+            return self.policy.turnaround_s + second.transmitter.warmup_s
+        return -np.inf
+
+    def neighbours(self) -> Iterator[tuple[int, int]]:
+        """Pairs of candidates, earlier window first, that could come too close to one another."""
+        order = sorted(range(len(self.candidates)), key=lambda i: (self.candidates[i].opens_s, i))
+        for position, i in enumerate(order):
+            first = self.candidates[i]
+            reach_s = first.closes_s + self._longest_apart_s
+            for j in order[position + 1 :]:
+                second = self.candidates[j]
+                if second.opens_s > reach_s:
+                    break
+                if second.opens_s < first.closes_s + self.apart_s(first, second):
+                    yield i, j
+
+    @property
+    def _longest_apart_s(self) -> float:
+        transmitters = {c.mode: c.transmitter for c in self.candidates}.values()
+        warmup_s = max((t.warmup_s for t in transmitters), default=0.0)
+        rest_s = max((max(t.cooldown_s, 0.0) for t in transmitters), default=0.0)
+        busy_s = max((c.lead_s for c in self.candidates), default=0.0) + max(
+            (c.tail_s for c in self.candidates), default=0.0
+        )
+        return max(self.policy.turnaround_s + warmup_s, rest_s + warmup_s, busy_s)
+
+    def of_pass_and_mode(self) -> list[list[int]]:
+        """Candidates that are ways of flying the same pass and mode: at most one of each is flown."""
+        key = lambda i: (self.candidates[i].pass_id, self.candidates[i].mode)  # noqa: E731
+        return [list(group) for _, group in groupby(sorted(range(len(self.candidates)), key=key), key=key)]
+
+
+def _together(a: Candidate, b: Candidate) -> bool:
+    return b.mode in a.transmitter.together_with and a.mode in b.transmitter.together_with

@@ -1,0 +1,41 @@
+"""What the programme knows about one satellite: stored energy and stored data without sessions, event by event."""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+
+@dataclass(frozen=True)
+class EnergyStates:
+    """Stored energy (the integral of open-circuit voltage over charge) at the corner that limits are held to.
+
+    gain_wh (n,) : what each interval between events adds without sessions, losses taken off, nothing spilled
+    """
+
+    start_wh: float
+    full_wh: float
+    floor_wh: float
+    end_wh: float
+    gain_wh: np.ndarray
+
+
+@dataclass(frozen=True)
+class SatelliteStates:
+    """Events (n + 1,), rising from 0 to the span's end, and what happens between them.
+
+    `likely` has the losses that the battery will have; `least` the smallest that physics allows, for the bound.
+    """
+
+    satellite: str
+    events_s: np.ndarray
+    likely: EnergyStates
+    least: EnergyStates
+    produced_mbit: np.ndarray
+    stored_mbit: float
+    room_mbit: float
+
+    def shares(self, opens_s: float, closes_s: float) -> list[tuple[int, float]]:
+        """(interval, share) of a window whose ends are events: where a session's cost and yield fall."""
+        first, last = np.searchsorted(self.events_s, [opens_s, closes_s])
+        lengths_s = np.diff(self.events_s[first : last + 1])
+        return [(int(first + i), float(length / lengths_s.sum())) for i, length in enumerate(lengths_s)]

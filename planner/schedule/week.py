@@ -1,0 +1,116 @@
+"""Everything to the left of the schedule, computed once: geometry, links, power, storage."""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from planner.data.recorder import Rates
+from planner.data.volume import Profile
+from planner.link.table import LinkTable, link_table
+from planner.mission.models import Mission, Satellite
+from planner.power.balance import SatellitePower
+from planner.schedule.hours import Windows, open_windows_s
+from planner.sky import Sky, observe
+
+SAMPLE_STEP_S = 5.0
+Progress = Callable[[str], None]
+
+
+@dataclass(frozen=True, eq=False)
+class Week:
+    """A mission and what follows from it without any session.
+
+    `links` by (satellite, mode), `powers` by satellite, `profiles` by (row of the pass, mode).
+    """
+
+    mission: Mission
+    sky: Sky
+    links: dict[tuple[str, str], LinkTable]
+    powers: dict[str, SatellitePower]
+
+    @cached_property
+    def row_of(self) -> dict[str, int]:
+        """Row of each pass id in `sky.passes`."""
+        return {pass_id: row for row, pass_id in enumerate(self.sky.passes.pass_id)}
+
+    @cached_property
+    def place_of(self) -> dict[tuple[int, str], tuple[LinkTable, int]]:
+        """(row of the pass, mode) -> its link table and its place there."""
+        return {
+            (int(row), mode): (table, place)
+            for (_, mode), table in self.links.items()
+            for place, row in enumerate(table.pass_rows)
+        }
+
+    @cached_property
+    def open_s(self) -> dict[str, Windows]:
+        """Open windows of each station."""
+        return {station.name: open_windows_s(self.mission, station) for station in self.mission.stations}
+
+    @cached_property
+    def produced(self) -> dict[str, list[Rates]]:
+        """What each satellite's payloads record."""
+        return {
+            satellite.name: _production(satellite, self.powers[satellite.name]) for satellite in self.mission.satellites
+        }
+
+    def profiles(self, row: int, mode: str) -> list[Profile]:
+        """The ways of coding `mode` on the pass of `row`."""
+        table, place = self.place_of[row, mode]
+        at = slice(table.offsets[place], table.offsets[place + 1])
+        transmitter = self.mission.satellite(table.satellite).spacecraft.mode(mode)
+        return [
+            Profile(
+                label=option.label,
+                names=table.names,
+                time_s=table.time_s[at],
+                usable=option.usable[at],
+                rate_mbps=option.rate_mbps[at],
+                expected_rate_mbps=option.expected_rate_mbps[at],
+                margin_db=option.margin_db[at],
+                modcod=option.modcod[at],
+                acquisition_s=transmitter.acquisition_s,
+                change_s=transmitter.modcod_change_s,
+            )
+            for option in table.options
+        ]
+
+    def along(self, row: int, mode: str, column: str, begin_s: float, end_s: float) -> np.ndarray:
+        """A column of the link table from `begin_s` to `end_s` of a pass, both ends interpolated."""
+        table, place = self.place_of[row, mode]
+        at = slice(table.offsets[place], table.offsets[place + 1])
+        time_s, values = table.time_s[at], getattr(table, column)[at]
+        inside = (time_s > begin_s) & (time_s < end_s)
+        return np.concatenate([np.interp([begin_s, end_s], time_s, values), values[inside]])
+
+
+def prepare(mission: Mission, *, progress: Progress = lambda stage: None) -> Week:
+    """Compute passes, links and power of a mission; `progress` hears the name of each stage as it begins."""
+    progress("passes")
+    sky = observe(mission, sample_step_s=SAMPLE_STEP_S)
+    links, powers = {}, {}
+    for satellite in mission.satellites:
+        progress(f"links of {satellite.name}")
+        for transmitter in satellite.spacecraft.transmitter:
+            links[satellite.name, transmitter.mode] = link_table(mission, sky, satellite.name, transmitter.mode)
+        progress(f"power of {satellite.name}")
+        powers[satellite.name] = SatellitePower(mission, sky, satellite.name)
+    return Week(mission, sky, links, powers)
+
+
+def _production(satellite: Satellite, power: SatellitePower) -> list[Rates]:
+    """Payloads record at their duty-cycled rate in sunlight, eclipse, windows, or always."""
+    idle = power.idle("nominal")
+    start = power.mission.start
+    rates = []
+    for source in satellite.spacecraft.recorder.source:
+        if source.when == "windows":
+            for begin, end in source.windows:
+                edges_s = np.array([(begin - start).total_seconds(), (end - start).total_seconds()])
+                rates.append((edges_s, np.array([source.rate_mbps * source.duty])))
+            continue
+        share = {"always": np.ones_like(idle.visible_sun), "sunlit": idle.visible_sun, "eclipse": 1 - idle.visible_sun}
+        rates.append((idle.edges_s, source.rate_mbps * source.duty * share[source.when]))
+    return rates
