@@ -1,13 +1,15 @@
 """Every limit of the battery and the bus, with the time and the size of each breach."""
 
 import itertools
-from typing import NamedTuple
+from typing import TYPE_CHECKING, NamedTuple
 
 import numpy as np
 
 from planner.mission.models import Policy
 from planner.power.life import count_cycles
-from planner.power.series import BatterySeries
+
+if TYPE_CHECKING:
+    from planner.power.series import BatterySeries
 
 # Excess smaller than this is the arithmetic's, not the battery's: some thousand times rounding
 RESOLUTION = 1e-6
@@ -23,7 +25,7 @@ class Breach(NamedTuple):
     unit: str
 
 
-def find_breaches(series: BatterySeries, policy: Policy) -> tuple[Breach, ...]:
+def find_breaches(series: "BatterySeries", policy: Policy) -> tuple[Breach, ...]:
     """All breaches of a simulated week in order of time; one for each unbroken stretch outside a limit."""
     found = [
         *_charge_breaches(series, policy),
@@ -45,7 +47,7 @@ def _stretches(limit: str, unit: str, time_s, value, bound: float, above: bool) 
     ]
 
 
-def _charge_breaches(series: BatterySeries, policy: Policy) -> list[Breach]:
+def _charge_breaches(series: "BatterySeries", policy: Policy) -> list[Breach]:
     time_s, soc_pct = series.time_s, series.soc_pct
     found = _stretches("SoC floor", "%", time_s, soc_pct, policy.soc_floor_pct, above=False)
     found += _stretches("end-of-span SoC", "%", time_s[-1:], soc_pct[-1:], policy.soc_end_pct, above=False)
@@ -59,7 +61,7 @@ def _charge_breaches(series: BatterySeries, policy: Policy) -> list[Breach]:
     return found
 
 
-def _cell_breaches(series: BatterySeries) -> list[Breach]:
+def _cell_breaches(series: "BatterySeries") -> list[Breach]:
     """Cell limits hold for the peaks that loads state too, not only for the mean of an interval."""
     battery, time_s = series.spacecraft.battery, series.time_s
     lowest_v, out_a = series.lowest_cell_v, -series.peak_cell_a
@@ -77,7 +79,7 @@ def _cell_breaches(series: BatterySeries) -> list[Breach]:
     return found
 
 
-def _bus_breaches(series: BatterySeries) -> list[Breach]:
+def _bus_breaches(series: "BatterySeries") -> list[Breach]:
     time_s, trip_a = series.time_s, series.spacecraft.battery.bus_trip_a
     found = []
     if trip_a is not None:
@@ -92,7 +94,7 @@ def _bus_breaches(series: BatterySeries) -> list[Breach]:
     return found
 
 
-def _session_breaches(series: BatterySeries) -> list[Breach]:
+def _session_breaches(series: "BatterySeries") -> list[Breach]:
     """Longest transmission; and a transmitter is not warmed up again before its cool-down is over."""
     found = []
     for transmitter in series.spacecraft.transmitter:

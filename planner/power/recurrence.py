@@ -57,12 +57,8 @@ def charge_course_c(cell: Cell, start_c: float, intervals: CellIntervals) -> np.
     segments = _segments(cell)
     knots_c = cell.charge_c.tolist()
     last = len(segments) - 1
-    efficiency, max_v, leak_a, half_leak_a = (
-        cell.coulombic_efficiency,
-        cell.limits.cell_max_v,
-        cell.leak_a,
-        cell.leak_a / 2,
-    )
+    efficiency, max_v, leak_a = cell.coulombic_efficiency, cell.limits.cell_max_v, cell.leak_a
+    half_leak_a = leak_a / 2
     charge_c = start_c
     low_c, high_c, start_v, slope_v_c, start_ohm, slope_ohm_c, _ = segments[
         min(bisect_right(knots_c, charge_c) - 1, last)

@@ -8,7 +8,8 @@ import numpy as np
 from planner.mission.contacts import Session
 from planner.mission.models import Policy, Spacecraft
 from planner.power.corners import Corner
-from planner.power.profile import Intervals
+from planner.power.intervals import Intervals
+from planner.power.limits import Breach, find_breaches
 from planner.power.recurrence import CellIntervals, charge_course_c
 
 JOULE_PER_WH = 3600.0
@@ -220,10 +221,8 @@ class BatterySeries:
         rise = np.array([self.soc_at_pct(begin_s), self.soc_pct[k]])
         return float(np.interp(soc_pct, rise, [begin_s, self.time_s[k]]))
 
-    def breaches(self, policy: Policy):
-        """Every limit that breaks, as `planner.power.limits.Breach`, in order of time."""
-        from planner.power.limits import find_breaches
-
+    def breaches(self, policy: Policy) -> tuple[Breach, ...]:
+        """Every limit that breaks, in order of time."""
         return find_breaches(self, policy)
 
 
