@@ -12,6 +12,8 @@ SOLAR_ABSORPTIVITY = 0.92
 EMISSIVITY = 0.85
 # Earth's mean thermal radiation 237 W/m2 (from memory), taken as falling on one face of a panel with view factor 0.7
 EARTH_HEAT_W_M2 = 0.7 * 237.0
+# Sunlight that the Earth reflects to that face: albedo 0.3, the same view factor, half for the mean over the day side
+REFLECTED_SHARE = 0.3 * 0.7 * 0.5
 
 
 def turned(vector, axis, angle_deg: float):
@@ -47,12 +49,14 @@ def panel_temperature_c(panel: Panel, absorbed_flux_w_m2):
     """Temperature of a panel that takes in `absorbed_flux_w_m2` of sunlight, flux times cosine times lit share [W/m2].
 
     Source: radiative balance of a plate with two radiating faces; what the cells turn into electricity does not heat.
-    Neglected: reflected sunlight, and the minute or two a panel takes to warm after eclipse (it then gives more, so
-    the neglect is on the safe side). A panel on the body runs hotter than this: give it `temperature_sunlit_c`.
+    Sunlight reflected by the Earth is taken in proportion to the panel's own. Neglected: the minute or two a panel takes
+    to warm after eclipse (it then gives more, so the neglect is on the safe side), and the side of a panel on the body
+    that cannot radiate: it runs hotter than this, give it `temperature_sunlit_c`.
     """
     if panel.temperature_sunlit_c is not None:
         return np.full_like(absorbed_flux_w_m2, panel.temperature_sunlit_c)
-    heat_w_m2 = max(SOLAR_ABSORPTIVITY - panel.efficiency, 0.0) * absorbed_flux_w_m2 + EMISSIVITY * EARTH_HEAT_W_M2
+    kept_share = max(SOLAR_ABSORPTIVITY - panel.efficiency, 0.0) + SOLAR_ABSORPTIVITY * REFLECTED_SHARE
+    heat_w_m2 = kept_share * absorbed_flux_w_m2 + EMISSIVITY * EARTH_HEAT_W_M2
     return (heat_w_m2 / (2 * EMISSIVITY * STEFAN_BOLTZMANN_W_M2_K4)) ** 0.25 - KELVIN_AT_0_C
 
 
