@@ -1,0 +1,357 @@
+"""A set is old or new, never a mixture, whatever happens at whatever instant."""
+
+import errno
+import itertools
+import json
+import os
+import random
+import subprocess
+import sys
+import time
+
+import pytest
+
+from planner.errors import InputError, MachineError
+from planner.export import folder as rooms
+from planner.export.folder import claim_folder, file_name, json_bytes, verify_set, write_set
+
+OLD = {"contacts.csv": b"old contacts\n", "passes.csv": b"the same\n", "gone.csv": b"only in the old set\n"}
+NEW = {"contacts.csv": b"new contacts\n", "passes.csv": b"the same\n", "added.csv": b"only in the new set\n"}
+WORKING_NAMES = {".lock", ".coming", ".keeping", ".kept", ".done"}
+
+
+def contents(folder):
+    return {path.name: path.read_bytes() for path in folder.iterdir() if path.name not in WORKING_NAMES}
+
+
+def visible(folder):
+    return {name for name in os.listdir(folder) if name not in WORKING_NAMES}
+
+
+@pytest.fixture
+def whole(tmp_path):
+    """A folder that holds the old set, and a file of the user's own."""
+    write_set(tmp_path / "week", OLD, {"volume_mbit": 1.0})
+    (tmp_path / "week" / "notes.txt").write_text("mine")
+    return tmp_path / "week"
+
+
+def is_exactly(folder, files, volume_mbit):
+    found = contents(folder)
+    index = json.loads(found.pop("summary.json"))
+    found.pop("run_log.json", None)
+    assert found.pop("notes.txt") == b"mine"
+    return found == files and index["volume_mbit"] == volume_mbit and not verify_set(folder)
+
+
+def is_old(folder):
+    return is_exactly(folder, OLD, 1.0)
+
+
+def is_new(folder):
+    return is_exactly(folder, NEW, 2.0)
+
+
+def test_a_set_is_written_with_its_hashes_last_and_nothing_else_is_left(whole):
+    assert is_old(whole)
+    assert list(json.loads((whole / "summary.json").read_bytes())) == ["volume_mbit", "files"]
+    assert set(os.listdir(whole)) == {*OLD, "summary.json", "notes.txt"}
+
+
+def test_a_new_set_takes_the_place_of_the_old_and_spares_what_is_not_ours(whole):
+    assert write_set(whole, NEW, {"volume_mbit": 2.0}, run_log={"seconds": 1.5}) == ()
+    assert is_new(whole)
+    assert set(os.listdir(whole)) == {*NEW, "summary.json", "run_log.json", "notes.txt"}
+
+
+def test_the_same_set_twice_gives_the_same_bytes_but_for_the_run_log(tmp_path):
+    for seconds in (1.0, 2.0):
+        write_set(tmp_path / str(seconds), NEW, {"volume_mbit": 2.0}, run_log={"seconds": seconds})
+    first, second = contents(tmp_path / "1.0"), contents(tmp_path / "2.0")
+    assert {name for name in first if first[name] != second[name]} == {"run_log.json"}
+
+
+def test_a_second_kind_of_set_shares_the_folder_without_harm(whole):
+    write_set(whole, {"pointing_1.csv": b"az\n"}, {}, index="pointing.json")
+    assert not verify_set(whole) and not verify_set(whole, "pointing.json")
+    assert (whole / "contacts.csv").read_bytes() == OLD["contacts.csv"]
+
+
+@pytest.mark.parametrize(
+    ("spoil", "told"),
+    [
+        (lambda week: (week / "contacts.csv").write_bytes(b"edited"), "contacts.csv: differs from the hash in the index"),
+        (lambda week: (week / "gone.csv").unlink(), "gone.csv: is missing"),
+        (lambda week: (week / "summary.json").unlink(), "summary.json: cannot be read: No such file or directory"),
+        (lambda week: (week / "summary.json").write_bytes(b"{"), "summary.json: files must be a table of file names"),
+        (lambda week: (week / "summary.json").write_text('{"files": {"../x": "00"}}'), "files must be a table of file names"),
+    ],
+)  # fmt: skip
+def test_a_set_that_is_not_whole_says_where(whole, spoil, told):
+    spoil(whole)
+    [fault] = verify_set(whole)
+    assert told in fault
+
+
+# --- dying at any instant -------------------------------------------------------------------------------------------
+
+STEPS = ("mkdir", "open", "link", "fsync", "replace", "rename", "unlink", "rmdir", "ftruncate")
+
+
+def dies_at_step(folder, files, volume_mbit, step, claim_only=False):
+    """A child process writes the set and ends, without any clean-up, before its `step`-th call of the system."""
+    child = os.fork()
+    if child == 0:
+        count = itertools.count()
+
+        def deadly(call):
+            def wrapper(*args, **options):
+                if next(count) == step:
+                    os._exit(9)
+                return call(*args, **options)
+
+            return wrapper
+
+        try:
+            for name in STEPS:
+                setattr(rooms.os, name, deadly(getattr(os, name)))
+            with claim_folder(folder) as claimed:
+                if not claim_only:
+                    claimed.write(files, {"volume_mbit": volume_mbit}, run_log={})
+        finally:
+            os._exit(0)
+    return os.waitstatus_to_exitcode(os.waitpid(child, 0)[1]) == 9
+
+
+def test_death_before_every_single_system_call_leaves_the_old_or_the_new_set(whole):
+    told, outcomes = set(), []
+    for step in itertools.count():
+        died = dies_at_step(whole, NEW, 2.0, step)
+        assert verify_set(whole) or is_old(whole) or contents(whole).items() >= NEW.items()
+        with claim_folder(whole) as claimed:
+            told.update(line.split(": ", 1)[1].split(";")[0] for line in claimed.mended)
+        assert is_old(whole) or is_new(whole)
+        outcomes.append(is_new(whole))
+        assert not WORKING_NAMES & set(os.listdir(whole))
+        write_set(whole, OLD, {"volume_mbit": 1.0})
+        if not died:
+            break
+    assert step > 40  # the whole course was walked through
+    assert outcomes == sorted(outcomes)  # old up to one instant, new from there on
+    assert told == {
+        "an earlier run was interrupted before it replaced anything",
+        "an earlier run was interrupted while it replaced the set",
+        "an earlier run ended just after it replaced the set",
+    }
+
+
+def test_death_while_mending_is_mended_too(whole):
+    def mend():
+        with claim_folder(whole):
+            pass
+
+    midway = 0
+    while dies_at_step(whole, NEW, 2.0, midway) and not verify_set(whole):
+        mend()
+        midway += 1
+    mixture = contents(whole)
+    for step in itertools.count():
+        died = dies_at_step(whole, NEW, 2.0, step, claim_only=True)
+        mend()
+        assert is_old(whole)
+        if not died:
+            break
+        assert dies_at_step(whole, NEW, 2.0, midway)
+        assert contents(whole) == mixture
+    assert step > 5
+
+
+WRITER = """
+import sys
+from planner.export.folder import write_set
+print("ready", flush=True)
+for round in range(1_000_000):
+    marker = b"%d" % round
+    write_set(sys.argv[1], {f"{name}.csv": marker * 2000 for name in "abcd"}, {"round": round}, run_log={"round": round})
+"""
+
+
+def test_kill_9_at_fifty_random_moments_never_leaves_a_mixture(tmp_path):
+    rng = random.Random(2026)
+    rounds = []
+    for _ in range(50):
+        writer = subprocess.Popen([sys.executable, "-c", WRITER, str(tmp_path)], stdout=subprocess.PIPE)
+        assert writer.stdout.readline() == b"ready\n"
+        time.sleep(rng.uniform(0.0, 0.03))
+        writer.kill()
+        writer.communicate()
+        with claim_folder(tmp_path):
+            pass
+        if not visible(tmp_path):
+            continue  # killed before the first set was in place
+        assert verify_set(tmp_path) == ()
+        round_now = json.loads((tmp_path / "summary.json").read_bytes())["round"]
+        assert {(tmp_path / f"{name}.csv").read_bytes() for name in "abcd"} == {b"%d" % round_now * 2000}
+        rounds.append(round_now)
+    assert len(rounds) > 25
+
+
+# --- what the machine refuses ---------------------------------------------------------------------------------------
+
+FULL, READ_ONLY = (errno.ENOSPC, "the disk is full"), (errno.EROFS, "the file system is read-only")
+FORBIDDEN = (errno.EACCES, "no permission to write here")
+
+
+def refuse(monkeypatch, call, number, at):
+    """The `at`-th use of a system call fails, the others work."""
+    real, count = getattr(os, call), itertools.count()
+
+    def refusing(*args, **options):
+        if next(count) == at:
+            raise OSError(number, os.strerror(number))
+        return real(*args, **options)
+
+    monkeypatch.setattr(rooms.os, call, refusing)
+
+
+@pytest.mark.parametrize(
+    ("call", "fault", "at"),
+    [("fsync", FULL, at) for at in range(6)]
+    + [("replace", READ_ONLY, at) for at in range(4)]
+    + [("mkdir", READ_ONLY, 0), ("mkdir", FULL, 1), ("rename", FORBIDDEN, 0)],
+)
+def test_what_the_disk_refuses_is_told_and_the_old_set_is_kept(whole, monkeypatch, call, fault, at):
+    with claim_folder(whole) as claimed:
+        refuse(monkeypatch, call, fault[0], at)
+        with pytest.raises(MachineError) as told:
+            claimed.write(NEW, {"volume_mbit": 2.0})
+    assert str(told.value) == f"{whole}: {fault[1]}; the set that was there is kept"
+    assert is_old(whole)
+    assert not WORKING_NAMES & set(os.listdir(whole))
+
+
+@pytest.mark.parametrize("fault", [READ_ONLY, FORBIDDEN])
+def test_a_folder_that_takes_no_file_is_told_at_once(whole, monkeypatch, fault):
+    refuse(monkeypatch, "open", fault[0], 0)  # the lock
+    with pytest.raises(MachineError) as told, claim_folder(whole):
+        pass
+    assert str(told.value) == f"{whole}: {fault[1]}; nothing was written"
+    assert is_old(whole)
+
+
+def test_a_file_system_without_hard_links_keeps_copies(whole, monkeypatch):
+    def no_links(*args, **options):
+        raise OSError(errno.EPERM, "Operation not permitted")
+
+    monkeypatch.setattr(rooms.os, "link", no_links)
+    refuse(monkeypatch, "replace", errno.ENOSPC, 1)
+    with pytest.raises(MachineError):
+        write_set(whole, NEW, {"volume_mbit": 2.0})
+    assert is_old(whole)
+
+
+def test_what_cannot_be_tidied_up_is_no_failure(whole, monkeypatch):
+    refuse(monkeypatch, "rename", errno.EROFS, 1)
+    write_set(whole, NEW, {"volume_mbit": 2.0})
+    assert is_new(whole)
+    with claim_folder(whole) as claimed:
+        [told] = claimed.mended
+    assert told.endswith("an earlier run ended just after it replaced the set; the new set is whole and in place")
+
+
+def test_ctrl_c_between_two_replacements_puts_the_old_set_back(whole, monkeypatch):
+    real, count = os.replace, itertools.count()
+
+    def interrupted(*args):
+        if next(count) == 2:
+            raise KeyboardInterrupt
+        real(*args)
+
+    monkeypatch.setattr(rooms.os, "replace", interrupted)
+    with pytest.raises(KeyboardInterrupt):
+        write_set(whole, NEW, {"volume_mbit": 2.0})
+    assert is_old(whole)
+
+
+# --- two runs, links, names -----------------------------------------------------------------------------------------
+
+
+def test_a_second_claim_is_refused_with_the_holder_and_the_first_goes_on(whole):
+    with claim_folder(whole) as claimed:
+        with pytest.raises(MachineError) as told, claim_folder(whole):
+            pass
+        other = subprocess.run([sys.executable, "-c", WRITER, str(whole)], capture_output=True, text=True)
+        claimed.write(NEW, {"volume_mbit": 2.0})
+    refusal = f"{whole}: another run (process {os.getpid()}) is writing here; wait for it or choose another folder"
+    assert str(told.value) == refusal
+    assert refusal in other.stderr
+    assert is_new(whole)
+
+
+def test_the_lock_of_a_dead_process_holds_nobody_off(whole):
+    (whole / ".lock").write_text("999999\n")
+    assert write_set(whole, NEW, {"volume_mbit": 2.0}) == ()
+    assert is_new(whole)
+
+
+def test_links_are_not_followed(whole, tmp_path):
+    precious = tmp_path / "precious.txt"
+    precious.write_text("precious")
+    (whole / "contacts.csv").unlink()
+    (whole / "contacts.csv").symlink_to(precious)
+    with pytest.raises(InputError, match="contacts.csv: stands where a file is to be written and is not a plain file"):
+        write_set(whole, NEW, {})
+    (tmp_path / "linked").symlink_to(whole)
+    with pytest.raises(InputError, match=r"linked: must be a folder of its own \(links are not followed for output\)"):
+        write_set(tmp_path / "linked", NEW, {})
+    (whole / ".coming").symlink_to(tmp_path)
+    with claim_folder(whole):
+        pass
+    assert precious.read_text() == "precious"
+    assert "contacts.csv: cannot be read: Too many levels of symbolic links" in verify_set(whole)[0]
+
+
+def test_a_file_where_the_folder_should_be_is_refused(tmp_path):
+    (tmp_path / "week").write_text("a file")
+    with pytest.raises(InputError, match="week: must be a folder of its own"):
+        write_set(tmp_path / "week", NEW, {})
+
+
+def test_a_run_that_writes_nothing_leaves_no_folder(tmp_path):
+    with claim_folder(tmp_path / "week"):
+        assert (tmp_path / "week").is_dir()
+    assert not (tmp_path / "week").exists()
+
+
+@pytest.mark.parametrize("name", ["../x.csv", "/x.csv", ".hidden", "a/b", "line\nbreak", ""])
+def test_names_that_are_not_plain_never_reach_the_disk(tmp_path, name):
+    with pytest.raises(ValueError, match="a set holds plain visible file names"):
+        write_set(tmp_path, {name: b""}, {})
+
+
+def test_an_index_that_names_files_outside_harms_nothing(whole):
+    outside = whole.parent / "outside.txt"
+    outside.write_text("stays")
+    (whole / "summary.json").write_text('{"files": {"../outside.txt": "00", "gone.csv": "00"}}')
+    write_set(whole, NEW, {"volume_mbit": 2.0})
+    assert outside.read_text() == "stays"
+    assert is_new(whole)
+
+
+def test_a_journal_that_is_not_ours_stops_the_run(whole):
+    (whole / ".kept").mkdir()
+    (whole / ".kept" / ".journal").write_text('{"index": "../x", "sha256": "", "old": [], "new": []}')
+    with pytest.raises(MachineError, match="is not what this tool writes; save what you need"):
+        write_set(whole, NEW, {})
+
+
+def test_json_refuses_what_json_has_no_word_for():
+    assert json_bytes({"soc_min_pct": 61.25, "note": "Ø"}) == '{\n  "soc_min_pct": 61.25,\n  "note": "Ø"\n}\n'.encode()
+    with pytest.raises(ValueError, match="Out of range float values are not JSON compliant"):
+        json_bytes({"soc_min_pct": float("nan")})
+
+
+def test_file_names_out_of_any_text():
+    assert file_name("Corrie Head") == "corrie_head"
+    assert file_name("../../etc/passwd\n") == "etc_passwd"
+    assert file_name("🛰") == "unnamed"
