@@ -16,7 +16,7 @@ from planner.link.flux import flux_density_dbw_m2, flux_limit, share_in_bandwidt
 from planner.link.geometry import Geometry, free_space_loss_db
 from planner.link.names import told_at
 from planner.link.polarisation import polarisation_loss_db
-from planner.mission.station import Receiver, Station
+from planner.mission.station import Station
 from planner.mission.transmitter import Transmitter
 from planner.sky.samples import doppler_hz
 from planner.units import BOLTZMANN_DBW_K_HZ, decibel_of_power
@@ -60,12 +60,9 @@ def cannot_hear(transmitter: Transmitter, station: Station) -> str:
     """Why the station cannot receive the mode at all; empty where it can."""
     if station.receiver_for(transmitter.band) is None:
         return f"station does not hear {transmitter.band} band"
-    dish = station.antenna
-    loss = polarisation_loss_db(
-        transmitter.polarisation, transmitter.axial_ratio_db, dish.polarisations, dish.axial_ratio_db
-    )
-    if loss is None:
-        return f"station receives {' and '.join(dish.polarisations)}, the mode sends {transmitter.polarisation}"
+    if _mismatch_db(transmitter, station) is None:
+        heard = " and ".join(station.antenna.polarisations)
+        return f"station receives {heard}, the mode sends {transmitter.polarisation}"
     return ""
 
 
@@ -90,56 +87,28 @@ def budget_lines(
     """
     if reason := cannot_hear(transmitter, station):
         raise InputError(reason)
-    receiver: Receiver = station.receiver_for(transmitter.band)
-    frequency_hz = transmitter.frequency_mhz * 1e6
-
-    rf_power_dbw = float(decibel_of_power(transmitter.rf_power_w))
-    transmit_gain_dbi = antenna.gain_dbi(transmitter.antenna, geometry.off_axis_deg, frequency_hz)
-    eirp_dbw = rf_power_dbw - transmitter.line_loss_db + transmit_gain_dbi
-    transmit_pointing_db = antenna.pointing_loss_db(
-        transmitter.antenna, geometry.off_axis_deg, transmitter.pointing_error_deg, frequency_hz
+    sent = _space_end(transmitter, geometry)
+    heard = _ground_end(transmitter, station, geometry, attenuation, clear_zenith_gas_db)
+    polarisation_db = _mismatch_db(transmitter, station)
+    free_space_db = free_space_loss_db(geometry.slant_range_km, transmitter.frequency_mhz * 1e6)
+    losses_db = (
+        sent["transmit_pointing_loss_db"]
+        + polarisation_db
+        + free_space_db
+        + attenuation.total_db
+        + heard["receive_pointing_loss_db"]
     )
-    polarisation_db = polarisation_loss_db(
-        transmitter.polarisation,
-        transmitter.axial_ratio_db,
-        station.antenna.polarisations,
-        station.antenna.axial_ratio_db,
-    )
-    free_space_db = free_space_loss_db(geometry.slant_range_km, frequency_hz)
-
-    dish = antenna.ground_dish(station.antenna)
-    receive_gain_dbi = antenna.peak_gain_dbi(dish, frequency_hz)
-    dish_error_deg = np.hypot(station.antenna.pointing_error_deg, geometry.element_error_deg)
-    receive_pointing_db = antenna.pointing_loss_db(dish, 0.0, dish_error_deg, frequency_hz)
-
-    background_k = noise.COSMIC_K + noise.galactic_k(frequency_hz)
-    sky_k = noise.sky_temperature_k(attenuation.absorbed_db, background_k)
-    clear_k = noise.sky_temperature_k(clear_zenith_gas_db, background_k)
-    sun_k = noise.sun_temperature_k(station.antenna, frequency_hz, geometry.sun_separation_deg, attenuation.absorbed_db)
-    system_k = noise.system_temperature_k(station.antenna, receiver, frequency_hz, sky_k, clear_k, sun_k)
-    gt_dbk = noise.figure_of_merit_dbk(receive_gain_dbi, system_k)
-
-    losses_db = transmit_pointing_db + polarisation_db + free_space_db + attenuation.total_db + receive_pointing_db
-    cn0_dbhz = carrier_to_noise_density_dbhz(eirp_dbw, losses_db, gt_dbk)
+    cn0_dbhz = carrier_to_noise_density_dbhz(sent["eirp_dbw"], losses_db, heard["gt_dbk"])
     return Lines(
-        rf_power_dbw=rf_power_dbw,
-        line_loss_db=transmitter.line_loss_db,
-        transmit_gain_dbi=transmit_gain_dbi,
-        eirp_dbw=eirp_dbw,
-        transmit_pointing_loss_db=transmit_pointing_db,
         polarisation_loss_db=polarisation_db,
         free_space_loss_db=free_space_db,
         attenuation=attenuation,
-        receive_gain_dbi=receive_gain_dbi,
-        receive_pointing_loss_db=receive_pointing_db,
-        sky_temperature_k=sky_k,
-        sun_temperature_k=sun_k,
-        system_temperature_k=system_k,
-        gt_dbk=gt_dbk,
         cn0_dbhz=cn0_dbhz,
         esn0_db=esn0_db_of(cn0_dbhz, transmitter.symbol_rate_mbaud),
         doppler_khz=doppler_hz(geometry.range_rate_km_s, transmitter.frequency_mhz) / 1e3,
-        **_flux_lines(transmitter, eirp_dbw, geometry),
+        **sent,
+        **heard,
+        **_flux(transmitter, sent["eirp_dbw"], geometry),
     )
 
 
@@ -167,7 +136,57 @@ def asked_unavailability_pct(availability_pct: float) -> float:
     return round(100 - availability_pct, 9)
 
 
-def _flux_lines(transmitter: Transmitter, eirp_dbw, geometry: Geometry) -> dict:
+def _mismatch_db(transmitter: Transmitter, station: Station) -> float | None:
+    dish = station.antenna
+    return polarisation_loss_db(
+        transmitter.polarisation, transmitter.axial_ratio_db, dish.polarisations, dish.axial_ratio_db
+    )
+
+
+def _space_end(transmitter: Transmitter, geometry: Geometry) -> dict:
+    """Power, gain at the attitude law's angle, EIRP, and the loss by the pointing error on top of that angle."""
+    aim = transmitter.antenna, geometry.off_axis_deg
+    frequency_hz = transmitter.frequency_mhz * 1e6
+    rf_power_dbw = float(decibel_of_power(transmitter.rf_power_w))
+    gain_dbi = antenna.gain_dbi(*aim, frequency_hz)
+    return {
+        "rf_power_dbw": rf_power_dbw,
+        "line_loss_db": transmitter.line_loss_db,
+        "transmit_gain_dbi": gain_dbi,
+        "eirp_dbw": rf_power_dbw - transmitter.line_loss_db + gain_dbi,
+        "transmit_pointing_loss_db": antenna.pointing_loss_db(*aim, transmitter.pointing_error_deg, frequency_hz),
+    }
+
+
+def _ground_end(transmitter, station, geometry: Geometry, attenuation: Attenuation, clear_zenith_gas_db) -> dict:
+    """Gain, pointing loss by the mount's error and the elements' age (square to each other), noise and G/T."""
+    frequency_hz = transmitter.frequency_mhz * 1e6
+    dish = antenna.ground_dish(station.antenna)
+    gain_dbi = antenna.peak_gain_dbi(dish, frequency_hz)
+    error_deg = np.hypot(station.antenna.pointing_error_deg, geometry.element_error_deg)
+    background_k = noise.COSMIC_K + noise.galactic_k(frequency_hz)
+    absorbed_db = attenuation.absorbed_db
+    sky_k = noise.sky_temperature_k(absorbed_db, background_k)
+    sun_k = noise.sun_temperature_k(station.antenna, frequency_hz, geometry.sun_separation_deg, absorbed_db)
+    system_k = noise.system_temperature_k(
+        station.antenna,
+        station.receiver_for(transmitter.band),
+        frequency_hz,
+        sky_k,
+        noise.sky_temperature_k(clear_zenith_gas_db, background_k),
+        sun_k,
+    )
+    return {
+        "receive_gain_dbi": gain_dbi,
+        "receive_pointing_loss_db": antenna.pointing_loss_db(dish, 0.0, error_deg, frequency_hz),
+        "sky_temperature_k": sky_k,
+        "sun_temperature_k": sun_k,
+        "system_temperature_k": system_k,
+        "gt_dbk": noise.figure_of_merit_dbk(gain_dbi, system_k),
+    }
+
+
+def _flux(transmitter: Transmitter, eirp_dbw, geometry: Geometry) -> dict:
     """Flux density on a clear path, its limit (infinite where the table has no row) and the reference bandwidth."""
     limit = flux_limit(transmitter.frequency_mhz)
     share = share_in_bandwidth(limit.bandwidth_hz, transmitter.symbol_rate_mbaud * 1e6, transmitter.roll_off)

@@ -56,7 +56,7 @@ def sampled_geometry(
     states = samples.position_km[index], samples.velocity_km_s[index]
     station_km = station_position_km(station)
     law = session_law(satellite, transmitter)
-    axes = body_axes(_steady(law, transmitter), *states, sun_position_km(sky.clock, samples.time_s[index]), station_km)
+    axes = body_axes(steady(law, transmitter), *states, sun_position_km(sky.clock, samples.time_s[index]), station_km)
     return Geometry(
         elevation_deg=np.clip(samples.elevation_deg[index], 0.0, 90.0),
         slant_range_km=samples.range_km[index],
@@ -76,7 +76,7 @@ def circular_geometry(
     does not turn; the Sun is out of the beam. Where the attitude depends on the Sun no elevation can tell the angle
     off the antenna's axis: InputError.
     """
-    law = _steady(session_law(satellite, transmitter), transmitter)
+    law = steady(session_law(satellite, transmitter), transmitter)
     parallel = np.linalg.norm(np.cross(unit_vector(law.axis), unit_vector(transmitter.boresight))) < 1e-6
     if law.law == "sun" or (law.second_target == "sun" and law.law not in ("station", "tumbling") and not parallel):
         raise InputError(
@@ -115,7 +115,7 @@ def circular_slant_range_km(elevation_deg, orbit_radius_km: float, station_radiu
     return np.sqrt(orbit_radius_km**2 - station_radius_km**2 + foot_km**2) - foot_km
 
 
-def _steady(law: Law, transmitter: Transmitter) -> Law:
+def steady(law: Law, transmitter: Transmitter) -> Law:
     """The law, if the antenna can live with it."""
     if law.law == "tumbling" and not isinstance(transmitter.antenna, Isotropic):
         raise InputError(
