@@ -127,13 +127,13 @@ class SatellitePower:
         idle_w = self._idle_panels_w[interval_of(self._sunshine.edges_s, course.middle_s)]
         turned = course.turned_share[:, None]
         law = self.idle(corner).attitudes.index(course.law)
+        transmitter = craft.mode(course.session.mode)
         return Overlay(
             edges_s=course.edges_s,
-            draw=session_draw(
-                craft, craft.mode(course.session.mode), course, assumed.load_factor, assumed.transmitter_factor
-            ),
+            draw=session_draw(craft, transmitter, course, assumed.load_factor, assumed.transmitter_factor),
             array_w=bus_power_w((1 - turned) * idle_w + turned * course.panels_w, assumed.panel_factor, craft.array),
             attitude=np.select([course.slewing, course.turned_share > 0], [1, law], 0),
+            turns=(transmitter.session_law or craft.pointing.session) != craft.pointing.idle,
         )
 
     @cached_property

@@ -62,18 +62,22 @@ def interval_of(edges_s, time_s):
 
 @dataclass(frozen=True)
 class Overlay:
-    """What one session changes between its own `edges_s` (n + 1,): its loads add, the rest replaces."""
+    """What one session changes between its own `edges_s` (n + 1,): its loads add, the rest replaces.
+
+    A session that flies in the idle attitude `turns` nothing: it leaves attitude to whichever session asks for one.
+    """
 
     edges_s: np.ndarray
     draw: Draw
     array_w: np.ndarray
     attitude: np.ndarray
+    turns: bool = True
 
 
 def lay_over(idle: Intervals, overlays: list[Overlay]) -> Intervals:
     """The idle week with sessions laid over it, which come in order of time.
 
-    Where two overlap their loads add, and array power and attitude are those of the first.
+    Where two overlap their loads add, and array power and attitude are those of the first that turns the satellite.
     """
     edges_s = merged_edges_s(idle.edges_s, *(one.edges_s for one in overlays), span_s=float(idle.edges_s[-1]))
     middle_s = 0.5 * (edges_s[1:] + edges_s[:-1])
@@ -85,6 +89,8 @@ def lay_over(idle: Intervals, overlays: list[Overlay]) -> Intervals:
         for column in fields(Draw):
             getattr(week.draw, column.name)[begin:end] += getattr(one.draw, column.name)[rows]
         week.session_w[begin:end] += one.draw.bus_w[rows]
+        if not one.turns:
+            continue
         free = min(max(begin, taken), end)
         week.array_w[free:end] = one.array_w[rows[free - begin :]]
         week.attitude[free:end] = one.attitude[rows[free - begin :]]
