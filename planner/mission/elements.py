@@ -1,72 +1,92 @@
-"""Orbits as the user gives them: element sets (TLE, OMM) or an ephemeris message (OEM)."""
+"""Orbits as the user gives them: a file of element sets (TLE, OMM) or an ephemeris message (OEM)."""
 
-from datetime import UTC, datetime, timedelta
+from datetime import UTC, datetime
 from pathlib import Path
-from typing import Literal
-
-from pydantic import AwareDatetime, Field
 
 from planner.errors import InputError
-from planner.mission.base import Described, Name
+from planner.mission import oem, omm, tle
+from planner.mission.orbit import ElementSet, Ephemeris
+from planner.mission.text import read_text
 
-LARGEST_FILE_MB = 50
-
-
-class ElementSet(Described):
-    """SGP4 mean elements in the units of the OMM standard (CCSDS 502.0-B-3): degrees, rev/day, 1/Earth radii."""
-
-    name: Name
-    catalog_number: str
-    international_designator: str = ""
-    epoch: AwareDatetime
-    mean_motion_rev_day: float
-    eccentricity: float
-    inclination_deg: float
-    ra_of_asc_node_deg: float
-    arg_of_pericenter_deg: float
-    mean_anomaly_deg: float
-    bstar: float = 0.0
-    mean_motion_dot: float = 0.0
-    mean_motion_ddot: float = 0.0
-    rev_at_epoch: int = 0
-    source: Literal["TLE", "OMM"] = "TLE"
-    sets_in_file: int = Field(default=1, description="this set was chosen among so many of its satellite")
+__all__ = ["ElementSet", "Ephemeris", "read_elements", "which_set"]
 
 
-def read_elements(path, at: datetime) -> dict[str, ElementSet]:
-    """Every satellite of the file by name, each with its newest set at or before `at` (else the oldest)."""
-    lines = [line.rstrip() for line in Path(path).read_text(encoding="utf-8-sig").splitlines()]
-    sets: dict[str, list[ElementSet]] = {}
-    for index, line in enumerate(lines):
-        if line.startswith("1 ") and index + 1 < len(lines):
-            name = lines[index - 1].removeprefix("0 ") if index and lines[index - 1][:2] not in ("1 ", "2 ") else ""
-            element_set = _of_tle(name or line[2:7].strip(), line, lines[index + 1])
-            sets.setdefault(element_set.name, []).append(element_set)
-    if not sets:
-        raise InputError(f"{path}: must hold at least one element set, got none")
-    return {name: _chosen(candidates, at) for name, candidates in sets.items()}
+def read_elements(path, at: datetime) -> dict[str, ElementSet | Ephemeris]:
+    """Every satellite of a file by name, each with its newest set at or before `at`, else with its oldest.
+
+    TLE, OMM as keyword lines, XML, JSON or CSV, or OEM as keyword lines: told apart by how the text begins.
+    How many sets there were stands in `sets_in_file`; `which_set` says it in words.
+
+    Raises
+    ------
+    InputError : all faults of the file at once, each with file, line or message, rule and the value received; also for
+        a set that SGP4 refuses, a file over 50 MB, or a naive `at`
+    """
+    if at.tzinfo is None:
+        raise InputError(f"at must carry a time zone, got {at!r}; if it is UTC, write {at.isoformat()}+00:00")
+    text = read_text(Path(path))
+    sets, faults = _parser(text)(text, str(path))
+    if not sets and not faults:
+        faults = [f"{path}: must hold at least one element set or ephemeris, got none"]
+    faults = faults + _name_faults(sets, path)
+    chosen = {name: _newest_before([one for one in sets if one.name == name], at) for name in {s.name: 0 for s in sets}}
+    for one in chosen.values():
+        faults = faults + _sgp4_faults(one, path)
+    if faults:
+        raise InputError(*faults)
+    return chosen
 
 
-def _chosen(candidates: list[ElementSet], at: datetime) -> ElementSet:
-    by_epoch = sorted(candidates, key=lambda element_set: element_set.epoch)
-    usable = [element_set for element_set in by_epoch if element_set.epoch <= at]
-    return (usable[-1] if usable else by_epoch[0]).model_copy(update={"sets_in_file": len(candidates)})
+def which_set(elements: ElementSet | Ephemeris, at: datetime) -> str:
+    """Which set is used, as "element set of epoch 2026-12-06T18:00:00Z, 6.0 h old at the start; 3 in the file"."""
+    hours = (at - elements.epoch).total_seconds() / 3600
+    age = f"{abs(hours):.1f} h" if abs(hours) < 48 else f"{abs(hours) / 24:.1f} days"
+    kind = "ephemeris" if elements.source == "OEM" else "element set"
+    when = elements.epoch.astimezone(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
+    side = "old at" if hours >= 0 else "younger than"
+    return f"{kind} of epoch {when}, {age} {side} the start; {elements.sets_in_file} in the file"
 
 
-def _of_tle(name: str, one: str, two: str) -> ElementSet:
-    year = int(one[18:20])
-    epoch = datetime(year + (1900 if year >= 57 else 2000), 1, 1, tzinfo=UTC)
-    return ElementSet(
-        name=name,
-        catalog_number=one[2:7].strip(),
-        international_designator=one[9:17].strip(),
-        epoch=epoch + timedelta(days=float(one[20:32]) - 1),
-        mean_motion_rev_day=float(two[52:63]),
-        eccentricity=float("0." + two[26:33]),
-        inclination_deg=float(two[8:16]),
-        ra_of_asc_node_deg=float(two[17:25]),
-        arg_of_pericenter_deg=float(two[34:42]),
-        mean_anomaly_deg=float(two[43:51]),
-        bstar=float(one[53] + "." + one[54:59] + "e" + one[59:61]),
-        rev_at_epoch=int(two[63:68]),
-    )
+def _parser(text: str):
+    """The reader for a text, by how it begins."""
+    begin = text.lstrip()[:2000]
+    first_line = begin.partition("\n")[0]
+    if begin.startswith("<"):
+        return omm.parse_xml
+    if begin.startswith(("{", "[")):
+        return omm.parse_json
+    if "," in first_line and "MEAN_MOTION" in first_line:
+        return omm.parse_csv
+    if "CCSDS_OEM_VERS" in first_line:
+        return oem.parse_oem
+    if "CCSDS_OMM_VERS" in first_line:
+        return omm.parse_keywords
+    return tle.parse_tle
+
+
+def _newest_before(sets: list, at: datetime):
+    by_epoch = sorted(sets, key=lambda one: one.epoch)
+    usable = [one for one in by_epoch if one.epoch <= at] or by_epoch[:1]
+    return usable[-1].model_copy(update={"sets_in_file": len(sets)})
+
+
+def _name_faults(sets: list, path) -> list[str]:
+    """One name must mean one satellite."""
+    numbers: dict[str, set[str]] = {}
+    for one in sets:
+        numbers.setdefault(one.name, set()).add(one.catalog_number)
+    return [
+        f"{path}: {name}: one name must stand for one satellite, got catalogue numbers {', '.join(sorted(found))}"
+        for name, found in numbers.items()
+        if len(found) > 1
+    ]
+
+
+def _sgp4_faults(one, path) -> list[str]:
+    if isinstance(one, Ephemeris):
+        return []
+    try:
+        one.sgp4_model()
+    except InputError as error:
+        return [f"{path}: {fault}" for fault in error.faults]
+    return []

@@ -6,7 +6,7 @@ from typing import Annotated, Any
 from pydantic import AwareDatetime, Field, field_validator, model_validator
 
 from planner.mission.base import Described, Name, NonNegative, Percent, Positive, Real
-from planner.mission.elements import ElementSet
+from planner.mission.elements import ElementSet, Ephemeris
 from planner.mission.pointing import Pointing
 from planner.mission.power import (
     ArrayConversion,
@@ -148,7 +148,7 @@ class Satellite(Described):
     """One satellite: its orbit, what is aboard, and its state at the start."""
 
     name: Name
-    elements: ElementSet
+    elements: ElementSet | Ephemeris
     spacecraft: Spacecraft
     start_state: StartState
 

@@ -3,7 +3,7 @@
 import numpy as np
 
 from planner.mission.pointing import Law, Pointing
-from planner.sky.track import inertial_velocity_km_s
+from planner.sky.frames import inertial_velocity_km_s
 from planner.units import dot, unit_vector
 
 

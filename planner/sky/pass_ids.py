@@ -1,12 +1,15 @@
 """Names of passes that outlive an element update."""
 
 import re
+from dataclasses import replace
 
 import numpy as np
 
+from planner.mission.elements import Ephemeris
 from planner.sky.clock import Clock
+from planner.sky.propagate import states
 from planner.sky.sites import Sites
-from planner.sky.track import Track, grid_s, propagate
+from planner.sky.track import Track, grid_s
 
 EQUATORIAL_DEG = 1.0  # orbits flatter than this have no steady northernmost and southernmost point
 SIDEREAL_DAY_S = 86_164.0905  # from memory
@@ -31,9 +34,10 @@ def pass_ids(clock: Clock, track: Track, sites: Sites, station_index, aos_s, by_
     ids of that day and of the day it left change their numbers.
     """
     day, count = np.zeros(len(aos_s), dtype=int), np.zeros(len(aos_s), dtype=int)
+    earlier = _before(clock, track)
     for direction, stations in _far_directions(track, sites):
         here = np.isin(station_index, stations)
-        day[here], count[here] = _day_and_count(clock, _passages_s(clock, track, direction), aos_s[here])
+        day[here], count[here] = _day_and_count(clock, _passages_s(clock, track, earlier, direction), aos_s[here])
     day = np.where(by_day, clock.utc_day(aos_s + 1e-3), day)
     count = np.where(by_day, 0, count)
     letter = _letters(station_index, day, count)
@@ -55,7 +59,7 @@ def is_geostationary(track: Track) -> bool:
 
 
 def _near_equator(track: Track) -> bool:
-    return track.inclination_deg < EQUATORIAL_DEG or track.inclination_deg > 180 - EQUATORIAL_DEG
+    return track.elements.inclination_deg < EQUATORIAL_DEG or track.elements.inclination_deg > 180 - EQUATORIAL_DEG
 
 
 def _far_directions(track: Track, sites: Sites):
@@ -70,17 +74,40 @@ def _far_directions(track: Track, sites: Sites):
     yield np.array([0.0, 0.0, 1.0]), np.flatnonzero(~northern)
 
 
-def _passages_s(clock: Clock, track: Track, direction):
+def _passages_s(clock: Clock, track: Track, earlier: Track, direction):
     """Moments at which the satellite stops moving along `direction`, from a UTC midnight before the track onwards."""
-    known_s = _turning_s(track.time_s, track.velocity_km_s @ direction)
-    # a pass in progress where the track begins belongs to a passage up to a revolution earlier
-    first_day = clock.utc_day(track.time_s[0] - track.period_s)
-    earlier_s = grid_s(clock, track.elements, float(clock.midnight_s(first_day)), track.time_s[0], COARSE_STEPS)
-    _, velocity_km_s, good = propagate(clock, track.satellite, track.elements, earlier_s)
-    return np.concatenate([_turning_s(earlier_s[good], velocity_km_s[good] @ direction), known_s])
+    known_s = _turning_s(track, direction)
+    if len(earlier.time_s):
+        return np.concatenate([_turning_s(earlier, direction), known_s])
+    if not len(known_s):
+        return known_s
+    # an ephemeris that begins too late is carried back at its own pace
+    pace_s = np.diff(known_s).mean() if len(known_s) > 1 else track.period_s
+    since_s = clock.midnight_s(_first_day(clock, track))
+    back = np.arange(int((known_s[0] - since_s) // pace_s), 0, -1)
+    return np.concatenate([known_s[0] - back * pace_s, known_s])
 
 
-def _turning_s(time_s, speed):
+def _before(clock: Clock, track: Track) -> Track:
+    """A coarse track from the midnight before a revolution before the track, to where the track begins; may be empty.
+
+    A pass in progress where the track begins belongs to a passage up to a revolution earlier.
+    """
+    begin_s = float(clock.midnight_s(_first_day(clock, track)))
+    if isinstance(track.elements, Ephemeris):
+        none = np.zeros((0, 3))
+        return replace(track, time_s=none[:, 0], position_km=none, velocity_km_s=none)
+    time_s = grid_s(clock, track.elements, begin_s, track.time_s[0], COARSE_STEPS)
+    position_km, velocity_km_s, known = states(clock, track.satellite, track.elements, time_s)
+    return replace(track, time_s=time_s[known], position_km=position_km[known], velocity_km_s=velocity_km_s[known])
+
+
+def _first_day(clock: Clock, track: Track) -> int:
+    return int(clock.utc_day(track.time_s[0] - track.period_s))
+
+
+def _turning_s(track: Track, direction):
+    time_s, speed = track.time_s, track.velocity_km_s @ direction
     k = np.flatnonzero((speed[:-1] > 0) & (speed[1:] <= 0))
     return time_s[k] + (time_s[k + 1] - time_s[k]) * speed[k] / (speed[k] - speed[k + 1])
 

@@ -10,7 +10,7 @@ def refine(function, low, high, f_low, f_high):
     """The zero of each function inside its bracket [low, high], all (n,), whose end values differ in sign.
 
     `function(time_s, k)` gives the values (m,) of the members `k` (m,) at `time_s` (m,). False position with the stale
-    end's value halved, which cannot leave its bracket: the Illinois rule (Dowell and Jarratt, BIT 11, 1971, from memory).
+    end's value halved, which cannot leave its bracket: the Illinois rule (Dowell, Jarratt, BIT 11, 1971, from memory).
     """
     a, b, fa, fb = (np.array(x, dtype=float) for x in (low, high, f_low, f_high))
     zero = np.where(fa == 0, a, b)

@@ -5,11 +5,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from planner.sky.clock import Clock
+from planner.sky.frames import acceleration_km_s2
 from planner.sky.mount import lost_window_s
 from planner.sky.passes import Passes
 from planner.sky.sites import Sites, look_from
 from planner.sky.sun import sun_position_km
-from planner.sky.track import acceleration_km_s2
 from planner.units import C_M_S, dot, unit_vector
 
 

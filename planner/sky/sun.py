@@ -5,9 +5,10 @@ from functools import lru_cache
 
 import numpy as np
 
-from planner.sky.clock import Clock, timescale
+from planner.sky.clock import Clock
+from planner.sky.frames import inertial_velocity_km_s, moments, turn
 from planner.sky.roots import crossings
-from planner.sky.track import evaluate, inertial_velocity_km_s, turn
+from planner.sky.track import evaluate
 from planner.units import DAY_S, EARTH_FLATTENING, EARTH_RADIUS_KM, SUN_RADIUS_KM, dot, unit_vector
 
 SAMPLE_S = DAY_S / 4  # a spline through these is within 0.001 arc seconds of the ephemeris
@@ -32,11 +33,8 @@ def _sun_spline(clock: Clock):
 
     # a day and a half beyond the span: tracks reach there too
     time_s = np.arange(-1.5 * DAY_S, clock.span_s + 1.5 * DAY_S + SAMPLE_S, SAMPLE_S)
-    start = clock.start
-    second = start.second + start.microsecond / 1e6 + time_s
-    moments = timescale().utc(start.year, start.month, start.day, start.hour, start.minute, second)
     ephemeris = _ephemeris()
-    fixed_km = ephemeris["earth"].at(moments).observe(ephemeris["sun"]).apparent().frame_xyz(itrs).km.T
+    fixed_km = ephemeris["earth"].at(moments(clock, time_s)).observe(ephemeris["sun"]).apparent().frame_xyz(itrs).km.T
     return CubicSpline(time_s, turn(fixed_km, -clock.earth_angle_rad(time_s)[0]))
 
 

@@ -1,0 +1,43 @@
+"""What the orbit data messages of CCSDS 502.0-B-3 share: keyword = value lines, and dates."""
+
+import re
+from datetime import UTC, datetime, timedelta
+
+DATE = re.compile(r"(\d{4})-(?:(\d\d)-(\d\d)|(\d{3}))T(\d\d):(\d\d):(\d\d)(\.\d+)?Z?")
+
+
+def date(text: str) -> datetime:
+    """A UTC date as the standard writes it (6.5.9: year, month and day, or year and day of year).
+
+    Raises ValueError, worded to stand behind the keyword.
+    """
+    match = DATE.fullmatch(text.strip())
+    if not match:
+        raise ValueError("must be a date as 2026-12-06T18:00:00.000 or 2026-340T18:00:00.000")
+    year, month, day, day_of_year, hour, minute, second = (int(part) if part else None for part in match.groups()[:7])
+    fraction = timedelta(microseconds=round(float(match[8] or 0) * 1e6))
+    try:
+        if day_of_year is None:
+            return datetime(year, month, day, hour, minute, second, tzinfo=UTC) + fraction
+        moment = datetime(year, 1, 1, hour, minute, second, tzinfo=UTC) + timedelta(days=day_of_year - 1)
+    except ValueError as error:
+        raise ValueError(f"must be a date that exists ({error})") from None
+    if moment.year != year:
+        raise ValueError("must have a day of year from 001 to 365 or 366")
+    return moment + fraction
+
+
+def keyword_lines(text: str):
+    """(line number, keyword, value) of each line with content; the keyword is "" where there is no equals sign.
+
+    Comments are left out, and so are units in brackets behind a value.
+    """
+    for number, line in enumerate(text.splitlines(), 1):
+        line = line.strip()
+        if not line or line.split()[0] == "COMMENT":
+            continue
+        keyword, equals, value = line.partition("=")
+        if equals:
+            yield number, keyword.strip(), re.sub(r"\s*\[[^\]]*\]$", "", value.strip())
+        else:
+            yield number, "", line

@@ -1,0 +1,127 @@
+"""Orbit ephemeris messages (OEM, CCSDS 502.0-B-3) as keyword lines."""
+
+from datetime import datetime
+
+from planner.mission.ccsds import date, keyword_lines
+from planner.mission.orbit import Ephemeris, Segment
+
+FRAMES = {"TEME": "TEME", "EME2000": "EME2000", "GCRF": "GCRF"}  # and every ITRF realisation
+METHODS = ("HERMITE", "LAGRANGE", "LINEAR")
+REQUIRED = ("OBJECT_NAME", "OBJECT_ID", "CENTER_NAME", "REF_FRAME", "TIME_SYSTEM", "START_TIME", "STOP_TIME")
+DEFAULT_DEGREE = 7
+
+
+def parse_oem(text: str, path: str) -> tuple[list[Ephemeris], list[str]]:
+    """One ephemeris per satellite of the message, and every fault, told with file, line and rule."""
+    reader = _Reader(path)
+    for number, keyword, value in keyword_lines(text):
+        reader.take(number, keyword, value)
+    reader.close_segment()
+    messages = []
+    for name in dict.fromkeys(name for name, *_ in reader.segments):
+        mine = [(object_id, segment) for owner, object_id, segment in reader.segments if owner == name]
+        epoch = reader.created or mine[0][1].moment[0]
+        messages.append(
+            Ephemeris(name=name, international_designator=mine[0][0], epoch=epoch, segment=tuple(s for _, s in mine))
+        )
+    return messages, reader.faults
+
+
+class _Reader:
+    """Goes through the lines once: header, then metadata and states by turns; covariances are passed over."""
+
+    def __init__(self, path: str):
+        self.path, self.faults = path, []
+        self.created: datetime | None = None
+        self.segments: list[tuple[str, str, Segment]] = []
+        self.meta: dict[str, tuple[int, str]] = {}
+        self.rows: list[tuple[datetime, tuple[float, ...]]] = []
+        self.part = "header"
+
+    def fault(self, number: int, rule: str, value: str):
+        self.faults.append(f"{self.path}: line {number}: {rule}, got {value!r}")
+
+    def take(self, number: int, keyword: str, value: str):
+        if value == "META_START":
+            self.close_segment()
+            self.part = "metadata"
+        elif value == "META_STOP":
+            self.part = "states"
+        elif value in ("COVARIANCE_START", "COVARIANCE_STOP"):
+            self.part = "covariance" if value == "COVARIANCE_START" else "states"
+        elif self.part == "metadata" and keyword:
+            self.meta[keyword] = (number, value)
+        elif self.part == "states":
+            self.take_state(number, f"{keyword} = {value}" if keyword else value)
+        elif self.part == "header" and keyword == "CREATION_DATE":
+            self.created = self.dated(number, value)
+
+    def dated(self, number: int, value: str) -> datetime | None:
+        try:
+            return date(value)
+        except ValueError as error:
+            self.fault(number, str(error), value)
+            return None
+
+    def take_state(self, number: int, line: str):
+        words = line.split()
+        try:
+            state = tuple(map(float, words[1:7]))
+            moment = date(words[0])
+        except ValueError:
+            state, moment = (), None
+        if moment is None or len(words) not in (7, 10) or not all(abs(x) < 1e7 for x in state):
+            self.fault(number, "must be a date and six or nine numbers: x y z [km], vx vy vz [km/s], ...", line)
+        elif self.rows and moment <= self.rows[-1][0]:
+            self.fault(number, "must be later than the state before", words[0])
+        else:
+            self.rows.append((moment, state))
+
+    def close_segment(self):
+        """What has been read since META_START becomes a segment, or faults."""
+        meta, rows, self.meta, self.rows = self.meta, self.rows, {}, []
+        if not meta:
+            return
+        first = min(number for number, _ in meta.values())
+        before = len(self.faults)
+        for keyword in REQUIRED:
+            if keyword not in meta:
+                self.faults.append(f"{self.path}: metadata at line {first}: {keyword} must be given, got none")
+        for keyword, allowed in (("CENTER_NAME", ("EARTH",)), ("TIME_SYSTEM", ("UTC",)), ("INTERPOLATION", METHODS)):
+            number, value = meta.get(keyword, (first, allowed[0]))
+            if value.upper() not in allowed:
+                self.fault(number, f"{keyword} must be {' or '.join(allowed)}", value)
+        frame = self.frame(*meta.get("REF_FRAME", (first, "TEME")))
+        degree = self.degree(*meta.get("INTERPOLATION_DEGREE", (first, str(DEFAULT_DEGREE))))
+        usable = [
+            self.dated(*meta.get(f"USEABLE_{edge}", meta.get(edge, (first, ""))))
+            for edge in ("START_TIME", "STOP_TIME")
+        ]
+        if len(rows) < 2:
+            self.faults.append(f"{self.path}: segment at line {first}: must hold two states or more, got {len(rows)}")
+        if len(self.faults) > before:
+            return
+        segment = Segment(
+            frame=frame,
+            interpolation=meta.get("INTERPOLATION", (0, "LAGRANGE"))[1].upper(),
+            degree=degree,
+            usable_from=max(usable[0], rows[0][0]),
+            usable_to=min(usable[1], rows[-1][0]),
+            moment=tuple(moment for moment, _ in rows),
+            state=tuple(state for _, state in rows),
+        )
+        self.segments.append((meta["OBJECT_NAME"][1], meta["OBJECT_ID"][1], segment))
+
+    def frame(self, number: int, value: str) -> str:
+        value = value.upper()
+        if value.startswith("ITRF"):
+            return "ITRF"
+        if value not in FRAMES:
+            self.fault(number, "REF_FRAME must be TEME, ITRF, EME2000 or GCRF", value)
+        return FRAMES.get(value, "TEME")
+
+    def degree(self, number: int, value: str) -> int:
+        if value.isascii() and value.isdigit() and 1 <= int(value) <= 25:
+            return int(value)
+        self.fault(number, "INTERPOLATION_DEGREE must be from 1 to 25", value)
+        return DEFAULT_DEGREE

@@ -1,0 +1,178 @@
+"""Orbit mean-elements messages (OMM, CCSDS 502.0-B-3) as keyword lines, XML, JSON and CSV."""
+
+import csv
+import io
+import json
+from xml.etree import ElementTree
+
+from planner.mission.ccsds import date, keyword_lines
+from planner.mission.orbit import ElementSet
+
+NUMBERS = {
+    "MEAN_MOTION": "mean_motion_rev_day",
+    "ECCENTRICITY": "eccentricity",
+    "INCLINATION": "inclination_deg",
+    "RA_OF_ASC_NODE": "ra_of_asc_node_deg",
+    "ARG_OF_PERICENTER": "arg_of_pericenter_deg",
+    "MEAN_ANOMALY": "mean_anomaly_deg",
+}
+OPTIONAL_NUMBERS = {
+    "BSTAR": "bstar",
+    "MEAN_MOTION_DOT": "mean_motion_dot",
+    "MEAN_MOTION_DDOT": "mean_motion_ddot",
+}
+# The only values SGP4 can work with. Bare rows of CSV and JSON may leave the keyword out.
+ONLY = {
+    "CENTER_NAME": ("EARTH",),
+    "REF_FRAME": ("TEME", "TEME OF DATE", "TEME OF EPOCH"),
+    "TIME_SYSTEM": ("UTC",),
+    "MEAN_ELEMENT_THEORY": ("SGP4", "SGP/SGP4"),
+}
+REQUIRED = ("OBJECT_NAME", "OBJECT_ID", *ONLY, "EPOCH", *NUMBERS)
+LARGEST_DEG = {"INCLINATION": 180.0, "RA_OF_ASC_NODE": 360.0, "ARG_OF_PERICENTER": 360.0, "MEAN_ANOMALY": 360.0}
+
+Parsed = tuple[list[ElementSet], list[str]]
+
+
+def parse_keywords(text: str, path: str) -> Parsed:
+    """Messages as `KEYWORD = value`, each opened by CCSDS_OMM_VERS."""
+    messages: list[tuple[str, dict[str, str]]] = []
+    faults = []
+    for number, keyword, value in keyword_lines(text):
+        if keyword == "CCSDS_OMM_VERS":
+            messages.append((f"{path}: message at line {number}", {}))
+        elif not keyword:
+            faults.append(f"{path}: line {number}: must be KEYWORD = value, got {value!r}")
+        elif keyword in messages[-1][1]:
+            faults.append(f"{path}: line {number}: {keyword} must stand once in a message, got it again")
+        else:
+            messages[-1][1][keyword] = value
+    return _gathered(messages, faults, REQUIRED)
+
+
+def parse_xml(text: str, path: str) -> Parsed:
+    """Messages as <omm> elements, alone or inside <ndm>. A document type is refused, so no entity is ever expanded."""
+    if "<!DOCTYPE" in text.upper() or "<!ENTITY" in text.upper():
+        return [], [f"{path}: must not declare a document type or entities, got a <!DOCTYPE or <!ENTITY"]
+    try:
+        root = ElementTree.fromstring(text.encode("utf-8"))
+    except (ElementTree.ParseError, LookupError, ValueError) as error:
+        return [], [f"{path}: must be well-formed XML in UTF-8, got {error}"]
+    messages = []
+    for index, message in enumerate((e for e in root.iter() if _tag(e) == "omm"), 1):
+        values = {_tag(e): (e.text or "").strip() for e in message.iter() if not len(e) and _tag(e) != "COMMENT"}
+        messages.append((f"{path}: message {index}", values))
+    return _gathered(messages, [], REQUIRED)
+
+
+def _tag(element) -> str:
+    return element.tag.rpartition("}")[2]
+
+
+def parse_json(text: str, path: str) -> Parsed:
+    """One object, or a list of objects."""
+    try:
+        rows = json.loads(text)
+    except (ValueError, RecursionError) as error:
+        return [], [f"{path}: must be JSON, got {error}"]
+    rows = rows if isinstance(rows, list) else [rows]
+    messages, faults = [], []
+    for index, row in enumerate(rows, 1):
+        if isinstance(row, dict) and not any(isinstance(value, dict | list) for value in row.values()):
+            values = {key: str(value) for key, value in row.items() if value is not None}
+            messages.append((f"{path}: message {index}", values))
+        else:
+            faults.append(
+                f"{path}: message {index}: must be an object of keywords and plain values, got {str(row)[:60]}"
+            )
+    return _gathered(messages, faults, _bare())
+
+
+def parse_csv(text: str, path: str) -> Parsed:
+    """One row a message under a header of keywords."""
+    rows = list(csv.reader(io.StringIO(text)))
+    header = [keyword.strip() for keyword in rows[0]]
+    messages, faults = [], []
+    for number, row in enumerate(rows[1:], 2):
+        if len(row) == len(header):
+            messages.append((f"{path}: row {number}", dict(zip(header, map(str.strip, row), strict=True))))
+        elif any(row):
+            faults.append(f"{path}: row {number}: must have {len(header)} columns as the header, got {len(row)}")
+    return _gathered(messages, faults, _bare())
+
+
+def _bare() -> tuple[str, ...]:
+    return tuple(keyword for keyword in REQUIRED if keyword not in (*ONLY, "OBJECT_ID"))
+
+
+def _gathered(messages, faults: list[str], required) -> Parsed:
+    sets = []
+    for where, values in messages:
+        values = {keyword: value for keyword, value in values.items() if value != ""}
+        found = [f"{where}: {keyword} must be given, got none" for keyword in required if keyword not in values]
+        element_set, more = _element_set(where, values) if not found else (None, [])
+        sets += [element_set] if element_set else []
+        faults = faults + found + more
+    return sets, faults
+
+
+def _element_set(where: str, values: dict[str, str]) -> tuple[ElementSet | None, list[str]]:
+    faults = [
+        f"{where}: {keyword} must be {' or '.join(allowed)}, got {values[keyword]!r}"
+        for keyword, allowed in ONLY.items()
+        if values.get(keyword, allowed[0]).upper() not in allowed
+    ]
+    if values.get("EPHEMERIS_TYPE") == "4":
+        faults.append(f"{where}: EPHEMERIS_TYPE must be 0 (SGP4), got '4' (SGP4-XP, which is not public)")
+
+    def converted(keyword: str, convert, default=None):
+        if keyword not in values:
+            return default
+        try:
+            return convert(values[keyword])
+        except ValueError as error:
+            faults.append(f"{where}: {keyword} {error}, got {values[keyword]!r}")
+            return default
+
+    numbers = {field: converted(keyword, _number(keyword)) for keyword, field in NUMBERS.items()}
+    numbers |= {field: converted(keyword, _number(keyword), 0.0) for keyword, field in OPTIONAL_NUMBERS.items()}
+    epoch = converted("EPOCH", date)
+    name, number = values["OBJECT_NAME"], values.get("NORAD_CAT_ID", "")
+    if not name.isprintable() or len(name) > 80:
+        faults.append(f"{where}: OBJECT_NAME must be printable, up to 80 characters, got {name!r}")
+    revolution = converted("REV_AT_EPOCH", _whole, 0)
+    if faults:
+        return None, faults
+    return ElementSet(
+        name=name,
+        catalog_number=number,
+        international_designator=values.get("OBJECT_ID", ""),
+        epoch=epoch,
+        rev_at_epoch=revolution,
+        source="OMM",
+        **numbers,
+    ), []
+
+
+def _number(keyword: str):
+    largest_deg = LARGEST_DEG.get(keyword)
+
+    def convert(text: str) -> float:
+        try:
+            value = float(text)
+        except ValueError:
+            raise ValueError("must be a number") from None
+        if not abs(value) < 1e6:
+            raise ValueError("must be a finite number")
+        if largest_deg is not None and not 0 <= value <= largest_deg:
+            raise ValueError(f"must be from 0 to {largest_deg:g} deg")
+        return value
+
+    return convert
+
+
+def _whole(text: str) -> int:
+    try:
+        return int(float(text))
+    except (ValueError, OverflowError):
+        raise ValueError("must be a whole number") from None
