@@ -49,7 +49,7 @@ def panel_temperature_c(panel: Panel, absorbed_flux_w_m2):
     """Temperature of a panel that takes in `absorbed_flux_w_m2` of sunlight, flux times cosine times lit share [W/m2].
 
     Source: radiative balance of a plate with two radiating faces; what the cells turn into electricity does not heat.
-    Sunlight reflected by the Earth is taken in proportion to the panel's own. Neglected: the minute or two a panel takes
+    Sunlight reflected by the Earth is taken in proportion to the panel's own. Neglected: the minute a panel takes
     to warm after eclipse (it then gives more, so the neglect is on the safe side), and the side of a panel on the body
     that cannot radiate: it runs hotter than this, give it `temperature_sunlit_c`.
     """

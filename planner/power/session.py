@@ -21,6 +21,7 @@ class SessionCourse:
 
     The satellite turns from its idle law to the session's so that it is there at tx_on, and back from tx_off.
     `turned_share` is how far it has turned (0 idle law, 1 session's law); panel power in between is the blend.
+    It stays 0 where both laws are one.
     """
 
     session: Session
@@ -97,6 +98,7 @@ def trace_sessions(
             law=law.law,
             edges_s=one_edges_s,
             panels_w=tracking_w[row],
+            turned_share=_turned_share(session, middle_s[row], before_s, after_s) * (law != craft.pointing.idle),
             **_phases(session, transmitter, middle_s[row], before_s, after_s),
         )
         for session, transmitter, law, one_edges_s, row, before_s, after_s in zip(
@@ -149,18 +151,18 @@ def _edges_s(session, transmitter, before_s, after_s, grid_s):
     return edges_s[(edges_s >= begin_s) & (edges_s <= end_s)]
 
 
+def _turned_share(session, middle_s, before_s, after_s):
+    to_go_s, gone_s = session.tx_on_s - middle_s, middle_s - session.tx_off_s
+    still_away = np.maximum(to_go_s, 0.0) / max(before_s, 1e-9) + np.maximum(gone_s, 0.0) / max(after_s, 1e-9)
+    return np.clip(1.0 - still_away, 0.0, 1.0)
+
+
 def _phases(session, transmitter, middle_s, before_s, after_s) -> dict[str, np.ndarray]:
-    on_s, off_s = session.tx_on_s, session.tx_off_s
-    to_go_s, gone_s = on_s - middle_s, middle_s - off_s
+    to_go_s, gone_s = session.tx_on_s - middle_s, middle_s - session.tx_off_s
     before, after = to_go_s > 0, gone_s > 0
-    turning_in, turning_out = before & (to_go_s < before_s), after & (gone_s < after_s)
-    turned = np.where(
-        before, 1.0 - to_go_s / max(before_s, 1e-9), np.where(after, 1.0 - gone_s / max(after_s, 1e-9), 1.0)
-    )
     return {
         "warming": before & (to_go_s < transmitter.warmup_s),
         "transmitting": ~before & ~after,
         "cooling": after & (gone_s < transmitter.cooldown_s),
-        "slewing": turning_in | turning_out,
-        "turned_share": np.clip(turned, 0.0, 1.0),
+        "slewing": (before & (to_go_s < before_s)) | (after & (gone_s < after_s)),
     }

@@ -7,16 +7,21 @@ import numpy as np
 from hypothesis import strategies as st
 
 from planner.mission.elements import ElementSet
-from planner.mission.models import Policy, Recorder, Satellite, Spacecraft, StartState
+from planner.mission.models import Mission, Policy, Recorder, Satellite, Spacecraft, StartState
 from planner.mission.pointing import Pointing
 from planner.mission.power import Battery, Panel
+from planner.mission.station import GroundAntenna, Receiver, Station
 from planner.mission.transmitter import Isotropic, Transmitter
+from planner.power.balance import SatellitePower
 from planner.power.battery import describe_cell
 from planner.power.corners import corner_of
 from planner.power.intervals import Intervals
 from planner.power.loads import Draw
 from planner.power.series import run_battery
+from planner.sky.clock import Clock
+from planner.sky.track import track_satellite
 
+START = datetime(2026, 12, 7, tzinfo=UTC)
 LEAKLESS = {"self_discharge_pct_month": 0.0, "coulombic_efficiency": 1.0}
 FLAT_CURVE = ((0.0, 3.3), (100.0, 3.3 + 1e-9))  # as good as level, and still rising
 LEVEL_RESISTANCE = {
@@ -72,16 +77,42 @@ def satellite(spacecraft: Spacecraft | None = None, soc_pct: float = 90.0, soc_e
     elements = ElementSet(
         name="TEST-1",
         catalog_number="90000",
-        epoch=datetime(2026, 12, 7, tzinfo=UTC),
+        epoch=START,
         mean_motion_rev_day=15.1,
         eccentricity=0.001,
         inclination_deg=97.5,
-        ra_of_asc_node_deg=0.0,
+        ra_of_asc_node_deg=230.0,
         arg_of_pericenter_deg=0.0,
         mean_anomaly_deg=0.0,
     )
     start = StartState(soc_pct=soc_pct, soc_error_pct=soc_error_pct)
     return Satellite(name="TEST-1", elements=elements, spacecraft=spacecraft or craft(), start_state=start)
+
+
+def mission(spacecraft: Spacecraft | None = None, days: float = 1.0, **start) -> Mission:
+    """A satellite 540 km up, one station on the equator, a day."""
+    station = Station(
+        name="Reed Point",
+        latitude_deg=0.0,
+        longitude_deg=10.0,
+        antenna=GroundAntenna(diameter_m=3.0),
+        receiver=(Receiver(bands=("K",), noise_temperature_k=200.0),),
+    )
+    return Mission(
+        name="a test",
+        start=START,
+        days=days,
+        satellites=(satellite(spacecraft, **start),),
+        stations=(station,),
+        policy=policy(),
+    )
+
+
+def power_of(flown: Mission) -> SatellitePower:
+    """The power of the one satellite, without asking the sky for passes."""
+    clock = Clock(flown.start, flown.span_s)
+    sky = SimpleNamespace(clock=clock, tracks=(track_satellite(clock, flown.satellites[0]),))
+    return SatellitePower(flown, sky, "TEST-1")
 
 
 def week(array_w, load_w, duration_s=60.0, **changes) -> Intervals:
