@@ -70,7 +70,7 @@ class SatellitePower:
     def simulate(self, sessions, corner: CornerName = "pessimistic") -> BatterySeries:
         """The battery through the span with these sessions, in any order.
 
-        Where two sessions overlap their loads add, and the attitude is that of the first in time.
+        Where two sessions overlap their loads add, and the attitude is that of the first that turns the satellite.
 
         Raises
         ------
@@ -133,7 +133,6 @@ class SatellitePower:
             draw=session_draw(craft, transmitter, course, assumed.load_factor, assumed.transmitter_factor),
             array_w=bus_power_w((1 - turned) * idle_w + turned * course.panels_w, assumed.panel_factor, craft.array),
             attitude=np.select([course.slewing, course.turned_share > 0], [1, law], 0),
-            turns=(transmitter.session_law or craft.pointing.session) != craft.pointing.idle,
         )
 
     @cached_property

@@ -71,7 +71,10 @@ class Overlay:
     draw: Draw
     array_w: np.ndarray
     attitude: np.ndarray
-    turns: bool = True
+
+    @property
+    def turns(self) -> bool:
+        return bool(self.attitude.any())
 
 
 def lay_over(idle: Intervals, overlays: list[Overlay]) -> Intervals:

@@ -53,13 +53,21 @@ def test_a_session_adds_its_load_and_brings_its_own_panels():
     assert at(intervals, intervals.attitude, [80.0, 100.0]).tolist() == [0, 2]
 
 
-def test_where_sessions_overlap_loads_add_and_the_first_has_the_attitude():
+def test_where_sessions_overlap_loads_add_and_the_first_that_turns_has_the_attitude():
     first, second = overlay([60.0, 180.0], attitude=2, array_w=3.0), overlay([120.0, 240.0], attitude=1, array_w=4.0)
     intervals = lay_over(week(np.full(5, 5.0), np.full(5, 1.0)), [first, second])
     moments = [90.0, 150.0, 210.0]
     assert at(intervals, intervals.load_w, moments).tolist() == [11.0, 21.0, 11.0]
     assert at(intervals, intervals.array_w, moments).tolist() == [3.0, 3.0, 4.0]
     assert at(intervals, intervals.attitude, moments).tolist() == [2, 2, 1]
+
+
+def test_a_session_in_the_idle_attitude_leaves_the_attitude_to_the_one_that_turns():
+    still, turning = overlay([60.0, 240.0], attitude=0, array_w=9.0), overlay([120.0, 180.0], attitude=2, array_w=3.0)
+    intervals = lay_over(week(np.full(5, 5.0), np.full(5, 1.0)), [still, turning])
+    assert at(intervals, intervals.attitude, [90.0, 150.0]).tolist() == [0, 2]
+    assert at(intervals, intervals.array_w, [90.0, 150.0]).tolist() == [5.0, 3.0]
+    assert at(intervals, intervals.load_w, [90.0, 150.0]).tolist() == [11.0, 21.0]
 
 
 def test_a_session_inside_another_does_not_move_its_attitude():
