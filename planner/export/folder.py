@@ -5,7 +5,8 @@
                                          ──▶ rename file by file, the index last  ──▶ drop .kept
 
 The index (`summary.json`) holds the SHA-256 of every other file, so a mixture can never pass for a whole set.
-Whatever the instant at which a run dies, the next claim finds `.kept` and puts the old set back, or finds the new one complete.
+Whatever the instant at which a run dies, the next claim finds `.kept` and puts the old set back, or finds the new one
+complete.
 Needs a POSIX file system: rename replaces atomically, a record lock ends with its process.
 """
 
@@ -13,7 +14,6 @@ import fcntl
 import hashlib
 import json
 import os
-import re
 import shutil
 import stat
 from collections.abc import Mapping
@@ -41,11 +41,6 @@ _claimed_here: set[tuple[int, int]] = set()  # a record lock does not hold off a
 def json_bytes(content: Mapping) -> bytes:
     """Canonical JSON: the order of `content`, UTF-8, two spaces, a final newline. ValueError for NaN and infinity."""
     return (json.dumps(content, indent=2, ensure_ascii=False, allow_nan=False, default=_plain_number) + "\n").encode()
-
-
-def file_name(text: str) -> str:
-    """A harmless file name part for a name out of a mission: letters, digits, `-` and `_`; '' becomes 'unnamed'."""
-    return re.sub(r"[^\w-]+", "_", text).strip("_")[:80].lower() or "unnamed"
 
 
 def verify_set(folder, index: str = INDEX) -> tuple[str, ...]:
@@ -113,8 +108,8 @@ class ClaimedFolder:
     ):
         """Replace the set that `index` describes by `files`, in one step as seen from outside.
 
-        `index` becomes `summary` with `files` added: the SHA-256 of each. `run_log` goes to run_log.json, outside the hashes.
-        Files that only the old set had are removed. Raises MachineError, and then the old set is in place.
+        `index` becomes `summary` with `files` added: the SHA-256 of each. `run_log` goes to run_log.json, outside the
+        hashes. Files that only the old set had are removed. Raises MachineError, and then the old set is in place.
         """
         digests = {name: hashlib.sha256(content).hexdigest() for name, content in sorted(files.items())}
         log = {} if run_log is None else {RUN_LOG: json_bytes(run_log)}
@@ -179,7 +174,7 @@ def _mend(folder: Path) -> tuple[str, ...]:
                 with suppress(FileNotFoundError):  # put back by a mending that was interrupted
                     os.replace(folder / KEPT / name, folder / name)
             told = (
-                f"{folder}: an earlier run was interrupted while it replaced the set; the set before it is back in place",
+                f"{folder}: an earlier run was interrupted while it replaced the set; the set before is back in place",
             )
         _sync(folder)
         os.rename(folder / KEPT, folder / DONE)

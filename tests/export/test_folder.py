@@ -13,7 +13,7 @@ import pytest
 
 from planner.errors import InputError, MachineError
 from planner.export import folder as rooms
-from planner.export.folder import claim_folder, file_name, json_bytes, verify_set, write_set
+from planner.export.folder import claim_folder, json_bytes, verify_set, write_set
 
 OLD = {"contacts.csv": b"old contacts\n", "passes.csv": b"the same\n", "gone.csv": b"only in the old set\n"}
 NEW = {"contacts.csv": b"new contacts\n", "passes.csv": b"the same\n", "added.csv": b"only in the new set\n"}
@@ -73,18 +73,19 @@ def test_the_same_set_twice_gives_the_same_bytes_but_for_the_run_log(tmp_path):
 
 def test_a_second_kind_of_set_shares_the_folder_without_harm(whole):
     write_set(whole, {"pointing_1.csv": b"az\n"}, {}, index="pointing.json")
-    assert not verify_set(whole) and not verify_set(whole, "pointing.json")
+    assert not verify_set(whole)
+    assert not verify_set(whole, "pointing.json")
     assert (whole / "contacts.csv").read_bytes() == OLD["contacts.csv"]
 
 
 @pytest.mark.parametrize(
     ("spoil", "told"),
     [
-        (lambda week: (week / "contacts.csv").write_bytes(b"edited"), "contacts.csv: differs from the hash in the index"),
+        (lambda week: (week / "contacts.csv").write_bytes(b"edited"), "csv: differs from the hash in the index"),
         (lambda week: (week / "gone.csv").unlink(), "gone.csv: is missing"),
         (lambda week: (week / "summary.json").unlink(), "summary.json: cannot be read: No such file or directory"),
         (lambda week: (week / "summary.json").write_bytes(b"{"), "summary.json: files must be a table of file names"),
-        (lambda week: (week / "summary.json").write_text('{"files": {"../x": "00"}}'), "files must be a table of file names"),
+        (lambda week: (week / "summary.json").write_text('{"files": {"../x": ""}}'), "files must be a table"),
     ],
 )  # fmt: skip
 def test_a_set_that_is_not_whole_says_where(whole, spoil, told):
@@ -171,8 +172,8 @@ import sys
 from planner.export.folder import write_set
 print("ready", flush=True)
 for round in range(1_000_000):
-    marker = b"%d" % round
-    write_set(sys.argv[1], {f"{name}.csv": marker * 2000 for name in "abcd"}, {"round": round}, run_log={"round": round})
+    files = {f"{name}.csv": b"%d" % round * 2000 for name in "abcd"}
+    write_set(sys.argv[1], files, {"round": round}, run_log={"round": round})
 """
 
 
@@ -299,7 +300,9 @@ def test_links_are_not_followed(whole, tmp_path):
     precious.write_text("precious")
     (whole / "contacts.csv").unlink()
     (whole / "contacts.csv").symlink_to(precious)
-    with pytest.raises(InputError, match="contacts.csv: stands where a file is to be written and is not a plain file"):
+    with pytest.raises(
+        InputError, match=r"contacts\.csv: stands where a file is to be written and is not a plain file"
+    ):
         write_set(whole, NEW, {})
     (tmp_path / "linked").symlink_to(whole)
     with pytest.raises(InputError, match=r"linked: must be a folder of its own \(links are not followed for output\)"):
@@ -349,9 +352,3 @@ def test_json_refuses_what_json_has_no_word_for():
     assert json_bytes({"soc_min_pct": 61.25, "note": "Ø"}) == '{\n  "soc_min_pct": 61.25,\n  "note": "Ø"\n}\n'.encode()
     with pytest.raises(ValueError, match="Out of range float values are not JSON compliant"):
         json_bytes({"soc_min_pct": float("nan")})
-
-
-def test_file_names_out_of_any_text():
-    assert file_name("Corrie Head") == "corrie_head"
-    assert file_name("../../etc/passwd\n") == "etc_passwd"
-    assert file_name("🛰") == "unnamed"

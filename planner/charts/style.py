@@ -1,0 +1,91 @@
+"""One look for every picture: colours that the colour-blind tell apart, marks beside colours, type legible at A4."""
+
+from datetime import UTC, tzinfo
+
+import matplotlib
+import matplotlib.dates as mdates
+from matplotlib.figure import Figure
+
+# Okabe and Ito, "Color Universal Design", 2008 (values from memory)
+BLACK, ORANGE, SKY_BLUE, GREEN = "#000000", "#E69F00", "#56B4E9", "#009E73"
+YELLOW, BLUE, VERMILLION, PURPLE = "#F0E442", "#0072B2", "#D55E00", "#CC79A7"
+INK, FAINT, PALE = "#333333", "#8C8C8C", "#D9D9D9"  # text, secondary lines, areas
+
+# A mode is told by colour, by marker and by hatching, in the order in which the mission names its modes.
+MODE_MARKS = (
+    (BLUE, "^", "///"),
+    (ORANGE, "o", "..."),
+    (GREEN, "s", "xxx"),
+    (PURPLE, "D", "\\\\\\"),
+    (BLACK, "v", "++"),
+)
+
+A4_LANDSCAPE_IN = (11.69, 8.27)
+A4_PORTRAIT_IN = (8.27, 11.69)
+
+ON_PAPER = {
+    "font.family": ["DejaVu Sans"],  # ships with matplotlib, so every machine draws the same letters
+    "font.size": 8.5,
+    "axes.titlesize": 9.5,
+    "axes.titlelocation": "left",
+    "axes.labelsize": 8.5,
+    "axes.edgecolor": FAINT,
+    "axes.labelcolor": INK,
+    "axes.linewidth": 0.6,
+    "axes.spines.top": False,
+    "axes.spines.right": False,
+    "axes.formatter.useoffset": False,
+    "text.color": INK,
+    "text.parse_math": False,  # a station may be called "$_{"
+    "xtick.color": INK,
+    "ytick.color": INK,
+    "xtick.labelsize": 8,
+    "ytick.labelsize": 8,
+    "lines.linewidth": 1.2,
+    "hatch.linewidth": 0.5,
+    "hatch.color": FAINT,
+    "legend.frameon": False,
+    "legend.fontsize": 8,
+    "grid.color": PALE,
+    "grid.linewidth": 0.5,
+    "figure.facecolor": "white",
+    "pdf.fonttype": 42,
+    "date.epoch": "1970-01-01T00:00:00",
+}  # fmt: skip
+
+
+def on_paper():
+    """Context in which figures are made: `with on_paper(): figure = new_figure(...)`."""
+    return matplotlib.rc_context(ON_PAPER)
+
+
+def new_figure(size_in=A4_LANDSCAPE_IN, title: str = "") -> Figure:
+    """An empty figure that belongs to no window. `title` says the finding."""
+    figure = Figure(figsize=size_in, layout="constrained")
+    if title:
+        figure.suptitle(title, x=0.01, ha="left", fontsize=12.5, fontweight="bold")
+    return figure
+
+
+def mode_marks(modes) -> dict[str, tuple[str, str, str]]:
+    """(colour, marker, hatch) of each mode, by name."""
+    return {mode: MODE_MARKS[index % len(MODE_MARKS)] for index, mode in enumerate(dict.fromkeys(modes))}
+
+
+def time_axis(axes, time_zone: tzinfo = UTC, label: bool = True) -> None:
+    """Days or hours along the x axis, by how much of them is in view; says which time it is."""
+    begin, end = axes.get_xlim()
+    if end - begin > 2.5:
+        axes.xaxis.set_major_locator(mdates.DayLocator(interval=max(1, round((end - begin) / 10)), tz=time_zone))
+        axes.xaxis.set_major_formatter(mdates.DateFormatter("%a %d %b", tz=time_zone))
+        axes.xaxis.set_minor_locator(mdates.HourLocator(byhour=(6, 12, 18), tz=time_zone))
+    else:
+        locator = mdates.AutoDateLocator(minticks=5, maxticks=11, tz=time_zone)
+        axes.xaxis.set_major_locator(locator)
+        axes.xaxis.set_major_formatter(
+            mdates.DateFormatter("%H:%M" if end - begin > 0.05 else "%H:%M:%S", tz=time_zone)
+        )
+    axes.grid(True, axis="x", which="major")
+    axes.set_axisbelow(True)
+    if label:
+        axes.set_xlabel(f"time, {'UTC' if time_zone is UTC else time_zone}")

@@ -1,0 +1,237 @@
+"""The week on one page: a lane of passes per station, then the charge and the stored data that they cost and empty."""
+
+from datetime import UTC, datetime, tzinfo
+
+import matplotlib.dates as mdates
+import numpy as np
+import pandas as pd
+from matplotlib.collections import PatchCollection
+from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
+from matplotlib.patches import Patch, Rectangle
+
+from planner.charts import style
+from planner.mission.models import Mission
+from planner.schedule.hours import open_windows_s
+
+FOOT, FLOWN_TOP = 0.06, 0.66  # of a lane: where bars stand, how high a planned session reaches
+FIRST_MARKER, MARKER_STEP = 0.76, 0.15
+NEAR = 0.004  # of the width in view: how far beside a pass a click may fall
+
+
+def week_figure(
+    mission: Mission,
+    plan,
+    *,
+    window: tuple[datetime, datetime] | None = None,
+    time_zone: tzinfo = UTC,
+    satellite: str | None = None,
+    selected: str | None = None,
+) -> Figure:
+    """Every pass and planned session by station; state of charge against its floor; stored data against capacity.
+
+    Parameters
+    ----------
+    mission : Mission
+    plan : has `.contacts`, `.passes`, `.battery`, `.recorder` (DataFrames) and `.summary` (dict)
+    window : (begin, end) in view, the whole span when None
+    time_zone : of the labels
+    satellite : whose charge and data are drawn, the mission's first when None
+    selected : pass_id to point out
+
+    Returns
+    -------
+    Figure, A4 landscape; its axes in order: lanes, charge, data
+    """
+    begin, end = window or (mission.start, mission.end)
+    satellite = satellite or mission.satellites[0].name
+    with style.on_paper():
+        figure = style.new_figure(title=finding(plan))
+        heights = [0.5 * len(mission.stations) + 0.4, 2.2, 1.5]
+        lanes, charge, data = figure.subplots(3, 1, sharex=True, height_ratios=heights)
+        lanes.set_xlim(mdates.date2num(begin), mdates.date2num(end))
+        _draw_lanes(lanes, mission, plan, selected)
+        _draw_charge(charge, mission, plan, satellite)
+        _draw_data(data, mission, plan, satellite)
+        for axes in (lanes, charge, data):
+            style.time_axis(axes, time_zone, label=axes is data)
+        _legend(figure, mission, plan)
+    return figure
+
+
+def finding(plan) -> str:
+    """What the week comes to, in one line."""
+    summary = plan.summary
+    flown = plan.contacts["pass_id"].nunique() if len(plan.contacts) else 0
+    if not len(plan.passes):
+        return "No pass in the span: no station sees a satellite"
+    return (
+        f"{flown} of {len(plan.passes)} passes flown, {_data_amount(summary['volume_mbit'])},"
+        f" lowest charge {summary['soc_min_pct']:.1f} % (floor {summary['soc_floor_pct']:g} %)"
+    )
+
+
+def pass_at(mission: Mission, plan, x: float, y: float, width: float) -> str | None:
+    """The pass_id under a point (x, y) of the lanes, when `width` days are in view; None where there is none."""
+    row = len(mission.stations) - 1 - int(np.floor(y))
+    if not 0 <= row < len(mission.stations) or not len(plan.passes):
+        return None
+    here = plan.passes[plan.passes["station"] == mission.stations[row].name]
+    away = np.maximum(days(here["aos_utc"]) - x, x - days(here["los_utc"]))
+    if not len(away) or away.min() > NEAR * width:
+        return None
+    return str(here["pass_id"].iloc[int(away.argmin())])
+
+
+def days(moments) -> np.ndarray:
+    """Moments (n,) as matplotlib's day numbers."""
+    return mdates.date2num(pd.to_datetime(moments, utc=True).to_numpy()) if len(moments) else np.empty(0)
+
+
+def _data_amount(mbit: float) -> str:
+    return f"{mbit / 1000:.0f} Gbit" if mbit >= 10_000 else f"{mbit:.0f} Mbit"
+
+
+def _draw_lanes(axes, mission: Mission, plan, selected: str | None) -> None:
+    marks = style.mode_marks(_modes(mission))
+    count = len(mission.stations)
+    for row, station in enumerate(mission.stations):
+        foot = count - 1 - row
+        _draw_closures(axes, mission, station, foot)
+        passes = plan.passes[plan.passes["station"] == station.name]
+        _draw_passes(axes, passes, foot)
+        contacts = plan.contacts[plan.contacts["station"] == station.name]
+        for index, (mode, mark) in enumerate(marks.items()):
+            _draw_sessions(
+                axes, contacts[contacts["mode"] == mode], foot, mark, FIRST_MARKER + MARKER_STEP * (index % 2)
+            )
+        axes.axhline(foot, color=style.PALE, linewidth=0.6, zorder=1)
+        _point_out(axes, passes[passes["pass_id"] == selected], foot)
+    flown = plan.contacts.groupby("station")["pass_id"].nunique() if len(plan.contacts) else {}
+    names = [
+        f"{station.name}\n{flown.get(station.name, 0)} of {(plan.passes['station'] == station.name).sum()}"
+        for station in mission.stations
+    ]
+    axes.set_yticks(count - 0.5 - np.arange(count), labels=names)
+    for label in axes.get_yticklabels():
+        label.set_parse_math(False)
+    axes.tick_params(axis="y", length=0)
+    axes.set_ylim(0, count)
+    axes.set_ylabel("station, passes flown of all")
+    axes.tick_params(axis="x", labelbottom=False)
+
+
+def _draw_closures(axes, mission: Mission, station, foot: float) -> None:
+    start, day_s = mdates.date2num(mission.start), 86_400.0
+    edges_s = np.array([0.0, *np.ravel(open_windows_s(mission, station)), mission.span_s]).reshape(-1, 2)
+    shut = [
+        Rectangle((start + begin_s / day_s, foot + 0.02), (end_s - begin_s) / day_s, 0.96)
+        for begin_s, end_s in edges_s
+        if end_s > begin_s
+    ]
+    axes.add_collection(
+        PatchCollection(shut, facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", linewidth=0, zorder=0.5)
+    )
+
+
+def _draw_passes(axes, passes: pd.DataFrame, foot: float) -> None:
+    """A bar as long as the pass and as high as it climbs; hollow where nothing can be sent."""
+    begin, end = days(passes["aos_utc"]), days(passes["los_utc"])
+    top = 0.08 + (FLOWN_TOP - FOOT - 0.08) * passes["max_elevation_deg"].to_numpy(dtype=float) / 90
+    bars = np.array([Rectangle((b, foot + FOOT), e - b, t) for b, e, t in zip(begin, end, top, strict=True)])
+    hollow = passes["verdict"].isin(["unusable", "dropped"]).to_numpy()
+    for chosen, face, edge in ((hollow, "white", "#B0B0B0"), (~hollow, style.FAINT, "#707070")):
+        axes.add_collection(PatchCollection(bars[chosen], facecolor=face, edgecolor=edge, linewidth=0.7, zorder=2))
+    dropped = (passes["verdict"] == "dropped").to_numpy()
+    axes.plot(((begin + end) / 2)[dropped], np.full(dropped.sum(), foot + FIRST_MARKER), "x", color=style.BLACK, ms=4)
+
+
+def _draw_sessions(axes, contacts: pd.DataFrame, foot: float, mark, marker_height: float) -> None:
+    colour, marker, hatch = mark
+    begin, end = days(contacts["tx_on_utc"]), days(contacts["tx_off_utc"])
+    bars = [Rectangle((b, foot + FOOT), e - b, FLOWN_TOP - FOOT) for b, e in zip(begin, end, strict=True)]
+    axes.add_collection(
+        PatchCollection(bars, facecolor=colour, edgecolor=colour, hatch=hatch, linewidth=1.1, alpha=0.9, zorder=3)
+    )
+    heights = np.full(len(begin), foot + marker_height)
+    axes.plot((begin + end) / 2, heights, marker, color=colour, ms=4.2, mec="white", mew=0.3, zorder=4)
+
+
+def _point_out(axes, passes: pd.DataFrame, foot: float) -> None:
+    for begin, end in zip(days(passes["aos_utc"]), days(passes["los_utc"]), strict=True):
+        axes.axvspan(begin, end, color=style.YELLOW, alpha=0.5, zorder=0.8)
+        axes.plot([(begin + end) / 2], [foot + 0.5], "o", ms=22, mfc="none", mec=style.BLACK, mew=1.0, zorder=5)
+
+
+def _draw_charge(axes, mission: Mission, plan, satellite: str) -> None:
+    battery = plan.battery[plan.battery["satellite"] == satellite]
+    time = days(battery["time_utc"])
+    _shade_eclipses(axes, battery, time)
+    floor, end = mission.policy.soc_floor_pct, mission.policy.soc_end_pct
+    axes.plot(time, battery["soc_pct"], color=style.SKY_BLUE, linewidth=0.9, label="nominal", zorder=3)
+    axes.plot(time, battery["soc_worst_pct"], color=style.BLACK, linewidth=1.1, label="pessimistic", zorder=4)
+    axes.axhline(floor, color=style.VERMILLION, linestyle="--", linewidth=1.2, label=f"floor {floor:g} %", zorder=3)
+    axes.plot(
+        [mdates.date2num(mission.end)], [end], marker="<", ms=8, color=style.VERMILLION, clip_on=False, linestyle="",
+        label=f"at least {end:g} % at the end", zorder=5,
+    )  # fmt: skip
+    lowest_shown = floor
+    if len(battery):
+        lowest = int(np.argmin(battery["soc_worst_pct"].to_numpy()))
+        value = float(battery["soc_worst_pct"].iloc[lowest])
+        lowest_shown = min(floor, value)
+        axes.plot([time[lowest]], [value], "o", ms=6, mfc="none", mec=style.VERMILLION, mew=1.3, zorder=6)
+    axes.set_ylim(lowest_shown - 4, 101)
+    axes.set_ylabel("state of charge, %")
+    axes.legend(loc="lower left", ncols=4, borderaxespad=0.1, handlelength=1.8)
+    _name_satellite(axes, mission, satellite)
+    axes.tick_params(axis="x", labelbottom=False)
+
+
+def _shade_eclipses(axes, battery: pd.DataFrame, time: np.ndarray) -> None:
+    dark = np.isin(battery["sunlit"].to_numpy(), ["no", False, 0.0])
+    edges = np.flatnonzero(np.diff(np.concatenate([[False], dark, [False]]).astype(int)))
+    last = len(time) - 1
+    for begin, end in edges.reshape(-1, 2):
+        axes.axvspan(time[begin], time[min(end, last)], color="#E4E7EC", linewidth=0, zorder=0.5)
+
+
+def _draw_data(axes, mission: Mission, plan, satellite: str) -> None:
+    recorder = plan.recorder[plan.recorder["satellite"] == satellite]
+    time, stored = days(recorder["time_utc"]), recorder["stored_mbit"].to_numpy(dtype=float) / 1000
+    room = mission.satellite(satellite).spacecraft.recorder.usable_mbit / 1000
+    axes.fill_between(time, stored, color=style.GREEN, alpha=0.3, linewidth=0, zorder=2)
+    axes.plot(time, stored, color=style.GREEN, label="stored", zorder=3)
+    axes.axhline(room, color=style.BLACK, linestyle="-.", linewidth=1.0, label=f"room {room:,.0f} Gbit")
+    lost = float(recorder["lost_mbit"].iloc[-1]) / 1000 if len(recorder) else 0.0
+    if lost > 0:
+        axes.plot([], [], " ", label=f"{lost:,.1f} Gbit lost for want of room")
+    axes.set_ylim(0, max(room, stored.max(initial=0.0)) * 1.12)
+    axes.set_ylabel("data aboard, Gbit")
+    axes.legend(loc="upper left", ncols=3, borderaxespad=0.1, handlelength=1.8)
+
+
+def _name_satellite(axes, mission: Mission, satellite: str) -> None:
+    if len(mission.satellites) > 1:
+        axes.set_title(f"charge and data of {satellite}")
+
+
+def _legend(figure: Figure, mission: Mission, plan) -> None:
+    marks = style.mode_marks(_modes(mission))
+    handles = [
+        Line2D([], [], color=colour, marker=marker, linewidth=5, ms=5, mec="white", label=f"session, {mode}")
+        for mode, (colour, marker, _) in marks.items()
+    ]
+    handles += [
+        Patch(facecolor=style.FAINT, edgecolor="#707070", label="pass left out (as high as it climbs)"),
+        Patch(facecolor="white", edgecolor="#B0B0B0", label="pass unusable"),
+        Patch(facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", label="station closed"),
+        Patch(facecolor="#E4E7EC", label="eclipse"),
+    ]
+    if (plan.passes["verdict"] == "dropped").any():
+        handles.append(Line2D([], [], color=style.BLACK, marker="x", linestyle="", label="dropped by hand"))
+    figure.legend(handles=handles, loc="outside lower left", ncols=4)
+
+
+def _modes(mission: Mission) -> list[str]:
+    return [transmitter.mode for satellite in mission.satellites for transmitter in satellite.spacecraft.transmitter]
