@@ -2,44 +2,53 @@
 
 import numpy as np
 
-from planner.sky.sites import Sites, look_from
+from planner.sky.sites import Sites, look_from, rates_deg_s
 
-FINE_STEP_S = 0.25
-LONGEST_LAG_S = 180.0  # the slowest mount worth the name turns half a circle in this
+POINTS = 801  # around the top of each pass in question
+AROUND_S = 60.0  # and half a turn at the mount's rate, the most it can fall behind
+# Azimuth turns fastest at the top of a pass; a tenth is left for the little that the two fall apart.
+WORTH_A_LOOK = 0.9
 
 
-def lost_window_s(tracks, sites: Sites, passes):
-    """When the mount lags behind: begin and end, each (n,) [s after start], both at TCA if it never does.
+def lost_window_s(track, sites: Sites, station_index, aos_s, tca_s, los_s):
+    """When the mount lags behind one satellite's passes (n,): begin and end, both (n,), both at TCA if it never does.
 
     The mount follows until its limit, turns at full rate, and is back on the satellite when it has caught up. It does
-    not turn ahead of time; cable limits are not considered.
+    not turn ahead of time; the limits of its cables are not considered.
     """
-    begin_s, end_s = passes.tca_s.copy(), passes.tca_s.copy()
-    for k in np.flatnonzero(passes.max_elevation_deg > _steep_deg(sites)[passes.station_index]):
-        track, s = tracks[passes.satellite_index[k]], passes.station_index[k]
-        low, high = max(passes.aos_s[k], passes.tca_s[k] - LONGEST_LAG_S), passes.los_s[k]
-        high = min(high, passes.tca_s[k] + LONGEST_LAG_S)
-        time_s = np.linspace(low, high, 2 + int((high - low) / FINE_STEP_S))
-        view = look_from(*track.at(time_s), sites.position_km[s], sites.axes[s])
-        antenna = sites.stations[s].antenna
-        lost = _lagging(time_s, np.unwrap(view.azimuth_deg, period=360.0), antenna.max_azimuth_rate_deg_s)
-        lost |= _lagging(time_s, view.elevation_deg, antenna.max_elevation_rate_deg_s)
-        if lost.any():
-            begin_s[k], end_s[k] = time_s[lost][0], time_s[lost][-1] + FINE_STEP_S
-    return begin_s, np.minimum(end_s, passes.los_s)
+    begin_s, end_s = tca_s.copy(), tca_s.copy()
+    antennas = [station.antenna for station in sites.stations]
+    limits = np.array([(a.max_azimuth_rate_deg_s, a.max_elevation_rate_deg_s) for a in antennas]).reshape(-1, 2)
+    k = np.flatnonzero(_may_be_too_fast(track, sites, station_index, tca_s, limits[station_index]))
+    if not k.size:
+        return begin_s, end_s
+    place, limit = station_index[k], limits[station_index[k]]
+    reach_s = AROUND_S + 180.0 / limit.min(axis=1)
+    time_s = np.linspace(np.maximum(aos_s[k], tca_s[k] - reach_s), np.minimum(los_s[k], tca_s[k] + reach_s), POINTS)
+    view = look_from(*track.at(time_s), sites.position_km[place], sites.axes[place])
+    lost = _lagging(time_s, np.unwrap(view.azimuth_deg, period=360.0, axis=0), limit[:, 0])
+    lost |= _lagging(time_s, view.elevation_deg, limit[:, 1])
+    behind = np.flatnonzero(lost.any(axis=0))
+    # the mount leaves the satellite one point before it is first behind
+    first, last = np.argmax(lost, axis=0) - 1, POINTS - 1 - np.argmax(lost[::-1], axis=0)
+    begin_s[k[behind]], end_s[k[behind]] = time_s[first[behind], behind], time_s[last[behind], behind]
+    return begin_s, end_s
 
 
-def _steep_deg(sites: Sites):
-    """Below this elevation a satellite at 2 deg/s (lower than any stays up) cannot outrun the mount."""
-    azimuth = np.array([station.antenna.max_azimuth_rate_deg_s for station in sites.stations])
-    elevation = np.array([station.antenna.max_elevation_rate_deg_s for station in sites.stations])
-    steep = np.degrees(np.arccos(np.minimum(2.0 / azimuth, 1.0)))
-    return np.where(elevation < 2.0, 0.0, steep)
+def _may_be_too_fast(track, sites: Sites, station_index, tca_s, limits):
+    """Passes whose rates at TCA come near a limit, (n,) bool; elevation cannot outrun the line of sight itself."""
+    position_km, velocity_km_s = track.at(tca_s)
+    site_km, axes = sites.position_km[station_index], sites.axes[station_index]
+    azimuth_rate, _ = rates_deg_s(position_km, velocity_km_s, site_km, axes)
+    distance_km, speed_km_s = np.linalg.norm(position_km - site_km, axis=-1), np.linalg.norm(velocity_km_s, axis=-1)
+    sight_rate = np.degrees(speed_km_s / distance_km)
+    azimuth_limit, elevation_limit = limits.T
+    return (np.abs(azimuth_rate) > WORTH_A_LOOK * azimuth_limit) | (sight_rate > elevation_limit)
 
 
 def _lagging(time_s, angle_deg, rate_deg_s):
-    """Where a follower that turns at most `rate_deg_s` is behind `angle_deg` (n,)."""
+    """Where a follower that turns at most `rate_deg_s` (n,) is behind `angle_deg` (m, n), moments first."""
     run = rate_deg_s * (time_s - time_s[0])
-    behind = angle_deg - (np.minimum.accumulate(angle_deg - run) + run)
-    ahead = (np.maximum.accumulate(angle_deg + run) - run) - angle_deg
+    behind = angle_deg - (np.minimum.accumulate(angle_deg - run, axis=0) + run)
+    ahead = (np.maximum.accumulate(angle_deg + run, axis=0) - run) - angle_deg
     return np.maximum(behind, ahead) > 1e-6

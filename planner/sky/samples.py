@@ -8,7 +8,7 @@ from planner.sky.clock import Clock
 from planner.sky.frames import acceleration_km_s2
 from planner.sky.mount import lost_window_s
 from planner.sky.passes import Passes
-from planner.sky.sites import Sites, look_from
+from planner.sky.sites import Sites, look_from, rates_deg_s
 from planner.sky.sun import sun_position_km
 from planner.units import C_M_S, dot, unit_vector
 
@@ -18,7 +18,8 @@ class Samples:
     """Flat arrays over moments (m,); pass k owns `offsets[k]:offsets[k + 1]`, from its AOS through its TCA to its LOS.
 
     position_km, velocity_km_s (m, 3) are Earth-fixed. `sun_separation_deg` is the Sun's angle from the ground antenna's
-    axis. `trackable` is False while the mount is too slow for the pass. Angles are geometric.
+    axis. `trackable` is False while the mount is too slow: from `lost_from_s` to `lost_to_s` of the pass, (n,) each and
+    both at TCA where it never is. Angles are geometric.
     """
 
     offsets: np.ndarray
@@ -35,9 +36,16 @@ class Samples:
     elevation_rate_deg_s: np.ndarray
     sun_separation_deg: np.ndarray
     trackable: np.ndarray
+    lost_from_s: np.ndarray
+    lost_to_s: np.ndarray
 
     def __len__(self) -> int:
         return len(self.time_s)
+
+    @property
+    def lost_s(self) -> np.ndarray:
+        """Seconds of each pass lost because the mount is too slow, (n,)."""
+        return self.lost_to_s - self.lost_from_s
 
     def of(self, pass_index: int) -> slice:
         """The samples of one pass."""
@@ -58,11 +66,14 @@ def sample_passes(clock: Clock, tracks, stations, passes: Passes, step_s: float 
     """Every pass sampled at most `step_s` apart, with AOS, TCA and LOS among the samples."""
     pass_index, time_s, offsets = _moments(passes, step_s)
     position_km, velocity_km_s = np.empty((len(time_s), 3)), np.empty((len(time_s), 3))
-    satellite = passes.satellite_index[pass_index]
-    for index, track in enumerate(tracks):
-        mine = np.flatnonzero(satellite == index)
-        position_km[mine], velocity_km_s[mine] = track.at(time_s[mine])
+    lost_from_s, lost_to_s = passes.tca_s.copy(), passes.tca_s.copy()
     sites = Sites.of(stations)
+    for index, track in enumerate(tracks):
+        mine = np.flatnonzero(passes.satellite_index[pass_index] == index)
+        position_km[mine], velocity_km_s[mine] = track.at(time_s[mine])
+        k = np.flatnonzero(passes.satellite_index == index)
+        events_s = passes.aos_s[k], passes.tca_s[k], passes.los_s[k]
+        lost_from_s[k], lost_to_s[k] = lost_window_s(track, sites, passes.station_index[k], *events_s)
     station = passes.station_index[pass_index]
     site_km, axes = sites.position_km[station], sites.axes[station]
     view = look_from(position_km, velocity_km_s, site_km, axes)
@@ -70,7 +81,6 @@ def sample_passes(clock: Clock, tracks, stations, passes: Passes, step_s: float 
     away_km = position_km - site_km
     speed2 = dot(velocity_km_s, velocity_km_s)
     pull = dot(away_km, acceleration_km_s2(position_km, velocity_km_s))
-    begin_s, end_s = lost_window_s(tracks, sites, passes)
     return Samples(
         offsets=offsets,
         pass_index=pass_index,
@@ -85,7 +95,9 @@ def sample_passes(clock: Clock, tracks, stations, passes: Passes, step_s: float 
         azimuth_rate_deg_s=azimuth_rate,
         elevation_rate_deg_s=elevation_rate,
         sun_separation_deg=_separation_deg(away_km, sun_position_km(clock, time_s) - site_km),
-        trackable=~((time_s >= begin_s[pass_index]) & (time_s < end_s[pass_index])),
+        trackable=(time_s < lost_from_s[pass_index]) | (time_s >= lost_to_s[pass_index]),
+        lost_from_s=lost_from_s,
+        lost_to_s=lost_to_s,
     )
 
 
@@ -107,14 +119,3 @@ def _separation_deg(a, b):
     a, b = unit_vector(a), unit_vector(b)
     half = np.sqrt(dot(a - b, a - b)) / 2
     return 2 * np.degrees(np.arcsin(np.minimum(half, 1.0)))
-
-
-def rates_deg_s(position_km, velocity_km_s, site_km, axes):
-    """Azimuth and elevation rates (..., ) [deg/s] of the line of sight from places (..., 3) with local axes."""
-    east, north, up = np.moveaxis(np.einsum("...ij,...j->...i", axes, position_km - site_km), -1, 0)
-    east_rate, north_rate, up_rate = np.moveaxis(np.einsum("...ij,...j->...i", axes, velocity_km_s), -1, 0)
-    level2 = np.maximum(east**2 + north**2, 1e-12)
-    level = np.sqrt(level2)
-    azimuth = (east_rate * north - east * north_rate) / level2
-    elevation = (up_rate * level - up * (east * east_rate + north * north_rate) / level) / (level2 + up**2)
-    return np.degrees(azimuth), np.degrees(elevation)

@@ -101,3 +101,14 @@ def look_from(position_km, velocity_km_s, site_km, axes) -> Look:
         range_km=range_km,
         range_rate_km_s=dot(away_km, velocity_km_s) / range_km,
     )
+
+
+def rates_deg_s(position_km, velocity_km_s, site_km, axes):
+    """Azimuth and elevation rates (..., ) [deg/s] of the line of sight from places (..., 3) with local axes."""
+    east, north, up = np.moveaxis(np.einsum("...ij,...j->...i", axes, position_km - site_km), -1, 0)
+    east_rate, north_rate, up_rate = np.moveaxis(np.einsum("...ij,...j->...i", axes, velocity_km_s), -1, 0)
+    level2 = np.maximum(east**2 + north**2, 1e-12)
+    level = np.sqrt(level2)
+    azimuth = (east_rate * north - east * north_rate) / level2
+    elevation = (up_rate * level - up * (east * east_rate + north * north_rate) / level) / (level2 + up**2)
+    return np.degrees(azimuth), np.degrees(elevation)

@@ -97,7 +97,8 @@ def orbits(draw):
     mean_motion = np.sqrt(398600.4418 / axis_km**3) * DAY_S / (2 * np.pi)
     return element_set(
         mean_motion_rev_day=float(mean_motion), eccentricity=e, inclination_deg=draw(_angle(180)),
-        ra_of_asc_node_deg=draw(_angle(360)), arg_of_pericenter_deg=draw(_angle(360)), mean_anomaly_deg=draw(_angle(360)),
+        ra_of_asc_node_deg=draw(_angle(360)), arg_of_pericenter_deg=draw(_angle(360)),
+        mean_anomaly_deg=draw(_angle(360)),
     )  # fmt: skip
 
 

@@ -94,7 +94,9 @@ def test_ephem_finds_the_same_passes(kind, site):
             continue
         observer.date = ephem.Date(clock.datetime(aos_s - 300).replace(tzinfo=None))
         rise, _, _, top, down, _ = observer.next_pass(body)
-        found = [clock.seconds(ephem.Date(moment).datetime().replace(tzinfo=clock.start.tzinfo)) for moment in (rise, down)]
+        found = [
+            clock.seconds(ephem.Date(moment).datetime().replace(tzinfo=clock.start.tzinfo)) for moment in (rise, down)
+        ]
         assert found == pytest.approx([aos_s, los_s], abs=EPHEM_S)
         assert math.degrees(top) == pytest.approx(highest, abs=EPHEM_DEG)
         checked += 1

@@ -121,7 +121,7 @@ def test_both_apogees_of_a_molniya_type_orbit_are_seen_from_the_north():
 
 def test_two_maxima_in_one_pass_give_one_pass_with_the_higher_as_tca():
     """A pass of a Molniya type orbit that dips in the middle and stays above the mask."""
-    clock, elements, track, passes = passes_of("molniya_type", [station(10.0, 60.0, min_elevation_deg=0.0)])
+    _, _, track, passes = passes_of("molniya_type", [station(10.0, 60.0, min_elevation_deg=0.0)])
     doubles = 0
     for aos_s, los_s, highest in zip(passes.aos_s, passes.los_s, passes.max_elevation_deg, strict=True):
         elevation = look(*track.at(np.linspace(aos_s, los_s, 2001)), station(10.0, 60.0)).elevation_deg
