@@ -3,6 +3,9 @@
 Method: ITU-R P.618-13 section 2.5, with P.676-12 (gas), P.840 (cloud), P.837, P.838 and P.839 (rain) and P.618-13
 section 2.4.1 (scintillation), from the recommendations' digital maps at the station's coordinates and height.
 
+The elevation is the geometric one: refraction (0.15 deg at 5 deg) is neglected, to the safe side, and so is the
+spreading of the beam (some tenths of a decibel at 5 deg, from memory).
+
 What the library leaves open is closed here:
 
 - Its P.676 is version 11 unless told otherwise (10 % apart at 26 GHz): version 12 is set before every use.

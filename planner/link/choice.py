@@ -7,6 +7,9 @@ import itertools
 
 import numpy as np
 
+# Percentiles of the year that stand for the fading distribution; rain ends at 5 %, hence the two rows there.
+FADING_PCT = (0.001, 0.003, 0.01, 0.03, 0.1, 0.3, 1.0, 2.0, 5.0, 5.001, 10.0, 20.0, 30.0, 50.0)
+
 
 def fastest_row(esn0_db, needed_db, allowed):
     """Index of the fastest row whose need is met (n,), -1 where none is or where `allowed` is false.

@@ -8,6 +8,7 @@ import numpy as np
 from planner.errors import InputError
 from planner.link.atmosphere import FREQUENCY_GHZ, UNAVAILABILITY_PCT
 from planner.link.budget import Lines, asked_unavailability_pct, budget_at
+from planner.link.choice import FADING_PCT, share_of_year
 from planner.link.coding import Modcod, ebn0_db_of, find_modcod, information_rate_mbps, modcods_of
 from planner.link.flux import CHECK_YOUR_LICENCE, flux_limit
 from planner.link.geometry import Geometry, circular_geometry, mean_radius_km, sampled_geometry
@@ -125,7 +126,7 @@ def link_budget(
         transmitter = named_mode(craft, mode)
         geometry = _at_tca(sky, row, craft, transmitter, place, policy.elements_refresh_days)
         where = f"pass {pass_id} at TCA, {sky.clock.iso(float(sky.passes.tca_s[row]))}"
-    lines = budget_at(transmitter, place, geometry, (asked_unavailability_pct(availability_pct),))
+    lines = budget_at(transmitter, place, geometry, (asked_unavailability_pct(availability_pct),), FADING_PCT)
     chosen = _chosen(transmitter, modcod, float(lines.esn0_db[0, 0]), policy.link_margin_db)
     return _page(mission, craft, place, transmitter, chosen, availability_pct, geometry, lines, where)
 
@@ -180,6 +181,7 @@ def _page(mission, craft, place, transmitter, modcod, availability_pct, geometry
         *_path_lines(transmitter, geometry, lines, where),
         *_receive_lines(transmitter, place, lines),
         *_code_lines(mission, transmitter, modcod, esn0_db, ebn0_db, margin_db),
+        ("margin not below zero", 100 * _share(transmitter, modcod, lines), "% of year", "P.618-13 at 14 percentiles"),
         *_beside_lines(transmitter, value, limit),
     ]
     return Budget(
@@ -210,6 +212,12 @@ SHARED = (
 def _scalar(number) -> float | None:
     """The one number of an array, as a plain float."""
     return None if number is None else float(np.asarray(number).reshape(-1)[0])
+
+
+def _share(transmitter: Transmitter, modcod: Modcod, lines: Lines) -> float:
+    """Share of the year with Es/N0 at the required value and implementation loss, or above."""
+    need_db = modcod.required_esn0_db + transmitter.implementation_loss_db
+    return float(share_of_year(lines.esn0_db[1:] - need_db, FADING_PCT)[0])
 
 
 def _path_lines(transmitter: Transmitter, geometry: Geometry, lines: Lines, where: str) -> list[tuple]:

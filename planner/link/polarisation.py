@@ -30,7 +30,8 @@ def polarisation_loss_db(
 ) -> float | None:
     """The loss into the best of the station's polarisations [dB], or None where it has none for this wave.
 
-    A linear antenna's own axial ratio (its cross-polarised leakage) is neglected, and its tilt is taken as aligned.
+    A linear antenna's own axial ratio (its cross-polarised leakage) is neglected, and its tilt is taken as aligned:
+    Faraday rotation, large below 1 GHz, is neglected too.
     """
     if sent in heard:
         return 0.0 if sent in LINEAR else mismatch_loss_db(sent_axial_ratio_db, heard_axial_ratio_db)

@@ -6,7 +6,7 @@ from functools import cached_property
 import numpy as np
 
 from planner.link.budget import Lines, asked_unavailability_pct, budget_at, cannot_hear
-from planner.link.choice import fastest_row, share_of_year, variable_rows, worthwhile_rows
+from planner.link.choice import FADING_PCT, fastest_row, share_of_year, variable_rows, worthwhile_rows
 from planner.link.coding import Modcod, information_rate_mbps, modcods_of
 from planner.link.flux import flux_limit
 from planner.link.geometry import Geometry, sampled_geometry
@@ -15,8 +15,6 @@ from planner.mission.models import Mission, Policy
 from planner.mission.transmitter import Transmitter
 from planner.sky import Sky
 
-# Percentiles of the year that stand for the fading distribution; rain ends at 5 %, hence the two rows there.
-FADING_PCT = (0.001, 0.003, 0.01, 0.03, 0.1, 0.3, 1.0, 2.0, 5.0, 5.001, 10.0, 20.0, 30.0, 50.0)
 NEVER_HEARD_DB = -1000.0  # Es/N0 where the station cannot hear the mode
 COLUMNS = (
     "elevation_deg", "off_axis_deg", "attenuation_db", "system_temperature_k", "gt_dbk", "cn0_dbhz", "esn0_db",
@@ -48,7 +46,7 @@ class LinkTable:
     """Arrays (n,) over the samples of one satellite's passes; `sample_index` points into `sky.samples`.
 
     `pass_rows` (m,) points into `sky.passes`; pass k owns offsets[k]:offsets[k + 1]. `reasons` (m,) says why a pass
-    cannot be used in this mode, empty where it can.
+    cannot be used in this mode, empty where it can. Columns are nan where the station cannot hear the mode.
     """
 
     satellite: str

@@ -129,16 +129,17 @@ def test_the_poles_have_values(latitude_deg):
 @given(
     latitude_deg=st.floats(-90, 90),
     longitude_deg=st.floats(-180, 360),
-    height_km=st.floats(-0.4, 5),
+    height_km=st.floats(-0.5, 9),
+    rain_rate_mm_h=st.none() | st.floats(0, 1e6),
     frequency_ghz=st.floats(1, 55),
     elevation_deg=st.floats(0, 90),
     unavailability_pct=st.floats(0.001, 50),
 )
 def test_everywhere_attenuation_is_a_number_and_not_a_gain(
-    latitude_deg, longitude_deg, height_km, frequency_ghz, elevation_deg, unavailability_pct
+    latitude_deg, longitude_deg, height_km, rain_rate_mm_h, frequency_ghz, elevation_deg, unavailability_pct
 ):
     parts = total_attenuation_db(
-        Site(latitude_deg, longitude_deg, height_km),
+        Site(latitude_deg, longitude_deg, height_km, rain_rate_mm_h),
         frequency_ghz,
         elevation_deg,
         unavailability_pct,
