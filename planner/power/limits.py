@@ -15,6 +15,20 @@ if TYPE_CHECKING:
 RESOLUTION = 1e-6
 
 
+CELL_LIMITS = (
+    "cell voltage under load",
+    "cell voltage",
+    "cell discharge current",
+    "cell charge current",
+    "charging too cold",
+    "charging too hot",
+)
+CELL_CAUTION = (
+    "lithium cells outside their limits can be damaged, vent or burn: the cell maker's data sheet and the launch and"
+    " battery safety review decide, not this plan"
+)
+
+
 class Breach(NamedTuple):
     """A limit that breaks: when it begins to, and the worst value until it holds again, against its bound."""
 
@@ -23,6 +37,11 @@ class Breach(NamedTuple):
     value: float
     bound: float
     unit: str
+
+    @property
+    def caution(self) -> str:
+        """What to heed where the breach is one of the lithium cells themselves; empty otherwise."""
+        return CELL_CAUTION if self.limit in CELL_LIMITS else ""
 
 
 def find_breaches(series: "BatterySeries", policy: Policy) -> tuple[Breach, ...]:

@@ -145,7 +145,9 @@ def _edges_s(session, transmitter, before_s, after_s, grid_s):
         session.tx_off_s + after_s,
     ]
     begin_s, end_s = np.clip([min(marks_s), max(marks_s)], 0.0, grid_s[-1])
-    regular_s = np.arange(begin_s, end_s, LONGEST_SESSION_INTERVAL_S)
+    regular_s = np.arange(
+        np.ceil(begin_s / LONGEST_SESSION_INTERVAL_S) * LONGEST_SESSION_INTERVAL_S, end_s, LONGEST_SESSION_INTERVAL_S
+    )
     first, last = np.searchsorted(grid_s, [begin_s, end_s])
     edges_s = merged_edges_s(marks_s, regular_s, grid_s[first:last], span_s=grid_s[-1])
     return edges_s[(edges_s >= begin_s) & (edges_s <= end_s)]

@@ -166,6 +166,20 @@ def test_pack_figures(power):
     assert power.pack_resistance_ohm(50.0, 25.0, "nominal") == pytest.approx(0.014 * 4 / 2)
 
 
+@pytest.mark.parametrize(("idle", "in_session"), [("tumbling", "station"), ("nadir", "tumbling"), ("sun", "station")])
+def test_every_pair_of_laws_can_follow_one_another(idle, in_session):
+    laws = {"idle": Law(law=idle), "session": Law(law=in_session)}
+    series = power_of(mission(craft(pointing=Pointing(**laws)), days=0.3)).simulate([contact()])
+    assert set(series.attitude) == {idle, "slew", in_session}
+    assert np.all(np.isfinite(series.array_w))
+
+
+@pytest.mark.parametrize("tx_on_s", [-3000.0, 90_000.0])
+def test_a_session_outside_the_span_changes_nothing(power, tx_on_s):
+    assert power.session_draw(contact(tx_on_s)).own_wh == 0.0
+    assert np.array_equal(power.simulate([contact(tx_on_s)]).soc_pct, power.simulate([]).soc_pct)
+
+
 def test_a_session_of_another_satellite_is_refused(power):
     with pytest.raises(ValueError, match="sessions must be of TEST-1, got OTHER"):
         power.simulate([contact(satellite="OTHER")])

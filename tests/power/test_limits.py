@@ -121,3 +121,11 @@ def test_breaches_come_in_order_of_time():
     times_s = [breach.time_s for breach in series.breaches(policy())]
     assert len(times_s) >= 3
     assert times_s == sorted(times_s)
+
+
+def test_breaches_that_harm_a_lithium_cell_carry_a_caution():
+    cold = week([20.0], [5.0], battery_c=np.full(1, -3.0))
+    (found,) = breaches(run(pack(charge_inhibit=False), cold, 50.0), "charging too cold")
+    assert "cell maker's data sheet" in found.caution
+    (floor,) = breaches(run(pack(), week([0.0], [10.0]), 60.0), "SoC floor")
+    assert floor.caution == ""

@@ -6,6 +6,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from power_examples import LEAKLESS, SMALLEST_R_MOHM, battery, craft, rising_curves, run, week
 
+from planner.power.battery import describe_cell
 from planner.power.loads import Draw
 
 A_JOULE_A_DAY = 1.0  # what the books may stay open
@@ -80,6 +81,28 @@ def test_worked_case_of_an_eclipse():
     series = run(own, week([0.0], [5.0 / 0.95], duration_s=35.6 * 60))
     the_last_digit_printed = 0.005
     assert series.stored_wh[0] - series.stored_wh[1] == pytest.approx(3.12, abs=the_last_digit_printed)
+
+
+@given(
+    st.lists(st.tuples(st.floats(0, 25), st.floats(0, 25)), min_size=1, max_size=60),
+    st.floats(0.3, 0.95),
+    st.integers(1, 3),
+)
+def test_more_cells_never_break_a_floor_in_watt_hours_that_fewer_held(rows, fill, more):
+    """Start and floor in stored energy, losses on, self-discharge (which grows with the pack) off.
+
+    Only above the knee at a tenth of charge: below it a larger pack may sit at so much less voltage that it loses more.
+    """
+    array_w, load_w = np.array(rows).T
+    leakless = {"cells_series": 4, "self_discharge_pct_month": 0.0}
+    small, large = (craft(battery(cells_parallel=parallel, **leakless)) for parallel in (2, 2 + more))
+    few = run(small, week(array_w, load_w), 100 * fill)
+    cell_j = few.stored_wh[0] * 3600 / (4 * (2 + more))
+    own = describe_cell(large.battery, health=1.0)
+    many = run(large, week(array_w, load_w), float(own.soc_pct(own.charge_with_energy_c(cell_j))))
+    above_the_knee = np.minimum.accumulate(np.minimum(few.soc_pct, many.soc_pct)) > 10.0
+    a_milliwatt_hour = 1e-3
+    assert np.all((many.stored_wh - few.stored_wh)[above_the_knee] >= -a_milliwatt_hour)
 
 
 def test_the_bus_sags_under_the_transmitter():
