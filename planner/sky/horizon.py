@@ -62,24 +62,34 @@ def _sine_and_slope(position_km, velocity_km_s, site_km, up):
     return sine, rate
 
 
+def _bulge_km(track: Track):
+    """How far any height may rise above a straight line beside each grid point, (n,)."""
+    h = np.diff(track.time_s)
+    radius_km = np.sqrt(dot(track.position_km, track.position_km))
+    speed_km_s = np.sqrt(dot(track.velocity_km_s, track.velocity_km_s))
+    pull = EARTH_GM_KM3_S2 / radius_km**2 + 2 * EARTH_RATE_RAD_S * speed_km_s + EARTH_RATE_RAD_S**2 * radius_km
+    widest = np.maximum(np.append(h, 0), np.append(0, h))
+    return 1.2 * pull * widest**2 / 8  # a fifth more, because the pull itself changes within a step
+
+
 def _nodes_near_the_horizon(track: Track, sites: Sites) -> _Nodes:
     """Grid points that bound an interval in which the satellite may be above the horizon plane.
 
     Between two points the height above the plane rises above both by at most acceleration x step^2 / 8.
     """
     up = sites.axes[:, 2]
-    h = np.diff(track.time_s)
-    radius_km = np.sqrt(dot(track.position_km, track.position_km))
-    speed_km_s = np.sqrt(dot(track.velocity_km_s, track.velocity_km_s))
-    pull = EARTH_GM_KM3_S2 / radius_km**2 + 2 * EARTH_RATE_RAD_S * speed_km_s + EARTH_RATE_RAD_S**2 * radius_km
-    widest = np.maximum(np.append(h, 0), np.append(0, h))
-    bulge_km = 1.2 * pull * widest**2 / 8  # a fifth more, because the pull itself changes within a step
-    height_km = up @ track.position_km.T - dot(up, sites.position_km)[:, None]
-    near = height_km > -bulge_km
-    bounding = near.copy()
-    bounding[:, 1:] |= near[:, :-1]
-    bounding[:, :-1] |= near[:, 1:]
-    station_index, node = np.nonzero(bounding)
+    level_km = dot(up, sites.position_km)[:, None] - _bulge_km(track)
+    xyz_km = np.ascontiguousarray(track.position_km.T)
+    nodes = []
+    for zenith, level in zip(up, level_km, strict=True):
+        # einsum, because a product of this shape would wake the linear algebra library's threads
+        near = np.einsum("i,in->n", zenith, xyz_km) > level
+        bounding = near.copy()
+        bounding[1:] |= near[:-1]
+        bounding[:-1] |= near[1:]
+        nodes.append(np.flatnonzero(bounding))
+    node = np.concatenate(nodes) if nodes else np.zeros(0, dtype=int)
+    station_index = np.repeat(np.arange(len(nodes)), [len(each) for each in nodes])
     linked = np.zeros(len(node), dtype=bool)
     linked[:-1] = (np.diff(node) == 1) & (np.diff(station_index) == 0)
     sine, slope = _sine_and_slope(

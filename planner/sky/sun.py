@@ -12,6 +12,7 @@ from planner.sky.track import evaluate
 from planner.units import DAY_S, EARTH_FLATTENING, EARTH_RADIUS_KM, SUN_RADIUS_KM, dot, unit_vector
 
 SAMPLE_S = DAY_S / 4  # a spline through these is within 0.001 arc seconds of the ephemeris
+TABLE_S = DAY_S / 48  # straight lines between these in longitude: within 0.001 arc seconds again
 
 
 @lru_cache(maxsize=1)
@@ -26,8 +27,11 @@ def _ephemeris():
 
 
 @lru_cache(maxsize=8)
-def _sun_spline(clock: Clock):
-    """Apparent geocentric Sun [km] in axes that do not turn with the Earth (mean equinox of date, GMST 1982)."""
+def _sun_table(clock: Clock):
+    """Moments (n,) and, in columns, the Sun's Earth-fixed longitude [rad], distance from the axis and z [km].
+
+    Apparent geocentric Sun of DE421 with light time and aberration, by skyfield. The longitude runs on without jumps.
+    """
     from scipy.interpolate import CubicSpline
     from skyfield.framelib import itrs
 
@@ -35,45 +39,52 @@ def _sun_spline(clock: Clock):
     time_s = np.arange(-1.5 * DAY_S, clock.span_s + 1.5 * DAY_S + SAMPLE_S, SAMPLE_S)
     ephemeris = _ephemeris()
     fixed_km = ephemeris["earth"].at(moments(clock, time_s)).observe(ephemeris["sun"]).apparent().frame_xyz(itrs).km.T
-    return CubicSpline(time_s, turn(fixed_km, -clock.earth_angle_rad(time_s)[0]))
+    # smooth only in axes that do not turn with the Earth
+    unturned = CubicSpline(time_s, turn(fixed_km, -clock.earth_angle_rad(time_s)[0]))
+    time_s = np.arange(time_s[0], time_s[-1], TABLE_S)
+    x, y, z = turn(unturned(time_s), clock.earth_angle_rad(time_s)[0]).T
+    return time_s, np.unwrap(np.arctan2(y, x)), np.hypot(x, y), z
 
 
 def sun_position_km(clock: Clock, time_s):
-    """Apparent geocentric position of the Sun, Earth-fixed, (..., 3) [km] for moments (...) [s after start].
+    """Apparent geocentric position of the Sun, Earth-fixed, (..., 3) [km] for moments (...) [s after start]."""
+    at_s, longitude, across, along = _sun_table(clock)
+    longitude_rad, across_km, z_km = (np.interp(time_s, at_s, column) for column in (longitude, across, along))
+    return np.stack([across_km * np.cos(longitude_rad), across_km * np.sin(longitude_rad), z_km], axis=-1)
 
-    DE421 with light time and aberration through skyfield, sampled every six hours and splined between.
+
+# The polar axis is stretched so that the oblate Earth becomes a sphere: sight lines and tangents stay so.
+STRETCH = np.array([1.0, 1.0, 1 / (1 - EARTH_FLATTENING)])
+
+
+def _lines_of_sight(position_km, sun_km, sides):
+    """Stretched place (..., 3), and unit vectors to points of the Sun's disc, on a line through the Earth's centre.
+
+    Side -1 is the Sun's edge nearest the Earth, 0 its centre, +1 the edge farthest from it.
     """
-    return turn(_sun_spline(clock)(time_s), clock.earth_angle_rad(time_s)[0])
-
-
-def _shadow_angles_rad(position_km, sun_km):
-    """Sun's centre from Earth's limb, and the Sun's half-width towards it, as the satellite sees them.
-
-    The polar axis is stretched so that the oblate Earth becomes a sphere: sight lines stay straight and tangents stay
-    tangents, so both angles' signs and ratio are those of cones over the ellipsoid.
-    """
-    stretch = np.array([1.0, 1.0, 1 / (1 - EARTH_FLATTENING)])
-    place = position_km * stretch
     to_sun_km = sun_km - position_km
-    towards_earth = -unit_vector(position_km)
-    sun_hat = unit_vector(to_sun_km)
-    across = unit_vector(towards_earth - dot(towards_earth, sun_hat)[..., None] * sun_hat)
-    centre = unit_vector(to_sun_km * stretch)
-    limb = unit_vector((to_sun_km + SUN_RADIUS_KM * across) * stretch)
-    radius_km = np.sqrt(dot(place, place))
-    earth_rad = np.arcsin(np.minimum(EARTH_RADIUS_KM / radius_km, 1.0))
-    separation_rad = np.arccos(np.clip(-dot(place, centre) / radius_km, -1, 1))
-    half_width_rad = 2 * np.arcsin(np.sqrt(dot(limb - centre, limb - centre)) / 2)
-    return separation_rad - earth_rad, half_width_rad, earth_rad
+    to_sun = to_sun_km / _length(to_sun_km)
+    outwards = position_km - dot(position_km, to_sun)[..., None] * to_sun
+    outwards = outwards * (SUN_RADIUS_KM / np.maximum(_length(outwards), 1e-9))
+    lines = [(to_sun_km + side * outwards) * STRETCH for side in sides]
+    return position_km * STRETCH, [line / _length(line) for line in lines]
+
+
+def _length(vector):
+    return np.sqrt(dot(vector, vector))[..., None]
 
 
 def visible_sun_fraction(position_km, sun_km):
     """Share of the Sun's disc that the oblate Earth leaves visible, (...) from 0 (umbra) to 1 (sunlight).
 
     Cones over the ellipsoid, so the penumbra is included; the disc is uniform (no limb darkening), air is neglected.
-    The overlap of two circles is that of plane geometry with the Earth's limb given its curvature on the sphere.
+    The overlap of two circles is that of plane geometry, the Earth's limb with the curvature it has on the sphere.
     """
-    above_rad, sun_rad, earth_rad = _shadow_angles_rad(position_km, sun_km)
+    place, (near, centre, far) = _lines_of_sight(position_km, sun_km, (-1.0, 0.0, 1.0))
+    radius_km = _length(place)[..., 0]
+    earth_rad = np.arcsin(np.minimum(EARTH_RADIUS_KM / radius_km, 1.0))
+    above_rad = np.arccos(np.clip(-dot(place, centre) / radius_km, -1, 1)) - earth_rad
+    sun_rad = _length(far - near)[..., 0] / 2
     limb_rad = np.tan(np.minimum(earth_rad, np.pi / 2 - 1e-6))
     distance = np.clip(limb_rad + above_rad, np.abs(limb_rad - sun_rad), limb_rad + sun_rad)
     # half the chord's angles at the Sun's and at the Earth's centre
@@ -93,12 +104,14 @@ def eclipse_edges_s(track, clock: Clock):
     interval, side = np.tile(near, 2), np.repeat([-1.0, 1.0], len(near))
     cubics, begin_s = track.cubics[interval], track.time_s[interval]
 
-    def height_rad(time_s, k):
+    def height_km(time_s, k):
+        """Of the line of sight to the Sun's edge above the Earth, where it comes nearest."""
         position_km, _ = evaluate(cubics[k], time_s - begin_s[k])
-        above_rad, sun_rad, _ = _shadow_angles_rad(position_km, sun_position_km(clock, time_s))
-        return above_rad + side[k] * sun_rad
+        place, (edge,) = _lines_of_sight(position_km, sun_position_km(clock, time_s), [side[k][:, None]])
+        ahead_km = np.minimum(dot(place, edge), 0.0)
+        return np.sqrt(dot(place, place) - ahead_km**2) - EARTH_RADIUS_KM
 
-    return np.sort(crossings(height_rad, begin_s, track.time_s[interval + 1])[1])
+    return np.sort(crossings(height_km, begin_s, track.time_s[interval + 1])[1])
 
 
 def _near_the_shadow(track, sun_km):
@@ -106,7 +119,7 @@ def _near_the_shadow(track, sun_km):
 
     A cylinder of the Earth's radius, and a belt around it as wide as flattening, cones and a step's bend ask for.
     """
-    to_sun = unit_vector(sun_km)
+    to_sun = sun_km / _length(sun_km)
     behind_km = -dot(track.position_km, to_sun)
     square_km2 = dot(track.position_km, track.position_km)
     gap_km = np.sqrt(np.maximum(square_km2 - behind_km**2, 0.0)) - EARTH_RADIUS_KM
