@@ -14,7 +14,7 @@ from planner.sky.aging import pointing_error_deg
 from planner.sky.attitude import body_axes, off_axis_deg
 from planner.sky.sites import station_position_km
 from planner.sky.sun import sun_position_km
-from planner.units import C_M_S, DAY_S, EARTH_GM_KM3_S2, unit_vector
+from planner.units import C_M_S, DAY_S, EARTH_GM_KM3_S2, EARTH_RADIUS_KM, unit_vector
 
 AWAY_FROM_THE_SUN_DEG = 180.0  # where a budget without a date puts the Sun
 
@@ -68,13 +68,13 @@ def sampled_geometry(
 
 
 def circular_geometry(
-    satellite: Satellite, transmitter: Transmitter, station: Station, elevation_deg: float, element_age_days: float
+    satellite: Satellite, transmitter: Transmitter, elevation_deg: float, element_age_days: float
 ) -> Geometry:
     """Geometry of one elevation on a circular orbit at the satellite's mean height.
 
-    The satellite rises in a plane through the station's zenith, on a round Earth of the station's own radius that
-    does not turn; the Sun is out of the beam. Where the attitude depends on the Sun no elevation can tell the angle
-    off the antenna's axis: InputError.
+    The satellite rises in a plane through the station's zenith, on a round Earth of the equatorial radius that does
+    not turn; the Sun is out of the beam. Far from the equator the true range is longer, by up to 4 % near the poles.
+    Where the attitude depends on the Sun no elevation can tell the angle off the antenna's axis: InputError.
     """
     law = steady(session_law(satellite, transmitter), transmitter)
     parallel = np.linalg.norm(np.cross(unit_vector(law.axis), unit_vector(transmitter.boresight))) < 1e-6
@@ -83,11 +83,10 @@ def circular_geometry(
             f"mode {transmitter.mode!r} points by the Sun in its session, so its antenna's angle to the station is not"
             " a matter of elevation: give a pass instead of an elevation"
         )
-    station_radius_km = float(np.linalg.norm(station_position_km(station)))
     orbit_radius_km = mean_radius_km(satellite)
-    range_km = circular_slant_range_km(elevation_deg, orbit_radius_km, station_radius_km)
+    range_km = circular_slant_range_km(elevation_deg, orbit_radius_km, EARTH_RADIUS_KM)
     place = np.deg2rad(elevation_deg)
-    station_km = np.array([0.0, 0.0, station_radius_km])
+    station_km = np.array([0.0, 0.0, EARTH_RADIUS_KM])
     position_km = station_km + range_km * np.array([np.cos(place), 0.0, np.sin(place)])
     along = np.cross(np.array([0.0, 1.0, 0.0]), unit_vector(position_km))
     velocity_km_s = -np.sqrt(EARTH_GM_KM3_S2 / orbit_radius_km) * along

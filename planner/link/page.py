@@ -117,9 +117,9 @@ def link_budget(
         elevation_deg = _in_range("elevation_deg", elevation_deg, None)
         craft = named_satellite(mission, satellite)
         transmitter = named_mode(craft, mode)
-        geometry = circular_geometry(craft, transmitter, place, elevation_deg, policy.elements_refresh_days)
+        geometry = circular_geometry(craft, transmitter, elevation_deg, policy.elements_refresh_days)
         height_km = mean_radius_km(craft) - EARTH_RADIUS_KM
-        where = f"circular orbit at the mean height of {height_km:.0f} km, not a pass; round Earth"
+        where = f"circular orbit at the mean height of {height_km:.0f} km, not a pass"
     else:
         sky = sky or observe(mission)
         craft, row = _named_pass(mission, sky, pass_id, satellite, station)

@@ -28,7 +28,8 @@ class LinkOption:
 
     modcod : index into the table's `modcods`, -1 where not usable.   usable : the margin asked for is there, the
     mount can follow, the station hears the mode (and the flux is within its limit where the policy enforces it).
-    margin_db : against required value and implementation loss; where nothing is usable, of the slowest row.
+    margin_db : against required value and implementation loss, of the row sent; where a variable mode sends none, of
+    its slowest.
     rate_mbps : user information, 0 where not usable.   expected_rate_mbps : its mean over the year's fading, the
     MODCOD staying as planned, because the commands are aboard in advance.
     """
@@ -103,7 +104,12 @@ def link_table(mission: Mission, sky: Sky, satellite_name: str, mode: str) -> Li
     options = _options(
         mission.policy, transmitter, modcods, columns["esn0_db"], fading_esn0_db, time_s, offsets, allowed
     )
+    slowest_margin_db = columns["esn0_db"] - modcods[0].required_esn0_db - transmitter.implementation_loss_db
     unheard = {name: cannot_hear(transmitter, mission.station(name)) for name in set(stations)}
+    reasons = [
+        unheard[station] or _reason(mission.policy, own, columns, trackable, allowed, slowest_margin_db, options)
+        for station, own in zip(stations, map(slice, offsets[:-1], offsets[1:]), strict=True)
+    ]
     return LinkTable(
         satellite=satellite_name,
         mode=mode,
@@ -114,11 +120,7 @@ def link_table(mission: Mission, sky: Sky, satellite_name: str, mode: str) -> Li
         time_s=time_s,
         flux_bandwidth_hz=flux_limit(transmitter.frequency_mhz).bandwidth_hz,
         options=options,
-        reasons=tuple(
-            unheard[stations[k]]
-            or _reason(mission.policy, slice(*offsets[k : k + 2]), columns, trackable, allowed, options)
-            for k in range(len(stations))
-        ),
+        reasons=tuple(reasons),
         **columns,
     )
 
@@ -201,17 +203,17 @@ def _options(
     return tuple(option(modcods[k].name, np.where(usable[k], k, -1), k) for k in kept)
 
 
-def _reason(policy: Policy, mine: slice, columns, trackable, allowed, options) -> str:
-    """Why nothing can be sent in the samples `mine`; empty where something can."""
-    if any(option.usable[mine].any() for option in options):
+def _reason(policy: Policy, own: slice, columns, trackable, allowed, slowest_margin_db, options) -> str:
+    """Why nothing can be sent in a pass's `own` samples; empty where something can."""
+    if any(option.usable[own].any() for option in options):
         return ""
-    if not trackable[mine].any():
+    if not trackable[own].any():
         return "the station's mount is too slow for the whole pass"
-    if not allowed[mine].any():
-        excess_db = np.min((columns["flux_dbw_m2"] - columns["flux_limit_dbw_m2"])[mine])
+    if not allowed[own].any():
+        excess_db = np.min((columns["flux_dbw_m2"] - columns["flux_limit_dbw_m2"])[own])
         return f"power flux-density is above its limit throughout, by {excess_db:.1f} dB or more"
-    best = mine.start + int(np.argmax(np.where(allowed[mine], options[0].margin_db[mine], -np.inf)))
+    best = np.argmax(np.where(allowed[own], slowest_margin_db[own], -np.inf))
     return (
-        f"link margin reaches {options[0].margin_db[best]:.1f} dB at {columns['elevation_deg'][best]:.0f} deg,"
+        f"link margin reaches {slowest_margin_db[own][best]:.1f} dB at {columns['elevation_deg'][own][best]:.0f} deg,"
         f" {policy.link_margin_db:.1f} dB asked for"
     )
