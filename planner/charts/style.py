@@ -11,14 +11,8 @@ BLACK, ORANGE, SKY_BLUE, GREEN = "#000000", "#E69F00", "#56B4E9", "#009E73"
 YELLOW, BLUE, VERMILLION, PURPLE = "#F0E442", "#0072B2", "#D55E00", "#CC79A7"
 INK, FAINT, PALE = "#333333", "#8C8C8C", "#D9D9D9"  # text, secondary lines, areas
 
-# A mode is told by colour, by marker and by hatching, in the order in which the mission names its modes.
-MODE_MARKS = (
-    (BLUE, "^", "///"),
-    (ORANGE, "o", "..."),
-    (GREEN, "s", "xxx"),
-    (PURPLE, "D", "\\\\\\"),
-    (BLACK, "v", "++"),
-)
+# A mode is told by colour and by marker, in the order in which the mission names its modes.
+MODE_MARKS = ((BLUE, "^"), (ORANGE, "o"), (GREEN, "s"), (PURPLE, "D"), (BLACK, "v"))
 
 A4_LANDSCAPE_IN = (11.69, 8.27)
 A4_PORTRAIT_IN = (8.27, 11.69)
@@ -62,13 +56,14 @@ def on_paper():
 def new_figure(size_in=A4_LANDSCAPE_IN, title: str = "") -> Figure:
     """An empty figure that belongs to no window. `title` says the finding."""
     figure = Figure(figsize=size_in, layout="constrained")
+    figure.get_layout_engine().set(w_pad=0.1, h_pad=0.05)
     if title:
-        figure.suptitle(title, x=0.01, ha="left", fontsize=12.5, fontweight="bold")
+        figure.suptitle(title, x=0.012, ha="left", fontsize=min(12.5, 1.6 * size_in[0]), fontweight="bold")
     return figure
 
 
-def mode_marks(modes) -> dict[str, tuple[str, str, str]]:
-    """(colour, marker, hatch) of each mode, by name."""
+def mode_marks(modes) -> dict[str, tuple[str, str]]:
+    """(colour, marker) of each mode, by name."""
     return {mode: MODE_MARKS[index % len(MODE_MARKS)] for index, mode in enumerate(dict.fromkeys(modes))}
 
 
@@ -88,4 +83,11 @@ def time_axis(axes, time_zone: tzinfo = UTC, label: bool = True) -> None:
     axes.grid(True, axis="x", which="major")
     axes.set_axisbelow(True)
     if label:
-        axes.set_xlabel(f"time, {'UTC' if time_zone is UTC else time_zone}")
+        first = mdates.num2date(begin, tz=time_zone)
+        day = f", {first:%a %d %b %Y}" if end - begin <= 2.5 else f", {first:%Y}"
+        axes.set_xlabel(f"time, {'UTC' if time_zone is UTC else time_zone}{day}")
+
+
+def legend_above(axes, **options) -> None:
+    """A legend in one row above the axes, where it covers nothing."""
+    axes.legend(loc="lower left", bbox_to_anchor=(0.0, 0.985), ncols=6, borderaxespad=0.0, handlelength=1.8, **options)

@@ -147,20 +147,18 @@ def _draw_passes(axes, passes: pd.DataFrame, foot: float) -> None:
 
 
 def _draw_sessions(axes, contacts: pd.DataFrame, foot: float, mark, marker_height: float) -> None:
-    colour, marker, hatch = mark
+    colour, marker = mark
     begin, end = days(contacts["tx_on_utc"]), days(contacts["tx_off_utc"])
     bars = [Rectangle((b, foot + FOOT), e - b, FLOWN_TOP - FOOT) for b, e in zip(begin, end, strict=True)]
-    axes.add_collection(
-        PatchCollection(bars, facecolor=colour, edgecolor=colour, hatch=hatch, linewidth=1.1, alpha=0.9, zorder=3)
-    )
+    axes.add_collection(PatchCollection(bars, facecolor=colour, edgecolor=colour, linewidth=1.1, zorder=3))
     heights = np.full(len(begin), foot + marker_height)
     axes.plot((begin + end) / 2, heights, marker, color=colour, ms=4.2, mec="white", mew=0.3, zorder=4)
 
 
 def _point_out(axes, passes: pd.DataFrame, foot: float) -> None:
     for begin, end in zip(days(passes["aos_utc"]), days(passes["los_utc"]), strict=True):
-        axes.axvspan(begin, end, color=style.YELLOW, alpha=0.5, zorder=0.8)
-        axes.plot([(begin + end) / 2], [foot + 0.5], "o", ms=22, mfc="none", mec=style.BLACK, mew=1.0, zorder=5)
+        axes.add_patch(Rectangle((begin, foot), end - begin, 1.0, facecolor=style.YELLOW, alpha=0.5, zorder=0.8))
+        axes.plot([(begin + end) / 2], [foot + 0.5], "o", ms=24, mfc="none", mec=style.BLACK, mew=1.0, zorder=5)
 
 
 def _draw_charge(axes, mission: Mission, plan, satellite: str) -> None:
@@ -172,7 +170,7 @@ def _draw_charge(axes, mission: Mission, plan, satellite: str) -> None:
     axes.plot(time, battery["soc_worst_pct"], color=style.BLACK, linewidth=1.1, label="pessimistic", zorder=4)
     axes.axhline(floor, color=style.VERMILLION, linestyle="--", linewidth=1.2, label=f"floor {floor:g} %", zorder=3)
     axes.plot(
-        [mdates.date2num(mission.end)], [end], marker="<", ms=8, color=style.VERMILLION, clip_on=False, linestyle="",
+        [mdates.date2num(mission.end)], [end], marker="<", ms=8, color=style.VERMILLION, linestyle="",
         label=f"at least {end:g} % at the end", zorder=5,
     )  # fmt: skip
     lowest_shown = floor
@@ -180,20 +178,26 @@ def _draw_charge(axes, mission: Mission, plan, satellite: str) -> None:
         lowest = int(np.argmin(battery["soc_worst_pct"].to_numpy()))
         value = float(battery["soc_worst_pct"].iloc[lowest])
         lowest_shown = min(floor, value)
-        axes.plot([time[lowest]], [value], "o", ms=6, mfc="none", mec=style.VERMILLION, mew=1.3, zorder=6)
+        axes.plot(
+            [time[lowest]], [value], "o", ms=7, mfc="none", mec=style.VERMILLION, mew=1.3, zorder=6,
+            label=f"lowest {value:.1f} %",
+        )  # fmt: skip
     axes.set_ylim(lowest_shown - 4, 101)
     axes.set_ylabel("state of charge, %")
-    axes.legend(loc="lower left", ncols=4, borderaxespad=0.1, handlelength=1.8)
-    _name_satellite(axes, mission, satellite)
+    style.legend_above(axes)
+    if len(mission.satellites) > 1:
+        axes.set_ylabel(f"{satellite}\nstate of charge, %")
     axes.tick_params(axis="x", labelbottom=False)
 
 
 def _shade_eclipses(axes, battery: pd.DataFrame, time: np.ndarray) -> None:
     dark = np.isin(battery["sunlit"].to_numpy(), ["no", False, 0.0])
-    edges = np.flatnonzero(np.diff(np.concatenate([[False], dark, [False]]).astype(int)))
-    last = len(time) - 1
-    for begin, end in edges.reshape(-1, 2):
-        axes.axvspan(time[begin], time[min(end, last)], color="#E4E7EC", linewidth=0, zorder=0.5)
+    turns = np.flatnonzero(np.diff(dark, prepend=not dark[0], append=not dark[-1])) if len(dark) else np.empty(0, int)
+    edges = time[np.minimum(turns, len(time) - 1)]
+    axes.broken_barh(
+        [(begin, end - begin) for begin, end, shade in zip(edges, edges[1:], dark[turns[:-1]], strict=False) if shade],
+        (0.0, 1.0), transform=axes.get_xaxis_transform(), color="#E4E7EC", linewidth=0, zorder=0.5,
+    )  # fmt: skip
 
 
 def _draw_data(axes, mission: Mission, plan, satellite: str) -> None:
@@ -208,19 +212,14 @@ def _draw_data(axes, mission: Mission, plan, satellite: str) -> None:
         axes.plot([], [], " ", label=f"{lost:,.1f} Gbit lost for want of room")
     axes.set_ylim(0, max(room, stored.max(initial=0.0)) * 1.12)
     axes.set_ylabel("data aboard, Gbit")
-    axes.legend(loc="upper left", ncols=3, borderaxespad=0.1, handlelength=1.8)
-
-
-def _name_satellite(axes, mission: Mission, satellite: str) -> None:
-    if len(mission.satellites) > 1:
-        axes.set_title(f"charge and data of {satellite}")
+    style.legend_above(axes)
 
 
 def _legend(figure: Figure, mission: Mission, plan) -> None:
     marks = style.mode_marks(_modes(mission))
     handles = [
         Line2D([], [], color=colour, marker=marker, linewidth=5, ms=5, mec="white", label=f"session, {mode}")
-        for mode, (colour, marker, _) in marks.items()
+        for mode, (colour, marker) in marks.items()
     ]
     handles += [
         Patch(facecolor=style.FAINT, edgecolor="#707070", label="pass left out (as high as it climbs)"),
