@@ -5,9 +5,10 @@ from dataclasses import dataclass
 
 from planner.mission.models import Mission
 from planner.sky.clock import Clock
-from planner.sky.passes import Passes, find_passes
+from planner.sky.fleet import observe_fleet
+from planner.sky.passes import Passes
 from planner.sky.samples import Samples, sample_passes
-from planner.sky.track import Track, track_satellite
+from planner.sky.track import Track
 
 
 @dataclass(frozen=True, eq=False)
@@ -32,11 +33,6 @@ def observe(
     `progress(done, total)` is called after each satellite.
     """
     clock = Clock(mission.start, mission.span_s)
-    tracks = []
-    for satellite in mission.satellites:
-        tracks.append(track_satellite(clock, satellite))
-        if progress:
-            progress(len(tracks), len(mission.satellites))
-    passes = find_passes(clock, tracks, mission.stations)
+    tracks, passes = observe_fleet(clock, mission.satellites, mission.stations, progress=progress)
     samples = sample_passes(clock, tracks, mission.stations, passes, sample_step_s)
-    return Sky(clock, tuple(tracks), passes, samples)
+    return Sky(clock, tracks, passes, samples)

@@ -76,17 +76,17 @@ def find_passes(clock: Clock, tracks, stations) -> Passes:
     stations : sequence of Station
     """
     sites = Sites.of(stations)
-    parts = [_passes_of(clock, track, index, sites) for index, track in enumerate(tracks)]
-    return _joined(parts)
+    return joined([passes_of_satellite(clock, track, index, sites) for index, track in enumerate(tracks)])
 
 
-def _joined(parts: list[dict]) -> Passes:
+def joined(parts: list[dict]) -> Passes:
+    """The passes of several satellites as one."""
     columns = {name: np.concatenate([part[name] for part in parts]) for name in parts[0]}
     order = np.lexsort((columns["station_index"], columns["satellite_index"], columns["aos_s"]))
     return Passes(**{name: column[order] for name, column in columns.items()})
 
 
-def _passes_of(clock: Clock, track: Track, satellite_index: int, sites: Sites) -> dict[str, np.ndarray]:
+def passes_of_satellite(clock: Clock, track: Track, satellite_index: int, sites: Sites) -> dict[str, np.ndarray]:
     """The columns of one satellite's passes."""
     arcs, by_day = _cut_by_day(clock, arcs_above(track, sites))
     by_day |= is_geostationary(track)
