@@ -163,7 +163,8 @@ def _ground_end(transmitter, station, geometry: Geometry, attenuation: Attenuati
     frequency_hz = transmitter.frequency_mhz * 1e6
     dish = antenna.ground_dish(station.antenna)
     gain_dbi = antenna.peak_gain_dbi(dish, frequency_hz)
-    error_deg = np.hypot(station.antenna.pointing_error_deg, geometry.element_error_deg)
+    element_error_deg = 0.0 if station.antenna.autotrack else geometry.element_error_deg
+    error_deg = np.hypot(station.antenna.pointing_error_deg, element_error_deg)
     background_k = noise.COSMIC_K + noise.galactic_k(frequency_hz)
     absorbed_db = attenuation.absorbed_db
     sky_k = noise.sky_temperature_k(absorbed_db, background_k)

@@ -11,6 +11,7 @@ from planner.units import decibel_of_power, power_of_decibel
 MEAN_RADIATING_K = 275.0  # Tm, ITU-R P.618-13 section 3 (from memory)
 COSMIC_K = 2.725  # microwave background; P.618-13 rounds it to 2.7
 REFERENCE_K = 290.0  # T0 of a noise figure and of a passive loss at room temperature, IEEE definition
+NARROWEST_BEAM_DEG = 1e-3  # against the Sun's disc no narrower beam differs from this one
 SUN_RADIUS_DEG = 0.265  # half of the apparent width of 0.53 deg
 
 # Quiet-Sun brightness temperature of the disc. 37 GHz: 8,100 +- 300 K, Metsaehovi (read); the rest from memory.
@@ -93,11 +94,11 @@ def sun_share(antenna: GroundAntenna, frequency_hz: float, separation_deg):
 
     Main beam: a Gaussian of the half-power beam, averaged over the disc (the offset disc of a round Gaussian is the
     noncentral chi-square law with two degrees of freedom), times the share of all reception that the beam holds.
-    Side lobes: the disc's solid angle times the gain there over 4 pi. The larger of the two counts.
+    Beyond three beams: the disc's solid angle times the side lobes' envelope over 4 pi, which is an upper bound.
     """
     separation_deg = np.asarray(separation_deg, dtype=float)
     dish = ground_dish(antenna)
-    beam_deg = half_power_beam_deg(dish, frequency_hz)
+    beam_deg = max(half_power_beam_deg(dish, frequency_hz), NARROWEST_BEAM_DEG)
     variance = beam_deg**2 / (8 * np.log(2))
     beam_efficiency = min(
         power_of_decibel(peak_gain_dbi(dish, frequency_hz)) * np.deg2rad(beam_deg) ** 2 / (16 * np.log(2)), 1.0

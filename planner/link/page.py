@@ -251,10 +251,11 @@ def _receive_lines(transmitter: Transmitter, place: Station, lines: Lines) -> li
         ("ground spillover", receiver.ground_spillover_k, "K", "station file"),
         ("receiver temperature", receiver_temperature_k(receiver), "K", "Friis' cascade, at the antenna's flange"),
     ]  # fmt: skip
+    aim = "pointing_error_deg" + (", autotrack" if place.antenna.autotrack else " and age of the elements")
     system = "the stated G/T's, plus what sky and Sun add" if stated else "sum, at the antenna's flange"
     return [
         ("receive antenna gain", lines.receive_gain_dbi, "dBi", "eta (pi D / lambda)^2, at the antenna's flange"),
-        ("receive pointing loss", lines.receive_pointing_loss_db, "dB", "pointing_error_deg and age of the elements"),
+        ("receive pointing loss", lines.receive_pointing_loss_db, "dB", aim),
         ("sky temperature", lines.sky_temperature_k, "K", "ITU-R P.618-13 section 3, Tm 275 K; rain's noise included"),
         ("Sun in the beam", lines.sun_temperature_k, "K", "quiet Sun, share of the reception on its disc"),
         *parts,

@@ -16,6 +16,7 @@ class GroundAntenna(Described):
     diameter_m: Positive
     efficiency: Efficiency = 0.6
     pointing_error_deg: NonNegative = 0.0
+    autotrack: bool = Field(default=False, description="follows the signal: the age of the elements costs no gain")
     axial_ratio_db: NonNegative = 0.0
     polarisations: Annotated[tuple[Polarisation, ...], Field(min_length=1)] = ("RHCP", "LHCP")
     max_azimuth_rate_deg_s: Positive = 10.0

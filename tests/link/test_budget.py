@@ -135,6 +135,14 @@ def test_the_mounts_error_and_the_elements_age_are_square_to_each_other():
     assert both.receive_pointing_loss_db[0] == pytest.approx(12 * (0.05 / beam_deg) ** 2)
 
 
+def test_a_dish_that_follows_the_signal_pays_nothing_for_old_elements():
+    station = make_station(antenna=GroundAntenna(diameter_m=3.0, pointing_error_deg=0.03, autotrack=True))
+    old, new = (
+        budget_lines(make_transmitter(), station, geometry(element_error_deg=error), air(), 0.5) for error in (5.0, 0.0)
+    )
+    assert old.receive_pointing_loss_db == new.receive_pointing_loss_db > 0
+
+
 def test_flux_is_on_a_clear_path_and_without_pointing_loss():
     wet = budget_lines(make_transmitter(pointing_error_deg=2.0), make_station(), geometry(), air(rain=30.0), 0.5)
     dry = budget_lines(make_transmitter(), make_station(), geometry(), air(), 0.5)

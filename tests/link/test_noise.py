@@ -93,6 +93,13 @@ def test_a_beam_narrower_than_the_sun_is_filled():
     assert sun_share(wide, K_HZ, 0.0) == pytest.approx(efficiency, abs=1e-6)
 
 
+def test_an_absurdly_wide_dish_still_gives_a_share():
+    huge = GroundAntenna(diameter_m=1e9)
+    inside, outside = sun_share(huge, K_HZ, np.array([0.2, 0.3]))
+    assert inside == 1.0
+    assert 0 < outside < 1
+
+
 def test_a_wide_beam_sees_the_sun_as_a_point():
     # the disc's solid angle times gain over 4 pi
     small = GroundAntenna(diameter_m=0.5, efficiency=0.6)
