@@ -50,6 +50,10 @@ def test_a_duty_cycle_averages_the_energy_but_not_the_peak():
     assert draw.peak_w == pytest.approx([5.0, 0.0])
 
 
+def test_in_penumbra_the_peak_is_the_full_power():
+    assert load_draw(load(), np.array([0.5]), factor=1.0).peak_w == pytest.approx([5.0])
+
+
 def test_a_stated_peak_current_replaces_the_power_as_peak():
     draw = load_draw(load(peak_current_a=2.0), np.array([1.0, 0.0]), factor=1.0)
     assert draw.peak_a == pytest.approx([2.0, 0.0])

@@ -91,6 +91,12 @@ def test_the_upper_voltage_is_held_at_the_end_of_every_interval():
     assert own.open_circuit_v(course_c[-1]) == pytest.approx(3.45, abs=a_microvolt)
 
 
+def test_an_upper_voltage_above_the_curve_lets_the_cell_fill_to_the_brim():
+    own = cell(cell_max_v=3.9, **LEAKLESS)
+    course_c = charge_course_c(own, float(own.charge_at_c(98.0)), drive(np.full(10, 8.0), limit_a=2.5))
+    assert course_c[-1] == own.capacity_c
+
+
 def test_no_charge_where_none_is_allowed():
     own = cell(**LEAKLESS)
     assert charge_course_c(own, 5000.0, drive([10.0, 10.0], limit_a=0.0)) == pytest.approx([5000.0] * 3)

@@ -177,6 +177,19 @@ def test_the_peak_current_counts_full_duty_and_stated_peaks():
     assert series.lowest_cell_v[0] < series.cell_v[0]
 
 
+def test_the_lowest_voltage_of_an_interval_is_at_its_lower_charge():
+    series = run(pack(), week([0.0], [100.0], duration_s=600.0), 25.0)
+    end_v = series.corner.cell.open_circuit_v(series.charge_c[1]) + series.cell_a[0] * series.resistance_ohm[0]
+    assert series.lowest_cell_v[0] == pytest.approx(end_v)
+    assert series.lowest_cell_v[0] < series.cell_v[0] - 10 * A_MILLIVOLT
+
+
+def test_a_stated_peak_below_the_mean_does_not_hide_the_mean():
+    intervals = week([0.0], [26.0], draw=Draw(*(np.array([x]) for x in (26.0, 25.0, 0.0, 0.1))))
+    series = run(pack(), intervals)
+    assert series.peak_bus_a[0] == pytest.approx(26.0 / series.bus_v[0])
+
+
 def test_lowest_and_recovery():
     series = run(pack(**LEAKLESS), week([0.0, 0.0, 40.0, 40.0], [10.0, 10.0, 0.0, 0.0]), 80.0)
     time_s, soc_pct = series.lowest()
