@@ -7,7 +7,7 @@ import numpy as np
 from planner.sky.roots import refine
 from planner.sky.sites import Sites
 from planner.sky.track import Track, evaluate
-from planner.units import EARTH_GM_KM3_S2, EARTH_RATE_RAD_S, dot
+from planner.units import dot
 
 SEARCH_POINTS = 65
 
@@ -27,18 +27,11 @@ class Arcs:
 
 
 def arcs_above(track: Track, sites: Sites) -> Arcs:
-    """Every stretch of the track above each station's mask, and the highest point inside it.
+    """Every stretch of the track above each station's lowest mask, and the highest point inside it.
 
     A stretch in progress at an end of the track begins or ends there.
     """
-    nodes = _extremes_added(track, sites, _nodes_near_the_horizon(track, sites))
-    arcs = _stretches(track, sites, nodes)
-    with_line = np.array([bool(station.horizon) for station in sites.stations], dtype=bool)[arcs.station_index]
-    if with_line.any():
-        from planner.sky.horizon_line import cut_by_the_line
-
-        arcs = cut_by_the_line(track, sites, arcs, with_line)
-    return arcs
+    return _stretches(track, sites, _extremes_added(track, sites, _nodes_near_the_horizon(track, sites)))
 
 
 @dataclass(frozen=True, eq=False)
@@ -48,37 +41,30 @@ class _Nodes:
     station_index: np.ndarray
     time_s: np.ndarray
     interval: np.ndarray  # of the track, that begins at the node or holds it
-    sine: np.ndarray  # of elevation
-    slope: np.ndarray  # its rate [1/s]
+    clearance_km: np.ndarray  # above the cone of the lowest mask
+    climb: np.ndarray  # has the sign of the elevation's rate
     linked: np.ndarray
 
 
-def _sine_and_slope(position_km, velocity_km_s, site_km, up):
-    """Sine of elevation above the ellipsoid's horizon, and its rate [1/s]."""
+def _clearance_km(position_km, site_km, up, sine):
+    """Height above the cone of elevations with that sine: positive above it, nearly straight where it is crossed."""
     away_km = position_km - site_km
-    range_km = np.sqrt(dot(away_km, away_km))
-    sine = dot(away_km, up) / range_km
-    rate = dot(velocity_km_s, up) / range_km - sine * dot(away_km, velocity_km_s) / range_km**2
-    return sine, rate
+    return dot(away_km, up) - sine * np.sqrt(dot(away_km, away_km))
 
 
-def _bulge_km(track: Track):
-    """How far any height may rise above a straight line beside each grid point, (n,)."""
-    h = np.diff(track.time_s)
-    radius_km = np.sqrt(dot(track.position_km, track.position_km))
-    speed_km_s = np.sqrt(dot(track.velocity_km_s, track.velocity_km_s))
-    pull = EARTH_GM_KM3_S2 / radius_km**2 + 2 * EARTH_RATE_RAD_S * speed_km_s + EARTH_RATE_RAD_S**2 * radius_km
-    widest = np.maximum(np.append(h, 0), np.append(0, h))
-    return 1.2 * pull * widest**2 / 8  # a fifth more, because the pull itself changes within a step
+def _climb(position_km, velocity_km_s, site_km, up):
+    """The elevation's rate times range^3 over its cosine: nearly straight around the top of a pass."""
+    away_km = position_km - site_km
+    return dot(velocity_km_s, up) * dot(away_km, away_km) - dot(away_km, up) * dot(away_km, velocity_km_s)
 
 
 def _nodes_near_the_horizon(track: Track, sites: Sites) -> _Nodes:
     """Grid points that bound an interval in which the satellite may be above the horizon plane.
 
-    Between two points the height above the plane rises above both by at most acceleration x step^2 / 8.
+    Whatever stands above the plane between two points stands at most `bulge_km` above the higher of them.
     """
-    up = sites.axes[:, 2]
-    level_km = dot(up, sites.position_km)[:, None] - _bulge_km(track)
+    up, sine = sites.axes[:, 2], np.sin(np.radians(sites.floor_deg))
+    level_km = dot(up, sites.position_km)[:, None] - track.bulge_km
     xyz_km = np.ascontiguousarray(track.position_km.T)
     nodes = []
     for zenith, level in zip(up, level_km, strict=True):
@@ -89,94 +75,105 @@ def _nodes_near_the_horizon(track: Track, sites: Sites) -> _Nodes:
         bounding[:-1] |= near[1:]
         nodes.append(np.flatnonzero(bounding))
     node = np.concatenate(nodes) if nodes else np.zeros(0, dtype=int)
-    station_index = np.repeat(np.arange(len(nodes)), [len(each) for each in nodes])
+    k = np.repeat(np.arange(len(nodes)), [len(each) for each in nodes])
     linked = np.zeros(len(node), dtype=bool)
-    linked[:-1] = (np.diff(node) == 1) & (np.diff(station_index) == 0)
-    sine, slope = _sine_and_slope(
-        track.position_km[node], track.velocity_km_s[node], sites.position_km[station_index], up[station_index]
-    )
-    return _Nodes(station_index, track.time_s[node], node, sine, slope, linked)
+    linked[:-1] = (np.diff(node) == 1) & (np.diff(k) == 0)
+    position_km, site_km = track.position_km[node], sites.position_km[k]
+    clearance_km = _clearance_km(position_km, site_km, up[k], sine[k])
+    climb = _climb(position_km, track.velocity_km_s[node], site_km, up[k])
+    return _Nodes(k, track.time_s[node], node, clearance_km, climb, linked)
 
 
 def _extremes_added(track: Track, sites: Sites, nodes: _Nodes) -> _Nodes:
     """The same with every highest and lowest point between nodes, so that elevation is monotone between nodes."""
-    k = np.flatnonzero(nodes.linked[:-1] & ((nodes.slope[:-1] > 0) != (nodes.slope[1:] > 0)))
-    state = _states(track, sites, nodes, k)
+    k = np.flatnonzero(nodes.linked[:-1] & ((nodes.climb[:-1] > 0) != (nodes.climb[1:] > 0)))
+    state, site_km, up, sine = _gathered(track, sites, nodes, k)
     extreme_s = refine(
-        lambda time_s, j: state(time_s, j)[1], nodes.time_s[k], nodes.time_s[k + 1], nodes.slope[k], nodes.slope[k + 1]
+        lambda time_s, j: _climb(*state(time_s, j), site_km[j], up[j]),
+        nodes.time_s[k],
+        nodes.time_s[k + 1],
+        nodes.climb[k],
+        nodes.climb[k + 1],
     )
-    sine, _ = state(extreme_s, slice(None))
+    clearance_km = _clearance_km(state(extreme_s, slice(None))[0], site_km, up, sine)
     place = k + 1
     return _Nodes(
         np.insert(nodes.station_index, place, nodes.station_index[k]),
         np.insert(nodes.time_s, place, extreme_s),
         np.insert(nodes.interval, place, nodes.interval[k]),
-        np.insert(nodes.sine, place, sine),
-        np.insert(nodes.slope, place, 0.0),
+        np.insert(nodes.clearance_km, place, clearance_km),
+        np.insert(nodes.climb, place, 0.0),
         np.insert(nodes.linked, place, True),
     )
 
 
-def _states(track: Track, sites: Sites, nodes: _Nodes, k):
-    """A function (time_s, j) -> sine, slope on the grid intervals of the nodes `k[j]`, gathered once."""
+def _gathered(track: Track, sites: Sites, nodes: _Nodes, k):
+    """For the grid intervals of the nodes `k`: a function (time_s, j) -> state, place, zenith and sine of the mask."""
     interval, station = nodes.interval[k], nodes.station_index[k]
-    cubics, begin_s = track.cubics[interval], track.time_s[interval]
-    site_km, up = sites.position_km[station], sites.axes[station, 2]
+    quintics, begin_s = track.quintics[interval], track.time_s[interval]
 
     def state(time_s, j):
-        return _sine_and_slope(*evaluate(cubics[j], time_s - begin_s[j]), site_km[j], up[j])
+        return evaluate(quintics[j], time_s - begin_s[j])
 
-    return state
+    sine = np.sin(np.radians(sites.floor_deg))
+    return state, sites.position_km[station], sites.axes[station, 2], sine[station]
 
 
 def _stretches(track: Track, sites: Sites, nodes: _Nodes) -> Arcs:
     """Arcs above each station's lowest mask."""
-    bound = np.sin(np.radians(sites.floor_deg))[nodes.station_index]
-    above = nodes.sine > bound
-    before = np.append(False, nodes.linked[:-1])
-    was_above = np.append(False, above[:-1]) & before
-    is_above_next = np.append(above[1:], False) & nodes.linked
-    rises, sets = np.flatnonzero(above & ~was_above), np.flatnonzero(above & ~is_above_next)
-    # a stretch in progress at an end of the track has no crossing there
+    above = nodes.clearance_km > 0
+    from_before = np.append(False, nodes.linked[:-1])
+    rises = np.flatnonzero(above & ~(np.append(False, above[:-1]) & from_before))
+    sets = np.flatnonzero(above & ~(np.append(above[1:], False) & nodes.linked))
     rise_s, set_s = nodes.time_s[rises].copy(), nodes.time_s[sets].copy()
-    for moment_s, left, has in ((rise_s, rises - 1, before[rises]), (set_s, sets, nodes.linked[sets])):
-        k = left[has]
-        state = _states(track, sites, nodes, k)
-        level = bound[k]
-        moment_s[has] = refine(
-            lambda time_s, j, state=state, level=level: state(time_s, j)[0] - level[j],
-            nodes.time_s[k],
-            nodes.time_s[k + 1],
-            nodes.sine[k] - level,
-            nodes.sine[k + 1] - level,
-        )
-    return Arcs(nodes.station_index[rises], rise_s, _peaks(nodes, rises, sets), set_s)
+    # a stretch in progress at an end of the track has no crossing there
+    rising, setting = from_before[rises], nodes.linked[sets]
+    k = np.concatenate([rises[rising] - 1, sets[setting]])
+    state, site_km, up, sine = _gathered(track, sites, nodes, k)
+    crossing_s = refine(
+        lambda time_s, j: _clearance_km(state(time_s, j)[0], site_km[j], up[j], sine[j]),
+        nodes.time_s[k],
+        nodes.time_s[k + 1],
+        nodes.clearance_km[k],
+        nodes.clearance_km[k + 1],
+    )
+    rise_s[rising], set_s[setting] = np.split(crossing_s, [rising.sum()])
+    return Arcs(nodes.station_index[rises], rise_s, _peaks(track, sites, nodes, rises, sets), set_s)
+
+
+def _peaks(track: Track, sites: Sites, nodes: _Nodes, rises, sets):
+    """Time of the highest node of each run rises[k]..sets[k]."""
+    length = sets - rises + 1
+    run = np.repeat(np.arange(len(rises)), length)
+    node = np.arange(length.sum()) + (rises - np.cumsum(length) + length)[run]
+    # a top is a node where the climb ends; a run has one as a rule, and an end of the track may be higher
+    top = node[(nodes.climb[node] == 0) | ~nodes.linked[node] | ~np.append(False, nodes.linked)[node]]
+    station = nodes.station_index[top]
+    sine = _sine(track.at(nodes.time_s[top])[0], sites.position_km[station], sites.axes[station, 2])
+    owner = np.searchsorted(rises, top, side="right") - 1
+    order = np.lexsort((sine, owner))
+    last = np.searchsorted(owner[order], np.arange(len(rises)), side="right") - 1
+    return nodes.time_s[top[order[last]]]
+
+
+def _sine(position_km, site_km, up):
+    away_km = position_km - site_km
+    return dot(away_km, up) / np.sqrt(dot(away_km, away_km))
 
 
 def highest_s(track: Track, site_km, up, begin_s, end_s):
     """The moment within [begin_s, end_s], (n,), of greatest elevation above places (n, 3) with zeniths `up` (n, 3)."""
     times = np.linspace(begin_s, end_s, SEARCH_POINTS)
-    best = np.argmax(_sine_and_slope(*track.at(times), site_km, up)[0], axis=0)
+    best = np.argmax(_sine(track.at(times)[0], site_km, up), axis=0)
     everyone = np.arange(len(begin_s))
     low = times[np.maximum(best - 1, 0), everyone]
     high = times[np.minimum(best + 1, SEARCH_POINTS - 1), everyone]
 
-    def slope(time_s, k):
-        return _sine_and_slope(*track.at(time_s), site_km[k], up[k])[1]
+    def climb(time_s, k):
+        return _climb(*track.at(time_s), site_km[k], up[k])
 
-    start, end = slope(low, everyone), slope(high, everyone)
+    start, end = climb(low, everyone), climb(high, everyone)
     k = np.flatnonzero((start > 0) & (end < 0))
     top_s = times[best, everyone]
-    top_s[k] = refine(lambda t, j: slope(t, k[j]), low[k], high[k], start[k], end[k])
+    top_s[k] = refine(lambda t, j: climb(t, k[j]), low[k], high[k], start[k], end[k])
     return top_s
-
-
-def _peaks(nodes: _Nodes, rises, sets):
-    """Time of the highest node of each run rises[k]..sets[k]."""
-    if not rises.size:
-        return np.zeros(0)
-    length = sets - rises + 1
-    run = np.repeat(np.arange(len(rises)), length)
-    node = np.arange(length.sum()) - np.repeat(np.cumsum(length) - length, length) + np.repeat(rises, length)
-    order = np.lexsort((nodes.sine[node], run))
-    return nodes.time_s[node[order[np.cumsum(length) - 1]]]

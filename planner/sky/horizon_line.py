@@ -11,8 +11,11 @@ FOLLOW_STEP_S = 10.0  # between corners; the line and the satellite's path then 
 SHORTEST_S = 1e-3  # pieces shorter than the refinement's own error are no passes
 
 
-def cut_by_the_line(track: Track, sites: Sites, arcs: Arcs, with_line) -> Arcs:
-    """`arcs` with those of stations that have a horizon line (`with_line`, bool (n,)) cut by it; order kept."""
+def cut_by_the_line(track: Track, sites: Sites, arcs: Arcs) -> Arcs:
+    """`arcs` with those of stations that have a horizon line cut by it; order kept."""
+    with_line = np.array([bool(station.horizon) for station in sites.stations], dtype=bool)[arcs.station_index]
+    if not with_line.any():
+        return arcs
     parts = [tuple(column[~with_line] for column in arcs.columns)]
     for index in np.unique(arcs.station_index[with_line]):
         mine = arcs.station_index == index

@@ -13,7 +13,6 @@ from planner.sky.track import Track, grid_s
 
 EQUATORIAL_DEG = 1.0  # orbits flatter than this have no steady northernmost and southernmost point
 SIDEREAL_DAY_S = 86_164.0905  # from memory
-COARSE_STEPS = 4.0  # grid steps at a time: finds the farthest point within a second or so
 
 
 def slug(name: str) -> str:
@@ -97,7 +96,7 @@ def _before(clock: Clock, track: Track) -> Track:
     if isinstance(track.elements, Ephemeris):
         none = np.zeros((0, 3))
         return replace(track, time_s=none[:, 0], position_km=none, velocity_km_s=none)
-    time_s = grid_s(clock, track.elements, begin_s, track.time_s[0], COARSE_STEPS)
+    time_s = grid_s(clock, track.elements, begin_s, track.time_s[0])
     position_km, velocity_km_s, known = states(clock, track.satellite, track.elements, time_s)
     return replace(track, time_s=time_s[known], position_km=position_km[known], velocity_km_s=velocity_km_s[known])
 

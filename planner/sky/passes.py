@@ -7,6 +7,7 @@ import pandas as pd
 
 from planner.sky.clock import Clock
 from planner.sky.horizon import Arcs, arcs_above, highest_s
+from planner.sky.horizon_line import cut_by_the_line
 from planner.sky.pass_ids import is_geostationary, pass_ids
 from planner.sky.sites import Sites, look_from
 from planner.sky.sun import eclipse_edges_s, sun_position_km, visible_sun_fraction
@@ -88,7 +89,7 @@ def joined(parts: list[dict]) -> Passes:
 
 def passes_of_satellite(clock: Clock, track: Track, satellite_index: int, sites: Sites) -> dict[str, np.ndarray]:
     """The columns of one satellite's passes."""
-    arcs, by_day = _cut_by_day(clock, arcs_above(track, sites))
+    arcs, by_day = _cut_by_day(clock, cut_by_the_line(track, sites, arcs_above(track, sites)))
     by_day |= is_geostationary(track)
     ids = pass_ids(clock, track, sites, arcs.station_index, arcs.rise_s, by_day)
     inside = (arcs.set_s > 0) & (arcs.rise_s < clock.span_s)

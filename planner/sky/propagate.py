@@ -9,7 +9,7 @@ from planner.sky.frames import fixed_from_teme, fixed_position_km
 
 # Half the time over which a velocity is taken from positions.
 VELOCITY_STEP_S = 0.5
-ROUND_ENOUGH = 0.01  # eccentricity below which SGP4's velocity is within 3 cm/s of its position's rate
+ROUND_ENOUGH = 0.003  # eccentricity below which the velocity of SGP4 is within 3 cm/s of the rate of its position
 
 
 def states(clock: Clock, name: str, elements: ElementSet | Ephemeris, time_s):

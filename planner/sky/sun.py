@@ -102,11 +102,11 @@ def eclipse_edges_s(track, clock: Clock):
     """
     near = np.flatnonzero(_near_the_shadow(track, sun_position_km(clock, track.time_s)))
     interval, side = np.tile(near, 2), np.repeat([-1.0, 1.0], len(near))
-    cubics, begin_s = track.cubics[interval], track.time_s[interval]
+    quintics, begin_s = track.quintics[interval], track.time_s[interval]
 
     def height_km(time_s, k):
         """Of the line of sight to the Sun's edge above the Earth, where it comes nearest."""
-        position_km, _ = evaluate(cubics[k], time_s - begin_s[k])
+        position_km, _ = evaluate(quintics[k], time_s - begin_s[k])
         place, (edge,) = _lines_of_sight(position_km, sun_position_km(clock, time_s), [side[k][:, None]])
         ahead_km = np.minimum(dot(place, edge), 0.0)
         return np.sqrt(dot(place, place) - ahead_km**2) - EARTH_RADIUS_KM
@@ -117,14 +117,14 @@ def eclipse_edges_s(track, clock: Clock):
 def _near_the_shadow(track, sun_km):
     """Grid intervals that may hold the edge of umbra or penumbra, (n - 1,) bool.
 
-    A cylinder of the Earth's radius, and a belt around it as wide as flattening, cones and a step's bend ask for.
+    A cylinder of the Earth's radius, and a belt around it as wide as flattening, cones and the bend of a step ask for.
     """
     to_sun = sun_km / _length(sun_km)
     behind_km = -dot(track.position_km, to_sun)
     square_km2 = dot(track.position_km, track.position_km)
     gap_km = np.sqrt(np.maximum(square_km2 - behind_km**2, 0.0)) - EARTH_RADIUS_KM
-    gap_km = np.where(behind_km > 0, gap_km, np.inf)
-    belt_km = 50.0 + 0.01 * np.maximum(behind_km, 0.0)
+    gap_km = np.where(behind_km > -track.bulge_km, gap_km, np.inf)
+    belt_km = 30.0 + 0.005 * np.maximum(behind_km, 0.0) + track.bulge_km
     inside, outside = gap_km < -belt_km, gap_km > belt_km
     return ~((inside[:-1] & inside[1:]) | (outside[:-1] & outside[1:]))
 
