@@ -110,9 +110,9 @@ def _draw_level(axes, table: LinkTable, option: LinkOption, own: slice, time, lo
         time, threshold, level, step="post", color=style.SKY_BLUE, alpha=0.35, linewidth=0, label="margin", zorder=2
     )  # fmt: skip
     axes.plot(time, level, color=style.BLACK, label="Es/N0 less implementation loss", zorder=4)
-    axes.plot(
-        time, threshold, color=style.VERMILLION, linewidth=2.0, drawstyle="steps-post", label="active MODCOD needs", zorder=3
-    )  # fmt: skip
+    axes.step(
+        time, threshold, where="post", color=style.VERMILLION, linewidth=2.0, label="active MODCOD needs", zorder=3
+    )
     heard = level[level > -100]
     shown = np.concatenate([needed, heard])
     axes.set_ylim(shown.min() - 1.5, shown.max() + 1.5)

@@ -12,6 +12,7 @@ from planner.sky import Sky
 from planner.sky.sites import look, mask_deg
 from planner.sky.sun import sun_position_km
 
+POINTS = ("N", "NE", "E", "SE", "S", "SW", "W", "NW")
 ALL_ROUND_DEG = np.linspace(0.0, 360.0, 361)
 SQUARE_IN = (6.4, 6.9)
 
@@ -73,9 +74,7 @@ def _draw_dome(axes, station) -> None:
     axes.set_ylim(0, 90)
     axes.set_yticks([0, 30, 60], labels=["90°", "60°", "30°"], fontsize=7)
     axes.set_rlabel_position(157)
-    directions = [
-        f"{text}\n{azimuth}°" for azimuth, text in zip(range(0, 360, 45), "N NE E SE S SW W NW".split(), strict=True)
-    ]
+    directions = [f"{text}\n{azimuth}°" for azimuth, text in zip(range(0, 360, 45), POINTS, strict=True)]
     axes.set_xticks(np.radians(np.arange(0, 360, 45)), labels=directions, fontsize=7.5)
     mask = mask_deg(station, ALL_ROUND_DEG % 360.0)
     axes.fill_between(

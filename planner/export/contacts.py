@@ -34,6 +34,7 @@ RECORDER = ("satellite", "time_utc", "stored_mbit", "produced_mbit", "delivered_
 DECIMALS = {
     "s": 3, "deg": 3, "km": 3, "db": 2, "mbit": 3, "wh": 4, "pct": 3, "hz": 1, "khz": 3, "mhz": 6, "mbaud": 6,
     "v": 4, "a": 4, "w": 3, "c": 2, "fraction": 4,
+    "km_s": 6,
 }  # fmt: skip
 FORMULA = re.compile(r"'*[=+\-@\t\r]")
 
@@ -97,9 +98,15 @@ def _cells(name: str, column: pd.Series) -> list[str]:
     if pd.api.types.is_bool_dtype(column):
         return np.where(column, "yes", "no").tolist()
     if pd.api.types.is_numeric_dtype(column):
-        unknown = 0 if pd.api.types.is_integer_dtype(column) else 6
-        return _numbers(column.to_numpy(dtype=float), DECIMALS.get(name.rsplit("_", 1)[-1], unknown))
+        return _numbers(column.to_numpy(dtype=float), _decimals(name, column))
     return ["" if pd.isna(value) else neutral(" ".join(str(value).splitlines())) for value in column]
+
+
+def _decimals(name: str, column: pd.Series) -> int:
+    """By the unit that the name ends with; the longer unit first."""
+    parts = name.split("_")
+    unknown = 0 if pd.api.types.is_integer_dtype(column) else 6
+    return DECIMALS.get("_".join(parts[-2:]), DECIMALS.get(parts[-1], unknown))
 
 
 def _numbers(values: np.ndarray, decimals: int) -> list[str]:
