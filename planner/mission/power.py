@@ -11,6 +11,8 @@ from planner.mission.base import BodyAxis, Celsius, Described, Efficiency, Name,
 When = Literal["always", "sunlit", "eclipse", "windows"]
 Windows = tuple[tuple[AwareDatetime, AwareDatetime], ...]
 Table = tuple[tuple[float, float], ...]
+# Cell voltages an operator commonly stays between, for cycle life and headroom (common practice, no source)
+DERATED_V = {"LiFePO4": (2.8, 3.5), "Li-ion": (3.0, 4.1)}
 
 
 def check_windows(when: str, windows: tuple[tuple[datetime, datetime], ...]) -> None:
@@ -83,8 +85,8 @@ class Battery(Described):
     )
     coulombic_efficiency: Efficiency = 0.995
     self_discharge_pct_month: Percent = 2.0
-    cell_min_v: Positive = 2.8
-    cell_max_v: Positive = 3.5
+    cell_min_v: Positive = Field(default=DERATED_V["LiFePO4"][0], description="default by chemistry")
+    cell_max_v: Positive = Field(default=DERATED_V["LiFePO4"][1], description="default by chemistry")
     cell_max_discharge_a: Positive
     cell_max_charge_a: Positive
     charge_min_c: Celsius = 0.0
@@ -103,6 +105,14 @@ class Battery(Described):
     cycle_life: Table | None = Field(
         default=None, description="[depth_pct, cycles to end of life] table; None: the built-in one"
     )
+
+    @model_validator(mode="before")
+    @classmethod
+    def _window_of_the_chemistry(cls, table):
+        if not isinstance(table, dict) or table.get("chemistry") not in DERATED_V:
+            return table
+        low_v, high_v = DERATED_V[table["chemistry"]]
+        return {"cell_min_v": low_v, "cell_max_v": high_v} | table
 
     @field_validator("open_circuit", "resistance_by_temperature", "resistance_by_charge", "cycle_life")
     @classmethod

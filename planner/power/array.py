@@ -71,6 +71,8 @@ def panel_power_w(panel: Panel, cosine, flux_w_m2):
     Returns
     -------
     (n,) [W] at the maximum power point, before tracking, converter and end-of-life factors
+
+    Neglected: what the Earth reflects onto the cells, some per cent more over the day side.
     """
     lit_flux_w_m2 = np.maximum(cosine, 0.0) * lit_share(panel, cosine) * flux_w_m2
     warmer_k = panel_temperature_c(panel, lit_flux_w_m2) - REFERENCE_C

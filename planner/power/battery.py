@@ -47,6 +47,11 @@ class Cell:
         """Charge [C] at a state of charge [%]."""
         return np.asarray(soc_pct) * self.capacity_c / 100.0
 
+    @property
+    def full_soc_pct(self) -> float:
+        """State of charge [%] at which the resting cell stands at its derated upper voltage: no charger goes on."""
+        return float(self.soc_pct(np.interp(self.limits.cell_max_v, self.knot_v, self.charge_c)))
+
     def open_circuit_v(self, charge_c):
         """Open-circuit voltage [V] at a charge [C]."""
         return np.interp(charge_c, self.charge_c, self.knot_v)

@@ -27,6 +27,7 @@ def corner_of(satellite: Satellite, name: CornerName) -> Corner:
 
     Nominal is the description as it stands. Pessimistic takes the lower of the two healths, a grown resistance, a
     colder battery, panels at their end of life, loads and transmitters up, and a start charge low by its stated error.
+    No start charge is above what the derated upper voltage lets the charger reach, whatever telemetry calls full.
 
     Raises ValueError for another name.
     """
@@ -35,14 +36,15 @@ def corner_of(satellite: Satellite, name: CornerName) -> Corner:
     craft, start, worse = satellite.spacecraft, satellite.start_state, satellite.spacecraft.pessimistic
     if name == "nominal":
         cell = describe_cell(craft.battery, health=craft.battery.health)
-        return Corner(name, cell, start.soc_pct, 0.0, (1.0,) * len(craft.panel), 1.0, 1.0)
+        start_soc_pct = min(start.soc_pct, cell.full_soc_pct)
+        return Corner(name, cell, start_soc_pct, 0.0, (1.0,) * len(craft.panel), 1.0, 1.0)
     cell = describe_cell(
         craft.battery, health=min(craft.battery.health, worse.health), resistance_factor=worse.resistance_factor
     )
     return Corner(
         name=name,
         cell=cell,
-        start_soc_pct=max(0.0, start.soc_pct - start.soc_error_pct),
+        start_soc_pct=min(max(0.0, start.soc_pct - start.soc_error_pct), cell.full_soc_pct),
         battery_colder_k=worse.battery_colder_k,
         panel_factor=tuple(
             worse.array_factor * (panel.end_of_life_factor if worse.array_end_of_life else 1.0) for panel in craft.panel

@@ -30,7 +30,7 @@ CELL_CAUTION = (
 
 
 class Breach(NamedTuple):
-    """A limit that breaks: when it begins to, and the worst value until it holds again, against its bound."""
+    """A limit that breaks: the time of the first row outside it, and the worst value until it holds again."""
 
     limit: str
     time_s: float

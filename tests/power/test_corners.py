@@ -47,6 +47,13 @@ def test_the_start_charge_does_not_fall_below_empty():
     assert corner_of(satellite(soc_pct=2.0, soc_error_pct=5.0), "pessimistic").start_soc_pct == 0.0
 
 
+@pytest.mark.parametrize("corner", ["nominal", "pessimistic"])
+def test_the_start_charge_is_not_above_what_the_upper_voltage_allows(corner):
+    """3.415 V is the recorded open-circuit voltage at 99 % (PyBaMM 26.10, Prada2013)."""
+    ship = craft(battery(cell_max_v=3.415))
+    assert corner_of(satellite(ship, soc_pct=100.0, soc_error_pct=0.5), corner).start_soc_pct == pytest.approx(99.0)
+
+
 def test_panels_stay_new_where_the_corner_says_so():
     ship = craft(pessimistic=Pessimistic(array_end_of_life=False, array_factor=0.97))
     assert corner_of(satellite(ship), "pessimistic").panel_factor == (0.97,)

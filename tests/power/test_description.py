@@ -4,7 +4,7 @@ import pytest
 from power_examples import battery
 from pydantic import ValidationError
 
-from planner.mission.power import Load, Panel
+from planner.mission.power import Battery, Load, Panel
 
 
 @pytest.mark.parametrize(
@@ -33,6 +33,17 @@ def test_a_faulty_battery(changes, told):
     with pytest.raises(ValidationError) as caught:
         battery(**changes)
     assert told in str(caught.value)
+
+
+@pytest.mark.parametrize(("chemistry", "low_v", "high_v"), [("LiFePO4", 2.8, 3.5), ("Li-ion", 3.0, 4.1)])
+def test_the_voltage_window_follows_the_chemistry_unless_it_is_given(chemistry, low_v, high_v):
+    """Common practice, no source."""
+    plain = {"cells_series": 1, "cells_parallel": 1, "cell_capacity_ah": 2.0, "cell_resistance_mohm": 20.0}
+    plain |= {"cell_max_discharge_a": 4.0, "cell_max_charge_a": 1.0, "chemistry": chemistry}
+    own = Battery.model_validate(plain)
+    assert (own.cell_min_v, own.cell_max_v) == (low_v, high_v)
+    assert Battery.model_validate(plain | {"cell_max_v": 3.3}).cell_max_v == 3.3
+    assert Battery.model_validate(own.model_dump()) == own
 
 
 def test_watts_as_text_are_refused():

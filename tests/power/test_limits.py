@@ -1,10 +1,14 @@
 """Each limit breaks alone, at its time and by its size."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
-from power_examples import LEAKLESS, battery, craft, policy, run, session, transmitter, week
+from power_examples import LEAKLESS, battery, craft, policy, run, satellite, session, transmitter, week
 
+from planner.power.corners import corner_of
 from planner.power.loads import Draw
+from planner.power.series import run_battery
 
 
 def pack(**changes):
@@ -48,8 +52,11 @@ def test_a_peak_alone_can_break_the_cell_voltage():
     assert breaches(run(pack(cell_min_v=3.2), intervals, 70.0), "cell voltage under load")
 
 
-def test_a_start_charge_above_the_upper_voltage():
-    series = run(pack(cell_max_v=3.4), week([0.0], [0.0]), 100.0)
+def test_a_cell_above_its_upper_voltage():
+    """No charger brings it there; a start charge of one's own may."""
+    ship = pack(cell_max_v=3.4)
+    overfull = replace(corner_of(satellite(ship), "nominal"), start_soc_pct=100.0)
+    series = run_battery(overfull, ship, week([0.0], [0.0]), ())
     (found,) = breaches(series, "cell voltage")
     assert (found.value, found.bound, found.unit) == (pytest.approx(3.6, abs=1e-3), 3.4, "V")
 
