@@ -11,9 +11,9 @@ from planner.mission.power import Load, Panel
 from planner.power.balance import SatellitePower
 from planner.power.profile import battery_temperature_c, thermostat_edges_s
 from planner.sky.clock import Clock
-from planner.sky.sun import beta_deg, eclipse_edges_s, sun_position_km
+from planner.sky.sun import beta_deg, eclipse_edges_s, sun_position_km, visible_sun_fraction
 from planner.sky.track import track_satellite
-from planner.units import EARTH_RADIUS_KM
+from planner.units import AU_KM, EARTH_RADIUS_KM
 
 
 @pytest.fixture(scope="module")
@@ -72,6 +72,27 @@ def test_the_share_of_a_day_in_eclipse_is_that_of_a_circular_orbit(power):
     share = np.average(1 - idle.visible_sun, weights=idle.duration_s)
     flattening_and_whole_orbits = 0.01
     assert share == pytest.approx(np.arccos(cosine) / np.pi, abs=flattening_and_whole_orbits)
+
+
+# Computed from the same formula, R = 6378.137 km: height, beta and the share of the orbit in the cylinder
+@pytest.mark.parametrize(
+    ("height_km", "beta", "share"),
+    [
+        (400.0, 0.0, 0.39010),
+        (400.0, 30.0, 0.37220),
+        (400.0, 60.0, 0.26333),
+        (550.0, 0.0, 0.37231),
+        (550.0, 30.0, 0.35111),
+        (550.0, 60.0, 0.21474),
+    ],
+)
+def test_eclipse_shares_of_the_published_circular_orbits(height_km, beta, share):
+    around = (np.arange(20_000) + 0.5) * 2 * np.pi / 20_000
+    position_km = (EARTH_RADIUS_KM + height_km) * np.stack([np.cos(around), np.sin(around), 0 * around], axis=1)
+    sun = np.array([np.cos(np.radians(beta)), 0.0, np.sin(np.radians(beta))])
+    dark = 1 - visible_sun_fraction(position_km, np.broadcast_to(AU_KM * sun, position_km.shape))
+    cone_and_flattening = 0.006  # of an orbit, half a minute: the Sun's width, and 21 km less Earth over the poles
+    assert dark.mean() == pytest.approx(share, abs=cone_and_flattening)
 
 
 def test_array_power_is_zero_in_eclipse_and_only_there_for_a_sun_pointer():
