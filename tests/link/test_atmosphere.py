@@ -1,3 +1,6 @@
+import subprocess
+import sys
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -106,6 +109,19 @@ def test_the_path_is_a_cosecant_down_to_five_degrees_and_bounded_below():
     assert path_factor(0.0, 2.0) == pytest.approx(2 / np.sqrt(4 / 8500), rel=0.1)
 
 
+def test_low_scintillation_grows_with_the_path_as_it_does_above():
+    # P.618-13 eq. (47): sigma goes as sin(elevation)^-1.2; below 5 deg the bounded path takes the place of 1/sin
+    three, five = scintillation_db(LONDON, 26.0, [3.0, 5.0], 0.1, diameter_m=DISH_M)
+    assert three / five == pytest.approx((path_factor(3.0, 1.0) / path_factor(5.0, 1.0)) ** 1.2)
+
+
+def test_low_rain_never_outgrows_its_path():
+    # at low frequencies P.618's step 7 takes (hR - hS)/sin(elevation), which has no end on the horizon
+    for elevation_deg in (0.0, 0.5, 2.0):
+        low, five = rain_attenuation_db(LONDON, 1.0, [elevation_deg, 5.0], 0.1)
+        assert low / five < path_factor(elevation_deg, 1.0) / path_factor(5.0, 1.0)
+
+
 def test_low_elevation_gas_grows_as_the_line_by_line_path_does():
     # ITU-R P.676-12 Annex 1 through itur at sea level, standard air of 7.5 g/m3, relative to 5 deg (computed).
     # The bounded path stands within a tenth of it at 1 deg, where 1/sin is half as much again too high.
@@ -160,9 +176,12 @@ def test_a_scalar_gives_what_a_one_element_array_gives():
 
 
 def test_numpys_warnings_stay_as_the_caller_had_them():
-    with np.errstate(divide="raise"):
-        gas_attenuation_db(LONDON, 26.0, 30.0, 1.0)
-        assert np.geterr()["divide"] == "raise"
+    code = (
+        "import numpy as np; before = np.geterr(); from planner.link.atmosphere import Site, gas_attenuation_db;"
+        " gas_attenuation_db(Site(50.0, 5.0), 26.0, 30.0, 1.0); print(np.geterr() == before)"
+    )
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    assert done.stdout.strip() == "True"
 
 
 @pytest.mark.parametrize(

@@ -20,6 +20,7 @@ from planner.mission.transmitter import Isotropic
 
 PRINTED_DB = 0.1  # the published pages give one decimal, summed over several lines
 ROUNDING_DB = 1e-9
+A_TENTH_OF_A_KELVIN = 0.1
 
 
 def geometry(**changes) -> Geometry:
@@ -110,6 +111,13 @@ def test_rain_costs_its_attenuation_and_its_noise(a, b):
     fall_db = light.cn0_dbhz[0] - heavy.cn0_dbhz[0]
     assert fall_db >= abs(a - b) - ROUNDING_DB
     assert heavy.system_temperature_k[0] >= light.system_temperature_k[0] - ROUNDING_DB
+
+
+def test_without_air_the_noise_is_the_background_the_ground_and_the_receiver():
+    # cosmic 2.7 K, spillover 10 K, feed of 0.3 dB: 290 x 0.0715 + 150 x 1.0715 = 181.5 K
+    lines = budget_lines(make_transmitter(), make_station(), geometry(), air(), 0.5)
+    assert lines.sky_temperature_k[0] == pytest.approx(2.7, abs=A_TENTH_OF_A_KELVIN)
+    assert lines.system_temperature_k[0] == pytest.approx(2.7 + 10 + 181.5, abs=A_TENTH_OF_A_KELVIN)
 
 
 def test_scintillation_makes_no_noise():

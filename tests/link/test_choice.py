@@ -42,6 +42,10 @@ def test_a_dip_is_held_for_the_dwell_too():
     assert follow([11, 11, 11, 11, 8, 11, 11, 11, 11, 11]).tolist() == [2, 2, 2, 2, 1, 1, 1, 2, 2, 2]
 
 
+def test_a_drop_ahead_stops_the_rise_and_is_not_taken_early():
+    assert follow([11, 11, 11, 11, 14, 8, 8, 8, 8]).tolist() == [2, 2, 2, 2, 2, 1, 1, 1, 1]
+
+
 def test_the_end_of_the_usable_stretch_may_cut_a_dwell():
     assert follow([5, 5, 5, 5, 8, 8]).tolist() == [0, 0, 0, 0, 1, 1]
     assert follow([8, 8, 3, 8, 8]).tolist() == [1, 1, -1, 1, 1]

@@ -7,6 +7,7 @@ import pytest
 from planner.errors import InputError
 from planner.link import link_table
 from planner.link.budget import budget_at
+from planner.link.choice import FADING_PCT, share_of_year
 from planner.link.geometry import sampled_geometry
 from planner.link.table import NEVER_HEARD_DB
 
@@ -66,6 +67,19 @@ def test_the_expected_rate_lies_between_the_availability_and_the_whole(tables):
             usable = option.usable
             assert (option.expected_rate_mbps[usable] >= 0.99 * option.rate_mbps[usable]).all()
             assert (option.expected_rate_mbps <= option.rate_mbps).all()
+
+
+def test_the_expected_rate_is_the_rate_for_the_share_of_the_year_it_works(day):
+    mission, sky = with_policy(day, availability_pct=95.0, link_margin_db=0.0)
+    table = link_table(mission, sky, "TESTBED", "variable")
+    option, satellite = table.options[0], mission.satellites[0]
+    usable = np.flatnonzero(option.usable)[::40]
+    mode = satellite.spacecraft.transmitter[2]
+    place = sampled_geometry(sky, satellite, mode, mission.stations[0], table.sample_index[usable], 1.0)
+    needed_db = np.array([row.required_esn0_db for row in table.modcods])[option.modcod[usable]] + 1.0
+    share = share_of_year(budget_at(mode, mission.stations[0], place, FADING_PCT).esn0_db - needed_db, FADING_PCT)
+    assert share.min() < 0.99
+    np.testing.assert_allclose(option.expected_rate_mbps[usable], option.rate_mbps[usable] * share)
 
 
 def test_the_best_fixed_row_brings_less_than_variable_and_offers_a_choice(tables):
