@@ -266,7 +266,7 @@ def _receive_lines(transmitter: Transmitter, place: Station, lines: Lines) -> li
 
 
 def _code_lines(mission, transmitter: Transmitter, modcod: Modcod, esn0_db, ebn0_db, margin_db) -> list[tuple]:
-    rate_mbps = information_rate_mbps(transmitter, modcod.bits_per_symbol)
+    rate_kbps = 1e3 * information_rate_mbps(transmitter, modcod.bits_per_symbol)
     return [
         ("symbol rate", decibel_of_power(transmitter.symbol_rate_mbaud * 1e6), "dBBd", "mission file"),
         ("Es/N0", esn0_db, "dB", "C/N0 less symbol rate"),
@@ -276,7 +276,7 @@ def _code_lines(mission, transmitter: Transmitter, modcod: Modcod, esn0_db, ebn0
         ("required Eb/N0", modcod.required_ebn0_db, "dB", "the same, per information bit of the code"),
         ("margin", margin_db, "dB", "Es/N0 less implementation loss less required"),
         ("margin asked for", mission.policy.link_margin_db, "dB", "policy.link_margin_db"),
-        ("user rate", rate_mbps, "Mbit/s", "after coding, framing, overheads and reserve"),
+        ("user rate", rate_kbps, "kbit/s", "after coding, framing, overheads and reserve"),
     ]
 
 
@@ -285,10 +285,10 @@ def _beside_lines(transmitter: Transmitter, value: dict, limit: float | None) ->
     wide = row.bandwidth_hz >= 1e6
     bandwidth = f"dB(W/m2) in {row.bandwidth_hz / (1e6 if wide else 1e3):g} {'MHz' if wide else 'kHz'}"
     source = "no row held for this band" if limit is None else f"ITU RR Table 21-4 ({row.read}); {CHECK_YOUR_LICENCE}"
-    occupied_mhz = transmitter.symbol_rate_mbaud * (1 + transmitter.roll_off)
+    occupied_khz = 1e3 * transmitter.symbol_rate_mbaud * (1 + transmitter.roll_off)
     return [
         ("Doppler shift", value["doppler_khz"], "kHz", "first order in v/c, positive on approach"),
-        ("occupied bandwidth", occupied_mhz, "MHz", "symbol rate x (1 + roll-off)"),
+        ("occupied bandwidth", occupied_khz, "kHz", "symbol rate x (1 + roll-off)"),
         ("power flux-density", value["flux_dbw_m2"], bandwidth, "at the ground, clear path, no pointing loss"),
         ("flux-density limit", limit, bandwidth, source),
     ]

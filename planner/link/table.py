@@ -214,6 +214,6 @@ def _reason(policy: Policy, own: slice, columns, trackable, allowed, slowest_mar
         return f"power flux-density is above its limit throughout, by {excess_db:.1f} dB or more"
     best = np.argmax(np.where(allowed[own], slowest_margin_db[own], -np.inf))
     return (
-        f"link margin reaches {slowest_margin_db[own][best]:.1f} dB at {columns['elevation_deg'][own][best]:.0f} deg,"
-        f" {policy.link_margin_db:.1f} dB asked for"
+        f"link margin reaches {slowest_margin_db[own][best]:.2f} dB at {columns['elevation_deg'][own][best]:.0f} deg,"
+        f" {policy.link_margin_db:g} dB asked for"
     )
