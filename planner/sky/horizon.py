@@ -6,7 +6,7 @@ import numpy as np
 
 from planner.sky.roots import refine
 from planner.sky.sites import Sites
-from planner.sky.track import Track, evaluate
+from planner.sky.track import Track, evaluate, place
 from planner.units import dot
 
 SEARCH_POINTS = 65
@@ -87,36 +87,35 @@ def _nodes_near_the_horizon(track: Track, sites: Sites) -> _Nodes:
 def _extremes_added(track: Track, sites: Sites, nodes: _Nodes) -> _Nodes:
     """The same with every highest and lowest point between nodes, so that elevation is monotone between nodes."""
     k = np.flatnonzero(nodes.linked[:-1] & ((nodes.climb[:-1] > 0) != (nodes.climb[1:] > 0)))
-    state, site_km, up, sine = _gathered(track, sites, nodes, k)
+    quintics, begin_s, site_km, up, sine = _gathered(track, sites, nodes, k)
     extreme_s = refine(
-        lambda time_s, j: _climb(*state(time_s, j), site_km[j], up[j]),
+        lambda time_s, j: _climb(*evaluate(quintics[j], time_s - begin_s[j]), site_km[j], up[j]),
         nodes.time_s[k],
         nodes.time_s[k + 1],
         nodes.climb[k],
         nodes.climb[k + 1],
     )
-    clearance_km = _clearance_km(state(extreme_s, slice(None))[0], site_km, up, sine)
-    place = k + 1
+    clearance_km = _clearance_km(place(quintics, extreme_s - begin_s), site_km, up, sine)
+    order = np.argsort(np.concatenate([np.arange(len(nodes.time_s)), k + 0.5]))
+
+    def merged(column, more):
+        return np.concatenate([column, more])[order]
+
     return _Nodes(
-        np.insert(nodes.station_index, place, nodes.station_index[k]),
-        np.insert(nodes.time_s, place, extreme_s),
-        np.insert(nodes.interval, place, nodes.interval[k]),
-        np.insert(nodes.clearance_km, place, clearance_km),
-        np.insert(nodes.climb, place, 0.0),
-        np.insert(nodes.linked, place, True),
+        merged(nodes.station_index, nodes.station_index[k]),
+        merged(nodes.time_s, extreme_s),
+        merged(nodes.interval, nodes.interval[k]),
+        merged(nodes.clearance_km, clearance_km),
+        merged(nodes.climb, np.zeros(len(k))),
+        merged(nodes.linked, np.ones(len(k), dtype=bool)),
     )
 
 
 def _gathered(track: Track, sites: Sites, nodes: _Nodes, k):
-    """For the grid intervals of the nodes `k`: a function (time_s, j) -> state, place, zenith and sine of the mask."""
+    """For the grid intervals of the nodes `k`: polynomials and their beginnings, places, zeniths, sines of the mask."""
     interval, station = nodes.interval[k], nodes.station_index[k]
-    quintics, begin_s = track.quintics[interval], track.time_s[interval]
-
-    def state(time_s, j):
-        return evaluate(quintics[j], time_s - begin_s[j])
-
-    sine = np.sin(np.radians(sites.floor_deg))
-    return state, sites.position_km[station], sites.axes[station, 2], sine[station]
+    sine = np.sin(np.radians(sites.floor_deg))[station]
+    return track.quintics[interval], track.time_s[interval], sites.position_km[station], sites.axes[station, 2], sine
 
 
 def _stretches(track: Track, sites: Sites, nodes: _Nodes) -> Arcs:
@@ -129,9 +128,9 @@ def _stretches(track: Track, sites: Sites, nodes: _Nodes) -> Arcs:
     # a stretch in progress at an end of the track has no crossing there
     rising, setting = from_before[rises], nodes.linked[sets]
     k = np.concatenate([rises[rising] - 1, sets[setting]])
-    state, site_km, up, sine = _gathered(track, sites, nodes, k)
+    quintics, begin_s, site_km, up, sine = _gathered(track, sites, nodes, k)
     crossing_s = refine(
-        lambda time_s, j: _clearance_km(state(time_s, j)[0], site_km[j], up[j], sine[j]),
+        lambda time_s, j: _clearance_km(place(quintics[j], time_s - begin_s[j]), site_km[j], up[j], sine[j]),
         nodes.time_s[k],
         nodes.time_s[k + 1],
         nodes.clearance_km[k],
@@ -148,9 +147,11 @@ def _peaks(track: Track, sites: Sites, nodes: _Nodes, rises, sets):
     node = np.arange(length.sum()) + (rises - np.cumsum(length) + length)[run]
     # a top is a node where the climb ends; a run has one as a rule, and an end of the track may be higher
     top = node[(nodes.climb[node] == 0) | ~nodes.linked[node] | ~np.append(False, nodes.linked)[node]]
+    owner = np.searchsorted(rises, top, side="right") - 1
+    if len(top) == len(rises):
+        return nodes.time_s[top]
     station = nodes.station_index[top]
     sine = _sine(track.at(nodes.time_s[top])[0], sites.position_km[station], sites.axes[station, 2])
-    owner = np.searchsorted(rises, top, side="right") - 1
     order = np.lexsort((sine, owner))
     last = np.searchsorted(owner[order], np.arange(len(rises)), side="right") - 1
     return nodes.time_s[top[order[last]]]

@@ -2,6 +2,7 @@
 
 import re
 from dataclasses import replace
+from datetime import timedelta
 
 import numpy as np
 
@@ -39,17 +40,15 @@ def pass_ids(clock: Clock, track: Track, sites: Sites, station_index, aos_s, by_
         day[here], count[here] = _day_and_count(clock, _passages_s(clock, track, earlier, direction), aos_s[here])
     day = np.where(by_day, clock.utc_day(aos_s + 1e-3), day)
     count = np.where(by_day, 0, count)
-    letter = _letters(station_index, day, count)
-    first = np.datetime64(clock.start.date(), "D")
-    dates = np.strings.replace(np.datetime_as_string(first + day.astype("timedelta64[D]")), "-", "") if len(day) else []
-    satellite, stations = slug(track.satellite), [slug(station.name) for station in sites.stations]
-    return np.array(
-        [
-            f"{satellite}.{stations[s]}.{date}-{n:02d}{mark}"
-            for s, date, n, mark in zip(station_index, dates, count, letter, strict=True)
-        ],
-        dtype=object,
-    )
+    letters = _letters(station_index, day, count)
+    first, satellite = clock.start.date(), slug(track.satellite)
+    dates = {d: f"{first + timedelta(days=d):%Y%m%d}" for d in np.unique(day).tolist()}
+    heads = [f"{satellite}.{slug(station.name)}." for station in sites.stations]
+    ids = [
+        f"{heads[s]}{dates[d]}-{n:02d}{letter}"
+        for s, d, n, letter in zip(station_index.tolist(), day.tolist(), count.tolist(), letters, strict=True)
+    ]
+    return np.array(ids, dtype=object)
 
 
 def is_geostationary(track: Track) -> bool:
@@ -122,17 +121,17 @@ def _day_and_count(clock: Clock, passages_s, aos_s):
     return np.where(has, day[last], clock.utc_day(aos_s)), np.where(has, number[last], 0)
 
 
-def _letters(station_index, day, count):
+def _letters(station_index, day, count) -> list[str]:
     """'' where a pass has its revolution to itself, else a, b, ... in order of time."""
-    keys = list(zip(station_index.tolist(), day.tolist(), count.tolist(), strict=True))
-    total, seen = {}, {}
-    for key in keys:
-        total[key] = total.get(key, 0) + 1
-    letters = []
-    for key in keys:
-        seen[key] = seen.get(key, -1) + 1
-        letters.append("" if total[key] == 1 else _letter(seen[key]))
-    return letters
+    new = np.ones(len(day) + 1, dtype=bool)
+    for column in (station_index, day, count):
+        new[1:-1] &= column[1:] == column[:-1]
+    new[1:-1] = ~new[1:-1]
+    first = np.flatnonzero(new)
+    length = np.diff(first)
+    rank = np.arange(len(day)) - np.repeat(first[:-1], length)
+    shared = np.repeat(length > 1, length)
+    return [_letter(k) if several else "" for k, several in zip(rank.tolist(), shared.tolist(), strict=True)]
 
 
 def _letter(k: int) -> str:

@@ -14,6 +14,7 @@ from planner.sky.sun import eclipse_edges_s, sun_position_km, visible_sun_fracti
 from planner.sky.track import Track
 from planner.units import DAY_S
 
+EDGE_S = 1e-3  # beside a shadow's edge, beyond its own error
 PUBLIC_COLUMNS = (
     "pass_id", "satellite", "station", "aos_utc", "tca_utc", "los_utc", "duration_s", "aos_azimuth_deg",
     "tca_azimuth_deg", "los_azimuth_deg", "max_elevation_deg", "tca_range_km", "sunlit_fraction", "truncated",
@@ -100,7 +101,7 @@ def passes_of_satellite(clock: Clock, track: Track, satellite_index: int, sites:
     tca_s = np.clip(arcs.peak_s, aos_s, los_s)
     cut = np.flatnonzero(tca_s != arcs.peak_s)
     tca_s[cut] = highest_s(track, place[0][cut], place[1][cut, 2], aos_s[cut], los_s[cut])
-    at_aos, at_tca, at_los = (look_from(*track.at(time_s), *place) for time_s in (aos_s, tca_s, los_s))
+    view = look_from(*track.at(np.stack([aos_s, tca_s, los_s])), *place)
     names = np.array([station.name for station in sites.stations], dtype=object)
     return {
         "pass_id": ids,
@@ -111,11 +112,11 @@ def passes_of_satellite(clock: Clock, track: Track, satellite_index: int, sites:
         "aos_s": aos_s,
         "tca_s": tca_s,
         "los_s": los_s,
-        "aos_azimuth_deg": at_aos.azimuth_deg,
-        "tca_azimuth_deg": at_tca.azimuth_deg,
-        "los_azimuth_deg": at_los.azimuth_deg,
-        "max_elevation_deg": at_tca.elevation_deg,
-        "tca_range_km": at_tca.range_km,
+        "aos_azimuth_deg": view.azimuth_deg[0],
+        "tca_azimuth_deg": view.azimuth_deg[1],
+        "los_azimuth_deg": view.azimuth_deg[2],
+        "max_elevation_deg": view.elevation_deg[1],
+        "tca_range_km": view.range_km[1],
         "sunlit_fraction": _sunlit_fraction(clock, track, aos_s, los_s),
         "truncated": np.array(["", "start", "end", "both"], dtype=object)[starts + 2 * ends],
     }
@@ -139,10 +140,14 @@ def _cut_by_day(clock: Clock, arcs: Arcs):
 
 def _sunlit_fraction(clock: Clock, track: Track, aos_s, los_s):
     """Mean visible share of the Sun's disc over [aos_s, los_s], each (n,)."""
-    edges_s = np.concatenate([[track.time_s[0]], eclipse_edges_s(track, clock), [track.time_s[-1]]])
-    # the fraction is constant between edges but in penumbra, where it runs nearly straight from one to the other
-    sides_s = np.sort(np.concatenate([edges_s[:-1] + 1e-3, edges_s[1:] - 1e-3]))
-    visible = visible_sun_fraction(track.at(sides_s)[0], sun_position_km(clock, sides_s))
-    collected = np.concatenate([[0.0], np.cumsum((visible[1:] + visible[:-1]) / 2 * np.diff(sides_s))])
-    lit_s = np.interp(los_s, sides_s, collected) - np.interp(aos_s, sides_s, collected)
+    size = len(track.time_s)
+    begun, ended = (
+        np.bincount(track.interval(event_s) + late, minlength=size) for late, event_s in enumerate((aos_s, los_s))
+    )
+    edges_s = eclipse_edges_s(track, clock, within=np.cumsum(begun - ended)[:-1] > 0)
+    # between edges the share is constant but in penumbra, where it runs nearly straight from one to the other
+    moments_s = np.sort(np.concatenate([aos_s, los_s, edges_s - EDGE_S, edges_s + EDGE_S]))
+    visible = visible_sun_fraction(track.at(moments_s)[0], sun_position_km(clock, moments_s))
+    collected = np.append(0.0, np.cumsum((visible[1:] + visible[:-1]) / 2 * np.diff(moments_s)))
+    lit_s = np.interp(los_s, moments_s, collected) - np.interp(aos_s, moments_s, collected) if len(aos_s) else los_s
     return np.clip(lit_s / np.maximum(los_s - aos_s, 1e-9), 0.0, 1.0)

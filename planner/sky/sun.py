@@ -8,7 +8,7 @@ import numpy as np
 from planner.sky.clock import Clock
 from planner.sky.frames import inertial_velocity_km_s, moments, turn
 from planner.sky.roots import crossings
-from planner.sky.track import evaluate
+from planner.sky.track import place
 from planner.units import DAY_S, EARTH_FLATTENING, EARTH_RADIUS_KM, SUN_RADIUS_KM, dot, unit_vector
 
 SAMPLE_S = DAY_S / 4  # a spline through these is within 0.001 arc seconds of the ephemeris
@@ -80,10 +80,10 @@ def visible_sun_fraction(position_km, sun_km):
     Cones over the ellipsoid, so the penumbra is included; the disc is uniform (no limb darkening), air is neglected.
     The overlap of two circles is that of plane geometry, the Earth's limb with the curvature it has on the sphere.
     """
-    place, (near, centre, far) = _lines_of_sight(position_km, sun_km, (-1.0, 0.0, 1.0))
-    radius_km = _length(place)[..., 0]
+    here, (near, centre, far) = _lines_of_sight(position_km, sun_km, (-1.0, 0.0, 1.0))
+    radius_km = _length(here)[..., 0]
     earth_rad = np.arcsin(np.minimum(EARTH_RADIUS_KM / radius_km, 1.0))
-    above_rad = np.arccos(np.clip(-dot(place, centre) / radius_km, -1, 1)) - earth_rad
+    above_rad = np.arccos(np.clip(-dot(here, centre) / radius_km, -1, 1)) - earth_rad
     sun_rad = _length(far - near)[..., 0] / 2
     limb_rad = np.tan(np.minimum(earth_rad, np.pi / 2 - 1e-6))
     distance = np.clip(limb_rad + above_rad, np.abs(limb_rad - sun_rad), limb_rad + sun_rad)
@@ -95,21 +95,22 @@ def visible_sun_fraction(position_km, sun_km):
     return np.clip(1 - covered / (np.pi * sun_rad**2), 0.0, 1.0)
 
 
-def eclipse_edges_s(track, clock: Clock):
+def eclipse_edges_s(track, clock: Clock, within=True):
     """Moments inside the track at which the visible fraction leaves or reaches 0 or 1, sorted (n,) [s after start].
 
-    These are the moments at which the Sun's upper or lower edge stands on the Earth's limb.
+    These are the moments at which the Sun's near or far edge stands on the Earth's limb. `within`, a bool for each
+    interval of the track's grid, limits the search.
     """
-    near = np.flatnonzero(_near_the_shadow(track, sun_position_km(clock, track.time_s)))
+    near = np.flatnonzero(within & _near_the_shadow(track, sun_position_km(clock, track.time_s)))
     interval, side = np.tile(near, 2), np.repeat([-1.0, 1.0], len(near))
     quintics, begin_s = track.quintics[interval], track.time_s[interval]
 
     def height_km(time_s, k):
         """Of the line of sight to the Sun's edge above the Earth, where it comes nearest."""
-        position_km, _ = evaluate(quintics[k], time_s - begin_s[k])
-        place, (edge,) = _lines_of_sight(position_km, sun_position_km(clock, time_s), [side[k][:, None]])
-        ahead_km = np.minimum(dot(place, edge), 0.0)
-        return np.sqrt(dot(place, place) - ahead_km**2) - EARTH_RADIUS_KM
+        position_km = place(quintics[k], time_s - begin_s[k])
+        here, (edge,) = _lines_of_sight(position_km, sun_position_km(clock, time_s), [side[k][:, None]])
+        ahead_km = np.minimum(dot(here, edge), 0.0)
+        return np.sqrt(dot(here, here) - ahead_km**2) - EARTH_RADIUS_KM
 
     return np.sort(crossings(height_km, begin_s, track.time_s[interval + 1])[1])
 

@@ -105,6 +105,15 @@ def evaluate(quintics, seconds):
     return position, velocity
 
 
+def place(quintics, seconds):
+    """The position alone, as `evaluate`."""
+    x = seconds[..., None]
+    position = quintics[..., 5, :]
+    for k in range(4, -1, -1):
+        position = position * x + quintics[..., k, :]
+    return position
+
+
 def _accelerations(time_s, position_km, velocity_km_s):
     """Acceleration at each grid point (n, 3), from the states of the point and its neighbours; n is 3 or more.
 
