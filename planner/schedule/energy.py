@@ -95,12 +95,10 @@ def session_cost(power: SatellitePower, draw: SessionDraw, conversion: Conversio
     battery_c = idle.battery_c[at]
     taken_w = conversion.stored_w(draw.idle_terminal_w, battery_c) - conversion.stored_w(draw.terminal_w, battery_c)
     on_air = draw.phase == "transmission"
-    per_s_wh = taken_w[on_air] / WH_J
     return EnergyCost(
         fixed_wh=float(taken_w[~on_air] @ step_s[~on_air] / WH_J),
-        per_s_wh=float(per_s_wh @ step_s[on_air] / step_s[on_air].sum()),
-        per_s_low_wh=float(per_s_wh.min()),
-        per_s_high_wh=float(per_s_wh.max()),
+        edges_s=np.append(draw.edges_s[:-1][on_air], draw.edges_s[1:][on_air][-1]),
+        per_s_wh=taken_w[on_air] / WH_J,
     )
 
 

@@ -6,14 +6,16 @@ AIAA 2012-4610; continuous start and stop are our own.
 """
 
 from collections import defaultdict
-from dataclasses import dataclass, field
+from copy import deepcopy
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
+from planner.schedule.crowding import OnAir, crowded, fits, seconds_on_air, share_time
 from planner.schedule.problem import DAY_S, HOUR_S, Problem
 from planner.schedule.programme import Programme
-from planner.schedule.sessions import Candidate, EnergyCost
-from planner.schedule.states import SatelliteStates
+from planner.schedule.sessions import Candidate
+from planner.schedule.states import EnergyStates, SatelliteStates
 
 # Ties: fewer sessions, then earlier ones. Shares of the largest session's volume, far below the gap asked for.
 FEWER_SESSIONS = 1e-5
@@ -38,6 +40,7 @@ class WeekProgramme:
     programme: Programme = field(default_factory=Programme)
     variables: list[Variables] = field(default_factory=list)
     floor_rows: dict[tuple[str, int], int] = field(default_factory=dict)  # (satellite, event) -> row
+    gain_rows: dict[tuple[str, int], int] = field(default_factory=dict)  # (satellite, interval) -> row
 
     def sessions(self, values: np.ndarray) -> list[tuple[int, float, float]]:
         """(candidate, tx_on_s, tx_off_s) of what the solution flies."""
@@ -57,6 +60,34 @@ class WeekProgramme:
 
     def forbid(self, index: int) -> None:
         self.programme.fix(self.variables[index].flown, 0.0)
+
+    def only(self, chosen: set[int]) -> "WeekProgramme":
+        """The same programme with every other candidate left out: small, for mending a plan."""
+        restricted = replace(self, programme=deepcopy(self.programme))
+        for index in set(range(len(self.variables))) - chosen:
+            restricted.forbid(index)
+        return restricted
+
+    def follow(self, satellite: str, chosen: list[tuple[int, float, float]], stored_wh: np.ndarray) -> None:
+        """Correct each interval's gain by what the full physics showed for these sessions.
+
+        stored_wh (n + 1,) : stored energy at the satellite's events, simulated
+        """
+        states = next(states for states in self.problem.states if states.satellite == satellite)
+        cost_wh = np.zeros(len(states.events_s) - 1)
+        for index, on_s, off_s in chosen:
+            candidate = self.problem.candidates[index]
+            if candidate.satellite == satellite:
+                flown_wh, start_wh, length_wh = candidate.cost_wh
+                price_wh = flown_wh + start_wh * (on_s - candidate.opens_s) + length_wh * (off_s - on_s)
+                for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
+                    cost_wh[interval] += share * price_wh
+        modelled_wh = states.likely.start_wh
+        for interval, net_wh in enumerate(states.likely.gain_wh - cost_wh):
+            after_wh = min(modelled_wh + net_wh, states.likely.full_wh)
+            missed_wh = np.diff(stored_wh)[interval] - (after_wh - modelled_wh)
+            self.programme.shift_upper(self.gain_rows[satellite, interval], float(missed_wh))
+            modelled_wh = after_wh
 
 
 def plan_programme(problem: Problem) -> WeekProgramme:
@@ -79,6 +110,9 @@ def plan_programme(problem: Problem) -> WeekProgramme:
         _likely_data(week, states)
     _one_of_each(week)
     _separations(week)
+    shared = sorted({index for pair in crowded(problem) for index in pair})
+    on_air = {i: seconds_on_air(week.programme, problem.candidates[i], week.variables[i]) for i in shared}
+    share_time(problem, week.programme, week.variables, on_air)
     _policy_rows(week)
     return week
 
@@ -86,21 +120,23 @@ def plan_programme(problem: Problem) -> WeekProgramme:
 def bound_programme(problem: Problem) -> WeekProgramme:
     """A relaxation that holds every plan that is safe under the full physics; its optimum bounds their volume [Mbit].
 
-    Losses are the least possible, a session's volume the most its length could give, its energy is charged where it
-    hurts least, and sessions are kept apart only where no choice of start and stop could fit both.
+    Losses are the least possible, a session's volume the most that its length, start and stop could give, and its energy
+    is charged where it hurts least.
     """
     week = WeekProgramme(problem)
     for candidate in problem.candidates:
         v = _session_variables(week, candidate)
-        for slope, offset in candidate.by_duration:
-            week.programme.row([(v.volume, 1.0), (v.length, -slope), (v.flown, -offset)], highest=0.0)
+        _most_volume(week.programme, candidate, v)
+    on_air = {
+        i: seconds_on_air(week.programme, candidate, week.variables[i])
+        for i, candidate in enumerate(problem.candidates)
+    }
     for states in problem.states:
-        _least_energy(week, states)
+        _least_energy(week, states, on_air)
         _relaxed_data(week, states)
     _one_of_each(week)
-    for i, j in problem.neighbours():
-        if not any(_fits(problem, *pair) for pair in ((i, j), (j, i))):
-            week.programme.row([(week.variables[i].flown, 1.0), (week.variables[j].flown, 1.0)], highest=1.0)
+    _separations(week)
+    share_time(problem, week.programme, week.variables, on_air)
     _policy_rows(week)
     return week
 
@@ -133,8 +169,21 @@ def _volume_by_start_and_stop(programme: Programme, candidate: Candidate, v: Var
     programme.row([(v.volume, 1.0), (before, -1.0), (after, -1.0)], highest=0.0)
 
 
-def _energy_terms(v: Variables, cost: EnergyCost, share: float) -> list[tuple[int, float]]:
-    return [(v.flown, share * cost.fixed_wh), (v.length, share * cost.per_s_wh)]
+def _most_volume(programme: Programme, candidate: Candidate, v: Variables) -> None:
+    """Upper bounds on volume that hold wherever the session lies: by its length, and by its start and stop."""
+    for slope, offset in candidate.by_duration:
+        programme.row([(v.volume, 1.0), (v.length, -slope), (v.flown, -offset)], highest=0.0)
+    lost, got = programme.variable(-candidate.most_mbit - 1.0, 0.0), programme.variable(0.0, np.inf)
+    for slope, offset in candidate.lost_to_start:
+        programme.row([(lost, 1.0), (v.start, -slope), (v.flown, -offset)], highest=0.0)
+    for slope, offset in candidate.up_to_stop:
+        programme.row([(got, 1.0), (v.start, -slope), (v.length, -slope), (v.flown, -offset)], highest=0.0)
+    programme.row([(v.volume, 1.0), (lost, -1.0), (got, -1.0)], highest=0.0)
+
+
+def _energy_terms(v: Variables, candidate: Candidate, share: float) -> list[tuple[int, float]]:
+    flown_wh, start_wh, length_wh = candidate.cost_wh
+    return [(v.flown, share * flown_wh), (v.start, share * start_wh), (v.length, share * length_wh)]
 
 
 def _of_satellite(week: WeekProgramme, satellite: str) -> list[tuple[Candidate, Variables]]:
@@ -147,37 +196,43 @@ def _likely_energy(week: WeekProgramme, states: SatelliteStates) -> None:
     terms = defaultdict(list)
     for candidate, v in _of_satellite(week, states.satellite):
         for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
-            terms[interval] += _energy_terms(v, candidate.likely, share)
-    stored = _energy_chain(week.programme, states.likely, terms)
+            terms[interval] += _energy_terms(v, candidate, share)
+    stored, rows = _energy_chain(week.programme, states.likely, terms)
+    week.gain_rows |= {(states.satellite, interval): row for interval, row in enumerate(rows)}
     for event, variable in enumerate(stored[1:], start=1):
-        week.floor_rows[states.satellite, event] = week.programme.row([(variable, 1.0)], lowest=states.likely.floor_wh)
-    week.programme.row([(stored[-1], 1.0)], lowest=states.likely.end_wh)
+        last = event == len(states.events_s) - 1
+        lowest_wh = states.likely.end_wh if last else states.likely.floor_wh
+        week.floor_rows[states.satellite, event] = week.programme.row([(variable, 1.0)], lowest=lowest_wh)
 
 
-def _energy_chain(programme: Programme, energy, terms: dict[int, list]) -> list[int]:
-    """stored[i + 1] + costs of interval i + spill = stored[i] + gain: spill may be anything from 0."""
-    stored = [programme.variable(energy.start_wh, energy.start_wh)]
+def _energy_chain(programme: Programme, energy: EnergyStates, terms: dict[int, list]) -> tuple[list[int], list[int]]:
+    """stored[i + 1] + costs of interval i + spill = stored[i] + gain: spill may be anything from 0. Columns and rows."""
+    stored, rows = [programme.variable(energy.start_wh, energy.start_wh)], []
     for interval, gain_wh in enumerate(energy.gain_wh.tolist()):
         stored.append(programme.variable(-np.inf, energy.full_wh))
-        programme.row([(stored[-1], 1.0), (stored[-2], -1.0), *terms[interval]], highest=gain_wh)
-    return stored
+        rows.append(programme.row([(stored[-1], 1.0), (stored[-2], -1.0), *terms[interval]], highest=gain_wh))
+    return stored, rows
 
 
-def _least_energy(week: WeekProgramme, states: SatelliteStates) -> None:
+def _least_energy(week: WeekProgramme, states: SatelliteStates, on_air: dict[int, OnAir]) -> None:
     """As `_likely_energy`, relaxed: the least cost, charged when the window opens (room for the Sun) but not yet held
     against the floor while the window lasts."""
     programme, terms, active = week.programme, defaultdict(list), defaultdict(list)
-    for candidate, v in _of_satellite(week, states.satellite):
-        least, window_s = candidate.least, candidate.window_s
+    for i, candidate in enumerate(week.problem.candidates):
+        if candidate.satellite != states.satellite:
+            continue
+        v = week.variables[i]
         cost = programme.variable(-np.inf, np.inf)
-        programme.row([(cost, 1.0), (v.flown, -least.fixed_wh), (v.length, -least.per_s_low_wh)], lowest=0.0)
-        whole_wh = least.fixed_wh + (least.per_s_wh - least.per_s_high_wh) * window_s
-        programme.row([(cost, 1.0), (v.flown, -whole_wh), (v.length, -least.per_s_high_wh)], lowest=0.0)
+        for slope, offset in candidate.least.cheapest_by_duration:
+            programme.row([(cost, 1.0), (v.length, -slope), (v.flown, -offset)], lowest=0.0)
+        pairs = zip(on_air[i].steps, on_air[i].columns, strict=True)
+        by_step = [(column, -step.cheapest_per_s_wh) for step, column in pairs]
+        programme.row([(cost, 1.0), (v.flown, -candidate.least.fixed_wh), *by_step], lowest=0.0)
         first, last = np.searchsorted(states.events_s, [candidate.opens_s, candidate.closes_s])
         terms[int(first)].append((cost, 1.0))
         for event in range(int(first) + 1, int(last)):
             active[event].append((cost, 1.0))
-    stored = _energy_chain(programme, states.least, terms)
+    stored, _ = _energy_chain(programme, states.least, terms)
     for event, variable in enumerate(stored[1:], start=1):
         programme.row([(variable, 1.0), *active[event]], lowest=states.least.floor_wh)
     programme.row([(stored[-1], 1.0)], lowest=states.least.end_wh)
@@ -225,19 +280,12 @@ def _one_of_each(week: WeekProgramme) -> None:
             week.programme.row(terms, lowest=1.0 if kept else 0.0, highest=1.0)
 
 
-def _fits(problem: Problem, i: int, j: int) -> bool:
-    """Whether `j` can follow `i` when both are as short as allowed."""
-    first, second = problem.candidates[i], problem.candidates[j]
-    soonest_s = first.opens_s + first.shortest_s + problem.apart_s(first, second)
-    return soonest_s <= second.closes_s - second.shortest_s
-
-
 def _separations(week: WeekProgramme) -> None:
     """Two sessions that need the same satellite or the same antenna: one, or one after the other."""
     problem, programme = week.problem, week.programme
     for i, j in problem.neighbours():
         a, b = week.variables[i], week.variables[j]
-        forward, backward = _fits(problem, i, j), _fits(problem, j, i)
+        forward, backward = fits(problem, i, j), fits(problem, j, i)
         if not forward and not backward:
             programme.row([(a.flown, 1.0), (b.flown, 1.0)], highest=1.0)
         elif forward and backward:

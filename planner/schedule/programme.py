@@ -3,9 +3,11 @@
 HiGHS hears no signal until it returns; in a child it can be ended at once by Ctrl-C or by a cancelled re-plan.
 """
 
+import contextlib
 import pickle
 import subprocess
 import sys
+import tempfile
 import time
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass, field
@@ -76,6 +78,10 @@ class Programme:
         """Raise the lower limit of a row."""
         self._row_lowest[index] += by
 
+    def shift_upper(self, index: int, by: float) -> None:
+        """Move the upper limit of a row."""
+        self._row_highest[index] += by
+
     def arrays(self) -> dict:
         """What the solver takes: a minimisation."""
         shape = (len(self._row_lowest), len(self.gain))
@@ -88,79 +94,61 @@ class Programme:
         }
 
 
-def solve(
-    programme: Programme,
-    *,
-    relative_gap: float,
-    time_limit_s: float | None = None,
-    cancelled: Callable[[], bool] = lambda: False,
-) -> Solution:
-    """Solve one programme; see `solve_all`."""
-    return solve_all([programme], relative_gap=relative_gap, time_limit_s=time_limit_s, cancelled=cancelled)[0]
+class Solving:
+    """A programme being solved in a child process; leaving the `with` block ends the child, whatever happened.
 
-
-def solve_all(
-    programmes: list[Programme],
-    *,
-    relative_gap: float,
-    time_limit_s: float | None = None,
-    cancelled: Callable[[], bool] = lambda: False,
-) -> list[Solution]:
-    """Solve each programme in a child process of its own, all at once.
+    Question and answer go through unnamed temporary files, so no pipe can fill and block.
 
     Parameters
     ----------
     relative_gap : the solver may stop when objective and bound differ by no more than this share
-    time_limit_s : seconds for each, or None for as long as it takes (only then is the result the same on every run)
-    cancelled : asked every 50 ms; when it says True the children are ended
-
-    Raises
-    ------
-    KeyboardInterrupt : interrupted or cancelled; no child is left running
-    MachineError : a child ended without an answer
+    time_limit_s : seconds, or None for as long as it takes (only then is the result the same on every run)
     """
-    options = {"mip_rel_gap": relative_gap} | ({} if time_limit_s is None else {"time_limit": time_limit_s})
-    began = time.perf_counter()
-    children = [_Child(programme.arrays() | {"options": options}) for programme in programmes]
-    try:
-        while any(child.running() for child in children):
+
+    def __init__(self, programme: Programme, *, relative_gap: float, time_limit_s: float | None = None):
+        limit = {} if time_limit_s is None else {"time_limit": time_limit_s}
+        self._began = time.perf_counter()
+        with contextlib.ExitStack() as files:
+            question, self._answer, self._words = (files.enter_context(tempfile.TemporaryFile()) for _ in range(3))
+            pickle.dump(programme.arrays() | {"options": {"mip_rel_gap": relative_gap} | limit}, question)
+            question.seek(0)
+            command = [sys.executable, str(WORKER)]
+            self._process = subprocess.Popen(command, stdin=question, stdout=self._answer, stderr=self._words)
+            self._files = files.pop_all()
+
+    def __enter__(self) -> "Solving":
+        return self
+
+    def __exit__(self, *_) -> None:
+        if self._process.poll() is None:
+            self._process.kill()
+        self._process.wait()
+        self._files.close()
+
+    def solution(self, cancelled: Callable[[], bool] = lambda: False) -> Solution:
+        """Wait for the answer.
+
+        Raises
+        ------
+        KeyboardInterrupt : interrupted, or `cancelled` (asked every 50 ms) says True
+        MachineError : the child ended without an answer
+        """
+        while self._process.poll() is None:
             if cancelled():
                 raise KeyboardInterrupt
             time.sleep(LOOK_EVERY_S)
-        return [child.solution(time.perf_counter() - began) for child in children]
-    finally:
-        for child in children:
-            child.end()
+        self._answer.seek(0)
+        content = self._answer.read()
+        if self._process.returncode or not content:
+            self._words.seek(0)
+            words = self._words.read().decode(errors="replace").strip().splitlines()
+            raise MachineError(
+                f"the solver ended without an answer: {words[-1] if words else self._process.returncode}"
+            )
+        return Solution(seconds=time.perf_counter() - self._began, **pickle.loads(content))
 
 
-class _Child:
-    """One solver process. Question and answer go through unnamed temporary files, so no pipe can fill and block."""
-
-    def __init__(self, question: dict):
-        import tempfile
-
-        self.question, self.answer = tempfile.TemporaryFile(), tempfile.TemporaryFile()
-        pickle.dump(question, self.question)
-        self.question.seek(0)
-        self.process = subprocess.Popen(
-            [sys.executable, str(WORKER)], stdin=self.question, stdout=self.answer, stderr=subprocess.PIPE
-        )
-
-    def running(self) -> bool:
-        return self.process.poll() is None
-
-    def solution(self, seconds: float) -> Solution:
-        self.answer.seek(0)
-        content = self.answer.read()
-        if self.process.returncode or not content:
-            words = self.process.stderr.read().decode(errors="replace").strip().splitlines()
-            raise MachineError(f"the solver ended without an answer: {words[-1] if words else self.process.returncode}")
-        found = pickle.loads(content)
-        return Solution(seconds=seconds, **found)
-
-    def end(self) -> None:
-        if self.running():
-            self.process.kill()
-        self.process.wait()
-        for file in (self.question, self.answer, self.process.stderr):
-            file.close()
+def solve(programme: Programme, *, cancelled: Callable[[], bool] = lambda: False, **options) -> Solution:
+    """Solve one programme; parameters as `Solving`."""
+    with Solving(programme, **options) as solving:
+        return solving.solution(cancelled)

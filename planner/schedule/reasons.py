@@ -143,6 +143,6 @@ def _not_worth_it(flown: Flown, problem: Problem, candidate: Candidate) -> str:
     if price_mbit > candidate.most_mbit:
         return f"not worth it: at most {candidate.most_mbit:.0f} Mbit for a station cost of {price_mbit:.0f} Mbit"
     return (
-        f"not worth it: {candidate.likely.fixed_wh + candidate.likely.per_s_wh * candidate.longest_s:.2f} Wh for at most"
+        f"not worth it: {candidate.likely.fixed_wh + candidate.likely.on_air_wh(candidate.opens_s, candidate.closes_s):.2f} Wh for at most"
         f" {candidate.most_mbit:.0f} Mbit; other sessions bring more of the {stored_mbit:.0f} Mbit still stored at the end"
     )

@@ -1,6 +1,6 @@
 """Candidates: every mode on every pass, with the window in which it may transmit and what it is worth and costs."""
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
@@ -11,18 +11,36 @@ from planner.mission.transmitter import Transmitter
 from planner.schedule.pieces import Lines, best_volume_by_duration, lines_above
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class EnergyCost:
-    """What a session takes from the stored energy: a part for every session and a part for every second on air.
+    """What a session takes from the stored energy: a part for every session, and one for each second on air.
 
-    `per_s_low_wh` and `per_s_high_wh` are the cheapest and dearest second of the window: between them lies every choice
-    of start and stop.
+    edges_s (k + 1,), per_s_wh (k,) : the second's price through the window, which sunlight and attitude change
     """
 
     fixed_wh: float
-    per_s_wh: float
-    per_s_low_wh: float
-    per_s_high_wh: float
+    edges_s: np.ndarray
+    per_s_wh: np.ndarray
+
+    def on_air_wh(self, begin_s: float, end_s: float) -> float:
+        """Price of being on air from `begin_s` to `end_s`."""
+        sum_wh = np.concatenate([[0.0], np.cumsum(self.per_s_wh * np.diff(self.edges_s))])
+        begin_wh, end_wh = np.interp([begin_s, end_s], self.edges_s, sum_wh)
+        return float(end_wh - begin_wh)
+
+    def mean_per_s_wh(self, begin_s: float, end_s: float) -> float:
+        if end_s - begin_s < 1e-6:
+            return float(self.per_s_wh.mean())
+        return self.on_air_wh(begin_s, end_s) / (end_s - begin_s)
+
+    @cached_property
+    def cheapest_by_duration(self) -> Lines:
+        """A lower bound on the whole price, as lines in tx_off - tx_on: the cheapest seconds of the window."""
+        duration_s, saved = best_volume_by_duration(np.diff(self.edges_s), -self.per_s_wh)
+        return [(-slope, self.fixed_wh - offset) for slope, offset in lines_above(duration_s, saved)]
+
+
+NO_COST = EnergyCost(0.0, np.array([0.0, 1.0]), np.array([0.0]))
 
 
 @dataclass(frozen=True)
@@ -41,8 +59,8 @@ class Candidate:
     lead_s: float  # the satellite is busy this long before transmission …
     tail_s: float  # … and this long after
     carries_commands: bool
-    likely: EnergyCost = field(default=EnergyCost(0.0, 0.0, 0.0, 0.0))
-    least: EnergyCost = field(default=EnergyCost(0.0, 0.0, 0.0, 0.0))
+    likely: EnergyCost = NO_COST
+    least: EnergyCost = NO_COST
 
     @property
     def mode(self) -> str:
@@ -51,6 +69,15 @@ class Candidate:
     @property
     def window_s(self) -> float:
         return self.closes_s - self.opens_s
+
+    @cached_property
+    def cost_wh(self) -> tuple[float, float, float]:
+        """Likely price as (flown, per second of start, per second of length): exact over the whole window and at the
+        peak, straight between."""
+        reach_s = self.peak_s - self.opens_s
+        before = self.likely.mean_per_s_wh(self.opens_s, self.peak_s)
+        after = self.likely.mean_per_s_wh(self.peak_s, self.closes_s)
+        return self.likely.fixed_wh + (before - after) * reach_s, after - before, after
 
     @property
     def longest_s(self) -> float:
@@ -108,6 +135,19 @@ class Candidate:
         at_s, volume = self._volume_from_peak()
         peak_s, fastest = self._fastest
         return lines_above(at_s - self.opens_s, np.where(at_s >= peak_s, volume, -fastest * (peak_s - at_s)))
+
+    @cached_property
+    def up_to_stop(self) -> Lines:
+        """An upper bound on the volume from the window's opening to tx_off, as lines in tx_off - opens_s."""
+        knots_s, volume = self._inside
+        return lines_above(knots_s - self.opens_s, volume - volume[0])
+
+    @cached_property
+    def lost_to_start(self) -> Lines:
+        """Less than what is lost by starting late, negative, as lines in tx_on - opens_s; acquisition charged."""
+        knots_s, volume = self._inside
+        lines = lines_above(knots_s - self.opens_s, volume[0] - volume)
+        return [(slope, offset + slope * self.profile.acquisition_s) for slope, offset in lines]
 
     @cached_property
     def by_duration(self) -> Lines:
