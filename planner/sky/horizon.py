@@ -64,12 +64,11 @@ def _nodes_near_the_horizon(track: Track, sites: Sites) -> _Nodes:
     Whatever stands above the plane between two points stands at most `bulge_km` above the higher of them.
     """
     up, sine = sites.axes[:, 2], np.sin(np.radians(sites.floor_deg))
-    level_km = dot(up, sites.position_km)[:, None] - track.bulge_km
     xyz_km = np.ascontiguousarray(track.position_km.T)
     nodes = []
-    for zenith, level in zip(up, level_km, strict=True):
+    for zenith, level_km in zip(up, dot(up, sites.position_km), strict=True):
         # einsum, because a product of this shape would wake the linear algebra library's threads
-        near = np.einsum("i,in->n", zenith, xyz_km) > level
+        near = np.einsum("i,in->n", zenith, xyz_km) + track.bulge_km > level_km
         bounding = near.copy()
         bounding[1:] |= near[:-1]
         bounding[:-1] |= near[1:]
