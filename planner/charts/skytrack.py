@@ -88,7 +88,7 @@ def _draw_sun(axes, sky: Sky, station, time_s: float) -> None:
     if sun.elevation_deg[0] > 0:
         axes.plot(
             np.radians(sun.azimuth_deg), 90 - sun.elevation_deg, "o", ms=13, color=style.YELLOW, mec=style.ORANGE,
-            mew=1.5, linestyle="", label=f"Sun, {sun.elevation_deg[0]:.0f}° high", zorder=3,
+            mew=1.5, alpha=0.85, linestyle="", label=f"Sun, {sun.elevation_deg[0]:.0f}° high", zorder=8,
         )  # fmt: skip
 
 
@@ -119,7 +119,7 @@ def _write_times(axes, sky: Sky, row: int, time_zone: tzinfo) -> None:
             [azimuth], [zenith], marker={"AOS": "^", "TCA": "s", "LOS": "v"}[name], ms=7, color=style.INK, zorder=6
         )
         zone = "Z" if time_zone is UTC else ""
-        when = sky.clock.datetime(moment_s).astimezone(time_zone)
+        when = sky.clock.datetime(moment_s + 0.5).astimezone(time_zone)  # to the nearest second
         axes.annotate(
             f"{name} {when:%H:%M:%S}{zone}", (azimuth, zenith), xytext=(7, 7), textcoords="offset points", zorder=7,
             bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none", "alpha": 0.8},

@@ -1,0 +1,70 @@
+"""Pages for a browser, self-contained, printed on A4. Every text is escaped where it enters a page."""
+
+from html import escape
+from string import Template
+
+PAGE = Template("""<!DOCTYPE html>
+<html lang="en">
+<head>
+<meta charset="utf-8">
+<title>$title</title>
+<style>
+@page { size: $size; margin: 14mm; }
+body { font: 10pt/1.4 "DejaVu Sans", Verdana, sans-serif; color: #222;
+  max-width: $width; margin: 1em auto; padding: 0 1em; }
+h1 { font-size: 17pt; margin: 0; } h2 { font-size: 11.5pt; margin: 1.1em 0 .3em; }
+p.under { margin: .2em 0 1em; }
+.side { display: flex; gap: 1.5em; align-items: flex-start; flex-wrap: wrap; }
+table { border-collapse: collapse; }
+th { text-align: left; font-weight: normal; color: #555; padding: .15em 1em .15em 0; }
+td { padding: .15em 1em .15em 0; font-variant-numeric: tabular-nums; }
+table.list { width: 100%; font-size: 8.5pt; } table.list th { border-bottom: 1px solid #888; vertical-align: bottom; }
+table.list td { border-bottom: 1px solid #ddd; vertical-align: top; padding-right: .6em; }
+.caution { border: 2px solid #D55E00; padding: .2em 1em; }
+.foot { color: #555; font-size: 8pt; border-top: 1px solid #888; }
+img { max-width: 100%; }
+</style>
+</head>
+<body>
+$body
+</body>
+</html>
+""")
+
+
+def page(title: str, body: str, *, landscape: bool = False) -> str:
+    """A whole page; `body` is HTML already, `title` plain text."""
+    size, width = ("A4 landscape", "270mm") if landscape else ("A4", "182mm")
+    return PAGE.substitute(title=escape(title), size=size, width=width, body=body)
+
+
+def card_html(card, picture_base64: str) -> str:
+    """A pass card; `picture_base64` is a PNG."""
+    body = [
+        f"<h1>{escape(card.title)}</h1>",
+        f'<p class="under">{escape(card.subtitle)}</p>',
+        f'<div class="side"><div><h2>Times (UTC)</h2>{rows_html(card.times)}</div>',
+        f'<img src="data:image/png;base64,{picture_base64}" alt="track over the sky" width="380"></div>',
+        f"<h2>Radio and data</h2>{rows_html(card.radio)}",
+        f"<h2>{escape(card.search_after)}</h2><ol>{items_html(card.steps)}</ol>",
+        f'<div class="caution"><h2>Cautions</h2><ul>{items_html(card.cautions)}</ul></div>',
+        f'<p class="foot">{escape(card.footer)}</p>',
+    ]
+    return page(f"{card.title}, {card.subtitle}", "\n".join(body))
+
+
+def rows_html(rows) -> str:
+    """(label, text) pairs as a table of two columns."""
+    return "<table>" + "".join(f"<tr><th>{escape(a)}</th><td>{escape(b)}</td></tr>" for a, b in rows) + "</table>"
+
+
+def items_html(lines) -> str:
+    """Lines as list items."""
+    return "".join(f"<li>{escape(line)}</li>" for line in lines)
+
+
+def table_html(headings, rows) -> str:
+    """Rows of texts under headings."""
+    head = "".join(f"<th>{escape(text)}</th>" for text in headings)
+    body = "".join("<tr>" + "".join(f"<td>{escape(text)}</td>" for text in row) + "</tr>\n" for row in rows)
+    return f'<table class="list"><thead><tr>{head}</tr></thead>\n<tbody>\n{body}</tbody></table>'

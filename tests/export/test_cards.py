@@ -1,0 +1,96 @@
+"""Cards: the figures on them against the contact and the sky, one A4 page each, hostile names escaped."""
+
+import re
+
+import numpy as np
+import pandas as pd
+import pytest
+from made_up_contacts import contact
+
+from planner.errors import InputError
+from planner.export.card_page import FOOT, card_figure
+from planner.export.cards import card_files, make_card
+
+# MediaBox of ISO 216 A4 in points: 210 x 297 mm.
+A4_POINTS = (595, 842)
+
+
+@pytest.fixture(scope="module")
+def row(sky, session):
+    k = int(np.flatnonzero(sky.passes.pass_id == session.pass_id)[0])
+    iso = sky.clock.iso
+    return contact(
+        pass_id=session.pass_id,
+        station=session.station,
+        aos_utc=iso(sky.passes.aos_s[k]),
+        power_on_utc=iso(session.tx_on_s - 60),
+        tx_on_utc=iso(session.tx_on_s),
+        tx_off_utc=iso(session.tx_off_s),
+        los_utc=iso(sky.passes.los_s[k]),
+        modcods=f"QPSK_3/4@{iso(session.tx_on_s)} 8PSK_3/4@{iso(session.tx_on_s + 60)}",
+    )
+
+
+def card_of(mission, sky, row, **changes):
+    return make_card(mission, sky, next(pd.DataFrame([row | changes]).itertuples()))
+
+
+def test_a_card_tells_times_directions_and_radio(mission, sky, session, row):
+    card = card_of(mission, sky, row)
+    times, radio = dict(card.times), dict(card.radio)
+    assert card.title == f"MARSHLIGHT-1 over {session.station}"
+    assert times["Transmitter on"].startswith(sky.clock.iso(session.tx_on_s)[11:19])
+    assert [text[:8] for _, text in card.times] == sorted(text[:8] for _, text in card.times)
+    azimuth = sky.passes.aos_azimuth_deg[sky.passes.pass_id == session.pass_id][0]
+    assert f"az {azimuth:5.1f}°" in times["AOS, rises"]
+    assert radio["Expected margin"] == "3.2 dB or more at 99 % availability"
+    assert re.fullmatch(r"26250 MHz sent, Doppler \+\d+\.\d to -\d+\.\d kHz", radio["Frequency"])
+    assert radio["MODCOD from"].replace("\u00a0", " ").startswith("QPSK 3/4 ")
+
+
+def test_a_card_says_what_to_do_without_lock_and_warns(mission, sky, session, row):
+    card = card_of(mission, sky, row)
+    acquisition_s = mission.satellites[0].spacecraft.mode("K high rate").acquisition_s
+    wait_s = int(re.match(r"No lock (\d+) s after", card.search_after)[1])
+    assert acquisition_s < wait_s < acquisition_s + 10  # a day-old set is late by a second or so
+    assert any("search along the track" in step for step in card.steps)
+    assert card.cautions[0] == "Sun within 0.4 deg of the dish axis"
+    assert any("licence" in caution for caution in card.cautions)
+    assert any("nobody at or in front of it" in caution for caution in card.cautions)
+    assert "elements of epoch 2026-12-06 18:00:00" in card.footer
+
+
+def test_files_are_one_a4_page_and_the_same_bytes_each_time(mission, sky, row):
+    frame = pd.DataFrame([row])
+    first, second = (dict(card_files(mission, sky, frame)) for _ in range(2))
+    assert first == second
+    (pdf_name, pdf), (html_name, html) = first.items()
+    assert pdf_name.removesuffix(".pdf") == html_name.removesuffix(".html")
+    [box] = re.findall(rb"/MediaBox \[ 0 0 ([\d.]+) ([\d.]+) \]", pdf)
+    assert tuple(round(float(points)) for points in box) == pytest.approx(A4_POINTS, abs=1)
+    assert "size: A4;" in html.decode()
+
+
+def test_html_escapes_every_text(mission, sky, row):
+    hostile = '<script>alert("1")</script>'
+    frame = pd.DataFrame([row | {"cautions": hostile, "polarisation": hostile, "modcods": hostile}])
+    html = dict(card_files(mission, sky, frame)).popitem()[1].decode()
+    assert "<script" not in html
+    assert html.count("&lt;script&gt;") == 3
+
+
+def test_a_card_with_much_to_say_still_fits_its_page(mission, sky, row):
+    many = "; ".join(f"caution number {n} with a good many words in it, as long as a line or two" for n in range(25))
+    figure = card_figure(card_of(mission, sky, row, cautions=many), mission, sky)
+    written = [text.get_position()[1] for text in figure.texts if text.get_text().startswith("! ")]
+    assert len(written) == 27
+    assert min(written) > FOOT
+
+
+def test_nan_cautions_are_no_caution(mission, sky, row):
+    assert len(card_of(mission, sky, row, cautions=float("nan")).cautions) == 2
+
+
+def test_a_contact_on_no_pass_is_told(mission, sky, row):
+    with pytest.raises(InputError, match="nowhere: must be a pass in the span of the mission"):
+        card_of(mission, sky, row, pass_id="nowhere")
