@@ -16,8 +16,8 @@ from planner.export.render import pdf_bytes, png_bytes
 from planner.mission.models import Mission
 
 COLUMNS = {  # heading: (place across the table, letters that fit)
-    "day": (0.0, 12), "AOS": (0.072, 9), "on": (0.128, 9), "off": (0.184, 9), "LOS": (0.24, 9), "az. up": (0.298, 6),
-    "az. down": (0.345, 6), "max el.": (0.402, 6), "station": (0.45, 20), "mode": (0.575, 16), "margin": (0.677, 9),
+    "day": (0.0, 12), "AOS": (0.072, 9), "on": (0.128, 9), "off": (0.184, 9), "LOS": (0.24, 9), "az. up": (0.298, 9),
+    "az. down": (0.345, 9), "max el.": (0.402, 9), "station": (0.45, 20), "mode": (0.575, 16), "margin": (0.677, 9),
     "Mbit": (0.765, 9), "cautions": (0.785, 42),
 }  # fmt: skip
 HEADINGS = tuple(COLUMNS)
