@@ -46,16 +46,22 @@ class _Nodes:
     linked: np.ndarray
 
 
-def _clearance_km(position_km, site_km, up, sine):
-    """Height above the cone of elevations with that sine: positive above it, nearly straight where it is crossed."""
-    away_km = position_km - site_km
-    return dot(away_km, up) - sine * np.sqrt(dot(away_km, away_km))
+def _clearance_km(away_km, up, sine):
+    """Height above the cone of elevations with that sine (m,), of vectors from stations with zeniths `up`, (3, m) both.
+
+    Nearly straight in time where the cone is crossed.
+    """
+    return _along(away_km, up) - sine * np.sqrt(_along(away_km, away_km))
 
 
-def _climb(position_km, velocity_km_s, site_km, up):
-    """The elevation's rate times range^3 over its cosine: nearly straight around the top of a pass."""
-    away_km = position_km - site_km
-    return dot(velocity_km_s, up) * dot(away_km, away_km) - dot(away_km, up) * dot(away_km, velocity_km_s)
+def _climb(away_km, velocity_km_s, up):
+    """The elevation's rate times range^3 over its cosine, (m,): nearly straight in time around the top of a pass."""
+    height_km, height_rate_km_s = _along(away_km, up), _along(velocity_km_s, up)
+    return height_rate_km_s * _along(away_km, away_km) - height_km * _along(away_km, velocity_km_s)
+
+
+def _along(a, b):
+    return np.einsum("im,im->m", a, b)
 
 
 def _nodes_near_the_horizon(track: Track, sites: Sites) -> _Nodes:
@@ -63,7 +69,7 @@ def _nodes_near_the_horizon(track: Track, sites: Sites) -> _Nodes:
 
     Whatever stands above the plane between two points stands at most `bulge_km` above the higher of them.
     """
-    up, sine = sites.axes[:, 2], np.sin(np.radians(sites.floor_deg))
+    up = sites.axes[:, 2]
     xyz_km = np.ascontiguousarray(track.position_km.T)
     nodes = []
     for zenith, level_km in zip(up, dot(up, sites.position_km), strict=True):
@@ -77,24 +83,24 @@ def _nodes_near_the_horizon(track: Track, sites: Sites) -> _Nodes:
     k = np.repeat(np.arange(len(nodes)), [len(each) for each in nodes])
     linked = np.zeros(len(node), dtype=bool)
     linked[:-1] = (np.diff(node) == 1) & (np.diff(k) == 0)
-    position_km, site_km = track.position_km[node], sites.position_km[k]
-    clearance_km = _clearance_km(position_km, site_km, up[k], sine[k])
-    climb = _climb(position_km, track.velocity_km_s[node], site_km, up[k])
+    away_km, zenith = (track.position_km[node] - sites.position_km[k]).T, up[k].T
+    clearance_km = _clearance_km(away_km, zenith, np.sin(np.radians(sites.floor_deg))[k])
+    climb = _climb(away_km, track.velocity_km_s[node].T, zenith)
     return _Nodes(k, track.time_s[node], node, clearance_km, climb, linked)
 
 
 def _extremes_added(track: Track, sites: Sites, nodes: _Nodes) -> _Nodes:
     """The same with every highest and lowest point between nodes, so that elevation is monotone between nodes."""
     k = np.flatnonzero(nodes.linked[:-1] & ((nodes.climb[:-1] > 0) != (nodes.climb[1:] > 0)))
-    quintics, begin_s, site_km, up, sine = _gathered(track, sites, nodes, k)
+    quintics, begin_s, up, sine = _seen_from_stations(track, sites, nodes.interval[k], nodes.station_index[k])
     extreme_s = refine(
-        lambda time_s, j: _climb(*evaluate(quintics[j], time_s - begin_s[j]), site_km[j], up[j]),
+        lambda time_s, j: _climb(*evaluate(quintics[..., j], time_s - begin_s[j]), up[:, j]),
         nodes.time_s[k],
         nodes.time_s[k + 1],
         nodes.climb[k],
         nodes.climb[k + 1],
     )
-    clearance_km = _clearance_km(place(quintics, extreme_s - begin_s), site_km, up, sine)
+    clearance_km = _clearance_km(place(quintics, extreme_s - begin_s), up, sine)
     order = np.argsort(np.concatenate([np.arange(len(nodes.time_s)), k + 0.5]))
 
     def merged(column, more):
@@ -110,11 +116,12 @@ def _extremes_added(track: Track, sites: Sites, nodes: _Nodes) -> _Nodes:
     )
 
 
-def _gathered(track: Track, sites: Sites, nodes: _Nodes, k):
-    """For the grid intervals of the nodes `k`: polynomials and their beginnings, places, zeniths, sines of the mask."""
-    interval, station = nodes.interval[k], nodes.station_index[k]
-    sine = np.sin(np.radians(sites.floor_deg))[station]
-    return track.quintics[interval], track.time_s[interval], sites.position_km[station], sites.axes[station, 2], sine
+def _seen_from_stations(track: Track, sites: Sites, interval, station_index):
+    """Polynomials (6, 3, m) away from the stations, their beginnings, zeniths (3, m) and sines of the lowest mask."""
+    quintics = track.quintics[..., interval]
+    quintics[0] -= sites.position_km[station_index].T
+    sine = np.sin(np.radians(sites.floor_deg))[station_index]
+    return quintics, track.time_s[interval], sites.axes[station_index, 2].T, sine
 
 
 def _stretches(track: Track, sites: Sites, nodes: _Nodes) -> Arcs:
@@ -127,9 +134,9 @@ def _stretches(track: Track, sites: Sites, nodes: _Nodes) -> Arcs:
     # a stretch in progress at an end of the track has no crossing there
     rising, setting = from_before[rises], nodes.linked[sets]
     k = np.concatenate([rises[rising] - 1, sets[setting]])
-    quintics, begin_s, site_km, up, sine = _gathered(track, sites, nodes, k)
+    quintics, begin_s, up, sine = _seen_from_stations(track, sites, nodes.interval[k], nodes.station_index[k])
     crossing_s = refine(
-        lambda time_s, j: _clearance_km(place(quintics[j], time_s - begin_s[j]), site_km[j], up[j], sine[j]),
+        lambda time_s, j: _clearance_km(place(quintics[..., j], time_s - begin_s[j]), up[:, j], sine[j]),
         nodes.time_s[k],
         nodes.time_s[k + 1],
         nodes.clearance_km[k],
@@ -161,8 +168,9 @@ def _sine(position_km, site_km, up):
     return dot(away_km, up) / np.sqrt(dot(away_km, away_km))
 
 
-def highest_s(track: Track, site_km, up, begin_s, end_s):
-    """The moment within [begin_s, end_s], (n,), of greatest elevation above places (n, 3) with zeniths `up` (n, 3)."""
+def highest_s(track: Track, sites: Sites, station_index, begin_s, end_s):
+    """The moment within [begin_s, end_s] at which the satellite stands highest above each station, all (n,)."""
+    site_km, up = sites.position_km[station_index], sites.axes[station_index, 2]
     times = np.linspace(begin_s, end_s, SEARCH_POINTS)
     best = np.argmax(_sine(track.at(times)[0], site_km, up), axis=0)
     everyone = np.arange(len(begin_s))
@@ -170,7 +178,8 @@ def highest_s(track: Track, site_km, up, begin_s, end_s):
     high = times[np.minimum(best + 1, SEARCH_POINTS - 1), everyone]
 
     def climb(time_s, k):
-        return _climb(*track.at(time_s), site_km[k], up[k])
+        position_km, velocity_km_s = track.at(time_s)
+        return _climb((position_km - site_km[k]).T, velocity_km_s.T, up[k].T)
 
     start, end = climb(low, everyone), climb(high, everyone)
     k = np.flatnonzero((start > 0) & (end < 0))

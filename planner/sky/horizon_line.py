@@ -46,8 +46,7 @@ def _pieces(track: Track, sites: Sites, index: int, rise_s, peak_s, set_s):
     arc, begin_s, end_s = arc[left], edge_s[left], edge_s[left + 1]
     top_s = peak_s[arc]
     beside = np.flatnonzero((top_s < begin_s) | (top_s > end_s))
-    many = np.ones((len(beside), 1))
-    top_s[beside] = highest_s(track, site_km * many, axes[2] * many, begin_s[beside], end_s[beside])
+    top_s[beside] = highest_s(track, sites, np.full(len(beside), index), begin_s[beside], end_s[beside])
     return np.full(len(arc), index), begin_s, top_s, end_s
 
 

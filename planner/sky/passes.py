@@ -100,7 +100,7 @@ def passes_of_satellite(clock: Clock, track: Track, satellite_index: int, sites:
     place = sites.position_km[arcs.station_index], sites.axes[arcs.station_index]
     tca_s = np.clip(arcs.peak_s, aos_s, los_s)
     cut = np.flatnonzero(tca_s != arcs.peak_s)
-    tca_s[cut] = highest_s(track, place[0][cut], place[1][cut, 2], aos_s[cut], los_s[cut])
+    tca_s[cut] = highest_s(track, sites, arcs.station_index[cut], aos_s[cut], los_s[cut])
     view = look_from(*track.at(np.stack([aos_s, tca_s, los_s])), *place)
     names = np.array([station.name for station in sites.stations], dtype=object)
     return {

@@ -4,6 +4,7 @@ import numpy as np
 
 WITHIN_S = 5e-4  # the last correction; what is left after it is far smaller, as the corrections shrink ever faster
 SLOPE_STEP_S = 0.01
+EVERYONE = slice(None)  # picks all members without copying them
 
 
 def refine(function, low, high, f_low, f_high):
@@ -18,7 +19,7 @@ def refine(function, low, high, f_low, f_high):
     while active.size:
         a1, b1, fa1, fb1 = a[active], b[active], fa[active], fb[active]
         x = b1 - fb1 * (b1 - a1) / (fb1 - fa1)
-        y = function(x, active)
+        y = function(x, active if active.size < a.size else EVERYONE)
         crossed = (y < 0) != (fb1 < 0)
         a[active], fa[active] = np.where(crossed, b1, a1), np.where(crossed, fb1, fa1 / 2)
         b[active], fb[active], zero[active] = x, y, x

@@ -103,11 +103,11 @@ def eclipse_edges_s(track, clock: Clock, within=True):
     """
     near = np.flatnonzero(within & _near_the_shadow(track, sun_position_km(clock, track.time_s)))
     interval, side = np.tile(near, 2), np.repeat([-1.0, 1.0], len(near))
-    quintics, begin_s = track.quintics[interval], track.time_s[interval]
+    quintics, begin_s = track.quintics[..., interval], track.time_s[interval]
 
     def height_km(time_s, k):
         """Of the line of sight to the Sun's edge above the Earth, where it comes nearest."""
-        position_km = place(quintics[k], time_s - begin_s[k])
+        position_km = place(quintics[..., k], time_s - begin_s[k]).T
         here, (edge,) = _lines_of_sight(position_km, sun_position_km(clock, time_s), [side[k][:, None]])
         ahead_km = np.minimum(dot(here, edge), 0.0)
         return np.sqrt(dot(here, here) - ahead_km**2) - EARTH_RADIUS_KM

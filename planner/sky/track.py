@@ -37,9 +37,10 @@ class Track:
 
     @cached_property
     def quintics(self) -> np.ndarray:
-        """Polynomial of each interval in seconds after its left end, (n - 1, 6, 3), constant term first.
+        """Polynomials in seconds after each interval's left end, (6, 3, n - 1): powers from 0, components, intervals.
 
         Hermite's of position, velocity and acceleration; the latter from the states of three neighbouring points.
+        Moments stand last here, unlike elsewhere: the arithmetic runs along them.
         """
         h = np.diff(self.time_s)[:, None]
         acceleration = _accelerations(self.time_s, self.position_km, self.velocity_km_s)
@@ -53,7 +54,7 @@ class Track:
             (7 * d1 - 15 * d0 - d2) / h**4,
             (6 * d0 - 3 * d1 + d2 / 2) / h**5,
         )
-        return np.stack([c0, c1, c2, c3, c4, c5], axis=1)
+        return np.ascontiguousarray(np.stack([c0, c1, c2, c3, c4, c5]).swapaxes(1, 2))
 
     @cached_property
     def bulge_km(self) -> np.ndarray:
@@ -92,25 +93,24 @@ class Track:
                 f" got {time_s.min():.3f} to {time_s.max():.3f}"
             )
         index = self.interval(time_s)
-        return evaluate(self.quintics[index], time_s - self.time_s[index])
+        position_km, velocity_km_s = evaluate(self.quintics[..., index], time_s - self.time_s[index])
+        return np.moveaxis(position_km, 0, -1), np.moveaxis(velocity_km_s, 0, -1)
 
 
 def evaluate(quintics, seconds):
-    """Position and velocity of polynomials (..., 6, 3) at `seconds` (...) after each one's left end."""
-    x = seconds[..., None]
-    position, velocity = quintics[..., 5, :], 0.0
-    for k in range(4, -1, -1):
-        velocity = velocity * x + position
-        position = position * x + quintics[..., k, :]
+    """Position and velocity (3, ...) of polynomials (6, 3, ...) at `seconds` (...) after each one's left end."""
+    position, velocity = quintics[5], 0.0
+    for coefficient in quintics[4::-1]:
+        velocity = velocity * seconds + position
+        position = position * seconds + coefficient
     return position, velocity
 
 
 def place(quintics, seconds):
     """The position alone, as `evaluate`."""
-    x = seconds[..., None]
-    position = quintics[..., 5, :]
-    for k in range(4, -1, -1):
-        position = position * x + quintics[..., k, :]
+    position = quintics[5]
+    for coefficient in quintics[4::-1]:
+        position = position * seconds + coefficient
     return position
 
 
