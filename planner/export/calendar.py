@@ -6,6 +6,7 @@ already flown is left out, and one beyond the planned span stays as it was. No c
 element epoch, the state of knowledge that the times were computed from, so the same inputs give the same bytes.
 """
 
+from dataclasses import dataclass, replace
 from datetime import UTC, datetime, timedelta
 from uuid import UUID, uuid5
 
@@ -18,7 +19,25 @@ from planner.mission.models import Mission
 PRODUCT = "-//downlink-planner//contacts//EN"
 NAMES_CONTACTS = UUID("5f2f2a0e-7a55-4d0b-9a43-6d2c3f1b8e11")  # drawn once; makes the UIDs ours
 ALARM_BEFORE_AOS_S = 600.0
-SIGNIFICANT = ("DTSTART", "DTEND", "LOCATION", "SUMMARY", "STATUS")  # a change in these raises SEQUENCE
+SIGNIFICANT = ("start", "end", "location", "summary", "status")  # a change in these raises SEQUENCE
+CONFIRMED, CANCELLED = "CONFIRMED", "CANCELLED"
+HIGHEST_SEQUENCE = 1_000_000
+
+
+@dataclass(frozen=True)
+class Entry:
+    """An event of the calendar; `alarm` is how long before `start` to remind and in what words (None: never)."""
+
+    uid: str
+    stamp: datetime
+    start: datetime
+    end: datetime
+    summary: str
+    location: str
+    description: str
+    status: str = CONFIRMED
+    sequence: int = 0
+    alarm: tuple[timedelta, str] | None = None
 
 
 def calendar_files(mission: Mission, contacts: pd.DataFrame, previous: bytes | None = None) -> dict[str, bytes]:
@@ -60,30 +79,16 @@ def contact_calendar(
     InputError : `previous` is not a calendar
     """
     wanted = contacts if station is None else contacts[contacts["station"] == station]
-    before = _events_of(previous, station)
-    events = {}
+    before = _issued(previous, station)
+    entries: dict[str, Entry] = {}
     for row in wanted.itertuples():
-        uid = _uid(row, events)
-        events[uid] = _event(row, uid, stamp, alarm_before_aos_s)
-        _set_sequence(events[uid], before.get(uid))
-    for uid, event in before.items():
-        if uid not in events and event.end > span[0]:
-            events[uid] = event if event.start >= span[1] or _is_cancelled(event) else _cancelled(event, stamp)
-    return _calendar(events.values(), span, stamp, station)
-
-
-def _calendar(events, span, stamp: datetime, station: str | None) -> bytes:
-    from icalendar import Calendar
-
-    calendar = Calendar()
-    calendar.add("PRODID", PRODUCT)
-    calendar.add("VERSION", "2.0")
-    calendar.add("NAME", f"Downlink contacts, {station or 'all stations'}")  # RFC 7986
-    for event in sorted(events, key=lambda event: (event.start, str(event["UID"]))):
-        calendar.add_component(event)
-    if not calendar.subcomponents:  # RFC 5545 asks for one component at least
-        calendar.add_component(_nothing_planned(span, stamp, station))
-    return calendar.to_ical()
+        uid = _uid(row, entries)
+        entries[uid] = _follow(_entry(row, uid, stamp, alarm_before_aos_s), before.get(uid))
+    for uid, entry in before.items():
+        if uid not in entries and entry.end > span[0]:
+            stands = entry.start >= span[1] or entry.status == CANCELLED
+            entries[uid] = entry if stands else _cancelled(entry, stamp)
+    return _calendar(entries.values() or [_nothing_planned(span, stamp, station)], station)
 
 
 def _uid(row, taken) -> str:
@@ -93,24 +98,21 @@ def _uid(row, taken) -> str:
     return uid
 
 
-def _event(row, uid: str, stamp: datetime, alarm_before_aos_s: float):
-    from icalendar import Alarm, Event
-
+def _entry(row, uid: str, stamp: datetime, alarm_before_aos_s: float) -> Entry:
     on, off, aos = (_utc(getattr(row, f"{name}_utc")) for name in ("tx_on", "tx_off", "aos"))
-    event, alarm = Event(), Alarm()
-    begin = on.replace(microsecond=0)
-    end = off if off.microsecond == 0 else off.replace(microsecond=0) + timedelta(seconds=1)
-    for key, value in (
-        ("UID", uid), ("DTSTAMP", _whole_second(stamp)), ("DTSTART", begin), ("DTEND", end), ("STATUS", "CONFIRMED"),
-        ("SUMMARY", f"{row.satellite}: {row.mode}, {row.station}"), ("LOCATION", row.station),
-        ("DESCRIPTION", _description(row)), ("CATEGORIES", [row.mode]), ("TRANSP", "OPAQUE"),
-    ):  # fmt: skip
-        event.add(key, value)
-    alarm.add("ACTION", "DISPLAY")
-    alarm.add("DESCRIPTION", f"{row.satellite} rises at {row.station} at {row.aos_utc}")
-    alarm.add("TRIGGER", _whole_second(aos) - timedelta(seconds=alarm_before_aos_s) - begin)
-    event.add_component(alarm)
-    return event
+    start = _whole_second(on)
+    end = off if off.microsecond == 0 else _whole_second(off) + timedelta(seconds=1)
+    before = start - _whole_second(aos) + timedelta(seconds=alarm_before_aos_s)
+    return Entry(
+        uid=uid,
+        stamp=stamp,
+        start=start,
+        end=end,
+        summary=f"{row.satellite}: {row.mode}, {row.station}",
+        location=row.station,
+        description=_description(row),
+        alarm=(before, f"{row.satellite} rises at {row.station} at {row.aos_utc}"),
+    )
 
 
 def _description(row) -> str:
@@ -127,57 +129,93 @@ def _description(row) -> str:
     return "\n".join([*lines, *([f"Cautions: {cautions}"] if cautions else [])])
 
 
-def _set_sequence(event, before) -> None:
-    same = before is not None and all(_plain(event, key) == _plain(before, key) for key in SIGNIFICANT)
-    event.add("SEQUENCE", 0 if before is None else int(before.get("SEQUENCE", 0)) + (not same))
+def _follow(entry: Entry, before: Entry | None) -> Entry:
+    """The entry with the sequence number that comes after `before`."""
+    if before is None:
+        return entry
+    same = all(getattr(entry, key) == getattr(before, key) for key in SIGNIFICANT)
+    return replace(entry, sequence=before.sequence + (not same))
 
 
-def _plain(event, key: str):
-    value = event.get(key)
-    return getattr(value, "dt", None) or str(value)
+def _cancelled(entry: Entry, stamp: datetime) -> Entry:
+    return replace(entry, status=CANCELLED, sequence=entry.sequence + 1, stamp=stamp, alarm=None)
 
 
-def _is_cancelled(event) -> bool:
-    return str(event.get("STATUS")) == "CANCELLED"
+def _nothing_planned(span, stamp: datetime, station: str | None) -> Entry:
+    """RFC 5545 asks for one component at least, and an empty week is news too."""
+    return Entry(
+        uid=str(uuid5(NAMES_CONTACTS, f"nothing planned|{station}|{span[0].isoformat()}")),
+        stamp=stamp,
+        start=_whole_second(span[0]),
+        end=_whole_second(span[1]),
+        summary=f"No contact planned, {station or 'all stations'}",
+        location="",
+        description="",
+    )
 
 
-def _cancelled(event, stamp: datetime):
-    """The event as it was, called off, without its alarm."""
-    sequence = int(event.get("SEQUENCE", 0)) + 1
-    for key in ("STATUS", "SEQUENCE", "DTSTAMP"):
-        event.pop(key, None)
-    event.add("STATUS", "CANCELLED")
-    event.add("SEQUENCE", sequence)
-    event.add("DTSTAMP", _whole_second(stamp))
-    event.subcomponents.clear()
-    return event
+def _calendar(entries, station: str | None) -> bytes:
+    from icalendar import Calendar
+
+    calendar = Calendar()
+    calendar.add("PRODID", PRODUCT)
+    calendar.add("VERSION", "2.0")
+    calendar.add("NAME", f"Downlink contacts, {station or 'all stations'}")  # RFC 7986
+    for entry in sorted(entries, key=lambda entry: (entry.start, entry.uid)):
+        calendar.add_component(_component(entry))
+    return calendar.to_ical()
 
 
-def _nothing_planned(span, stamp: datetime, station: str | None):
-    from icalendar import Event
+def _component(entry: Entry):
+    from icalendar import Alarm, Event
 
     event = Event()
     for key, value in (
-        ("UID", str(uuid5(NAMES_CONTACTS, f"nothing planned|{station}|{span[0].isoformat()}"))),
-        ("DTSTAMP", _whole_second(stamp)), ("DTSTART", _whole_second(span[0])), ("DTEND", _whole_second(span[1])),
-        ("SUMMARY", f"No contact planned, {station or 'all stations'}"), ("TRANSP", "TRANSPARENT"), ("SEQUENCE", 0),
+        ("UID", entry.uid), ("DTSTAMP", _whole_second(entry.stamp)), ("DTSTART", entry.start), ("DTEND", entry.end),
+        ("SUMMARY", entry.summary), ("LOCATION", entry.location), ("DESCRIPTION", entry.description),
+        ("STATUS", entry.status), ("SEQUENCE", entry.sequence),
+        ("TRANSP", "OPAQUE" if entry.location else "TRANSPARENT"),
     ):  # fmt: skip
-        event.add(key, value)
+        if value != "":
+            event.add(key, value)
+    if entry.alarm:
+        before, words = entry.alarm
+        alarm = Alarm()
+        alarm.add("ACTION", "DISPLAY")
+        alarm.add("DESCRIPTION", words)
+        alarm.add("TRIGGER", -before)
+        event.add_component(alarm)
     return event
 
 
-def _events_of(previous: bytes | None, station: str | None) -> dict:
+def _issued(previous: bytes | None, station: str | None) -> dict[str, Entry]:
     """Contacts of an earlier calendar by UID, of one station when asked for."""
     from icalendar import Calendar
 
     if previous is None:
         return {}
     try:
-        found = Calendar.from_ical(previous).walk("VEVENT")
-        whole = [event for event in found if event.start.tzinfo and event.end.tzinfo and "LOCATION" in event]
-        return {str(event["UID"]): event for event in whole if station in (None, str(event["LOCATION"]))}
-    except (ValueError, KeyError, IndexError, TypeError, AttributeError) as fault:
-        raise InputError(f"the previous calendar must be iCalendar (RFC 5545): {fault}") from None
+        events = [event for event in Calendar.from_ical(previous).walk("VEVENT") if "LOCATION" in event]
+        entries = [_read_back(event) for event in events]
+    except (ValueError, KeyError, IndexError, TypeError, AttributeError, OverflowError) as fault:
+        raise InputError(
+            f"the previous calendar must be iCalendar as this tool writes it (RFC 5545): {fault}"
+        ) from None
+    return {entry.uid: entry for entry in entries if station in (None, entry.location)}
+
+
+def _read_back(event) -> Entry:
+    moments = [event[key].dt for key in ("DTSTART", "DTEND", "DTSTAMP")]
+    if any(moment.tzinfo is None for moment in moments):
+        raise ValueError("a time without its zone")
+    start, end, stamp = (moment.astimezone(UTC) for moment in moments)
+    sequence, status = int(event.get("SEQUENCE", 0)), str(event.get("STATUS", CONFIRMED))
+    if not 0 <= sequence <= HIGHEST_SEQUENCE or status not in (CONFIRMED, CANCELLED):
+        raise ValueError(f"an event of status {status!r} and sequence {sequence}")
+    alarms = [(-alarm["TRIGGER"].dt, str(alarm["DESCRIPTION"])) for alarm in event.walk("VALARM")]
+    alarm = alarms[0] if alarms and isinstance(alarms[0][0], timedelta) else None
+    texts = (str(event.get(key, "")) for key in ("SUMMARY", "LOCATION", "DESCRIPTION"))
+    return Entry(str(event["UID"]), stamp, start, end, *texts, status, sequence, alarm)
 
 
 def _utc(text) -> datetime:

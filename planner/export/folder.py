@@ -73,9 +73,9 @@ def claim_folder(folder):
     InputError : the path, or something in it that would be replaced, is not what it has to be (a link, a folder)
     """
     folder = Path(folder)
-    if folder.is_symlink() or (folder.exists() and not folder.is_dir()):
-        raise InputError(f"{folder}: must be a folder of its own (links are not followed for output)")
     with _machine_faults(folder, "nothing was written"):
+        if folder.is_symlink() or (folder.exists() and not folder.is_dir()):
+            raise InputError(f"{folder}: must be a folder of its own (links are not followed for output)")
         made = not folder.exists()
         folder.mkdir(parents=True, exist_ok=True)
         lock = _lock(folder)

@@ -118,8 +118,27 @@ def test_names_cannot_break_out_of_their_line():
     "broken", [b"", b"not a calendar", b"BEGIN:VCALENDAR\r\nBEGIN:VEVENT\r\nEND:VCALENDAR\r\n", b"\xff\xfe"]
 )
 def test_a_previous_calendar_that_is_none_is_told(broken):
-    with pytest.raises(InputError, match=r"the previous calendar must be iCalendar \(RFC 5545\)"):
+    with pytest.raises(
+        InputError, match=r"the previous calendar must be iCalendar as this tool writes it \(RFC 5545\)"
+    ):
         contact_calendar(contacts(1), previous=broken, **OPTIONS)
+
+
+@pytest.mark.parametrize(
+    ("found", "instead"),
+    [
+        (b"DTSTART:20261207T010000Z", b"DTSTART:20261207T010000"),
+        (b"DTSTART:20261207T010000Z", b"DTSTART;VALUE=DATE:20261207"),
+        (b"SEQUENCE:0", b"SEQUENCE:many"),
+        (b"SEQUENCE:0", b"SEQUENCE:-1"),
+        (b"STATUS:CONFIRMED", b"STATUS:PERHAPS"),
+    ],
+)
+def test_events_that_are_not_ours_are_told(found, instead):
+    issued = contact_calendar(contacts(1), **OPTIONS)
+    assert found in issued
+    with pytest.raises(InputError, match="the previous calendar must be iCalendar as this tool writes it"):
+        contact_calendar(contacts(1), previous=issued.replace(found, instead), **OPTIONS)
 
 
 def test_two_sessions_of_one_mode_on_one_pass_have_two_uids():

@@ -320,6 +320,11 @@ def test_a_file_where_the_folder_should_be_is_refused(tmp_path):
         write_set(tmp_path / "week", NEW, {})
 
 
+def test_a_name_too_long_for_the_disk_is_told(tmp_path):
+    with pytest.raises(MachineError, match="File name too long; nothing was written"):
+        write_set(tmp_path / ("x" * 300), NEW, {})
+
+
 def test_a_run_that_writes_nothing_leaves_no_folder(tmp_path):
     with claim_folder(tmp_path / "week"):
         assert (tmp_path / "week").is_dir()
