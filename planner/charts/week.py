@@ -5,7 +5,7 @@ from datetime import UTC, datetime, tzinfo
 import matplotlib.dates as mdates
 import numpy as np
 import pandas as pd
-from matplotlib.collections import PatchCollection
+from matplotlib.collections import PolyCollection
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from matplotlib.patches import Patch, Rectangle
@@ -13,9 +13,17 @@ from matplotlib.patches import Patch, Rectangle
 from planner.charts import style
 from planner.mission.models import Mission
 from planner.schedule.hours import open_windows_s
+from planner.units import DAY_S
 
 FOOT, FLOWN_TOP = 0.06, 0.66  # of a lane: where bars stand, how high a planned session reaches
 FIRST_MARKER, MARKER_STEP = 0.76, 0.15
+FILLS = {  # (face, edge) of a pass by its verdict
+    "planned": (style.PALE, style.PALE),
+    "left out": (style.FAINT, "#707070"),
+    "unusable": ("white", "#B0B0B0"),
+    "dropped": ("white", "#B0B0B0"),
+}
+LONGEST_NAME = 24  # letters of a station's name beside its lane
 NEAR = 0.004  # of the width in view: how far beside a pass a click may fall
 
 
@@ -47,8 +55,11 @@ def week_figure(
     satellite = satellite or mission.satellites[0].name
     with style.on_paper():
         figure = style.new_figure(title=finding(plan))
+        figure.set_layout_engine("none")  # a layout that measures every label costs a third of a redraw
         heights = [0.5 * len(mission.stations) + 0.4, 2.2, 1.5]
-        lanes, charge, data = figure.subplots(3, 1, sharex=True, height_ratios=heights)
+        left = 0.035 + 0.0052 * max(len(_short(station.name)) for station in mission.stations)
+        room = {"left": left, "right": 0.962, "top": 0.945, "bottom": 0.115, "hspace": 0.17}
+        lanes, charge, data = figure.subplots(3, 1, sharex=True, height_ratios=heights, gridspec_kw=room)
         lanes.set_xlim(mdates.date2num(begin), mdates.date2num(end))
         _draw_lanes(lanes, mission, plan, selected)
         _draw_charge(charge, mission, plan, satellite)
@@ -84,8 +95,9 @@ def pass_at(mission: Mission, plan, x: float, y: float, width: float) -> str | N
 
 
 def days(moments) -> np.ndarray:
-    """Moments (n,) as matplotlib's day numbers."""
-    return mdates.date2num(pd.to_datetime(moments, utc=True).to_numpy()) if len(moments) else np.empty(0)
+    """Moments (n,), datetimes or ISO texts, as matplotlib's day numbers."""
+    stamps = pd.DatetimeIndex(pd.to_datetime(moments, utc=True)).tz_localize(None)
+    return stamps.to_numpy().astype("datetime64[us]").astype(np.int64) / (DAY_S * 1e6)
 
 
 def _data_amount(mbit: float) -> str:
@@ -95,12 +107,14 @@ def _data_amount(mbit: float) -> str:
 def _draw_lanes(axes, mission: Mission, plan, selected: str | None) -> None:
     marks = style.mode_marks(_modes(mission))
     count = len(mission.stations)
+    all_passes = plan.passes.assign(begin=days(plan.passes["aos_utc"]), end=days(plan.passes["los_utc"]))
+    all_contacts = plan.contacts.assign(begin=days(plan.contacts["tx_on_utc"]), end=days(plan.contacts["tx_off_utc"]))
     for row, station in enumerate(mission.stations):
         foot = count - 1 - row
         _draw_closures(axes, mission, station, foot)
-        passes = plan.passes[plan.passes["station"] == station.name]
+        passes = all_passes[all_passes["station"] == station.name]
         _draw_passes(axes, passes, foot)
-        contacts = plan.contacts[plan.contacts["station"] == station.name]
+        contacts = all_contacts[all_contacts["station"] == station.name]
         for index, (mode, mark) in enumerate(marks.items()):
             _draw_sessions(
                 axes, contacts[contacts["mode"] == mode], foot, mark, FIRST_MARKER + MARKER_STEP * (index % 2)
@@ -109,54 +123,57 @@ def _draw_lanes(axes, mission: Mission, plan, selected: str | None) -> None:
         _point_out(axes, passes[passes["pass_id"] == selected], foot)
     flown = plan.contacts.groupby("station")["pass_id"].nunique() if len(plan.contacts) else {}
     names = [
-        f"{station.name}\n{flown.get(station.name, 0)} of {(plan.passes['station'] == station.name).sum()}"
+        f"{_short(station.name)}\n{flown.get(station.name, 0)} of {(plan.passes['station'] == station.name).sum()}"
         for station in mission.stations
     ]
     axes.set_yticks(count - 0.5 - np.arange(count), labels=names)
     for label in axes.get_yticklabels():
         label.set_parse_math(False)
-    axes.tick_params(axis="y", length=0)
+    axes.tick_params(axis="y", length=0, labelsize=float(np.clip(90 / count, 3, 8)))
     axes.set_ylim(0, count)
     axes.set_ylabel("station, passes flown of all")
     axes.tick_params(axis="x", labelbottom=False)
 
 
 def _draw_closures(axes, mission: Mission, station, foot: float) -> None:
-    start, day_s = mdates.date2num(mission.start), 86_400.0
     edges_s = np.array([0.0, *np.ravel(open_windows_s(mission, station)), mission.span_s]).reshape(-1, 2)
-    shut = [
-        Rectangle((start + begin_s / day_s, foot + 0.02), (end_s - begin_s) / day_s, 0.96)
-        for begin_s, end_s in edges_s
-        if end_s > begin_s
-    ]
+    begin, end = (mdates.date2num(mission.start) + edges_s[edges_s[:, 1] > edges_s[:, 0]] / DAY_S).T
+    bars = _bars(begin, end, foot + 0.02, np.full(len(begin), foot + 0.98))
     axes.add_collection(
-        PatchCollection(shut, facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", linewidth=0, zorder=0.5)
+        PolyCollection(bars, facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", linewidth=0, zorder=0.5)
     )
 
 
 def _draw_passes(axes, passes: pd.DataFrame, foot: float) -> None:
     """A bar as long as the pass and as high as it climbs; hollow where nothing can be sent."""
-    begin, end = days(passes["aos_utc"]), days(passes["los_utc"])
-    top = 0.08 + (FLOWN_TOP - FOOT - 0.08) * passes["max_elevation_deg"].to_numpy(dtype=float) / 90
-    bars = np.array([Rectangle((b, foot + FOOT), e - b, t) for b, e, t in zip(begin, end, top, strict=True)])
-    hollow = passes["verdict"].isin(["unusable", "dropped"]).to_numpy()
-    for chosen, face, edge in ((hollow, "white", "#B0B0B0"), (~hollow, style.FAINT, "#707070")):
-        axes.add_collection(PatchCollection(bars[chosen], facecolor=face, edgecolor=edge, linewidth=0.7, zorder=2))
-    dropped = (passes["verdict"] == "dropped").to_numpy()
+    begin, end, verdict = (passes[name].to_numpy() for name in ("begin", "end", "verdict"))
+    climbs = passes["max_elevation_deg"].to_numpy(dtype=float) / 90
+    bars = _bars(begin, end, foot + FOOT, foot + FOOT + 0.08 + (FLOWN_TOP - FOOT - 0.08) * climbs)
+    for name, (face, edge) in FILLS.items():
+        chosen = bars[verdict == name]
+        axes.add_collection(PolyCollection(chosen, facecolor=face, edgecolor=edge, linewidth=0.7, zorder=2))
+    dropped = verdict == "dropped"
     axes.plot(((begin + end) / 2)[dropped], np.full(dropped.sum(), foot + FIRST_MARKER), "x", color=style.BLACK, ms=4)
 
 
 def _draw_sessions(axes, contacts: pd.DataFrame, foot: float, mark, marker_height: float) -> None:
     colour, marker = mark
-    begin, end = days(contacts["tx_on_utc"]), days(contacts["tx_off_utc"])
-    bars = [Rectangle((b, foot + FOOT), e - b, FLOWN_TOP - FOOT) for b, e in zip(begin, end, strict=True)]
-    axes.add_collection(PatchCollection(bars, facecolor=colour, edgecolor=colour, linewidth=1.1, zorder=3))
+    begin, end = contacts["begin"].to_numpy(), contacts["end"].to_numpy()
+    bars = _bars(begin, end, foot + FOOT, np.full(len(begin), foot + FLOWN_TOP))
+    axes.add_collection(PolyCollection(bars, facecolor=colour, edgecolor=colour, linewidth=1.1, zorder=3))
     heights = np.full(len(begin), foot + marker_height)
     axes.plot((begin + end) / 2, heights, marker, color=colour, ms=4.2, mec="white", mew=0.3, zorder=4)
 
 
+def _bars(begin, end, foot: float, top) -> np.ndarray:
+    """Corners (n, 4, 2) of upright bars."""
+    feet = np.full(len(begin), foot)
+    x, y = np.stack([begin, end, end, begin], axis=-1), np.stack([feet, feet, top, top], axis=-1)
+    return np.stack([x, y], axis=-1)
+
+
 def _point_out(axes, passes: pd.DataFrame, foot: float) -> None:
-    for begin, end in zip(days(passes["aos_utc"]), days(passes["los_utc"]), strict=True):
+    for begin, end in zip(passes["begin"], passes["end"], strict=True):
         axes.add_patch(Rectangle((begin, foot), end - begin, 1.0, facecolor=style.YELLOW, alpha=0.5, zorder=0.8))
         axes.plot([(begin + end) / 2], [foot + 0.5], "o", ms=24, mfc="none", mec=style.BLACK, mew=1.0, zorder=5)
 
@@ -222,14 +239,21 @@ def _legend(figure: Figure, mission: Mission, plan) -> None:
         for mode, (colour, marker) in marks.items()
     ]
     handles += [
-        Patch(facecolor=style.FAINT, edgecolor="#707070", label="pass left out (as high as it climbs)"),
-        Patch(facecolor="white", edgecolor="#B0B0B0", label="pass unusable"),
+        Patch(facecolor=face, edgecolor=edge, label=f"pass {verdict}{note}")
+        for verdict, note in (("left out", " (as high as it climbs)"), ("unusable", ""))
+        for face, edge in [FILLS[verdict]]
+    ]
+    handles += [
         Patch(facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", label="station closed"),
         Patch(facecolor="#E4E7EC", label="eclipse"),
     ]
     if (plan.passes["verdict"] == "dropped").any():
         handles.append(Line2D([], [], color=style.BLACK, marker="x", linestyle="", label="dropped by hand"))
-    figure.legend(handles=handles, loc="outside lower left", ncols=4)
+    figure.legend(handles=handles, loc="lower left", bbox_to_anchor=(0.005, 0.0), ncols=4)
+
+
+def _short(name: str) -> str:
+    return name if len(name) <= LONGEST_NAME else name[: LONGEST_NAME - 1] + "…"
 
 
 def _modes(mission: Mission) -> list[str]:

@@ -3,10 +3,14 @@
 from dataclasses import replace
 from datetime import timedelta
 from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
+import pandas as pd
 import pytest
+from made_up_contacts import contacts
 
+from planner.export.contacts import BATTERY, RECORDER
 from planner.mission.contacts import Session
 from planner.mission.files import load_mission
 from planner.sky import observe
@@ -39,3 +43,21 @@ def session(mission, sky):
     )
     assert replace(made).duration_s > 60
     return made
+
+
+@pytest.fixture
+def plan(sky):
+    """What looks like a WeekPlan: forty contacts, the real passes, two rows of battery and recorder."""
+    passes = sky.passes.frame(sky.clock).assign(verdict="left out", reason="")
+    moments = ["2026-12-07T00:00:00.000Z", "2026-12-13T23:00:00.000Z"]
+    battery = pd.DataFrame({name: [90.0, 88.0] for name in BATTERY})
+    recorder = pd.DataFrame({name: [0.0, 1000.0] for name in RECORDER})
+    for table in (battery, recorder):
+        table["satellite"], table["time_utc"] = "MARSHLIGHT-1", moments
+    return SimpleNamespace(
+        contacts=contacts(*range(1, 41)),
+        passes=passes,
+        battery=battery.assign(sunlit="yes"),
+        recorder=recorder,
+        summary={"volume_mbit": 560_000.0, "soc_min_pct": 88.0, "soc_floor_pct": 60.0},
+    )

@@ -1,30 +1,9 @@
 """The week sheet lists every contact, on paper and in a browser."""
 
-from types import SimpleNamespace
-
 import pandas as pd
-import pytest
 from made_up_contacts import contact, contacts
 
-from planner.export.contacts import BATTERY, RECORDER
 from planner.export.sheet import ROWS_A_PAGE, sheet_files, sheet_html, sheet_pages, sheet_rows
-
-
-@pytest.fixture
-def plan(sky):
-    passes = sky.passes.frame(sky.clock).assign(verdict="left out", reason="")
-    moments = ["2026-12-07T00:00:00.000Z", "2026-12-13T23:00:00.000Z"]
-    battery = pd.DataFrame({name: [90.0, 88.0] for name in BATTERY})
-    recorder = pd.DataFrame({name: [0.0, 1000.0] for name in RECORDER})
-    for table in (battery, recorder):
-        table["satellite"], table["time_utc"] = "MARSHLIGHT-1", moments
-    return SimpleNamespace(
-        contacts=contacts(*range(1, 41)),
-        passes=passes,
-        battery=battery.assign(sunlit="yes"),
-        recorder=recorder,
-        summary={"volume_mbit": 560_000.0, "soc_min_pct": 88.0, "soc_floor_pct": 60.0},
-    )
 
 
 def test_a_row_tells_day_times_directions_and_figures():

@@ -1,0 +1,46 @@
+"""What `week` leaves in its folder: tables, calendars and the picture, all from one plan."""
+
+from pathlib import Path
+
+from planner.charts.week import week_figure
+from planner.export.calendar import calendar_files
+from planner.export.contacts import battery_csv, contacts_csv, passes_csv, recorder_csv
+from planner.export.folder import ClaimedFolder, verify_set
+from planner.export.render import png_bytes
+from planner.mission.models import Mission
+
+CALENDAR = "week.ics"
+
+
+def write_week(folder: ClaimedFolder, mission: Mission, plan, run_log: dict) -> None:
+    """Replace the week in a claimed folder by this plan; the calendars cancel what only the old week had.
+
+    Parameters
+    ----------
+    folder : from `claim_folder`
+    plan : has `.contacts`, `.passes`, `.battery`, `.recorder` (DataFrames) and `.summary` (dict)
+    run_log : timings and machine, the only file that may differ between two runs
+
+    Raises
+    ------
+    MachineError : the machine does not let us write; the week before is in place
+    """
+    folder.write(week_files(mission, plan, issued_calendar(folder.path)), plan.summary, run_log=run_log)
+
+
+def week_files(mission: Mission, plan, previous_calendar: bytes | None = None) -> dict[str, bytes]:
+    """Every file of the week but its index, by name."""
+    return {
+        "contacts.csv": contacts_csv(plan.contacts),
+        "passes.csv": passes_csv(plan.passes),
+        "battery.csv": battery_csv(plan.battery),
+        "recorder.csv": recorder_csv(plan.recorder),
+        **calendar_files(mission, plan.contacts, previous_calendar),
+        "week.png": png_bytes(week_figure(mission, plan)),
+    }
+
+
+def issued_calendar(folder: Path) -> bytes | None:
+    """The calendar of the week that the folder holds, if it holds a whole one."""
+    calendar = folder / CALENDAR
+    return calendar.read_bytes() if not verify_set(folder) and calendar.is_file() else None
