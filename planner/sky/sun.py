@@ -56,6 +56,8 @@ def sun_position_km(clock: Clock, time_s):
 # The polar axis is stretched so that the oblate Earth becomes a sphere: sight lines and tangents stay so.
 STRETCH = np.array([1.0, 1.0, 1 / (1 - EARTH_FLATTENING)])
 
+A_MILLIMETRE_KM = np.array([3e-7, 5e-7, 8e-7])  # keeps a direction across the line through Sun and Earth, on that line
+
 
 def _lines_of_sight(position_km, sun_km, sides):
     """Stretched place (..., 3), and unit vectors to points of the Sun's disc, on a line through the Earth's centre.
@@ -64,8 +66,9 @@ def _lines_of_sight(position_km, sun_km, sides):
     """
     to_sun_km = sun_km - position_km
     to_sun = to_sun_km / _length(to_sun_km)
-    outwards = position_km - dot(position_km, to_sun)[..., None] * to_sun
-    outwards = outwards * (SUN_RADIUS_KM / np.maximum(_length(outwards), 1e-9))
+    aside = position_km + A_MILLIMETRE_KM
+    outwards = aside - dot(aside, to_sun)[..., None] * to_sun
+    outwards = outwards * (SUN_RADIUS_KM / _length(outwards))
     lines = [(to_sun_km + side * outwards) * STRETCH for side in sides]
     return position_km * STRETCH, [line / _length(line) for line in lines]
 
