@@ -106,8 +106,10 @@ def _draw_level(axes, table: LinkTable, option: LinkOption, own: slice, time, lo
                 textcoords="offset points", va="center", fontsize=7,
             )  # fmt: skip
             labelled = required
+    held = np.repeat(np.arange(len(time)), 2)  # the threshold holds from one sample to the next, the level runs on
     axes.fill_between(
-        time, threshold, level, step="post", color=style.SKY_BLUE, alpha=0.35, linewidth=0, label="margin", zorder=2
+        time[held[1:]], threshold[held[:-1]], level[held[1:]], color=style.SKY_BLUE, alpha=0.35, linewidth=0,
+        label="margin", zorder=2,
     )  # fmt: skip
     axes.plot(time, level, color=style.BLACK, label="Es/N0 less implementation loss", zorder=4)
     axes.step(

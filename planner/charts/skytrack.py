@@ -34,8 +34,10 @@ def skytrack_figure(
     """
     with style.on_paper():
         figure = style.new_figure(SQUARE_IN, title=finding(mission, sky, pass_id))
-        draw_skytrack(figure.add_subplot(projection="polar"), mission, sky, pass_id, session, time_zone)
-        figure.legend(loc="outside lower center", ncols=3)
+        figure.set_layout_engine("none")
+        axes = figure.add_axes((0.09, 0.12, 0.82, 0.76), projection="polar")
+        draw_skytrack(axes, mission, sky, pass_id, session, time_zone)
+        figure.legend(loc="lower center", ncols=3)
     return figure
 
 
@@ -88,7 +90,7 @@ def _draw_sun(axes, sky: Sky, station, time_s: float) -> None:
     if sun.elevation_deg[0] > 0:
         axes.plot(
             np.radians(sun.azimuth_deg), 90 - sun.elevation_deg, "o", ms=13, color=style.YELLOW, mec=style.ORANGE,
-            mew=1.5, alpha=0.85, linestyle="", label=f"Sun, {sun.elevation_deg[0]:.0f}° high", zorder=8,
+            mew=1.5, linestyle="", label=f"Sun, {sun.elevation_deg[0]:.0f}° high", zorder=6.5,
         )  # fmt: skip
 
 
@@ -122,5 +124,5 @@ def _write_times(axes, sky: Sky, row: int, time_zone: tzinfo) -> None:
         when = sky.clock.datetime(moment_s + 0.5).astimezone(time_zone)  # to the nearest second
         axes.annotate(
             f"{name} {when:%H:%M:%S}{zone}", (azimuth, zenith), xytext=(7, 7), textcoords="offset points", zorder=7,
-            bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none", "alpha": 0.8},
+            bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none", "alpha": 0.55},
         )  # fmt: skip

@@ -68,7 +68,6 @@ def make_card(mission: Mission, sky: Sky, row) -> Card:
     """The words of one card; `row` is a row of the contacts' table as a named tuple."""
     session = _session(mission, sky, row)
     on = mission.start + timedelta(seconds=session.tx_on_s)
-    cautions = () if pd.isna(row.cautions) or not row.cautions else tuple(str(row.cautions).split("; "))
     epoch = mission.satellite(session.satellite).elements.epoch
     until = useful_until(mission, sky, session)
     serve = "the dish follows the signal" if until is None else f"these point this dish until {_iso(until)}"
@@ -80,10 +79,18 @@ def make_card(mission: Mission, sky: Sky, row) -> Card:
         radio=_radio(mission, sky, row, session),
         search_after=f"No lock {wait_s:.0f} s after the transmitter comes on, at {_clock(on, wait_s)}?",
         steps=_steps(mission, sky, session, wait_s, late_s),
-        cautions=(*cautions, *CAUTIONS),
+        cautions=(*_own_cautions(sky, row, session, until), *CAUTIONS),
         footer=f"Made from elements of epoch {_iso(epoch)}; {serve}. Elevations are geometric. All times UTC.",
         session=session,
     )
+
+
+def _own_cautions(sky: Sky, row, session: Session, until: datetime | None) -> list[str]:
+    """What this contact's row warns of, and elements that will be too old by then."""
+    said = [] if pd.isna(row.cautions) or not row.cautions else str(row.cautions).split("; ")
+    if until is not None and sky.clock.datetime(session.tx_off_s) > until:
+        said.append(f"Take newer elements before this pass: the present ones point this dish only until {_iso(until)}.")
+    return said
 
 
 def _session(mission: Mission, sky: Sky, row) -> Session:

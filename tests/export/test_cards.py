@@ -1,6 +1,7 @@
 """Cards: the figures on them against the contact and the sky, one A4 page each, hostile names escaped."""
 
 import re
+from datetime import timedelta
 
 import numpy as np
 import pandas as pd
@@ -85,6 +86,14 @@ def test_a_card_with_much_to_say_still_fits_its_page(mission, sky, row):
     written = [text.get_position()[1] for text in figure.texts if text.get_text().startswith("! ")]
     assert len(written) == 27
     assert min(written) > FOOT
+
+
+def test_elements_too_old_by_then_are_a_caution(mission, sky, row, session):
+    satellite = mission.satellites[0]
+    elements = satellite.elements.model_copy(update={"epoch": satellite.elements.epoch - timedelta(days=4)})
+    aged = mission.model_copy(update={"satellites": (satellite.model_copy(update={"elements": elements}),)})
+    assert not any("newer elements" in caution for caution in card_of(mission, sky, row).cautions)
+    assert card_of(aged, sky, row).cautions[1].startswith("Take newer elements before this pass")
 
 
 def test_nan_cautions_are_no_caution(mission, sky, row):
