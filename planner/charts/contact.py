@@ -36,11 +36,7 @@ def contact_figure(
 
     Returns
     -------
-    Figure, A4 landscape; its axes in order: Es/N0, margin, elevation, range
-
-    Raises
-    ------
-    KeyError : no such pass of the table's satellite
+    Figure, A4 landscape; its axes in order: Es/N0, margin, elevation, range. KeyError when the pass is unknown.
     """
     option = option or table.options[0]
     own = _samples_of(sky, table, pass_id)

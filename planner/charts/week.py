@@ -23,6 +23,8 @@ FILLS = {  # (face, edge) of a pass by its verdict
     "unusable": ("white", "#B0B0B0"),
     "dropped": ("white", "#B0B0B0"),
 }
+TWO_LINES = 12  # lanes, up to which a station's count stands under its name
+MOST_LANES = 24  # that stay legible; with more stations, those that fly most are drawn
 LONGEST_NAME = 24  # letters of a station's name beside its lane
 NEAR = 0.004  # of the width in view: how far beside a pass a click may fall
 
@@ -56,12 +58,13 @@ def week_figure(
     with style.on_paper():
         figure = style.new_figure(title=finding(plan))
         figure.set_layout_engine("none")  # a layout that measures every label costs a third of a redraw
-        heights = [0.5 * len(mission.stations) + 0.4, 2.2, 1.5]
-        left = 0.035 + 0.0052 * max(len(_short(station.name)) for station in mission.stations)
+        stations = lanes_of(mission, plan)
+        heights = [min(0.5 * len(stations) + 0.4, 6.0), 2.2, 1.5]
+        left = 0.035 + 0.0052 * max(len(_short(station.name)) for station in stations)
         room = {"left": left, "right": 0.962, "top": 0.945, "bottom": 0.115, "hspace": 0.17}
         lanes, charge, data = figure.subplots(3, 1, sharex=True, height_ratios=heights, gridspec_kw=room)
         lanes.set_xlim(mdates.date2num(begin), mdates.date2num(end))
-        _draw_lanes(lanes, mission, plan, selected)
+        _draw_lanes(lanes, mission, stations, plan, selected)
         _draw_charge(charge, mission, plan, satellite)
         _draw_data(data, mission, plan, satellite)
         for axes in (lanes, charge, data):
@@ -82,12 +85,21 @@ def finding(plan) -> str:
     )
 
 
+def lanes_of(mission: Mission, plan) -> list:
+    """The stations that have a lane, from the top down: all, or those with the most contacts and then passes."""
+    flown, seen = (plan.contacts["station"].value_counts(), plan.passes["station"].value_counts())
+    busy = sorted(mission.stations, key=lambda station: (-flown.get(station.name, 0), -seen.get(station.name, 0)))
+    chosen = {station.name for station in busy[:MOST_LANES]}
+    return [station for station in mission.stations if station.name in chosen]
+
+
 def pass_at(mission: Mission, plan, x: float, y: float, width: float) -> str | None:
     """The pass_id under a point (x, y) of the lanes, when `width` days are in view; None where there is none."""
-    row = len(mission.stations) - 1 - int(np.floor(y))
-    if not 0 <= row < len(mission.stations) or not len(plan.passes):
+    stations = lanes_of(mission, plan)
+    row = len(stations) - 1 - int(np.floor(y))
+    if not 0 <= row < len(stations) or not len(plan.passes):
         return None
-    here = plan.passes[plan.passes["station"] == mission.stations[row].name]
+    here = plan.passes[plan.passes["station"] == stations[row].name]
     away = np.maximum(days(here["aos_utc"]) - x, x - days(here["los_utc"]))
     if not len(away) or away.min() > NEAR * width:
         return None
@@ -104,12 +116,12 @@ def _data_amount(mbit: float) -> str:
     return f"{mbit / 1000:.0f} Gbit" if mbit >= 10_000 else f"{mbit:.0f} Mbit"
 
 
-def _draw_lanes(axes, mission: Mission, plan, selected: str | None) -> None:
+def _draw_lanes(axes, mission: Mission, stations: list, plan, selected: str | None) -> None:
     marks = style.mode_marks(_modes(mission))
-    count = len(mission.stations)
+    count = len(stations)
     all_passes = plan.passes.assign(begin=days(plan.passes["aos_utc"]), end=days(plan.passes["los_utc"]))
     all_contacts = plan.contacts.assign(begin=days(plan.contacts["tx_on_utc"]), end=days(plan.contacts["tx_off_utc"]))
-    for row, station in enumerate(mission.stations):
+    for row, station in enumerate(stations):
         foot = count - 1 - row
         _draw_closures(axes, mission, station, foot)
         passes = all_passes[all_passes["station"] == station.name]
@@ -122,16 +134,18 @@ def _draw_lanes(axes, mission: Mission, plan, selected: str | None) -> None:
         axes.axhline(foot, color=style.PALE, linewidth=0.6, zorder=1)
         _point_out(axes, passes[passes["pass_id"] == selected], foot)
     flown = plan.contacts.groupby("station")["pass_id"].nunique() if len(plan.contacts) else {}
+    between = "\n" if count <= TWO_LINES else ", "
     names = [
-        f"{_short(station.name)}\n{flown.get(station.name, 0)} of {(plan.passes['station'] == station.name).sum()}"
-        for station in mission.stations
+        f"{_short(station.name)}{between}{flown.get(station.name, 0)} of {(plan.passes['station'] == station.name).sum()}"
+        for station in stations
     ]
     axes.set_yticks(count - 0.5 - np.arange(count), labels=names)
     for label in axes.get_yticklabels():
         label.set_parse_math(False)
-    axes.tick_params(axis="y", length=0, labelsize=float(np.clip(90 / count, 3, 8)))
+    axes.tick_params(axis="y", length=0, labelsize=float(np.clip(140 / count, 5, 8)))
     axes.set_ylim(0, count)
-    axes.set_ylabel("station, passes flown of all")
+    more = "" if count == len(mission.stations) else f" (the busiest {count} of {len(mission.stations)})"
+    axes.set_ylabel(f"station, passes flown of all{more}")
     axes.tick_params(axis="x", labelbottom=False)
 
 

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 from made_up_week import empty, mission_and_plan
 
-from planner.charts.week import finding, pass_at, week_figure
+from planner.charts.week import MOST_LANES, finding, lanes_of, pass_at, week_figure
 
 ONE_SECOND_D = 1 / 86_400
 
@@ -135,6 +135,17 @@ def test_names_that_look_like_formulas_are_only_names(mission, plan):
     with pytest.warns(UserWarning, match="missing from font"):
         drawn(figure)
     assert figure.axes[0].get_yticklabels()[0].get_text().startswith(odd)
+
+
+def test_with_many_stations_the_busiest_get_a_lane(mission, plan):
+    idle = [mission.stations[0].model_copy(update={"name": f"idle {n}"}) for n in range(30)]
+    crowded = mission.model_copy(update={"stations": (*idle, *mission.stations)})
+    shown = lanes_of(crowded, plan)
+    assert len(shown) == MOST_LANES
+    assert shown[-len(mission.stations) :] == list(mission.stations)
+    lanes = drawn(week_figure(crowded, plan)).axes[0]
+    assert lanes.get_ylabel() == "station, passes flown of all (the busiest 24 of 36)"
+    assert lanes.get_ylim() == (0, MOST_LANES)
 
 
 def test_the_week_fits_an_a4_page(mission, plan):

@@ -1,9 +1,12 @@
 """Calendars per RFC 5545, read back by the library's own parser and by eye of the text."""
 
+import contextlib
 from datetime import timedelta
 
 import pandas as pd
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 from icalendar import Calendar
 from made_up_contacts import END, EPOCH, START, contact, contacts
 
@@ -144,3 +147,12 @@ def test_events_that_are_not_ours_are_told(found, instead):
 def test_two_sessions_of_one_mode_on_one_pass_have_two_uids():
     twice = pd.DataFrame([contact(1), contact(1, tx_on_utc="2026-12-07T01:02:00.000Z")])
     assert len({str(event["UID"]) for event in events(contact_calendar(twice, **OPTIONS)).values()}) == 2
+
+
+@settings(max_examples=300, deadline=None)
+@given(st.integers(0, 900), st.integers(0, 40), st.binary(max_size=20))
+def test_a_mutated_calendar_is_read_or_told(at, cut, put):
+    issued = contact_calendar(contacts(1, 2), **OPTIONS)
+    mutated = issued[:at] + put + issued[at + cut :]
+    with contextlib.suppress(InputError):
+        assert Calendar.from_ical(contact_calendar(contacts(1), previous=mutated, **OPTIONS))
