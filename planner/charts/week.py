@@ -135,8 +135,9 @@ def _draw_lanes(axes, mission: Mission, stations: list, plan, selected: str | No
         _point_out(axes, passes[passes["pass_id"] == selected], foot)
     flown = plan.contacts.groupby("station")["pass_id"].nunique() if len(plan.contacts) else {}
     between = "\n" if count <= TWO_LINES else ", "
+    seen = plan.passes["station"].value_counts()
     names = [
-        f"{_short(station.name)}{between}{flown.get(station.name, 0)} of {(plan.passes['station'] == station.name).sum()}"
+        f"{_short(station.name)}{between}{flown.get(station.name, 0)} of {seen.get(station.name, 0)}"
         for station in stations
     ]
     axes.set_yticks(count - 0.5 - np.arange(count), labels=names)
