@@ -14,6 +14,7 @@ from planner.schedule.programme import Programme
 from planner.schedule.sessions import Candidate
 
 STEP_S = 30.0
+EVEN = 0.05  # rates and prices that vary by less than this share are taken as the same
 
 
 def fits(problem: Problem, i: int, j: int) -> bool:
@@ -25,7 +26,7 @@ def fits(problem: Problem, i: int, j: int) -> bool:
 
 @dataclass(frozen=True)
 class Step:
-    """Part of a window: its seconds, its fastest rate and its cheapest price."""
+    """Part of a window: its fastest rate and its cheapest price."""
 
     begin_s: float
     end_s: float
@@ -44,9 +45,17 @@ class OnAir:
     steps: list[Step]
     columns: list[int]
 
+    @property
+    def pairs(self) -> list[tuple[Step, int]]:
+        return list(zip(self.steps, self.columns, strict=True))
+
 
 def seconds_on_air(programme: Programme, candidate: Candidate, v) -> OnAir:
-    """Add a candidate's seconds on air in each step: they add up to its length, each worth at most the fastest rate."""
+    """Add a candidate's seconds on air in each step.
+
+    They add up to its length, each is worth at most the fastest rate, and the share of a step on air rises once at most
+    through the window: an unbroken session. (Rows of consecutive ones: the relaxation of one candidate is exact.)
+    """
     steps = list(steps_of(candidate))
     columns = [programme.variable(0, step.seconds) for step in steps]
     for step, column in zip(steps, columns, strict=True):
@@ -54,6 +63,11 @@ def seconds_on_air(programme: Programme, candidate: Candidate, v) -> OnAir:
     programme.row([(v.length, 1.0), *((column, -1.0) for column in columns)], lowest=0.0, highest=0.0)
     rates = [(column, -step.fastest_mbps) for step, column in zip(steps, columns, strict=True)]
     programme.row([(v.volume, 1.0), *rates], highest=0.0)
+    rises = [programme.variable(0, 1) for _ in steps]
+    shares = [[]] + [[(column, 1 / step.seconds)] for step, column in zip(steps, columns, strict=True)]
+    for before, share, rise in zip(shares, shares[1:], rises, strict=False):
+        programme.row([*share, *((column, -factor) for column, factor in before), (rise, -1.0)], highest=0.0)
+    programme.row([*((rise, 1.0) for rise in rises), (v.flown, -1.0)], highest=0.0)
     return OnAir(steps, columns)
 
 
@@ -69,7 +83,7 @@ def crowded(problem: Problem) -> list[tuple[int, int]]:
 
 
 def share_time(problem: Problem, programme: Programme, variables: list, on_air: dict[int, OnAir]) -> None:
-    """Limits on what cannot be on air together; `on_air` holds the candidates of `crowded` pairs at least.
+    """Limits on what cannot be on air together, among the candidates of `on_air`.
 
     Valid for every real week: no more seconds on air than a step has; and where two sessions can fly only in one order,
     the first leaves the tail of its window to the second, and the second the head of its window to the first.
@@ -77,7 +91,7 @@ def share_time(problem: Problem, programme: Programme, variables: list, on_air: 
     held = defaultdict(list)
     for i, own in on_air.items():
         candidate = problem.candidates[i]
-        for step, column in zip(own.steps, own.columns, strict=True):
+        for step, column in own.pairs:
             for resource in _resources(problem, candidate):
                 held[(*resource, int(step.begin_s // STEP_S))].append(column)
     for columns in held.values():
@@ -88,10 +102,10 @@ def share_time(problem: Problem, programme: Programme, variables: list, on_air: 
         apart_s = problem.apart_s(first, second)
         latest_stop_s = second.closes_s - second.shortest_s - apart_s
         earliest_start_s = first.opens_s + first.shortest_s + apart_s
-        for step, column in zip(on_air[i].steps, on_air[i].columns, strict=True):
+        for step, column in on_air[i].pairs if i in on_air else ():
             if step.end_s > latest_stop_s:
                 _yield_time(programme, column, a, b, step.seconds, max(latest_stop_s - step.begin_s, 0.0))
-        for step, column in zip(on_air[j].steps, on_air[j].columns, strict=True):
+        for step, column in on_air[j].pairs if j in on_air else ():
             if step.begin_s < earliest_start_s:
                 _yield_time(programme, column, b, a, step.seconds, max(step.end_s - earliest_start_s, 0.0))
         covered_s = max(first.closes_s, second.closes_s) - min(first.opens_s, second.opens_s)
@@ -115,6 +129,13 @@ def steps_of(candidate: Candidate) -> Iterator[Step]:
         priced = (cost.edges_s[1:] > begin_s) & (cost.edges_s[:-1] < end_s)
         cheapest = cost.per_s_wh[priced].min() if priced.any() else cost.per_s_wh.min()
         yield Step(begin_s, end_s, float(rate[inside].max(initial=0.0)), float(cheapest))
+
+
+def uneven(candidate: Candidate) -> bool:
+    """Whether it matters for volume or price which seconds of the window are used."""
+    rates = [step.fastest_mbps for step in steps_of(candidate)]
+    prices = candidate.likely.per_s_wh
+    return min(rates) < (1 - EVEN) * max(rates) or np.ptp(prices) > EVEN * abs(prices.mean())
 
 
 def _resources(problem: Problem, candidate: Candidate) -> list[tuple]:

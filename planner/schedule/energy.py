@@ -83,7 +83,9 @@ def energy_states(power: SatellitePower, policy: Policy, conversion: Conversion,
         float(power.stored_wh(soc_pct, CORNER))
         for soc_pct in (start_pct, full_pct, policy.soc_floor_pct, policy.soc_end_pct)
     )
-    return EnergyStates(start_wh, full_wh, floor_wh, end_wh, np.diff(np.interp(events_s, edges_s, sum_wh)))
+    floors_wh = np.full(len(events_s), floor_wh)
+    floors_wh[-1] = end_wh
+    return EnergyStates(start_wh, full_wh, floors_wh, np.diff(np.interp(events_s, edges_s, sum_wh)))
 
 
 def session_cost(power: SatellitePower, draw: SessionDraw, conversion: Conversion) -> EnergyCost:

@@ -9,7 +9,7 @@ from planner.mission.files import slug
 from planner.schedule.checks import needs_upload, upload_contact
 from planner.schedule.flown import Flown
 from planner.sky import aging
-from planner.sky.samples import station_position_km
+from planner.sky.sites import station_position_km
 from planner.units import DAY_S
 
 OLDEST_DAYS = 3650.0  # elements that never grow too old are said to hold for ten years

@@ -6,12 +6,11 @@ AIAA 2012-4610; continuous start and stop are our own.
 """
 
 from collections import defaultdict
-from copy import deepcopy
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 
 import numpy as np
 
-from planner.schedule.crowding import OnAir, crowded, fits, seconds_on_air, share_time
+from planner.schedule.crowding import OnAir, crowded, fits, seconds_on_air, share_time, uneven
 from planner.schedule.problem import DAY_S, HOUR_S, Problem
 from planner.schedule.programme import Programme
 from planner.schedule.sessions import Candidate
@@ -20,6 +19,7 @@ from planner.schedule.states import EnergyStates, SatelliteStates
 # Ties: fewer sessions, then earlier ones. Shares of the largest session's volume, far below the gap asked for.
 FEWER_SESSIONS = 1e-5
 EARLIER = 1e-7
+SMALL = 0.02  # of the largest volume: below it a session's shape does not matter
 
 
 @dataclass(frozen=True)
@@ -39,8 +39,6 @@ class WeekProgramme:
     problem: Problem
     programme: Programme = field(default_factory=Programme)
     variables: list[Variables] = field(default_factory=list)
-    floor_rows: dict[tuple[str, int], int] = field(default_factory=dict)  # (satellite, event) -> row
-    gain_rows: dict[tuple[str, int], int] = field(default_factory=dict)  # (satellite, interval) -> row
 
     def sessions(self, values: np.ndarray) -> list[tuple[int, float, float]]:
         """(candidate, tx_on_s, tx_off_s) of what the solution flies."""
@@ -50,44 +48,6 @@ class WeekProgramme:
                 on_s = candidate.opens_s + values[v.start]
                 chosen.append((i, float(on_s), float(on_s + values[v.length])))
         return chosen
-
-    def raise_floor(self, satellite: str, time_s: float, by_wh: float) -> None:
-        """Ask for more stored energy at the events around `time_s`."""
-        events_s = next(s.events_s for s in self.problem.states if s.satellite == satellite)
-        event = int(np.searchsorted(events_s, time_s))
-        for at in {max(event - 1, 1), min(max(event, 1), len(events_s) - 1)}:
-            self.programme.tighten_row(self.floor_rows[satellite, at], by_wh)
-
-    def forbid(self, index: int) -> None:
-        self.programme.fix(self.variables[index].flown, 0.0)
-
-    def only(self, chosen: set[int]) -> "WeekProgramme":
-        """The same programme with every other candidate left out: small, for mending a plan."""
-        restricted = replace(self, programme=deepcopy(self.programme))
-        for index in set(range(len(self.variables))) - chosen:
-            restricted.forbid(index)
-        return restricted
-
-    def follow(self, satellite: str, chosen: list[tuple[int, float, float]], stored_wh: np.ndarray) -> None:
-        """Correct each interval's gain by what the full physics showed for these sessions.
-
-        stored_wh (n + 1,) : stored energy at the satellite's events, simulated
-        """
-        states = next(states for states in self.problem.states if states.satellite == satellite)
-        cost_wh = np.zeros(len(states.events_s) - 1)
-        for index, on_s, off_s in chosen:
-            candidate = self.problem.candidates[index]
-            if candidate.satellite == satellite:
-                flown_wh, start_wh, length_wh = candidate.cost_wh
-                price_wh = flown_wh + start_wh * (on_s - candidate.opens_s) + length_wh * (off_s - on_s)
-                for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
-                    cost_wh[interval] += share * price_wh
-        modelled_wh = states.likely.start_wh
-        for interval, net_wh in enumerate(states.likely.gain_wh - cost_wh):
-            after_wh = min(modelled_wh + net_wh, states.likely.full_wh)
-            missed_wh = np.diff(stored_wh)[interval] - (after_wh - modelled_wh)
-            self.programme.shift_upper(self.gain_rows[satellite, interval], float(missed_wh))
-            modelled_wh = after_wh
 
 
 def plan_programme(problem: Problem) -> WeekProgramme:
@@ -105,13 +65,12 @@ def plan_programme(problem: Problem) -> WeekProgramme:
             second_gain=-cost.per_minute / 60 * cost_mbit,
         )
         _volume_by_start_and_stop(week.programme, candidate, v)
+    on_air = _on_air(week, {index for pair in crowded(problem) for index in pair})
     for states in problem.states:
         _likely_energy(week, states)
         _likely_data(week, states)
     _one_of_each(week)
     _separations(week)
-    shared = sorted({index for pair in crowded(problem) for index in pair})
-    on_air = {i: seconds_on_air(week.programme, problem.candidates[i], week.variables[i]) for i in shared}
     share_time(problem, week.programme, week.variables, on_air)
     _policy_rows(week)
     return week
@@ -127,10 +86,7 @@ def bound_programme(problem: Problem) -> WeekProgramme:
     for candidate in problem.candidates:
         v = _session_variables(week, candidate)
         _most_volume(week.programme, candidate, v)
-    on_air = {
-        i: seconds_on_air(week.programme, candidate, week.variables[i])
-        for i, candidate in enumerate(problem.candidates)
-    }
+    on_air = _on_air(week, set(range(len(problem.candidates))))
     for states in problem.states:
         _least_energy(week, states, on_air)
         _relaxed_data(week, states)
@@ -181,67 +137,65 @@ def _most_volume(programme: Programme, candidate: Candidate, v: Variables) -> No
     programme.row([(v.volume, 1.0), (lost, -1.0), (got, -1.0)], highest=0.0)
 
 
-def _energy_terms(v: Variables, candidate: Candidate, share: float) -> list[tuple[int, float]]:
-    flown_wh, start_wh, length_wh = candidate.cost_wh
-    return [(v.flown, share * flown_wh), (v.start, share * start_wh), (v.length, share * length_wh)]
+def _on_air(week: WeekProgramme, among: set[int]) -> dict[int, OnAir]:
+    """Seconds on air step by step, for those candidates for which it matters which seconds are used."""
+    candidates = week.problem.candidates
+    worth_mbit = SMALL * max((candidate.most_mbit for candidate in candidates), default=0.0)
+    return {
+        i: seconds_on_air(week.programme, candidates[i], week.variables[i])
+        for i in sorted(among)
+        if candidates[i].most_mbit > worth_mbit and uneven(candidates[i])
+    }
 
 
-def _of_satellite(week: WeekProgramme, satellite: str) -> list[tuple[Candidate, Variables]]:
+def _of_satellite(week: WeekProgramme, satellite: str) -> list[tuple[int, Candidate, Variables]]:
     pairs = zip(week.problem.candidates, week.variables, strict=True)
-    return [(candidate, v) for candidate, v in pairs if candidate.satellite == satellite]
+    return [(i, candidate, v) for i, (candidate, v) in enumerate(pairs) if candidate.satellite == satellite]
 
 
 def _likely_energy(week: WeekProgramme, states: SatelliteStates) -> None:
     """Stored energy event by event; a session's cost falls evenly over its window."""
     terms = defaultdict(list)
-    for candidate, v in _of_satellite(week, states.satellite):
+    for _, candidate, v in _of_satellite(week, states.satellite):
+        price = list(zip((v.flown, v.start, v.length), candidate.cost_wh, strict=True))
         for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
-            terms[interval] += _energy_terms(v, candidate, share)
-    stored, rows = _energy_chain(week.programme, states.likely, terms)
-    week.gain_rows |= {(states.satellite, interval): row for interval, row in enumerate(rows)}
-    for event, variable in enumerate(stored[1:], start=1):
-        last = event == len(states.events_s) - 1
-        lowest_wh = states.likely.end_wh if last else states.likely.floor_wh
-        week.floor_rows[states.satellite, event] = week.programme.row([(variable, 1.0)], lowest=lowest_wh)
+            terms[interval] += [(column, share * factor) for column, factor in price]
+    _energy_chain(week.programme, states.likely, terms, defaultdict(list))
 
 
-def _energy_chain(programme: Programme, energy: EnergyStates, terms: dict[int, list]) -> tuple[list[int], list[int]]:
-    """stored[i + 1] + costs of interval i + spill = stored[i] + gain: spill may be anything from 0. Columns and rows."""
-    stored, rows = [programme.variable(energy.start_wh, energy.start_wh)], []
+def _energy_chain(programme: Programme, energy: EnergyStates, terms: dict[int, list], active: dict[int, list]) -> None:
+    """stored[i + 1] + costs of interval i + spill = stored[i] + gain, spill anything from 0; floors held at events,
+    less what is `active` there."""
+    before = programme.variable(energy.start_wh, energy.start_wh)
     for interval, gain_wh in enumerate(energy.gain_wh.tolist()):
-        stored.append(programme.variable(-np.inf, energy.full_wh))
-        rows.append(programme.row([(stored[-1], 1.0), (stored[-2], -1.0), *terms[interval]], highest=gain_wh))
-    return stored, rows
+        after = programme.variable(-np.inf, energy.full_wh)
+        programme.row([(after, 1.0), (before, -1.0), *terms[interval]], highest=gain_wh)
+        programme.row([(after, 1.0), *active[interval + 1]], lowest=energy.floor_wh[interval + 1])
+        before = after
 
 
 def _least_energy(week: WeekProgramme, states: SatelliteStates, on_air: dict[int, OnAir]) -> None:
     """As `_likely_energy`, relaxed: the least cost, charged when the window opens (room for the Sun) but not yet held
     against the floor while the window lasts."""
     programme, terms, active = week.programme, defaultdict(list), defaultdict(list)
-    for i, candidate in enumerate(week.problem.candidates):
-        if candidate.satellite != states.satellite:
-            continue
-        v = week.variables[i]
+    for i, candidate, v in _of_satellite(week, states.satellite):
         cost = programme.variable(-np.inf, np.inf)
         for slope, offset in candidate.least.cheapest_by_duration:
             programme.row([(cost, 1.0), (v.length, -slope), (v.flown, -offset)], lowest=0.0)
-        pairs = zip(on_air[i].steps, on_air[i].columns, strict=True)
-        by_step = [(column, -step.cheapest_per_s_wh) for step, column in pairs]
-        programme.row([(cost, 1.0), (v.flown, -candidate.least.fixed_wh), *by_step], lowest=0.0)
+        if i in on_air:
+            by_step = [(column, -step.cheapest_per_s_wh) for step, column in on_air[i].pairs]
+            programme.row([(cost, 1.0), (v.flown, -candidate.least.fixed_wh), *by_step], lowest=0.0)
         first, last = np.searchsorted(states.events_s, [candidate.opens_s, candidate.closes_s])
         terms[int(first)].append((cost, 1.0))
         for event in range(int(first) + 1, int(last)):
             active[event].append((cost, 1.0))
-    stored, _ = _energy_chain(programme, states.least, terms)
-    for event, variable in enumerate(stored[1:], start=1):
-        programme.row([(variable, 1.0), *active[event]], lowest=states.least.floor_wh)
-    programme.row([(stored[-1], 1.0)], lowest=states.least.end_wh)
+    _energy_chain(programme, states.least, terms, active)
 
 
 def _likely_data(week: WeekProgramme, states: SatelliteStates) -> None:
     """Stored data event by event; a session's yield falls evenly over its window."""
     terms = defaultdict(list)
-    for candidate, v in _of_satellite(week, states.satellite):
+    for _, candidate, v in _of_satellite(week, states.satellite):
         for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
             terms[interval].append((v.volume, share))
     _data_chain(week.programme, states, terms, defaultdict(list))
@@ -250,7 +204,7 @@ def _likely_data(week: WeekProgramme, states: SatelliteStates) -> None:
 def _relaxed_data(week: WeekProgramme, states: SatelliteStates) -> None:
     """As `_likely_data`, relaxed: the yield is taken when the window closes, and room is not asked for before."""
     terms, active = defaultdict(list), defaultdict(list)
-    for candidate, v in _of_satellite(week, states.satellite):
+    for _, candidate, v in _of_satellite(week, states.satellite):
         first, last = np.searchsorted(states.events_s, [candidate.opens_s, candidate.closes_s])
         terms[int(last) - 1].append((v.volume, 1.0))
         for event in range(int(first) + 1, int(last)):

@@ -1,7 +1,7 @@
 """The week as the optimiser sees it."""
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import groupby
 
 import numpy as np
@@ -33,6 +33,14 @@ class Problem:
     commands_until_s: dict[str, float]
     keep: frozenset[tuple[str, str]] = frozenset()
     frozen: tuple[Session, ...] = ()
+
+    def only(self, chosen: set[int]) -> "Problem":
+        """The same problem with no other candidates: small, for mending a plan."""
+        return replace(self, candidates=tuple(c for i, c in enumerate(self.candidates) if i in chosen))
+
+    def without(self, sessions: set[tuple[str, str]]) -> "Problem":
+        """The same problem without some (pass_id, mode)."""
+        return replace(self, candidates=tuple(c for c in self.candidates if (c.pass_id, c.mode) not in sessions))
 
     def day_of(self, time_s: float) -> int:
         """Which UTC day of the span (0 is the first, perhaps a short one)."""

@@ -71,17 +71,6 @@ class Programme:
         self._row_highest.append(highest)
         return index
 
-    def fix(self, variable: int, value: float) -> None:
-        self.lowest[variable] = self.highest[variable] = value
-
-    def tighten_row(self, index: int, by: float) -> None:
-        """Raise the lower limit of a row."""
-        self._row_lowest[index] += by
-
-    def shift_upper(self, index: int, by: float) -> None:
-        """Move the upper limit of a row."""
-        self._row_highest[index] += by
-
     def arrays(self) -> dict:
         """What the solver takes: a minimisation."""
         shape = (len(self._row_lowest), len(self.gain))

@@ -28,6 +28,11 @@ class EnergyCost:
         begin_wh, end_wh = np.interp([begin_s, end_s], self.edges_s, sum_wh)
         return float(end_wh - begin_wh)
 
+    def at_wh(self, time_s: float) -> float:
+        """Price of the second at a moment."""
+        at = np.searchsorted(self.edges_s, time_s, side="right") - 1
+        return float(self.per_s_wh[np.clip(at, 0, len(self.per_s_wh) - 1)])
+
     def mean_per_s_wh(self, begin_s: float, end_s: float) -> float:
         if end_s - begin_s < 1e-6:
             return float(self.per_s_wh.mean())
@@ -61,6 +66,7 @@ class Candidate:
     carries_commands: bool
     likely: EnergyCost = NO_COST
     least: EnergyCost = NO_COST
+    near_s: tuple[float, float] | None = None  # a start and stop at which the likely cost is to be exact
 
     @property
     def mode(self) -> str:
@@ -72,12 +78,23 @@ class Candidate:
 
     @cached_property
     def cost_wh(self) -> tuple[float, float, float]:
-        """Likely price as (flown, per second of start, per second of length): exact over the whole window and at the
-        peak, straight between."""
-        reach_s = self.peak_s - self.opens_s
-        before = self.likely.mean_per_s_wh(self.opens_s, self.peak_s)
-        after = self.likely.mean_per_s_wh(self.peak_s, self.closes_s)
-        return self.likely.fixed_wh + (before - after) * reach_s, after - before, after
+        """Likely price as (flown, per second of start, per second of length), linear in them.
+
+        Exact, with its slopes, at `near_s`; without it exact over the whole window and for none around the peak.
+        """
+        cost = self.likely
+        if self.near_s is None:
+            reach_s = self.peak_s - self.opens_s
+            before, after = (
+                cost.mean_per_s_wh(self.opens_s, self.peak_s),
+                cost.mean_per_s_wh(self.peak_s, self.closes_s),
+            )
+            return cost.fixed_wh + (before - after) * reach_s, after - before, after
+        on_s, off_s = self.near_s
+        at_on, at_off = cost.at_wh(on_s), cost.at_wh(off_s)
+        start_s, length_s = on_s - self.opens_s, off_s - on_s
+        exact_wh = cost.fixed_wh + cost.on_air_wh(on_s, off_s)
+        return exact_wh - (at_off - at_on) * start_s - at_off * length_s, at_off - at_on, at_off
 
     @property
     def longest_s(self) -> float:

@@ -9,13 +9,13 @@ import numpy as np
 class EnergyStates:
     """Stored energy (the integral of open-circuit voltage over charge) at the corner that limits are held to.
 
+    floor_wh (n + 1,) : the least asked at each event, at the last one for the end of the span
     gain_wh (n,) : what each interval between events adds without sessions, losses taken off, nothing spilled
     """
 
     start_wh: float
     full_wh: float
-    floor_wh: float
-    end_wh: float
+    floor_wh: np.ndarray
     gain_wh: np.ndarray
 
 

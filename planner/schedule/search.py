@@ -1,0 +1,223 @@
+"""Solve, re-simulate with the full physics, correct the problem by what that showed, and solve again."""
+
+import time
+from collections.abc import Callable
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from planner.errors import NoWeekError
+from planner.mission.contacts import Session
+from planner.schedule.checks import Fault, find_faults
+from planner.schedule.flown import Flown
+from planner.schedule.optimise import WeekProgramme, plan_programme
+from planner.schedule.problem import Problem
+from planner.schedule.programme import Solution, solve
+from planner.schedule.sessions import Candidate
+from planner.schedule.states import SatelliteStates
+from planner.schedule.week import Progress, Week
+
+SOLVER_GAP = 1e-3  # a plan is held to 0.1 % of its programme's optimum …
+RELATIVE_GAP = 7e-4  # … of which rounding and mending may take a little
+COARSE_GAP = 1e-2
+APPROACHES = 2  # after them the corrections hardly move
+MOST_FULL_SOLVES, MOST_MENDS = 3, 8
+SHORTEST_SOLVE_S = 1.0
+CHARGE_LIMITS = ("SoC floor", "end-of-span SoC", "depth of discharge")
+MARGIN_WH = 0.004  # asked for beyond a floor that broke, so that rounding to whole seconds does not break it again
+
+Chosen = list[tuple[int, float, float]]  # (candidate, tx_on_s, tx_off_s)
+
+
+class Stopwatch:
+    """How long the stages took, and how much of the limit is left."""
+
+    def __init__(self, limit_s: float | None):
+        self._limit_s, self._began = limit_s, time.perf_counter()
+        self._last = self._began
+        self.laps: dict[str, float] = {}
+
+    def lap(self, stage: str) -> None:
+        now = time.perf_counter()
+        self.laps[stage], self._last = now - self._last, now
+
+    def left_s(self) -> float | None:
+        if self._limit_s is None:
+            return None
+        return max(self._limit_s - (time.perf_counter() - self._began), SHORTEST_SOLVE_S)
+
+
+@dataclass
+class Search:
+    """The search for sessions that keep every limit.
+
+    A coarse solution shows first where the real battery departs from the programme's straight lines. `problem` is
+    corrected by that and solved to the gap; what still breaks a limit is mended among the chosen sessions alone, each
+    time corrected anew; and if mending cost more than the gap allows, the whole is solved again.
+    """
+
+    week: Week
+    problem: Problem
+    stopwatch: Stopwatch
+    progress: Progress
+    cancelled: Callable[[], bool]
+    solutions: int = 0
+    broke: str = field(default="")
+
+    def run(self) -> tuple[Flown, Solution]:
+        """Sessions without a fault, and their solution with the bound of the last programme solved in full."""
+        self._approach()
+        best = None
+        for _ in range(MOST_FULL_SOLVES):
+            week, full = self._solve(self.problem, RELATIVE_GAP)
+            found = self._mended(self.problem, week, full)
+            if found is not None:
+                flown, mended, chosen = found
+                if best is None or mended.objective > best[1].objective:
+                    best = flown, replace(mended, bound=full.bound, status=full.status)
+                if best[1].gap_pct <= 100 * SOLVER_GAP or full.status == "time limit":
+                    break
+                self.problem = self._corrected(self.problem, chosen)
+        if best is None:
+            raise NoWeekError(f"no plan kept every limit in {self.solutions} solutions; the last broke: {self.broke}")
+        return best
+
+    def _approach(self) -> None:
+        """Correct the problem by a coarse solution, and by what becomes of its sessions under the corrected problem."""
+        week, solution = self._solve(self.problem, COARSE_GAP)
+        chosen = week.sessions(solution.values)
+        for _ in range(APPROACHES):
+            self.problem = self._corrected(self.problem, chosen)
+            few = [i for i, *_ in chosen]
+            week, solution = self._solve(self.problem.only(set(few)), COARSE_GAP / 4, must=False)
+            if solution.values is None:
+                return
+            chosen = [(few[i], on_s, off_s) for i, on_s, off_s in week.sessions(solution.values)]
+        self.problem = self._corrected(self.problem, chosen)
+
+    def _mended(self, problem: Problem, week: WeekProgramme, solution: Solution):
+        """(flown, solution, chosen among `problem`'s candidates) once no limit breaks; None if that is not reached."""
+        for _ in range(MOST_MENDS):
+            chosen = week.sessions(solution.values)
+            flown = self._flown(week.problem, chosen)
+            faults = find_faults(flown)
+            if not faults:
+                at = {candidate_key(c): i for i, c in enumerate(problem.candidates)}
+                return flown, solution, [(at[candidate_key(week.problem.candidates[i])], *t) for i, *t in chosen]
+            self.broke = faults[0].text
+            small = week.problem.only({i for i, *_ in chosen})
+            tighter = self._tightened(self._giving_up(small, faults), flown, faults)
+            week, solution = self._solve(tighter, RELATIVE_GAP / 10, must=False)
+            if solution.values is None:
+                return None
+        return None
+
+    def _giving_up(self, problem: Problem, faults: list[Fault]) -> Problem:
+        """What breaks a limit of its own is given up; a rule of the week that breaks is told."""
+        hopeless = [fault for fault in faults if fault.rule not in CHARGE_LIMITS]
+        for fault in hopeless:
+            if fault.session is None:
+                raise NoWeekError(f"no plan keeps this limit: {fault.text}")
+        gone = {(fault.session.pass_id, fault.session.mode) for fault in hopeless}
+        self.problem = self.problem.without(gone)
+        return problem.without(gone)
+
+    def _solve(self, problem: Problem, gap: float, must: bool = True) -> tuple[WeekProgramme, Solution]:
+        self.solutions += 1
+        self.progress(f"schedule, solution {self.solutions}")
+        week = plan_programme(problem)
+        limit_s = self.stopwatch.left_s()
+        solution = solve(week.programme, relative_gap=gap, time_limit_s=limit_s, cancelled=self.cancelled)
+        if must and solution.values is None:
+            raise NoWeekError(no_solution(problem, solution))
+        return week, solution
+
+    def _flown(self, problem: Problem, chosen: Chosen) -> Flown:
+        sessions = (on_whole_seconds(problem.candidates[i], on_s, off_s) for i, on_s, off_s in chosen)
+        return Flown(self.week, tuple(sorted(sessions)))
+
+    def _corrected(self, problem: Problem, chosen: Chosen) -> Problem:
+        """The problem with costs exact at these sessions and gains as the full physics has them."""
+        flown = self._flown(problem, chosen)
+        candidates = list(problem.candidates)
+        for i, on_s, off_s in chosen:
+            candidates[i] = replace(candidates[i], near_s=(on_s, off_s))
+        nearer = replace(problem, candidates=tuple(candidates))
+        states = [self._followed(nearer, states, chosen, flown) for states in problem.states]
+        return replace(nearer, states=tuple(states))
+
+    def _followed(self, problem: Problem, states: SatelliteStates, chosen: Chosen, flown: Flown) -> SatelliteStates:
+        """Each interval's gain as the simulation showed it, these sessions' modelled cost given back."""
+        cost_wh = np.zeros(len(states.events_s) - 1)
+        for index, on_s, off_s in chosen:
+            candidate = problem.candidates[index]
+            if candidate.satellite == states.satellite:
+                flown_wh, start_wh, length_wh = candidate.cost_wh
+                price_wh = flown_wh + start_wh * (on_s - candidate.opens_s) + length_wh * (off_s - on_s)
+                for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
+                    cost_wh[interval] += share * price_wh
+        series = flown.worst[states.satellite]
+        stored_wh = np.interp(states.events_s, series.time_s, series.stored_wh)
+        modelled_wh = np.minimum(stored_wh[:-1] + states.likely.gain_wh - cost_wh, states.likely.full_wh)
+        gain_wh = states.likely.gain_wh + stored_wh[1:] - modelled_wh
+        return replace(states, likely=replace(states.likely, gain_wh=gain_wh))
+
+    def _tightened(self, problem: Problem, flown: Flown, faults: list[Fault]) -> Problem:
+        """More energy asked for around each breach: what was missing, and a margin."""
+        tighter = []
+        for states in problem.states:
+            floor_wh = states.likely.floor_wh.copy()
+            series, power = flown.worst[states.satellite], self.week.powers[states.satellite]
+            for fault in faults:
+                if fault.rule in CHARGE_LIMITS and fault.text.startswith(f"{states.satellite}:"):
+                    missing_pct = abs(fault.value - fault.bound)
+                    missing_wh = float(power.stored_wh(100.0) - power.stored_wh(100.0 - missing_pct)) + MARGIN_WH
+                    event = int(np.searchsorted(states.events_s, _lowest_s(series, fault)))
+                    for at in {max(event - 1, 1), min(max(event, 1), len(floor_wh) - 1)}:
+                        floor_wh[at] = min(floor_wh[at] + missing_wh, states.likely.full_wh)
+            tighter.append(replace(states, likely=replace(states.likely, floor_wh=floor_wh)))
+        return replace(problem, states=tuple(tighter))
+
+
+def _lowest_s(series, fault: Fault) -> float:
+    """When a breach that begins at the fault's time is deepest."""
+    if fault.rule == "depth of discharge":
+        return series.lowest(fault.time_s)[0]
+    later = np.flatnonzero(series.time_s >= fault.time_s - 1e-3)
+    return float(series.time_s[later[np.argmin(np.abs(series.soc_pct[later] - fault.value))]])
+
+
+def candidate_key(candidate: Candidate) -> tuple:
+    """What tells candidates apart."""
+    return candidate.pass_id, candidate.mode, candidate.profile.label, candidate.opens_s
+
+
+def on_whole_seconds(candidate: Candidate, on_s: float, off_s: float) -> Session:
+    """Start and stop on whole seconds inside the window; frozen sessions (no play at all) stay as they are."""
+    if candidate.window_s - candidate.shortest_s < 2.0:
+        return candidate.session(candidate.opens_s, candidate.closes_s)
+    first, last = np.ceil(candidate.opens_s - 1e-6), np.floor(candidate.closes_s + 1e-6)
+    start, stop = float(np.clip(np.round(on_s), first, last)), float(np.clip(np.round(off_s), first, last))
+    shortest = float(np.ceil(candidate.shortest_s))
+    if stop - start < shortest:
+        stop = min(start + shortest, last)
+        start = stop - shortest
+    return candidate.session(start, stop)
+
+
+def no_solution(problem: Problem, solution: Solution) -> str:
+    """Why the programme has no solution, as far as that can be told."""
+    if solution.status == "time limit":
+        return "no plan was found within the time limit; allow more time"
+    if problem.keep:
+        kept = ", ".join(f"{pass_id}:{mode}" for pass_id, mode in sorted(problem.keep))
+        return f"no week keeps every limit with all that must be kept ({kept})"
+    policy = problem.policy
+    asked = {
+        "policy.daily_contact_modes": policy.daily_contact_modes,
+        "policy.longest_gap_h": policy.longest_gap_h,
+        "policy.cost_budget": policy.cost_budget,
+        "policy.upload_lead_h": policy.upload_lead_h,
+    }
+    stated = ", ".join(f"{key} = {value!r}" for key, value in asked.items() if value not in (None, ()))
+    return f"no week meets the policy's required contacts within its limits ({stated or solution.status})"
