@@ -133,7 +133,7 @@ def _replace(folder: Path, coming: Mapping[str, bytes], index: str) -> None:
     (folder / COMING).mkdir()
     for name, content in coming.items():
         _write(folder / COMING / name, content)
-    old = [name for name in {*coming, *_listed(folder, index)} if os.path.lexists(folder / name)]
+    old = [name for name in sorted({*coming, *_listed(folder, index)}) if os.path.lexists(folder / name)]
     _keep_aside(folder, old, coming, index)
     for name in coming:  # the index is the last of them
         os.replace(folder / COMING / name, folder / name)
@@ -188,11 +188,13 @@ def _mend(folder: Path) -> tuple[str, ...]:
 
 def _journal(path: Path) -> tuple[str, str, list[str], list[str]]:
     try:
+        if path.parent.is_symlink():
+            raise ValueError("a link to somewhere else")
         journal = json.loads(_read(path))
         index, digest, old, new = (journal[key] for key in ("index", "sha256", "old", "new"))
         if all(_is_plain(name) for name in [index, *old, *new]):
             return index, digest, old, new
-    except (OSError, ValueError, KeyError, TypeError):
+    except (OSError, ValueError, KeyError, TypeError, RecursionError):
         pass
     raise MachineError(f"{path}: is not what this tool writes; save what you need from {path.parent}, then remove it")
 

@@ -353,6 +353,17 @@ def test_a_journal_that_is_not_ours_stops_the_run(whole):
         write_set(whole, NEW, {})
 
 
+def test_a_link_in_place_of_what_was_kept_moves_nothing_from_elsewhere(whole, tmp_path):
+    (tmp_path / "elsewhere").mkdir()
+    (tmp_path / "elsewhere" / "contacts.csv").write_text("theirs")
+    journal = {"index": "summary.json", "sha256": "", "old": ["contacts.csv"], "new": ["contacts.csv"]}
+    (tmp_path / "elsewhere" / ".journal").write_bytes(json_bytes(journal))
+    (whole / ".kept").symlink_to(tmp_path / "elsewhere")
+    with pytest.raises(MachineError, match="is not what this tool writes"):
+        write_set(whole, NEW, {})
+    assert (tmp_path / "elsewhere" / "contacts.csv").read_text() == "theirs"
+
+
 def test_json_refuses_what_json_has_no_word_for():
     assert json_bytes({"soc_min_pct": 61.25, "note": "Ø"}) == '{\n  "soc_min_pct": 61.25,\n  "note": "Ø"\n}\n'.encode()
     with pytest.raises(ValueError, match="Out of range float values are not JSON compliant"):
