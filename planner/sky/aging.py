@@ -6,6 +6,9 @@ from planner.mission.models import ElementAging
 from planner.sky.frames import inertial_velocity_km_s
 from planner.units import dot
 
+# CubeSats in their first weeks after leaving the ISS: inside the bands of Riesing, SSC15-VIII-5 (2015).
+FRESH_FROM_THE_STATION = ElementAging(in_track_at_epoch_km=4.0, in_track_km_per_day=10.0, in_track_km_per_day2=4.0)
+
 
 def in_track_error_km(aging: ElementAging, age_days):
     """One-sigma in-track error of a set of that age, shape of `age_days` [km].
@@ -13,7 +16,7 @@ def in_track_error_km(aging: ElementAging, age_days):
     A polynomial of the age with settable coefficients: the error at epoch, a rate error's linear growth, and the
     quadratic growth of a drag error. The defaults are those of an ordinary low orbit (about 1 km at epoch and 1 to
     3 km a day: Vallado and Kelso, from memory). CubeSats fresh from the ISS do worse, 10 to 30 km at one day and 20 to
-    70 km at two: Riesing, SSC15-VIII-5 (2015).
+    70 km at two (Riesing, SSC15-VIII-5, 2015): FRESH_FROM_THE_STATION.
     """
     age = np.asarray(age_days, dtype=float)
     return aging.in_track_at_epoch_km + aging.in_track_km_per_day * age + aging.in_track_km_per_day2 * age**2

@@ -8,6 +8,7 @@ from functools import partial
 
 from planner.errors import InputError
 from planner.sky.clock import Clock
+from planner.sky.pass_ids import refuse_equal_slugs
 from planner.sky.passes import Passes, joined, passes_of_satellite
 from planner.sky.sites import Sites
 from planner.sky.track import Track, track_satellite
@@ -35,9 +36,12 @@ def observe_fleet(
 
     Raises
     ------
-    InputError : one fault for each satellite whose elements cannot be carried through the span, all at once
+    InputError : names that would share pass ids; one fault for each satellite whose elements cannot be carried through
+        the span, all at once
     """
     satellites, sites = list(satellites), Sites.of(stations)
+    refuse_equal_slugs("station", [station.name for station in sites.stations])
+    refuse_equal_slugs("satellite", [satellite.name for satellite in satellites])
     tracks, parts, faults = [], [], []
     for index, (track, part, found) in enumerate(_results(partial(_one, clock, sites), satellites, workers)):
         faults += found

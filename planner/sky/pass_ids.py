@@ -6,6 +6,7 @@ from datetime import timedelta
 
 import numpy as np
 
+from planner.errors import InputError
 from planner.mission.elements import Ephemeris
 from planner.sky.clock import Clock
 from planner.sky.propagate import states
@@ -19,6 +20,18 @@ SIDEREAL_DAY_S = 86_164.0905  # from memory
 def slug(name: str) -> str:
     """Lower case, with every run of other characters than letters and digits as one hyphen."""
     return re.sub(r"[^\w]+|_+", "-", name.lower()).strip("-") or "x"
+
+
+def refuse_equal_slugs(kind: str, names) -> None:
+    """InputError when two names of one kind would give the same pass ids."""
+    seen: dict[str, str] = {}
+    for name in names:
+        if slug(name) in seen:
+            raise InputError(
+                f"{kind} names must differ in more than case, blanks and signs, because pass ids are made of them,"
+                f" got {seen[slug(name)]!r} and {name!r}"
+            )
+        seen[slug(name)] = name
 
 
 def pass_ids(clock: Clock, track: Track, sites: Sites, station_index, aos_s, by_day) -> np.ndarray:

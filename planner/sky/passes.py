@@ -8,7 +8,7 @@ import pandas as pd
 from planner.sky.clock import Clock
 from planner.sky.horizon import Arcs, arcs_above, highest_s
 from planner.sky.horizon_line import cut_by_the_line
-from planner.sky.pass_ids import is_geostationary, pass_ids
+from planner.sky.pass_ids import is_geostationary, pass_ids, refuse_equal_slugs
 from planner.sky.sites import Sites, look_from
 from planner.sky.sun import eclipse_edges_s, sun_position_km, visible_sun_fraction
 from planner.sky.track import Track
@@ -76,7 +76,13 @@ def find_passes(clock: Clock, tracks, stations) -> Passes:
     clock : Clock
     tracks : sequence of Track, from `track_satellite` with the same clock
     stations : sequence of Station
+
+    Raises
+    ------
+    InputError : two stations or two satellites whose names would give the same pass ids
     """
+    refuse_equal_slugs("station", [station.name for station in stations])
+    refuse_equal_slugs("satellite", [track.satellite for track in tracks])
     sites = Sites.of(stations)
     return joined([passes_of_satellite(clock, track, index, sites) for index, track in enumerate(tracks)])
 

@@ -2,7 +2,7 @@
 
 import numpy as np
 
-WITHIN_S = 5e-4  # the last correction; what is left after it is far smaller, as the corrections shrink ever faster
+WITHIN_S = 5e-3  # width of the last bracket; a straight line across it finds the zero to microseconds
 SLOPE_STEP_S = 0.01
 EVERYONE = slice(None)  # picks all members without copying them
 
@@ -12,19 +12,25 @@ def refine(function, low, high, f_low, f_high):
 
     `function(time_s, k)` gives the values (m,) of the members `k` (m,) at `time_s` (m,). False position with the stale
     end's value halved, which cannot leave its bracket: the Illinois rule (Dowell, Jarratt, BIT 11, 1971, from memory).
+    No step is shorter than half WITHIN_S, so that the zero is bracketed from both sides and not only approached.
     """
     a, b, fa, fb = (np.array(x, dtype=float) for x in (low, high, f_low, f_high))
-    zero = np.where(fa == 0, a, b)
-    active = np.flatnonzero((fa != 0) & (fb != 0))
+    weight = fa.copy()  # of end a, halved while it is stale
+    active = np.flatnonzero((fa != 0) & (fb != 0) & (np.abs(b - a) > WITHIN_S))
     while active.size:
-        a1, b1, fa1, fb1 = a[active], b[active], fa[active], fb[active]
-        x = b1 - fb1 * (b1 - a1) / (fb1 - fa1)
+        a1, b1, fa1, fb1, w1 = a[active], b[active], fa[active], fb[active], weight[active]
+        gap = a1 - b1
+        share = fb1 / (fb1 - w1)
+        least = np.minimum(WITHIN_S / 2 / np.abs(gap), 0.5)
+        x = b1 + gap * np.minimum(np.maximum(share, least), 1 - least)
         y = function(x, active if active.size < a.size else EVERYONE)
         crossed = (y < 0) != (fb1 < 0)
-        a[active], fa[active] = np.where(crossed, b1, a1), np.where(crossed, fb1, fa1 / 2)
-        b[active], fb[active], zero[active] = x, y, x
-        active = active[(y != 0) & (np.abs(x - b1) > WITHIN_S)]
-    return zero
+        a[active], fa[active] = np.where(crossed, b1, a1), np.where(crossed, fb1, fa1)
+        weight[active] = np.where(crossed, fb1, w1 / 2)
+        b[active], fb[active] = x, y
+        active = active[(y != 0) & (np.abs(x - a[active]) > WITHIN_S)]
+    flat = np.where(fa == fb, 1.0, fb - fa)  # only where both are 0
+    return b - fb * (b - a) / flat
 
 
 def crossings(function, low, high):
