@@ -5,6 +5,7 @@ from datetime import UTC, tzinfo
 import matplotlib
 import matplotlib.dates as mdates
 from matplotlib.figure import Figure
+from matplotlib.layout_engine import ConstrainedLayoutEngine
 
 # Okabe and Ito, "Color Universal Design", 2008 (values from memory)
 BLACK, ORANGE, SKY_BLUE, GREEN = "#000000", "#E69F00", "#56B4E9", "#009E73"
@@ -55,8 +56,7 @@ def on_paper():
 
 def new_figure(size_in=A4_LANDSCAPE_IN, title: str = "") -> Figure:
     """An empty figure that belongs to no window. `title` says the finding."""
-    figure = Figure(figsize=size_in, layout="constrained")
-    figure.get_layout_engine().set(w_pad=0.1, h_pad=0.05)
+    figure = Figure(figsize=size_in, layout=ConstrainedLayoutEngine(w_pad=0.1, h_pad=0.05))
     if title:
         figure.suptitle(title, x=0.012, ha="left", fontsize=min(12.5, 1.6 * size_in[0]), fontweight="bold")
     return figure

@@ -5,6 +5,7 @@ from datetime import UTC, datetime, tzinfo
 import matplotlib.dates as mdates
 import numpy as np
 import pandas as pd
+from matplotlib.artist import Artist
 from matplotlib.collections import PolyCollection
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
@@ -180,7 +181,7 @@ def _draw_sessions(axes, contacts: pd.DataFrame, foot: float, mark, marker_heigh
     axes.plot((begin + end) / 2, heights, marker, color=colour, ms=4.2, mec="white", mew=0.3, zorder=4)
 
 
-def _bars(begin, end, foot: float, top) -> np.ndarray:
+def _bars(begin, end, foot: float, top):
     """Corners (n, 4, 2) of upright bars."""
     feet = np.full(len(begin), foot)
     x, y = np.stack([begin, end, end, begin], axis=-1), np.stack([feet, feet, top, top], axis=-1)
@@ -223,7 +224,7 @@ def _draw_charge(axes, mission: Mission, plan, satellite: str) -> None:
 
 
 def _shade_eclipses(axes, battery: pd.DataFrame, time: np.ndarray) -> None:
-    dark = np.isin(battery["sunlit"].to_numpy(), ["no", False, 0.0])
+    dark = battery["sunlit"].isin(["no", False, 0.0]).to_numpy()
     turns = np.flatnonzero(np.diff(dark, prepend=not dark[0], append=not dark[-1])) if len(dark) else np.empty(0, int)
     edges = time[np.minimum(turns, len(time) - 1)]
     axes.broken_barh(
@@ -249,7 +250,7 @@ def _draw_data(axes, mission: Mission, plan, satellite: str) -> None:
 
 def _legend(figure: Figure, mission: Mission, plan) -> None:
     marks = style.mode_marks(_modes(mission))
-    handles = [
+    handles: list[Artist] = [
         Line2D([], [], color=colour, marker=marker, linewidth=5, ms=5, mec="white", label=f"session, {mode}")
         for mode, (colour, marker) in marks.items()
     ]

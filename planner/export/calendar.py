@@ -8,6 +8,7 @@ element epoch, the state of knowledge that the times were computed from, so the 
 
 from dataclasses import dataclass, replace
 from datetime import UTC, datetime, timedelta
+from functools import partial
 from uuid import UUID, uuid5
 
 import pandas as pd
@@ -42,11 +43,10 @@ class Entry:
 
 def calendar_files(mission: Mission, contacts: pd.DataFrame, previous: bytes | None = None) -> dict[str, bytes]:
     """`week.ics`, and `station_<name>.ics` for every station of the mission; see `contact_calendar`."""
-    options = {"stamp": newest_epoch(mission), "span": (mission.start, mission.end), "previous": previous}
-    files = {"week.ics": contact_calendar(contacts, **options)}
-    for station in mission.stations:
-        files[f"{file_name('station', station.name)}.ics"] = contact_calendar(contacts, station=station.name, **options)
-    return files
+    stamp, span = newest_epoch(mission), (mission.start, mission.end)
+    issue = partial(contact_calendar, contacts, stamp=stamp, span=span, previous=previous)
+    by_station = {f"{file_name('station', one.name)}.ics": issue(station=one.name) for one in mission.stations}
+    return {"week.ics": issue(), **by_station}
 
 
 def newest_epoch(mission: Mission) -> datetime:
@@ -214,8 +214,8 @@ def _read_back(event) -> Entry:
         raise ValueError(f"an event of status {status!r} and sequence {sequence}")
     alarms = [(-alarm["TRIGGER"].dt, str(alarm["DESCRIPTION"])) for alarm in event.walk("VALARM")]
     alarm = alarms[0] if alarms and isinstance(alarms[0][0], timedelta) else None
-    texts = (str(event.get(key, "")) for key in ("SUMMARY", "LOCATION", "DESCRIPTION"))
-    return Entry(str(event["UID"]), stamp, start, end, *texts, status, sequence, alarm)
+    summary, location, description = (str(event.get(key, "")) for key in ("SUMMARY", "LOCATION", "DESCRIPTION"))
+    return Entry(str(event["UID"]), stamp, start, end, summary, location, description, status, sequence, alarm)
 
 
 def _utc(text) -> datetime:

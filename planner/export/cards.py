@@ -4,6 +4,7 @@ import base64
 from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -56,6 +57,7 @@ def card_files(mission: Mission, sky: Sky, contacts: pd.DataFrame) -> Iterator[t
     ------
     InputError : a contact on no pass of `sky`
     """
+    row: Any  # its columns are attributes
     for row in contacts.itertuples():
         card = make_card(mission, sky, row)
         name = file_name("card", row.pass_id, row.mode)

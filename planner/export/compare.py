@@ -103,7 +103,7 @@ def _compare(old: Iterable[Flight], new: Iterable[Flight], old_summary: Mapping,
         lost=tuple(flight for key, flight in before.items() if key not in after),
         moved=moved,
         unchanged=len(common) - len(moved),
-        volume_mbit=tuple(sum(flight.volume_mbit for flight in flights.values()) for flights in (before, after)),
+        volume_mbit=(_total_mbit(before.values()), _total_mbit(after.values())),
         soc_min_pct=(old_summary.get("soc_min_pct"), new_summary.get("soc_min_pct")),
         inputs=_changed_inputs(old_summary.get("inputs", {}), new_summary.get("inputs", {})),
     )
@@ -116,6 +116,10 @@ def _by_key(flights: Iterable[Flight]) -> dict[tuple[str, str, int], Flight]:
         ordinal = sum(key[:2] == (flight.pass_id, flight.mode) for key in keyed)
         keyed[flight.pass_id, flight.mode, ordinal] = flight
     return keyed
+
+
+def _total_mbit(flights: Iterable[Flight]) -> float:
+    return float(sum(flight.volume_mbit for flight in flights))
 
 
 def _changed_inputs(old, new) -> tuple[str, ...]:

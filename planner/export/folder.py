@@ -55,9 +55,7 @@ def verify_set(folder, index: str = INDEX) -> tuple[str, ...]:
         sound = False
     if not sound:
         return (f"{folder / index}: files must be a table of file names and their SHA-256",)
-    return tuple(
-        f"{folder / name}: {fault}" for name, digest in listed.items() if (fault := _fault(folder / name, digest))
-    )
+    return tuple(f"{folder / name}: {why}" for name, digest in listed.items() if (why := _fault(folder / name, digest)))
 
 
 @contextmanager
@@ -160,7 +158,7 @@ def _keep_aside(folder: Path, old: list[str], coming: Mapping[str, bytes], index
 
 def _mend(folder: Path) -> tuple[str, ...]:
     """Bring the folder to a whole set from whatever state a run left it in. Can itself be interrupted and run again."""
-    told = ()
+    told: tuple[str, ...] = ()
     if (folder / KEPT).is_dir():
         index, digest, old, new = _journal(folder / KEPT / JOURNAL)
         if not verify_set(folder, index) and _digest(folder / index) == digest:
@@ -310,7 +308,7 @@ def _machine_faults(folder: Path, consequence: str):
     try:
         yield
     except OSError as fault:
-        reason = REASONS.get(fault.errno, fault.strerror or str(fault))
+        reason = REASONS.get(fault.errno or 0, fault.strerror or str(fault))
         raise MachineError(f"{folder}: {reason}; {consequence}") from fault
 
 

@@ -100,7 +100,8 @@ def _aim(mission: Mission, sky: Sky, session: Session) -> Aim:
 
 def _staleness(mission: Mission, sky: Sky, aim: Aim) -> str | None:
     satellite, session = mission.satellite(aim.session.satellite), aim.session
-    if satellite.spacecraft.mode(session.mode).frequency_mhz < NARROW_BEAM_MHZ or not aim.is_stale(sky):
+    wide = satellite.spacecraft.mode(session.mode).frequency_mhz < NARROW_BEAM_MHZ
+    if wide or aim.useful_until is None or not aim.is_stale(sky):
         return None
     return (
         f"{session.pass_id} {session.mode}: elements of epoch {_iso(satellite.elements.epoch)} point this dish until"
@@ -112,7 +113,8 @@ def _table(mission: Mission, sky: Sky, aim: Aim, *, step_s: float, refracted: bo
     session = aim.session
     station, satellite = mission.station(session.station), mission.satellite(session.satellite)
     time_s = _moments(sky, aim.row, step_s)
-    view = look(*sky.track(session.satellite).at(time_s), station)
+    position_km, velocity_km_s = sky.track(session.satellite).at(time_s)
+    view = look(position_km, velocity_km_s, station)
     lift_deg = refraction_deg(view.elevation_deg, station.altitude_m / 1000) if refracted else np.zeros(len(time_s))
     frequencies_mhz = sorted({mode.frequency_mhz for mode in satellite.spacecraft.transmitter})
     columns = {
