@@ -74,8 +74,8 @@ class Clock:
 
     @cached_property
     def _ut1_less_utc(self):
-        """UT1 - UTC once a day, from two days before the span to two after (it drifts under 3 ms a day)."""
-        days = np.arange(-2, int(np.ceil(self.span_s / DAY_S)) + 3)
+        """UT1 - UTC once a day, from four days before the span to four after (it drifts under 3 ms a day)."""
+        days = np.arange(-4, int(np.ceil(self.span_s / DAY_S)) + 5)
         start = self.start
         moments = timescale().utc(start.year, start.month, start.day + days)
         return self.midnight_s(days), moments.dut1

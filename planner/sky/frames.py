@@ -9,7 +9,7 @@ from planner.units import DAY_S, EARTH_GM_KM3_S2, EARTH_RATE_RAD_S, dot
 
 # The celestial pole's motion within six hours is smooth to a hundredth of a milliarcsecond.
 POLE_SAMPLE_S = DAY_S / 4
-BEYOND_SPAN_S = 3 * DAY_S
+BEYOND_SPAN_S = 3 * DAY_S  # tracks reach nearly as far
 
 
 def turn(vector, angle_rad):

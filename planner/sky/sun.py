@@ -6,7 +6,7 @@ from functools import lru_cache
 import numpy as np
 
 from planner.sky.clock import Clock
-from planner.sky.frames import inertial_velocity_km_s, moments, turn
+from planner.sky.frames import BEYOND_SPAN_S, inertial_velocity_km_s, moments, turn
 from planner.sky.roots import crossings
 from planner.sky.track import place
 from planner.units import DAY_S, EARTH_FLATTENING, EARTH_RADIUS_KM, SUN_RADIUS_KM, dot, unit_vector
@@ -35,8 +35,7 @@ def _sun_table(clock: Clock):
     from scipy.interpolate import CubicSpline
     from skyfield.framelib import itrs
 
-    # a day and a half beyond the span: tracks reach there too
-    time_s = np.arange(-1.5 * DAY_S, clock.span_s + 1.5 * DAY_S + SAMPLE_S, SAMPLE_S)
+    time_s = np.arange(-BEYOND_SPAN_S, clock.span_s + BEYOND_SPAN_S + SAMPLE_S, SAMPLE_S)
     ephemeris = _ephemeris()
     fixed_km = ephemeris["earth"].at(moments(clock, time_s)).observe(ephemeris["sun"]).apparent().frame_xyz(itrs).km.T
     # smooth only in axes that do not turn with the Earth

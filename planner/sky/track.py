@@ -13,6 +13,7 @@ from planner.units import DAY_S, EARTH_GM_KM3_S2, EARTH_RATE_RAD_S, dot
 
 # What the interpolant may miss between grid points; the grid's step follows from it.
 INTERPOLATION_KM = 2e-4
+FARTHEST_BEYOND_S = 2.5 * DAY_S  # the Sun's table and UT1 reach a little farther
 
 __all__ = ["Track", "inertial_velocity_km_s", "track_elements", "track_satellite"]
 
@@ -144,7 +145,7 @@ def track_satellite(clock: Clock, satellite) -> Track:
 def track_elements(clock: Clock, name: str, elements: ElementSet | Ephemeris) -> Track:
     """As `track_satellite`, for bare elements. InputError where they cannot be carried through the span."""
     # A pass in progress at an end of the span is seen whole, and with it the others of its revolution.
-    beyond_s = min(DAY_S / elements.mean_motion_rev_day * 1.05, DAY_S)
+    beyond_s = min(DAY_S / elements.mean_motion_rev_day * 1.05, FARTHEST_BEYOND_S)
     time_s = grid_s(clock, elements, -beyond_s, clock.span_s + beyond_s)
     position_km, velocity_km_s, known = states(clock, name, elements, time_s)
     return Track(name, elements, time_s[known], position_km[known], velocity_km_s[known])
