@@ -28,8 +28,11 @@ def read_elements(path, at: datetime) -> dict[str, ElementSet | Ephemeris]:
     sets, faults = _parser(text)(text, str(path))
     if not sets and not faults:
         faults = [f"{path}: must hold at least one element set or ephemeris, got none"]
-    faults = faults + _name_faults(sets, path)
-    chosen = {name: _newest_before([one for one in sets if one.name == name], at) for name in {s.name: 0 for s in sets}}
+    by_name: dict[str, list] = {}
+    for one in sets:
+        by_name.setdefault(one.name, []).append(one)
+    faults = faults + _name_faults(by_name, path)
+    chosen = {name: _newest_before(candidates, at) for name, candidates in by_name.items()}
     for one in chosen.values():
         faults = faults + _sgp4_faults(one, path)
     if faults:
@@ -57,9 +60,9 @@ def _parser(text: str):
         return omm.parse_json
     if "," in first_line and "MEAN_MOTION" in first_line:
         return omm.parse_csv
-    if "CCSDS_OEM_VERS" in first_line:
+    if begin.startswith("CCSDS_OEM_VERS"):
         return oem.parse_oem
-    if "CCSDS_OMM_VERS" in first_line:
+    if begin.startswith("CCSDS_OMM_VERS"):
         return omm.parse_keywords
     return tle.parse_tle
 
@@ -70,13 +73,11 @@ def _newest_before(sets: list, at: datetime):
     return usable[-1].model_copy(update={"sets_in_file": len(sets)})
 
 
-def _name_faults(sets: list, path) -> list[str]:
+def _name_faults(by_name: dict[str, list], path) -> list[str]:
     """One name must mean one satellite."""
-    numbers: dict[str, set[str]] = {}
-    for one in sets:
-        numbers.setdefault(one.name, set()).add(one.catalog_number)
+    numbers = {name: sorted({one.catalog_number for one in candidates}) for name, candidates in by_name.items()}
     return [
-        f"{path}: {name}: one name must stand for one satellite, got catalogue numbers {', '.join(sorted(found))}"
+        f"{path}: {name}: one name must stand for one satellite, got catalogue numbers {', '.join(found)}"
         for name, found in numbers.items()
         if len(found) > 1
     ]

@@ -20,6 +20,7 @@ def parse_oem(text: str, path: str) -> tuple[list[Ephemeris], list[str]]:
     messages = []
     for name in dict.fromkeys(name for name, *_ in reader.segments):
         mine = [(object_id, segment) for owner, object_id, segment in reader.segments if owner == name]
+        mine.sort(key=lambda each: each[1].usable_from)
         epoch = reader.created or mine[0][1].moment[0]
         messages.append(
             Ephemeris(name=name, international_designator=mine[0][0], epoch=epoch, segment=tuple(s for _, s in mine))

@@ -257,6 +257,7 @@ def test_a_set_that_sgp4_refuses_tells_satellite_epoch_and_its_own_words(tmp_pat
         ("<ndm>", "must be well-formed XML in UTF-8, got "),
         ("OBJECT_NAME,MEAN_MOTION\na,b,c", "row 2: must have 2 columns as the header, got 3"),
         ("CCSDS_OMM_VERS = 3.0\nnonsense", "line 2: must be KEYWORD = value, got 'nonsense'"),
+        ("COMMENT CCSDS_OMM_VERS\nA = 1", "line 2: must begin a line 1 that a line 2 follows, got 'A = 1'"),
     ],
 )
 def test_other_text_is_refused_with_a_reason(tmp_path, text, rule):
@@ -323,3 +324,18 @@ def test_states_are_numbers_of_the_file():
     state = read_one(SAMPLES / "marshlight.oem").segment[0].state
     assert np.shape(state) == (561, 6)
     assert state[0] == (-4230.214858, -5446.924814, -602.558200, -0.410996550, 1.128081348, -7.493160374)
+
+
+def test_segments_out_of_order_are_put_in_order(tmp_path):
+    head, _, states = (SAMPLES / "marshlight.oem").read_text().partition("META_STOP\n\n")
+    rows = states.splitlines()
+    text = head.partition("META_START")[0]
+    for part in (rows[280:], rows[:281]):
+        start, stop = part[0].split()[0], part[-1].split()[0]
+        meta = "META_START" + head.partition("META_START")[2]
+        meta = meta.replace("START_TIME = 2026-12-06T22:00:00.000", f"START_TIME = {start}")
+        meta = meta.replace("STOP_TIME = 2026-12-08T02:00:00.000", f"STOP_TIME = {stop}")
+        text += meta + "META_STOP\n" + "\n".join(part) + "\n"
+    read = read_one(written(tmp_path, text))
+    assert [segment.usable_from.day for segment in read.segment] == [6, 7]
+    assert read.segment[0].usable_to == read.segment[1].usable_from
