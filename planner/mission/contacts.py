@@ -1,5 +1,6 @@
 """A plan as a file of contacts: ids, mode and transmit times are read; everything else is derived anew."""
 
+from collections.abc import Iterable
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -44,12 +45,16 @@ def read_contacts(path: str | Path, mission: Mission) -> list[StatedContact]:
     ------
     InputError : every row at fault, with line, column, rule and value
     """
-    path = Path(path)
+    return parse_contacts(path, read_table(Path(path), REQUIRED), mission)
+
+
+def parse_contacts(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission) -> list[StatedContact]:
+    """As `read_contacts`, from (line, {column: text}) rows; `place` is what messages begin with."""
     contacts, faults = [], []
-    for line, row in read_table(path, REQUIRED):
+    for line, row in rows:
         found = _row_faults(row, mission)
         if found:
-            faults.extend(f"{path}: line {line}: {fault}" for fault in found)
+            faults.extend(f"{place}: line {line}: {fault}" for fault in found)
         else:
             on_s, off_s = ((_utc(row[key]) - mission.start).total_seconds() for key in ("tx_on_utc", "tx_off_utc"))
             session = Session(on_s, off_s, row["satellite"], row["station"], row["mode"], row["pass_id"])

@@ -54,6 +54,7 @@ class Policy(Described):
     cost_mbit: NonNegative = Field(default=0.0, description="Mbit that one unit of station cost is worth")
     keep: tuple[str, ...] = Field(default=(), description="PASS:MODE")
     drop: tuple[str, ...] = Field(default=(), description="PASS")
+    replan_loss_pct: Percent = Field(default=1.0, description="volume a re-plan may give up to change fewer contacts")
     # elements and commands
     elements_refresh_days: Positive = 1.0
     elements_max_age_days: Positive = 14.0
@@ -138,6 +139,12 @@ class Spacecraft(Described):
         if unknown:
             raise ValueError(f"together_with must name modes of this satellite {modes}, got {unknown}")
         return transmitters
+
+    def may_overlap(self, a: str, b: str) -> bool:
+        """Whether two modes may be on air at once on one pass: both say so, and they ask for no two attitudes."""
+        first, second = self.mode(a), self.mode(b)
+        laws = {mode.session_law or self.pointing.session for mode in (first, second)} - {self.pointing.idle}
+        return a != b and b in first.together_with and a in second.together_with and len(laws) < 2
 
     def mode(self, name: str) -> Transmitter:
         """The transmitter setting of that name; KeyError otherwise."""

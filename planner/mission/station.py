@@ -90,9 +90,7 @@ class Station(Described):
     @classmethod
     def _a_circle_of_elevations(cls, points: tuple[tuple[float, float], ...]):
         azimuths = [azimuth for azimuth, _ in points]
-        if any(not 0 <= azimuth < 360 for azimuth in azimuths) or any(
-            b <= a for a, b in itertools.pairwise(azimuths)
-        ):
+        if any(not 0 <= azimuth < 360 for azimuth in azimuths) or any(b <= a for a, b in itertools.pairwise(azimuths)):
             raise ValueError(f"azimuths must rise from 0 to below 360 deg, got {azimuths}")
         if any(not 0 <= elevation < 90 for _, elevation in points):
             raise ValueError(f"elevations must be from 0 to below 90 deg, got {[elevation for _, elevation in points]}")

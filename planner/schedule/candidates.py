@@ -5,7 +5,6 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from planner.data.volume import Profile
-from planner.mission.contacts import Session
 from planner.mission.models import Satellite
 from planner.mission.transmitter import Transmitter
 from planner.schedule.energy import CORNER, Conversion, energy_states, idle_changes_s, least, likely, session_cost
@@ -14,19 +13,10 @@ from planner.schedule.problem import Problem
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
 from planner.schedule.week import Week
+from planner.schedule.wishes import Wishes
 from planner.sky.passes import Passes
 
 DAY_S = 86_400.0
-
-
-@dataclass(frozen=True)
-class Wishes:
-    """What the operator says by hand, beside the mission file's own lists."""
-
-    keep: frozenset[tuple[str, str]] = frozenset()  # (pass_id, mode)
-    drop: frozenset[str] = frozenset()  # pass_id
-    frozen: tuple[Session, ...] = ()
-    freeze_until_s: float = -np.inf
 
 
 @dataclass(frozen=True)
@@ -39,14 +29,18 @@ class Refusal:
     reason: str
 
 
-def find_candidates(week: Week, wishes: Wishes) -> tuple[list[Candidate], list[Refusal]]:
-    """Every usable window of every pass and mode, and a refusal for each pass and mode without one."""
+def find_candidates(
+    week: Week, wishes: Wishes, only: tuple[int, str] | None = None
+) -> tuple[list[Candidate], list[Refusal]]:
+    """Every usable window of every pass and mode (or of `only` one row and mode), and a refusal for each without one."""
     found: list[Candidate] = []
     refused: list[Refusal] = []
     frozen = {(session.pass_id, session.mode): session for session in wishes.frozen}
     for satellite in week.mission.satellites:
         for transmitter in satellite.spacecraft.transmitter:
             for row in week.links[satellite.name, transmitter.mode].pass_rows.tolist():
+                if only not in (None, (row, transmitter.mode)):
+                    continue
                 pass_id = week.sky.passes.pass_id[row]
                 session = frozen.get((pass_id, transmitter.mode))
                 verdict, windows = _windows(week, wishes, satellite, transmitter, row, session)
@@ -60,6 +54,7 @@ def find_candidates(week: Week, wishes: Wishes) -> tuple[list[Candidate], list[R
 def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
     """The optimiser's problem, costs of sessions and states of satellites filled in."""
     found, refused = find_candidates(week, wishes)
+    found = _with_bonus(week, wishes, found)
     states, priced = [], []
     for satellite in week.mission.satellites:
         own = [candidate for candidate in found if candidate.satellite == satellite.name]
@@ -77,11 +72,29 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
             span_s=week.mission.span_s,
             midnight_s=midnight_s[(midnight_s > 0) & (midnight_s < week.mission.span_s)],
             commands_until_s={s.name: commands_until_s(week, s) for s in week.mission.satellites},
+            overlapping={
+                (satellite.name, a.mode): frozenset(
+                    b.mode for b in satellite.spacecraft.transmitter if satellite.spacecraft.may_overlap(a.mode, b.mode)
+                )
+                for satellite in week.mission.satellites
+                for a in satellite.spacecraft.transmitter
+            },
             keep=wishes.keep | {(session.pass_id, session.mode) for session in wishes.frozen},
             frozen=wishes.frozen,
         ),
         refused,
     )
+
+
+def _with_bonus(week: Week, wishes: Wishes, found: list[Candidate]) -> list[Candidate]:
+    """A previous plan's sessions share policy.replan_loss_pct of their volume as a bonus for staying: so no more than
+    that share can be lost to change fewer of them."""
+    before = {(c.pass_id, c.mode): c for c in found if (c.pass_id, c.mode) in wishes.previous}
+    if not before:
+        return found
+    volume_mbit = sum(candidate.most_mbit for candidate in before.values())
+    bonus_mbit = week.mission.policy.replan_loss_pct / 100 * volume_mbit / len(wishes.previous)
+    return [replace(c, bonus_mbit=bonus_mbit) if (c.pass_id, c.mode) in before else c for c in found]
 
 
 def commands_until_s(week: Week, satellite: Satellite) -> float:

@@ -137,9 +137,8 @@ def _pairs(flown: Flown) -> Iterator[Fault]:
 
 def _too_close(flown: Flown, first: Session, second: Session, what: str) -> Iterator[Fault]:
     craft = flown.week.mission.satellite(first.satellite).spacecraft
-    if first.pass_id == second.pass_id and first.mode != second.mode:
-        if second.mode in craft.mode(first.mode).together_with and first.mode in craft.mode(second.mode).together_with:
-            return
+    if first.pass_id == second.pass_id and craft.may_overlap(first.mode, second.mode):
+        return
     warmup_s = flown.week.mission.satellite(second.satellite).spacecraft.mode(second.mode).warmup_s
     pause_s = second.tx_on_s - warmup_s - first.tx_off_s
     least_s = flown.week.mission.policy.turnaround_s

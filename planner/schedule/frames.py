@@ -1,5 +1,7 @@
 """What a set of sessions means, as the public tables: contacts, passes, battery, recorder."""
 
+from collections.abc import Sequence
+
 import numpy as np
 import pandas as pd
 
@@ -28,9 +30,9 @@ def contact_id(session: Session) -> str:
     return f"{session.pass_id}.{slug(session.mode)}"
 
 
-def contacts_frame(flown: Flown) -> pd.DataFrame:
-    """One row a contact, in order of time."""
-    rows = [_contact(flown, session) for session in flown.sessions]
+def contacts_frame(flown: Flown, sessions: Sequence[Session] | None = None) -> pd.DataFrame:
+    """One row a contact (of these sessions, or of all), in their order."""
+    rows = [_contact(flown, session) for session in (flown.sessions if sessions is None else sessions)]
     return pd.DataFrame(rows, columns=list(CONTACT_COLUMNS))
 
 

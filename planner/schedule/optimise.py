@@ -60,7 +60,8 @@ def plan_programme(problem: Problem) -> WeekProgramme:
         v = _session_variables(
             week,
             candidate,
-            flown_gain=-cost.per_pass * cost_mbit
+            flown_gain=candidate.bonus_mbit
+            - cost.per_pass * cost_mbit
             - largest * (FEWER_SESSIONS + EARLIER * candidate.opens_s / problem.span_s),
             second_gain=-cost.per_minute / 60 * cost_mbit,
         )

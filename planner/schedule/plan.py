@@ -4,7 +4,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 from planner.errors import NoWeekError
-from planner.schedule.candidates import Refusal, Wishes, pose
+from planner.schedule.candidates import Refusal, pose
 from planner.schedule.checks import breach_text
 from planner.schedule.flown import Flown
 from planner.schedule.optimise import bound_programme
@@ -12,6 +12,7 @@ from planner.schedule.problem import Problem
 from planner.schedule.programme import Solution, Solving
 from planner.schedule.search import Search, Stopwatch
 from planner.schedule.week import Progress, Week
+from planner.schedule.wishes import Wishes
 
 BOUND_GAP = 2e-3
 
@@ -36,7 +37,7 @@ class Plan:
 
 def make_plan(
     week: Week,
-    wishes: Wishes = Wishes(),
+    wishes: Wishes,
     *,
     time_limit_s: float | None = None,
     progress: Progress = lambda stage: None,

@@ -22,6 +22,7 @@ class Problem:
     keep : (pass_id, mode) that must fly;  frozen : sessions that must fly just as they are
     midnight_s : the UTC midnights within the span [s]
     commands_until_s : sessions that end before need no upload in the span, by satellite
+    overlapping : the modes that may be on air on the same pass as a satellite's mode
     """
 
     candidates: tuple[Candidate, ...]
@@ -31,6 +32,7 @@ class Problem:
     span_s: float
     midnight_s: np.ndarray
     commands_until_s: dict[str, float]
+    overlapping: dict[tuple[str, str], frozenset[str]]
     keep: frozenset[tuple[str, str]] = frozenset()
     frozen: tuple[Session, ...] = ()
 
@@ -71,7 +73,7 @@ class Problem:
     def apart_s(self, first: Candidate, second: Candidate) -> float:
         """Least time from `first`'s tx_off to `second`'s tx_on; -inf where the two may overlap."""
         if first.satellite == second.satellite:
-            if first.row == second.row and _together(first, second):
+            if first.row == second.row and second.mode in self.overlapping[first.satellite, first.mode]:
                 return -np.inf
             turn_s = self.policy.turnaround_s + second.transmitter.warmup_s
             rest_s = first.transmitter.cooldown_s if first.mode == second.mode else 0.0
@@ -107,7 +109,3 @@ class Problem:
         """Candidates that are ways of flying the same pass and mode: at most one of each is flown."""
         key = lambda i: (self.candidates[i].pass_id, self.candidates[i].mode)  # noqa: E731
         return [list(group) for _, group in groupby(sorted(range(len(self.candidates)), key=key), key=key)]
-
-
-def _together(a: Candidate, b: Candidate) -> bool:
-    return b.mode in a.transmitter.together_with and a.mode in b.transmitter.together_with

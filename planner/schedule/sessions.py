@@ -66,6 +66,7 @@ class Candidate:
     carries_commands: bool
     likely: EnergyCost = NO_COST
     least: EnergyCost = NO_COST
+    bonus_mbit: float = 0.0  # for staying as it was in a previous plan
     near_s: tuple[float, float] | None = None  # a start and stop at which the likely cost is to be exact
 
     @property

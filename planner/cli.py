@@ -1,0 +1,216 @@
+"""The commands: parse, call, print. `python -m planner COMMAND --help` shows an example of each."""
+
+import argparse
+import json
+import sys
+from datetime import datetime
+from pathlib import Path
+
+from planner import printing
+from planner.errors import InputError, MachineError, NoWeekError
+from planner.mission.files import DEFAULT_MISSION, load_mission
+
+DONE, NO, WRONG_INPUT, MACHINE, INTERRUPTED = 0, 1, 2, 3, 130
+KEEP_HELP = "fly this pass in this mode, as PASS:MODE (may be repeated)"
+
+
+def main(argv: list[str] | None = None) -> int:
+    """Run one command; its exit status."""
+    arguments = _parser().parse_args(argv)
+    try:
+        return arguments.run(arguments)
+    except InputError as error:
+        printing.fault(error.faults)
+        return WRONG_INPUT
+    except NoWeekError as error:
+        printing.fault(str(error).splitlines())
+        return NO
+    except MachineError as error:
+        printing.fault([str(error)])
+        return MACHINE
+    except OSError as error:
+        if isinstance(error, BrokenPipeError):
+            printing.close_quietly()
+            return DONE
+        printing.fault([f"{error.filename or 'the machine'}: {error.strerror or error}"])
+        return MACHINE
+    except KeyboardInterrupt:
+        printing.fault(["interrupted; nothing was written"])
+        return INTERRUPTED
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="python -m planner",
+        description="Plan a week of downlink sessions that a small satellite's battery can pay for.",
+        epilog="Exit status: 0 done; 1 the answer is no; 2 the input is wrong; 3 the machine could not; 130 interrupted.",
+    )
+    commands = parser.add_subparsers(dest="command", required=True, metavar="COMMAND")
+    add = _Adder(commands)
+    add("check", _check, "read and validate everything, print what was understood", "check missions/marshlight.toml")
+    passes = add("passes", _passes, "every pass in the span", "passes --csv passes.csv")
+    passes.add_argument("--csv", metavar="FILE", help="write the table to FILE instead of the screen")
+    _link_options(add("link", _link, "one link budget, line by line",
+                      'link --station "Dry Pan" --mode "K high rate" --elevation 30'))  # fmt: skip
+    _week_options(add("week", _week, "plan the week and write it into a folder", "week --out week"))
+    audit = add(
+        "audit", _audit, "check any contacts file against every limit", "audit week/contacts.csv", contacts=True
+    )
+    audit.add_argument("--json", action="store_true", help="print the verdict as JSON")
+    afford = add("afford", _afford, "can the battery pay for this one session?",
+                 'afford --pass PASS_ID --mode "K high rate" --contacts week/contacts.csv')  # fmt: skip
+    afford.add_argument("--pass", dest="pass_id", metavar="ID", required=True, help="pass id, as in passes.csv")
+    afford.add_argument("--mode", required=True, help="mode of the session")
+    afford.add_argument("--contacts", metavar="FILE", help="accepted contacts; without it the week is planned first")
+    afford.add_argument("--json", action="store_true", help="print the answer as JSON")
+    compare = add("compare", _compare, "what changed between two written weeks", "compare week_old week", mission=False)
+    compare.add_argument("old", metavar="OLD_DIR")
+    compare.add_argument("new", metavar="NEW_DIR")
+    _hand_over_options(add)
+    return parser
+
+
+class _Adder:
+    """Adds a command with what all of them share."""
+
+    def __init__(self, commands):
+        self._commands = commands
+
+    def __call__(self, name, run, text, example, *, mission=True, contacts=False) -> argparse.ArgumentParser:
+        command = self._commands.add_parser(
+            name,
+            help=text,
+            description=text[0].upper() + text[1:] + ".",
+            epilog=f"Example: python -m planner {example}",
+        )
+        if contacts:
+            command.add_argument("files", nargs="+", metavar="[MISSION] CONTACTS.csv",
+                                 help=f"mission file (default {DEFAULT_MISSION}) and contacts")  # fmt: skip
+        elif mission:
+            command.add_argument("mission", nargs="?", default=str(DEFAULT_MISSION), metavar="MISSION",
+                                 help=f"mission file (default {DEFAULT_MISSION})")  # fmt: skip
+        command.add_argument("--quiet", action="store_true", help="say only the answer")
+        command.add_argument("--verbose", action="store_true", help="log each stage and decision to standard error")
+        command.set_defaults(run=run)
+        return command
+
+
+def _link_options(link: argparse.ArgumentParser) -> None:
+    link.add_argument("--station", required=True)
+    link.add_argument("--mode", required=True)
+    where = link.add_mutually_exclusive_group(required=True)
+    where.add_argument("--elevation", type=float, metavar="DEG", help="at this elevation of a circular orbit")
+    where.add_argument("--pass", dest="pass_id", metavar="ID", help="at the highest moment of this pass")
+    link.add_argument("--satellite", metavar="N", help="needed where the mission has several")
+    link.add_argument("--modcod", metavar="NAME", help="instead of the fastest that holds")
+    link.add_argument("--availability", type=float, metavar="PCT", help="instead of the policy's")
+    link.add_argument("--json", action="store_true", help="print the budget as JSON")
+
+
+def _week_options(week: argparse.ArgumentParser) -> None:
+    week.add_argument("--out", required=True, metavar="DIR", help="folder for the files; replaced whole or not at all")
+    week.add_argument("--keep", action="append", default=[], metavar="PASS:MODE", help=KEEP_HELP)
+    week.add_argument("--drop", action="append", default=[], metavar="PASS", help="do not fly this pass (repeatable)")
+    week.add_argument("--from", dest="previous", metavar="CONTACTS.csv", help="change as few of these as possible")
+    week.add_argument("--freeze-until", metavar="UTC", help="contacts of --from that begin before stay as they are")
+    week.add_argument("--time-limit", type=float, metavar="S", help="best plan found in S seconds, its gap told")
+
+
+def _hand_over_options(add: _Adder) -> None:
+    pointing = add("pointing", _pointing, "pointing tables for the stations",
+                   "pointing --contacts week/contacts.csv --out pointing")  # fmt: skip
+    cards = add("cards", _cards, "a one-page card per contact, and the week sheet",
+                "cards --contacts week/contacts.csv --out cards")  # fmt: skip
+    for command in (pointing, cards):
+        command.add_argument("--contacts", required=True, metavar="FILE")
+        command.add_argument("--out", required=True, metavar="DIR")
+    pointing.add_argument("--step", type=float, default=1.0, metavar="S", help="seconds between rows (default 1)")
+    pointing.add_argument("--refracted", action="store_true", help="angles as seen through the air (ITU-R P.834)")
+    pointing.add_argument("--force", action="store_true", help="also where elements are too old for the beam")
+
+
+def _check(arguments) -> int:
+    from planner.commands import check
+
+    return check(load_mission(arguments.mission))
+
+
+def _passes(arguments) -> int:
+    from planner.commands import passes
+
+    return passes(load_mission(arguments.mission), arguments.csv)
+
+
+def _link(arguments) -> int:
+    from planner import link_budget
+
+    budget = link_budget(
+        load_mission(arguments.mission),
+        arguments.station,
+        arguments.mode,
+        elevation_deg=arguments.elevation,
+        pass_id=arguments.pass_id,
+        satellite=arguments.satellite,
+        modcod=arguments.modcod,
+        availability_pct=arguments.availability,
+    )
+    printing.say(json.dumps(budget.as_dict(), indent=2) if arguments.json else str(budget))
+    return DONE
+
+
+def _week(arguments) -> int:
+    from planner.commands import week
+
+    freeze = None if arguments.freeze_until is None else _moment(arguments.freeze_until)
+    if arguments.time_limit is not None and not 0 < arguments.time_limit < 1e6:
+        raise InputError(f"--time-limit must be above 0 s and below 1e6 s, got {arguments.time_limit:g}")
+    return week(load_mission(arguments.mission), arguments, freeze)
+
+
+def _moment(text: str) -> datetime:
+    try:
+        moment = datetime.fromisoformat(text)
+    except ValueError:
+        raise InputError(f"--freeze-until must be a time such as 2026-12-08T06:00:00Z, got {text!r}") from None
+    if moment.tzinfo is None:
+        raise InputError(f"--freeze-until must carry a time zone (append Z for UTC), got {text!r}")
+    return moment
+
+
+def _audit(arguments) -> int:
+    from planner.commands import show_audit
+
+    if len(arguments.files) > 2:
+        raise InputError(f"audit takes a mission file and a contacts file, got {len(arguments.files)} files")
+    mission, contacts = [str(DEFAULT_MISSION), *arguments.files][-2:]
+    return show_audit(load_mission(mission), contacts, arguments.json)
+
+
+def _afford(arguments) -> int:
+    from planner.commands import show_affordability
+
+    return show_affordability(
+        load_mission(arguments.mission), arguments.pass_id, arguments.mode, arguments.contacts, arguments.json
+    )
+
+
+def _compare(arguments) -> int:
+    from planner.commands import show_comparison
+
+    return show_comparison(arguments.old, arguments.new)
+
+
+def _pointing(arguments) -> int:
+    from planner.commands import write_pointing
+
+    return write_pointing(load_mission(arguments.mission), arguments)
+
+
+def _cards(arguments) -> int:
+    from planner.commands import write_cards
+
+    return write_cards(load_mission(arguments.mission), Path(arguments.contacts), Path(arguments.out))
+
+
+if __name__ == "__main__":
+    sys.exit(main())

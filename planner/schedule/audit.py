@@ -1,0 +1,143 @@
+"""Any set of contacts, checked from its ids, modes and transmit times alone."""
+
+from dataclasses import dataclass
+from pathlib import Path
+
+import pandas as pd
+
+from planner.mission.contacts import StatedContact, parse_contacts, read_contacts
+from planner.mission.models import Mission
+from planner.schedule import frames
+from planner.schedule.checks import Fault, find_faults
+from planner.schedule.flown import Flown
+from planner.schedule.result import prepared
+from planner.schedule.wishes import read_wishes
+
+ANGLE_OR_SHARE = 5e-3  # stated figures have two to three decimals: half of the last one, doubled for rounding twice
+
+
+@dataclass(frozen=True)
+class Stale:
+    """A figure that a contacts file states and that is not what it would be now."""
+
+    line: int
+    contact: str
+    column: str
+    stated: str
+    now: str
+
+    @property
+    def text(self) -> str:
+        return f"line {self.line}: {self.contact}: {self.column} states {self.stated}, is now {self.now}"
+
+
+@dataclass(frozen=True, eq=False)
+class Audit:
+    """The verdict on a set of contacts: every broken rule, and every stale figure (which breaks nothing)."""
+
+    flown: Flown
+    faults: tuple[Fault, ...]
+    stale: tuple[Stale, ...]
+    lines: dict
+
+    @property
+    def safe(self) -> bool:
+        return not self.faults
+
+    def texts(self) -> list[str]:
+        """One line a fault, with the contact and where it stands in the file."""
+        return [self._place(fault) + fault.text for fault in self.faults]
+
+    def _place(self, fault: Fault) -> str:
+        if fault.session is None:
+            return ""
+        return f"line {self.lines[fault.session]}: {frames.contact_id(fault.session)}: "
+
+    def as_dict(self) -> dict:
+        return {
+            "safe": self.safe,
+            "contacts": len(self.flown.sessions),
+            "faults": [
+                {
+                    "rule": fault.rule,
+                    "contact_id": None if fault.session is None else frames.contact_id(fault.session),
+                    "line": None if fault.session is None else self.lines[fault.session],
+                    "time_utc": self.flown.week.sky.clock.iso(fault.time_s),
+                    "value": None if fault.value != fault.value else float(fault.value),
+                    "bound": None if fault.bound != fault.bound else float(fault.bound),
+                    "unit": fault.unit,
+                    "text": fault.text,
+                }
+                for fault in self.faults
+            ],
+            "stale": [vars(figure) for figure in self.stale],
+        }
+
+
+def audit(mission: Mission, contacts) -> Audit:
+    """Recompute everything that a set of contacts claims.
+
+    Parameters
+    ----------
+    contacts : path of a contacts CSV, or its table
+
+    Raises
+    ------
+    InputError : the file cannot be read as contacts of this mission
+    """
+    stated = _stated(mission, contacts)
+    week = prepared(mission)
+    flown = Flown(week, tuple(contact.session for contact in stated))
+    faults = [*find_faults(flown), *_wishes_broken(flown)]
+    lines = {contact.session: contact.line for contact in stated}
+    return Audit(flown, tuple(faults), tuple(_stale(flown, stated)), lines)
+
+
+def _stated(mission: Mission, contacts) -> list[StatedContact]:
+    if isinstance(contacts, str | Path):
+        return read_contacts(contacts, mission)
+    table: pd.DataFrame = contacts
+    rows = [(index + 2, row) for index, row in enumerate(table.astype(str).to_dict("records"))]
+    return parse_contacts("contacts", rows, mission)
+
+
+def _wishes_broken(flown: Flown) -> list[Fault]:
+    """The mission file's own keep and drop lists."""
+    wishes = read_wishes(flown.week, (), (), None, None)
+    planned = {(session.pass_id, session.mode) for session in flown.sessions}
+    nan = float("nan")
+    missing = [f"{pass_id}:{mode} must be kept and is not planned" for pass_id, mode in sorted(wishes.keep - planned)]
+    faults = [Fault("keep", None, 0.0, nan, nan, "", text) for text in missing]
+    unwanted = [session for session in flown.sessions if session.pass_id in wishes.drop]
+    text = "its pass is dropped by the mission file"
+    return faults + [Fault("drop", session, session.tx_on_s, nan, nan, "", text) for session in unwanted]
+
+
+def _stale(flown: Flown, stated: list[StatedContact]) -> list[Stale]:
+    known = [contact for contact in stated if contact.session in flown.coding]
+    if not known:
+        return []
+    now = frames.contacts_frame(flown, [contact.session for contact in known])
+    found = []
+    for contact, row in zip(known, now.to_dict("records"), strict=True):
+        for column in frames.CONTACT_COLUMNS:
+            if column in contact.stated and not _agrees(contact.stated[column], row[column]):
+                name = frames.contact_id(contact.session)
+                found.append(Stale(contact.line, name, column, contact.stated[column], _shown(row[column])))
+    return found
+
+
+def _agrees(stated: str, now) -> bool:
+    """Equal as far as the stated text has digits."""
+    if isinstance(now, str):
+        return stated.strip() == now.strip()
+    try:
+        number = float(stated)
+    except ValueError:
+        return False
+    decimals = len(stated.partition(".")[2])
+    return abs(number - float(now)) <= 0.75 * 10.0**-decimals
+
+
+def _shown(value) -> str:
+    return value if isinstance(value, str) else f"{float(value):.3f}"

@@ -1,0 +1,184 @@
+"""The planned week as the outside sees it: four tables and a summary."""
+
+import platform
+from collections.abc import Callable, Iterable
+from dataclasses import dataclass
+from datetime import datetime
+from functools import cached_property, lru_cache
+from importlib.metadata import version
+
+import numpy as np
+import pandas as pd
+
+from planner.link import check_modes
+from planner.mission.models import Mission
+from planner.schedule import frames
+from planner.schedule.flown import Flown
+from planner.schedule.plan import Plan, make_plan
+from planner.schedule.reasons import verdicts
+from planner.schedule.week import Progress, Week, prepare
+from planner.schedule.wishes import read_wishes
+from planner.units import DAY_S
+
+PACKAGES = ("downlink-planner", "itur", "numpy", "pandas", "scipy", "sgp4", "skyfield", "skyfield-data")
+CAUTIONS = (
+    "Planning aid: flight rules, the operator's licence and licensed practice come first.",
+    "Power flux-density is compared with ITU Radio Regulations Table 21-4 as transcribed; check the current Radio"
+    " Regulations and your licence.",
+    "Antennas move without warning and transmit: keep clear of dishes and follow the station's exposure rules.",
+    "Lithium cells: limits here are the mission file's; the cell maker's and the safety review's limits come first.",
+)
+
+
+@dataclass(frozen=True, eq=False)
+class GivenWeek:
+    """A set of sessions, whoever chose them, as public tables. Columns are those of the files of the same names."""
+
+    flown: Flown
+
+    @cached_property
+    def contacts(self) -> pd.DataFrame:
+        return frames.contacts_frame(self.flown)
+
+    @cached_property
+    def passes(self) -> pd.DataFrame:
+        """Every pass, those with a contact marked planned."""
+        modes: dict[str, list[str]] = {}
+        for session in self.flown.sessions:
+            modes.setdefault(session.pass_id, []).append(session.mode)
+        sky = self.flown.week.sky
+        planned = [" and ".join(modes.get(pass_id, [])) for pass_id in sky.passes.pass_id]
+        verdict = ["planned" if reason else "left out" for reason in planned]
+        return sky.passes.frame(sky.clock).assign(verdict=verdict, reason=planned)
+
+    @cached_property
+    def battery(self) -> pd.DataFrame:
+        return frames.battery_frame(self.flown)
+
+    @cached_property
+    def recorder(self) -> pd.DataFrame:
+        return frames.recorder_frame(self.flown)
+
+    @cached_property
+    def summary(self) -> dict:
+        """The week in figures; volumes in Mbit, charge at the pessimistic corner."""
+        flown, mission = self.flown, self.flown.week.mission
+        worst, stored = flown.worst.values(), flown.recorder.values()
+        return {
+            "mission": mission.name,
+            "start": mission.start.isoformat(),
+            "days": mission.days,
+            "satellites": len(mission.satellites),
+            "stations": len(mission.stations),
+            "passes": len(flown.week.sky.passes),
+            "contacts": len(flown.sessions),
+            "volume_mbit": _rounded(flown.total_mbit, 3),
+            "expected_volume_mbit": _rounded(float(self.contacts["expected_volume_mbit"].sum()), 3),
+            "soc_min_pct": _rounded(min(float(series.soc_pct.min()) for series in worst), 3),
+            "soc_floor_pct": mission.policy.soc_floor_pct,
+            "soc_end_pct": _rounded(min(float(series.soc_pct[-1]) for series in worst), 3),
+            "stored_end_mbit": _rounded(sum(float(series.stored_mbit[-1]) for series in stored), 3),
+            "lost_mbit": _rounded(sum(float(series.lost_mbit[-1]) for series in stored), 3),
+            "elements_age_days_max": _rounded(_oldest_age_days(flown), 4),
+            "cautions": self._cautions(),
+            "policy": mission.policy.model_dump(mode="json"),
+            "versions": {"python": platform.python_version()} | {name: version(name) for name in PACKAGES},
+            "inputs": dict(mission.inputs),
+        }
+
+    def _cautions(self) -> list[str]:
+        policy = self.flown.week.mission.policy
+        own = [
+            f"Planned on elements renewed every {policy.elements_refresh_days:g} days; each contact says with which"
+            " epoch its dish still points (elements_newer_than_utc)."
+        ]
+        over = int(self.contacts["cautions"].str.contains("flux").sum())
+        if over:
+            own.append(f"{over} contacts exceed the transcribed flux limit at some moment; see their cautions.")
+        return [*CAUTIONS, *own]
+
+
+@dataclass(frozen=True, eq=False)
+class WeekPlan(GivenWeek):
+    """A plan that keeps every limit at the pessimistic corner, with the reason for every pass and the proof."""
+
+    plan: Plan
+
+    @classmethod
+    def of(cls, plan: Plan) -> "WeekPlan":
+        return cls(plan.flown, plan)
+
+    @cached_property
+    def passes(self) -> pd.DataFrame:
+        """Every pass with its verdict and the reason for it."""
+        found = verdicts(self.plan.flown, self.plan.problem, self.plan.refusals)
+        sky = self.flown.week.sky
+        return sky.passes.frame(sky.clock).assign(verdict=[v for v, _ in found], reason=[r for _, r in found])
+
+    @cached_property
+    def summary(self) -> dict:
+        """As `GivenWeek.summary`, with how good the plan is."""
+        plan = self.plan
+        return super().summary | {
+            "upper_bound_mbit": _rounded(plan.upper_bound_mbit, 3),
+            "gap_pct": _rounded(plan.gap_pct, 4),
+            "objective": _rounded(plan.solution.objective, 3),
+            "objective_bound": _rounded(plan.solution.bound, 3),
+            "solver_gap_pct": _rounded(plan.solution.gap_pct, 4),
+            "status": plan.solution.status,
+            "solutions": plan.solutions,
+        }
+
+
+def _oldest_age_days(flown) -> float:
+    """Age of the file's elements at the last transmission that relies on them."""
+    epochs = {satellite.name: satellite.elements.epoch for satellite in flown.week.mission.satellites}
+    start = flown.week.mission.start
+    ages = [(start - epochs[s.satellite]).total_seconds() + s.tx_off_s for s in flown.sessions]
+    return max(ages, default=0.0) / DAY_S
+
+
+def _rounded(value: float, digits: int) -> float | None:
+    return round(float(value), digits) if np.isfinite(value) else None
+
+
+@lru_cache(maxsize=2)
+def prepared(mission: Mission) -> Week:
+    """The mission's week, computed once for all questions about the same mission."""
+    check_modes(mission)
+    return prepare(mission)
+
+
+def plan_week(
+    mission: Mission,
+    *,
+    keep: Iterable[str] = (),
+    drop: Iterable[str] = (),
+    previous=None,
+    freeze_until: datetime | None = None,
+    time_limit_s: float | None = None,
+    progress: Progress | None = None,
+    cancelled: Callable[[], bool] = lambda: False,
+) -> WeekPlan:
+    """The best week of sessions that the battery can pay for.
+
+    Parameters
+    ----------
+    keep, drop : "PASS:MODE" that must fly, pass ids that must not, beside the mission file's own lists
+    previous : contacts (path, table or sessions) that should stay where that costs at most policy.replan_loss_pct
+    freeze_until : previous contacts that power on before stay just as they are, and nothing new begins before
+    time_limit_s : seconds for the solver; the best plan found by then is taken and its gap told
+    progress : hears the name of each stage
+    cancelled : asked every 50 ms while the solver runs
+
+    Raises
+    ------
+    InputError : a wish names what does not exist
+    NoWeekError : no week keeps the limits
+    KeyboardInterrupt : cancelled
+    """
+    tell = progress or (lambda stage: None)
+    tell("passes, links and power")
+    week = prepared(mission)
+    wishes = read_wishes(week, keep, drop, previous, freeze_until)
+    return WeekPlan.of(make_plan(week, wishes, time_limit_s=time_limit_s, progress=tell, cancelled=cancelled))

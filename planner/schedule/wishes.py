@@ -1,0 +1,96 @@
+"""What the operator says by hand: keep, drop, a previous plan, a freeze."""
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+from datetime import datetime
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+
+from planner.errors import InputError
+from planner.mission.contacts import Session, parse_contacts, read_contacts
+from planner.mission.models import Mission
+from planner.mission.text import nearest
+from planner.schedule.week import Week
+
+
+@dataclass(frozen=True)
+class Wishes:
+    """Hand steering, names checked.
+
+    keep : (pass_id, mode) that must fly;  drop : pass ids that must not
+    previous : sessions that should stay where that costs little;  frozen : those that stay just as they are
+    freeze_until_s : no other session begins before [s after the start]
+    """
+
+    keep: frozenset[tuple[str, str]] = frozenset()
+    drop: frozenset[str] = frozenset()
+    previous: frozenset[tuple[str, str]] = frozenset()
+    frozen: tuple[Session, ...] = ()
+    freeze_until_s: float = -np.inf
+
+
+def read_wishes(
+    week: Week, keep: Iterable[str], drop: Iterable[str], previous, freeze_until: datetime | None
+) -> Wishes:
+    """Wishes from the mission file's lists and these.
+
+    Raises
+    ------
+    InputError : unknown pass or mode, a pass both kept and dropped, a freeze without a time zone or previous plan
+    """
+    policy = week.mission.policy
+    kept = [_pass_and_mode(week, entry) for entry in (*policy.keep, *keep)]
+    dropped = [_known_pass(week, entry, "drop") for entry in (*policy.drop, *drop)]
+    both = sorted({pass_id for pass_id, _ in kept} & set(dropped))
+    if both:
+        raise InputError(*(f"pass {pass_id} must not be both kept and dropped" for pass_id in both))
+    sessions = sessions_of(previous, week.mission) if previous is not None else []
+    freeze_s = -np.inf
+    if freeze_until is not None:
+        if previous is None:
+            raise InputError("freeze_until needs the previous contacts that stay frozen (--from CONTACTS.csv)")
+        if freeze_until.tzinfo is None:
+            raise InputError(f"freeze_until must carry a time zone (append Z for UTC), got {freeze_until.isoformat()}")
+        freeze_s = (freeze_until - week.mission.start).total_seconds()
+    frozen = tuple(session for session in sessions if _begins_s(week, session) < max(freeze_s, 0.0))
+    return Wishes(
+        keep=frozenset(kept),
+        drop=frozenset(dropped),
+        previous=frozenset((s.pass_id, s.mode) for s in sessions),
+        frozen=tuple(session for session in frozen if session.pass_id in week.row_of),
+        freeze_until_s=freeze_s,
+    )
+
+
+def sessions_of(contacts, mission: Mission) -> list[Session]:
+    """Sessions from a path, a contacts table, or sessions themselves."""
+    if isinstance(contacts, str | Path):
+        return [contact.session for contact in read_contacts(contacts, mission)]
+    if isinstance(contacts, pd.DataFrame):
+        rows = [(index + 2, row) for index, row in enumerate(contacts.astype(str).to_dict("records"))]
+        return [contact.session for contact in parse_contacts("contacts", rows, mission)]
+    return sorted(contacts)
+
+
+def _begins_s(week: Week, session: Session) -> float:
+    return session.tx_on_s - week.mission.satellite(session.satellite).spacecraft.mode(session.mode).warmup_s
+
+
+def _pass_and_mode(week: Week, entry: str) -> tuple[str, str]:
+    pass_id, _, mode = entry.partition(":")
+    _known_pass(week, pass_id, "keep")
+    satellite = week.sky.passes.satellite[week.row_of[pass_id]]
+    modes = [transmitter.mode for transmitter in week.mission.satellite(satellite).spacecraft.transmitter]
+    if mode not in modes:
+        raise InputError(f"keep: must be PASS:MODE with a mode of {modes}, got {entry!r}{nearest(mode, modes)}")
+    return pass_id, mode
+
+
+def _known_pass(week: Week, pass_id: str, what: str) -> str:
+    if pass_id not in week.row_of:
+        raise InputError(
+            f"{what}: must be the id of a pass in the span, got {pass_id!r}{nearest(pass_id, week.row_of)}"
+        )
+    return pass_id
