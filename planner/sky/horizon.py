@@ -143,20 +143,16 @@ def _stretches(track: Track, sites: Sites, nodes: _Nodes) -> Arcs:
         nodes.clearance_km[k + 1],
     )
     rise_s[rising], set_s[setting] = np.split(crossing_s, [rising.sum()])
-    return Arcs(nodes.station_index[rises], rise_s, _peaks(track, sites, nodes, rises, sets), set_s)
+    return Arcs(nodes.station_index[rises], rise_s, _peaks(track, sites, nodes, above, rises), set_s)
 
 
-def _peaks(track: Track, sites: Sites, nodes: _Nodes, rises, sets):
-    """Time of the highest node of each run rises[k]..sets[k]."""
-    length = sets - rises + 1
-    run = np.repeat(np.arange(len(rises)), length)
-    node = np.arange(length.sum()) + (rises - np.cumsum(length) + length)[run]
-    # a top is a node where the climb ends; a run has one as a rule, and an end of the track may be higher
-    top = node[(nodes.climb[node] == 0) | ~nodes.linked[node] | ~np.append(False, nodes.linked)[node]]
-    owner = np.searchsorted(rises, top, side="right") - 1
+def _peaks(track: Track, sites: Sites, nodes: _Nodes, above, rises):
+    """Time of the highest of the nodes `above` the mask in each stretch that begins at the nodes `rises`."""
+    # where the climb ends; a stretch has one such node as a rule, and an end of the track may be higher
+    top = np.flatnonzero(above & ((nodes.climb == 0) | ~nodes.linked | ~np.append(False, nodes.linked[:-1])))
     if len(top) == len(rises):
         return nodes.time_s[top]
-    station = nodes.station_index[top]
+    station, owner = nodes.station_index[top], np.searchsorted(rises, top, side="right") - 1
     sine = _sine(track.at(nodes.time_s[top])[0], sites.position_km[station], sites.axes[station, 2])
     order = np.lexsort((sine, owner))
     last = np.searchsorted(owner[order], np.arange(len(rises)), side="right") - 1

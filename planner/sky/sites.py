@@ -29,45 +29,39 @@ class Sites:
     @classmethod
     def of(cls, stations) -> "Sites":
         stations = tuple(stations)
-        return cls(
-            stations,
-            np.array([station_position_km(station) for station in stations]).reshape(-1, 3),
-            np.array([local_axes(station) for station in stations]).reshape(-1, 3, 3),
-            np.array([_lowest_mask_deg(station) for station in stations]),
-        )
-
-    def mask_deg(self, station_index, azimuth_deg):
-        """The elevation a satellite must stand above at these azimuths, (n,)."""
-        mask = self.floor_deg[station_index]
-        for index, station in enumerate(self.stations):
-            if station.horizon and (here := station_index == index).any():
-                mask[here] = mask_deg(station, azimuth_deg[here])
-        return mask
+        place = [(station.latitude_deg, station.longitude_deg, station.altitude_m) for station in stations]
+        latitude_deg, longitude_deg, altitude_m = np.array(place, dtype=float).reshape(-1, 3).T
+        floor_deg = np.array([_lowest_mask_deg(station) for station in stations])
+        position_km = _position_km(latitude_deg, longitude_deg, altitude_m)
+        return cls(stations, position_km, _axes(latitude_deg, longitude_deg), floor_deg)
 
 
 def station_position_km(station) -> np.ndarray:
     """Earth-fixed position (3,) [km] of a station on the WGS 84 ellipsoid."""
-    latitude, longitude = np.radians(station.latitude_deg), np.radians(station.longitude_deg)
+    return _position_km(station.latitude_deg, station.longitude_deg, station.altitude_m)
+
+
+def _position_km(latitude_deg, longitude_deg, altitude_m):
+    """(..., 3) from geodetic coordinates (...): textbook formula, from memory."""
+    latitude, longitude, height_km = np.radians(latitude_deg), np.radians(longitude_deg), altitude_m / 1000
     squeeze = (1 - EARTH_FLATTENING) ** 2
     normal_km = EARTH_RADIUS_KM / np.sqrt(np.cos(latitude) ** 2 + squeeze * np.sin(latitude) ** 2)
-    height_km = station.altitude_m / 1000
-    out_km = (normal_km + height_km) * np.cos(latitude)
-    return np.array(
-        [out_km * np.cos(longitude), out_km * np.sin(longitude), (squeeze * normal_km + height_km) * np.sin(latitude)]
-    )
+    out_km, up_km = (normal_km + height_km) * np.cos(latitude), (squeeze * normal_km + height_km) * np.sin(latitude)
+    return np.stack([out_km * np.cos(longitude), out_km * np.sin(longitude), up_km], axis=-1)
 
 
 def local_axes(station) -> np.ndarray:
     """East, north and up (rows of a (3, 3) array) at a station; at a pole "north" is along its given longitude."""
-    latitude, longitude = np.radians(station.latitude_deg), np.radians(station.longitude_deg)
+    return _axes(station.latitude_deg, station.longitude_deg)
+
+
+def _axes(latitude_deg, longitude_deg):
+    latitude, longitude = np.radians(latitude_deg), np.radians(longitude_deg)
     sin_lat, cos_lat, sin_lon, cos_lon = np.sin(latitude), np.cos(latitude), np.sin(longitude), np.cos(longitude)
-    return np.array(
-        [
-            [-sin_lon, cos_lon, 0.0],
-            [-sin_lat * cos_lon, -sin_lat * sin_lon, cos_lat],
-            [cos_lat * cos_lon, cos_lat * sin_lon, sin_lat],
-        ]
-    )
+    east = np.stack([-sin_lon, cos_lon, np.zeros_like(sin_lon)], axis=-1)
+    north = np.stack([-sin_lat * cos_lon, -sin_lat * sin_lon, cos_lat], axis=-1)
+    up = np.stack([cos_lat * cos_lon, cos_lat * sin_lon, sin_lat], axis=-1)
+    return np.stack([east, north, up], axis=-2)
 
 
 def mask_deg(station, azimuth_deg):

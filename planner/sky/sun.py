@@ -76,23 +76,40 @@ def _length(vector):
     return np.sqrt(dot(vector, vector))[..., None]
 
 
+def _height_km(here, line):
+    """Height over the sphere of a line of sight from `here`, where it comes nearest, (...)."""
+    ahead_km = np.minimum(dot(here, line), 0.0)
+    return np.sqrt(dot(here, here) - ahead_km**2) - EARTH_RADIUS_KM
+
+
 def visible_sun_fraction(position_km, sun_km):
     """Share of the Sun's disc that the oblate Earth leaves visible, (...) from 0 (umbra) to 1 (sunlight).
 
     Cones over the ellipsoid, so the penumbra is included; the disc is uniform (no limb darkening), air is neglected.
-    The overlap of two circles is that of plane geometry, the Earth's limb with the curvature it has on the sphere.
+    For satellites nearer than the umbra's tip at 1.38 million km, where the Earth covers the whole Sun.
     """
-    here, (near, centre, far) = _lines_of_sight(position_km, sun_km, (-1.0, 0.0, 1.0))
+    position_km, sun_km = np.broadcast_arrays(position_km, sun_km)
+    here, (near, far) = _lines_of_sight(position_km, sun_km, (-1.0, 1.0))
+    near_km, far_km = _height_km(here, near), _height_km(here, far)
+    fraction = np.asarray(near_km >= 0, dtype=float)
+    partly = (near_km < 0) & (far_km > 0)
+    fraction[partly] = _share_above_the_limb(here[partly], near[partly], far[partly])
+    return fraction[()]
+
+
+def _share_above_the_limb(here, near, far):
+    """Share of the disc between `near` and `far`, (m, 3) each, that a sphere leaves visible, (m,).
+
+    The overlap of two circles of plane geometry, the Earth's limb with the curvature it has on the sky's sphere.
+    """
     radius_km = _length(here)[..., 0]
-    earth_rad = np.arcsin(np.minimum(EARTH_RADIUS_KM / radius_km, 1.0))
-    above_rad = np.arccos(np.clip(-dot(here, centre) / radius_km, -1, 1)) - earth_rad
-    sun_rad = _length(far - near)[..., 0] / 2
-    limb_rad = np.tan(np.minimum(earth_rad, np.pi / 2 - 1e-6))
-    distance = np.clip(limb_rad + above_rad, np.abs(limb_rad - sun_rad), limb_rad + sun_rad)
+    earth_rad = np.arcsin(EARTH_RADIUS_KM / radius_km)
+    near_rad, far_rad = (np.arccos(np.clip(-dot(here, line) / radius_km, -1, 1)) - earth_rad for line in (near, far))
+    sun_rad, limb_rad = (far_rad - near_rad) / 2, np.tan(earth_rad)
+    distance = limb_rad + (far_rad + near_rad) / 2
     # half the chord's angles at the Sun's and at the Earth's centre
-    x = (distance**2 + sun_rad**2 - limb_rad**2) / (2 * distance * sun_rad)
-    y = (distance**2 + limb_rad**2 - sun_rad**2) / (2 * distance * limb_rad)
-    a, b = np.arccos(np.clip(x, -1, 1)), np.arccos(np.clip(y, -1, 1))
+    a = np.arccos((distance**2 + sun_rad**2 - limb_rad**2) / (2 * distance * sun_rad))
+    b = np.arccos((distance**2 + limb_rad**2 - sun_rad**2) / (2 * distance * limb_rad))
     covered = sun_rad**2 * (a - np.sin(2 * a) / 2) + limb_rad**2 * (b - np.sin(2 * b) / 2)
     return np.clip(1 - covered / (np.pi * sun_rad**2), 0.0, 1.0)
 
@@ -108,11 +125,9 @@ def eclipse_edges_s(track, clock: Clock, within=True):
     quintics, begin_s = track.quintics[..., interval], track.time_s[interval]
 
     def height_km(time_s, k):
-        """Of the line of sight to the Sun's edge above the Earth, where it comes nearest."""
         position_km = place(quintics[..., k], time_s - begin_s[k]).T
         here, (edge,) = _lines_of_sight(position_km, sun_position_km(clock, time_s), [side[k][:, None]])
-        ahead_km = np.minimum(dot(here, edge), 0.0)
-        return np.sqrt(dot(here, here) - ahead_km**2) - EARTH_RADIUS_KM
+        return _height_km(here, edge)
 
     return np.sort(crossings(height_km, begin_s, track.time_s[interval + 1])[1])
 
