@@ -18,7 +18,7 @@ from planner.schedule.states import SatelliteStates
 from planner.schedule.week import Progress, Week
 
 SOLVER_GAP = 1e-3  # a plan is held to 0.1 % of its programme's optimum …
-RELATIVE_GAP = 7e-4  # … of which rounding and mending may take a little
+RELATIVE_GAP = 8.5e-4  # … of which rounding and mending may take a little
 COARSE_GAP = 1e-2
 APPROACHES = 2  # after them the corrections hardly move
 MOST_FULL_SOLVES, MOST_MENDS = 3, 8
