@@ -43,19 +43,20 @@ class Track:
         Hermite's of position, velocity and acceleration; the latter from the states of three neighbouring points.
         Moments stand last here, unlike elsewhere: the arithmetic runs along them.
         """
-        h = np.diff(self.time_s)[:, None]
-        acceleration = _accelerations(self.time_s, self.position_km, self.velocity_km_s)
-        c0, c1, c2 = self.position_km[:-1], self.velocity_km_s[:-1], acceleration[:-1] / 2
+        position, velocity = (np.ascontiguousarray(part.T) for part in (self.position_km, self.velocity_km_s))
+        acceleration = _accelerations(self.time_s, position, velocity)
+        h = np.diff(self.time_s)
+        c0, c1, c2 = position[:, :-1], velocity[:, :-1], acceleration[:, :-1] / 2
         # what position, velocity and acceleration still lack at the right end
-        d0 = self.position_km[1:] - ((c2 * h + c1) * h + c0)
-        d1 = (self.velocity_km_s[1:] - (2 * c2 * h + c1)) * h
-        d2 = (acceleration[1:] - 2 * c2) * h**2
+        d0 = position[:, 1:] - ((c2 * h + c1) * h + c0)
+        d1 = (velocity[:, 1:] - (2 * c2 * h + c1)) * h
+        d2 = (acceleration[:, 1:] - 2 * c2) * h**2
         c3, c4, c5 = (
             (10 * d0 - 4 * d1 + d2 / 2) / h**3,
             (7 * d1 - 15 * d0 - d2) / h**4,
             (6 * d0 - 3 * d1 + d2 / 2) / h**5,
         )
-        return np.ascontiguousarray(np.stack([c0, c1, c2, c3, c4, c5]).swapaxes(1, 2))
+        return np.stack([c0, c1, c2, c3, c4, c5])
 
     @cached_property
     def bulge_km(self) -> np.ndarray:
@@ -116,13 +117,12 @@ def place(quintics, seconds):
 
 
 def _accelerations(time_s, position_km, velocity_km_s):
-    """Acceleration at each grid point (n, 3), from the states of the point and its neighbours; n is 3 or more.
+    """Acceleration at each grid point, (3, n) as the states, from those of the point and its neighbours; 3 or more.
 
     The second derivative of Hermite's quintic through three points, whose basis stands in Davis, Interpolation and
     Approximation (from memory).
     """
-    middle = np.clip(np.arange(len(time_s)), 1, len(time_s) - 2)
-    nodes = middle + np.array([[-1], [0], [1]])
+    nodes = np.clip(np.arange(len(time_s)), 1, len(time_s) - 2) + np.array([[-1], [0], [1]])
     t = time_s[nodes] - time_s  # (3, n), the point itself at 0
     total = np.zeros_like(position_km)
     for j in range(3):
@@ -133,7 +133,7 @@ def _accelerations(time_s, position_km, velocity_km_s):
         lean = 2 * (1 / (own - a) + 1 / (own - b))
         of_position = (1 + lean * own) * square_bend - 2 * lean * square_slope
         of_velocity = 2 * square_slope - own * square_bend
-        total += of_position[:, None] * position_km[nodes[j]] + of_velocity[:, None] * velocity_km_s[nodes[j]]
+        total += of_position * position_km[:, nodes[j]] + of_velocity * velocity_km_s[:, nodes[j]]
     return total
 
 
