@@ -7,12 +7,12 @@ for a formula gets a leading apostrophe, which the reader of contacts takes off 
 
 import csv
 import io
-import re
 
 import numpy as np
 import pandas as pd
 
-from planner.mission.files import slug
+from planner.mission.names import slug
+from planner.mission.table import FORMULA
 
 CONTACTS = (
     "contact_id", "pass_id", "satellite", "station", "mode", "aos_utc", "tx_on_utc", "tx_off_utc", "los_utc",
@@ -36,7 +36,6 @@ DECIMALS = {
     "v": 4, "a": 4, "w": 3, "c": 2, "fraction": 4,
     "km_s": 6,
 }  # fmt: skip
-FORMULA = re.compile(r"'*[=+\-@\t\r]")
 
 
 def contacts_csv(contacts: pd.DataFrame) -> bytes:
@@ -89,7 +88,7 @@ def utc_text(moments) -> np.ndarray:
 
 def file_name(*names: str) -> str:
     """A harmless file name, without its ending, for names out of a mission; as they stand in ids."""
-    return "_".join(slug(name)[:60] or "unnamed" for name in names)
+    return "_".join(slug(name)[:60] for name in names)
 
 
 def _cells(name: str, column: pd.Series) -> list[str]:

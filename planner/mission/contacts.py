@@ -15,7 +15,7 @@ REQUIRED = ("pass_id", "satellite", "station", "mode", "tx_on_utc", "tx_off_utc"
 
 @dataclass(frozen=True, order=True)
 class Session:
-    """One mode on one pass, radio frequency on from `tx_on_s` to `tx_off_s` (seconds of UTC after the mission's start)."""
+    """One mode on one pass, radio frequency on from `tx_on_s` to `tx_off_s` [s after the mission's start]."""
 
     tx_on_s: float
     tx_off_s: float
@@ -38,18 +38,24 @@ class StatedContact:
     stated: dict[str, str]
 
 
-def read_contacts(path: str | Path, mission: Mission) -> list[StatedContact]:
-    """The contacts of a CSV file in the order of their transmit times.
+def read_contacts(contacts, mission: Mission) -> list[StatedContact]:
+    """The contacts of a CSV file (its path), or of a DataFrame with the same columns, in the order of transmit times.
+
+    A DataFrame's rows count from line 2, as they would in its file.
 
     Raises
     ------
     InputError : every row at fault, with line, column, rule and value
     """
-    return parse_contacts(path, read_table(Path(path), REQUIRED), mission)
+    if isinstance(contacts, str | Path):
+        return _stated(contacts, read_table(Path(contacts), REQUIRED), mission)
+    missing = [f"contacts: column {name!r} is required" for name in REQUIRED if name not in contacts.columns]
+    if missing:
+        raise InputError(*missing)
+    return _stated("contacts", enumerate(contacts.astype(str).to_dict("records"), 2), mission)
 
 
-def parse_contacts(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission) -> list[StatedContact]:
-    """As `read_contacts`, from (line, {column: text}) rows; `place` is what messages begin with."""
+def _stated(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission) -> list[StatedContact]:
     contacts, faults = [], []
     for line, row in rows:
         found = _row_faults(row, mission)
@@ -99,4 +105,7 @@ def _utc(text: str) -> datetime:
         raise ValueError("must be a time such as 2026-12-07T09:30:00.000Z") from None
     if moment.tzinfo is None:
         raise ValueError("must carry a time zone (append Z for UTC)")
-    return moment.astimezone(UTC)
+    try:
+        return moment.astimezone(UTC)
+    except OverflowError:
+        raise ValueError("must be a time within the years 1 to 9999") from None

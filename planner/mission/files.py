@@ -10,6 +10,7 @@ from planner.errors import InputError
 from planner.mission.base import Described, Name
 from planner.mission.elements import read_elements
 from planner.mission.models import Mission, Policy, Satellite, Spacecraft, StartState
+from planner.mission.names import alike
 from planner.mission.pattern import read_pattern
 from planner.mission.station import Station
 from planner.mission.text import faults_of, nearest, read_toml, sha256
@@ -171,7 +172,8 @@ def _check_age(reader: _Reader, name: str, elements: Any, tables: MissionTables,
     if abs(age_days) > limit_days:
         reader.faults.append(
             f"{path.parent / tables.elements}: {name}: epoch {elements.epoch:%Y-%m-%dT%H:%M:%SZ} must be within"
-            f" policy.elements_max_age_days = {limit_days:g} of the start, got {age_days:.1f} days; fetch newer elements"
+            f" policy.elements_max_age_days = {limit_days:g} of the start, got {age_days:.1f} days;"
+            " fetch newer elements"
         )
 
 
@@ -198,16 +200,8 @@ def _check_references(
         )
 
 
-def slug(name: str) -> str:
-    """The name as it stands in ids: lower case, letters and digits, hyphens between."""
-    return "-".join("".join(c if c.isalnum() else " " for c in name.lower()).split())
-
-
 def _check_names(reader: _Reader, described: list, what: str, path: Path) -> None:
-    seen: dict[str, str] = {}
-    for thing in filter(None, described):
-        other = seen.setdefault(slug(thing.name), thing.name)
-        if other is not thing.name:
-            reader.faults.append(
-                f"{path}: {what}: names must differ in their letters and digits, got {other!r} and {thing.name!r}"
-            )
+    reader.faults.extend(
+        f"{path}: {what}: names must differ in their letters and digits, got {first!r} and {second!r}"
+        for first, second in alike(thing.name for thing in described if thing is not None)
+    )

@@ -7,6 +7,7 @@ from pydantic import AwareDatetime, Field, field_validator, model_validator
 
 from planner.mission.base import Described, Name, NonNegative, Percent, Positive, Real
 from planner.mission.elements import ElementSet, Ephemeris
+from planner.mission.names import alike
 from planner.mission.pointing import Pointing
 from planner.mission.power import (
     ArrayConversion,
@@ -133,8 +134,8 @@ class Spacecraft(Described):
     @classmethod
     def _distinct_modes(cls, transmitters: tuple[Transmitter, ...]):
         modes = [transmitter.mode for transmitter in transmitters]
-        if len(set(modes)) < len(modes):
-            raise ValueError(f"mode names must differ, got {modes}")
+        if alike(modes):
+            raise ValueError(f"mode names must differ in their letters and digits, got {modes}")
         unknown = [name for transmitter in transmitters for name in transmitter.together_with if name not in modes]
         if unknown:
             raise ValueError(f"together_with must name modes of this satellite {modes}, got {unknown}")

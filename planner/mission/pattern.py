@@ -4,6 +4,7 @@ from pathlib import Path
 
 from planner.errors import InputError
 from planner.mission.table import read_table
+from planner.mission.text import shown
 
 COLUMNS = ("off_axis_deg", "gain_dbi")
 
@@ -16,7 +17,8 @@ def read_pattern(path: Path) -> tuple[tuple[float, float], ...]:
             angle_deg, gain_dbi = (float(row[column]) for column in COLUMNS)
         except ValueError:
             faults.append(
-                f"{path}: line {line}: off_axis_deg and gain_dbi must be numbers, got {row['off_axis_deg']!r} and {row['gain_dbi']!r}"
+                f"{path}: line {line}: off_axis_deg and gain_dbi must be numbers,"
+                f" got {shown(row['off_axis_deg'])} and {shown(row['gain_dbi'])}"
             )
             continue
         if not 0 <= angle_deg <= 180 or not -200 <= gain_dbi <= 100:

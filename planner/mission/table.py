@@ -2,15 +2,18 @@
 
 import csv
 import io
+import re
 from collections.abc import Iterator
 from pathlib import Path
 
 from planner.errors import InputError
 from planner.mission.text import nearest, read_text, shown
 
+FORMULA = re.compile(r"'*[=+\-@\t\r]")  # what a spreadsheet would run, behind apostrophes or none
+
 
 def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[str, str]]]:
-    """Each row as (line number, {column: text}), blank rows left out, a leading apostrophe before = + - @ undone.
+    """Each row as (line number, {column: text}), blank rows left out, one apostrophe before = + - @ undone.
 
     Raises
     ------
@@ -21,7 +24,8 @@ def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[st
     columns = [column.strip() for column in header[1]]
     if len(columns) == 1 and ";" in columns[0]:
         raise InputError(
-            f"{path}: line {header[0]}: columns must be separated by commas, got semicolons; save as comma-separated CSV with decimal points"
+            f"{path}: line {header[0]}: columns must be separated by commas, got semicolons;"
+            " save as comma-separated CSV with decimal points"
         )
     missing = [name for name in required if name not in columns]
     if missing:
@@ -52,6 +56,5 @@ def _width_fault(path: Path, line: int, cells: list[str], columns: list[str]) ->
 
 
 def _plain(cell: str) -> str:
-    """Undo the apostrophe that keeps a spreadsheet from taking text for a formula."""
-    cell = cell.strip()
-    return cell[1:] if len(cell) > 1 and cell[0] == "'" and cell[1] in "=+-@\t\r" else cell
+    """Undo the one apostrophe that the writer puts before text that a spreadsheet would take for a formula."""
+    return cell[1:] if cell.startswith("'") and FORMULA.match(cell) else cell

@@ -113,7 +113,7 @@ def _rule(kind: str, context: Mapping[str, Any], message: str) -> str:
 
 
 def _key(location: tuple, raw: Any) -> tuple[str, Any]:
-    """The dotted key as the user wrote it (list entries counted from 1, with their name), and the table that holds it."""
+    """The dotted key as the user wrote it (list entries from 1, with their name), and the table that holds it."""
     key, holder = "", raw
     for part in location:
         if isinstance(part, int) and isinstance(raw, tuple):

@@ -186,7 +186,7 @@ def _give_way(base: Flown, session: Session) -> tuple[Session, ...]:
     Sets of up to three among the nearest are tried; beyond that contacts are given up nearest first until it fits,
     and those that turn out not to matter are taken back. Empty when giving up contacts does not help.
     """
-    own = [s for s in base.of(session.satellite)]
+    own = base.of(session.satellite)
     nearest_first = sorted(own, key=lambda s: abs(s.tx_on_s - session.tx_on_s))[:NEAREST]
 
     def fits(gone) -> bool:

@@ -1,19 +1,14 @@
 """Any set of contacts, checked from its ids, modes and transmit times alone."""
 
 from dataclasses import dataclass
-from pathlib import Path
 
-import pandas as pd
-
-from planner.mission.contacts import StatedContact, parse_contacts, read_contacts
+from planner.mission.contacts import StatedContact, read_contacts
 from planner.mission.models import Mission
 from planner.schedule import frames
 from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import Flown
 from planner.schedule.result import prepared
 from planner.schedule.wishes import read_wishes
-
-ANGLE_OR_SHARE = 5e-3  # stated figures have two to three decimals: half of the last one, doubled for rounding twice
 
 
 @dataclass(frozen=True)
@@ -85,20 +80,12 @@ def audit(mission: Mission, contacts) -> Audit:
     ------
     InputError : the file cannot be read as contacts of this mission
     """
-    stated = _stated(mission, contacts)
+    stated = read_contacts(contacts, mission)
     week = prepared(mission)
     flown = Flown(week, tuple(contact.session for contact in stated))
     faults = [*find_faults(flown), *_wishes_broken(flown)]
     lines = {contact.session: contact.line for contact in stated}
     return Audit(flown, tuple(faults), tuple(_stale(flown, stated)), lines)
-
-
-def _stated(mission: Mission, contacts) -> list[StatedContact]:
-    if isinstance(contacts, str | Path):
-        return read_contacts(contacts, mission)
-    table: pd.DataFrame = contacts
-    rows = [(index + 2, row) for index, row in enumerate(table.astype(str).to_dict("records"))]
-    return parse_contacts("contacts", rows, mission)
 
 
 def _wishes_broken(flown: Flown) -> list[Fault]:

@@ -1,4 +1,4 @@
-"""Every rule that a set of sessions must keep, checked on the times alone: the gate for a plan and the whole of an audit."""
+"""Every rule that a set of sessions must keep, checked on times alone: the gate for a plan, the whole of an audit."""
 
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -190,7 +190,10 @@ def _gaps(flown: Flown, satellite: str, own: tuple[Session, ...]) -> Iterator[Fa
     for end_s, begin_s in zip(ends, begins, strict=True):
         if begin_s - end_s > longest_s + SAME_MOMENT_S:
             gap_h = (begin_s - end_s) / HOUR_S
-            text = f"{satellite}: {gap_h:.2f} h without contact from {iso(end_s)}, the policy allows {longest_s / HOUR_S:g} h"
+            text = (
+                f"{satellite}: {gap_h:.2f} h without contact from {iso(end_s)},"
+                f" the policy allows {longest_s / HOUR_S:g} h"
+            )
             yield Fault("longest gap", None, end_s, gap_h, longest_s / HOUR_S, "h", text)
 
 

@@ -7,7 +7,7 @@ import pandas as pd
 
 from planner.link.antenna import ground_dish, half_power_beam_deg
 from planner.mission.contacts import Session
-from planner.mission.files import slug
+from planner.mission.names import slug
 from planner.schedule.checks import needs_upload, upload_contact
 from planner.schedule.flown import Flown
 from planner.sky import aging
@@ -18,10 +18,10 @@ OLDEST_DAYS = 3650.0  # elements that never grow too old are said to hold for te
 
 CONTACT_COLUMNS = (
     "contact_id", "pass_id", "satellite", "station", "mode", "aos_utc", "tx_on_utc", "tx_off_utc", "los_utc",
-    "duration_s", "aos_azimuth_deg", "los_azimuth_deg", "max_elevation_deg", "min_margin_db", "volume_mbit", "energy_wh",
-    "soc_start_pct", "soc_min_pct", "soc_end_pct", "max_doppler_khz", "cautions", "power_on_utc", "frequency_mhz",
-    "symbol_rate_mbaud", "polarisation", "modcods", "expected_volume_mbit", "elements_newer_than_utc",
-    "commands_from",
+    "duration_s", "aos_azimuth_deg", "los_azimuth_deg", "max_elevation_deg", "min_margin_db", "volume_mbit",
+    "energy_wh", "soc_start_pct", "soc_min_pct", "soc_end_pct", "max_doppler_khz", "cautions", "power_on_utc",
+    "frequency_mhz", "symbol_rate_mbaud", "polarisation", "modcods", "expected_volume_mbit",
+    "elements_newer_than_utc", "commands_from",
 )  # fmt: skip
 
 
@@ -99,7 +99,8 @@ def cautions(flown: Flown, session: Session, row: int) -> list[str]:
     )
     if np.nanmax(excess_db, initial=-np.inf) > 0:
         said.append(
-            f"flux {np.nanmax(excess_db):.1f} dB above the RR 21-4 limit (check the current Radio Regulations and your licence)"
+            f"flux {np.nanmax(excess_db):.1f} dB above the RR 21-4 limit"
+            " (check the current Radio Regulations and your licence)"
         )
     samples = week.sky.samples.of(row)
     time_s, sun_deg = week.sky.samples.time_s[samples], week.sky.samples.sun_separation_deg[samples]

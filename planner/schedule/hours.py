@@ -15,7 +15,7 @@ def open_windows_s(mission: Mission, station: Station) -> Windows:
     """Unbroken stretches of the span in which the station is open, maintenance taken out [s after the start]."""
     hours = station.hours
     whole = [(0.0, mission.span_s)]
-    daily = [window for window in _daily_windows_s(mission, station)] if hours.open or len(hours.days) < 7 else whole
+    daily = _daily_windows_s(mission, station) if hours.open or len(hours.days) < 7 else whole
     maintenance = [tuple((moment - mission.start).total_seconds() for moment in window) for window in hours.maintenance]
     return subtract(intersect(merge(daily), whole), merge(maintenance))
 

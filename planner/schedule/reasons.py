@@ -129,9 +129,11 @@ def _no_energy(flown: Flown, candidate: Candidate) -> str:
     breach: Breach = min(breaches, key=lambda b: b.limit not in CHARGE_LIMITS)
     when = trial.week.sky.clock.iso(breach.time_s)[:16] + "Z"
     if breach.limit == "SoC floor":
-        return f"energy: even {candidate.shortest_s:.0f} s would take the charge to {breach.value:.1f} % ({when}), floor {breach.bound:g} %"
+        lowest = f"would take the charge to {breach.value:.1f} % ({when}), floor {breach.bound:g} %"
+        return f"energy: even {candidate.shortest_s:.0f} s {lowest}"
     if breach.limit == "end-of-span SoC":
-        return f"energy: even {candidate.shortest_s:.0f} s would leave {breach.value:.1f} % at the end, {breach.bound:g} % asked"
+        left = f"would leave {breach.value:.1f} % at the end, {breach.bound:g} % asked"
+        return f"energy: even {candidate.shortest_s:.0f} s {left}"
     return f"{breach.limit}: {breach.value:.2f} {breach.unit} ({when}), limit {breach.bound:.2f} {breach.unit}"
 
 
@@ -142,7 +144,8 @@ def _not_worth_it(flown: Flown, problem: Problem, candidate: Candidate) -> str:
     stored_mbit = flown.recorder[candidate.satellite].stored_mbit[-1]
     if price_mbit > candidate.most_mbit:
         return f"not worth it: at most {candidate.most_mbit:.0f} Mbit for a station cost of {price_mbit:.0f} Mbit"
+    energy_wh = candidate.likely.fixed_wh + candidate.likely.on_air_wh(candidate.opens_s, candidate.closes_s)
     return (
-        f"not worth it: {candidate.likely.fixed_wh + candidate.likely.on_air_wh(candidate.opens_s, candidate.closes_s):.2f} Wh for at most"
-        f" {candidate.most_mbit:.0f} Mbit; other sessions bring more of the {stored_mbit:.0f} Mbit still stored at the end"
+        f"not worth it: {energy_wh:.2f} Wh for at most {candidate.most_mbit:.0f} Mbit;"
+        f" other sessions bring more of the {stored_mbit:.0f} Mbit still stored at the end"
     )

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from planner.errors import InputError
-from planner.mission.contacts import Session, parse_contacts, read_contacts
+from planner.mission.contacts import Session, read_contacts
 from planner.mission.models import Mission
 from planner.mission.text import nearest
 from planner.schedule.week import Week
@@ -66,11 +66,8 @@ def read_wishes(
 
 def sessions_of(contacts, mission: Mission) -> list[Session]:
     """Sessions from a path, a contacts table, or sessions themselves."""
-    if isinstance(contacts, str | Path):
+    if isinstance(contacts, str | Path | pd.DataFrame):
         return [contact.session for contact in read_contacts(contacts, mission)]
-    if isinstance(contacts, pd.DataFrame):
-        rows = [(index + 2, row) for index, row in enumerate(contacts.astype(str).to_dict("records"))]
-        return [contact.session for contact in parse_contacts("contacts", rows, mission)]
     return sorted(contacts)
 
 
