@@ -7,7 +7,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 import sgp4
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from planner.errors import InputError
@@ -147,6 +147,7 @@ def test_each_field_says_what_it_must_be(tmp_path, line, columns, text, rule):
     assert f"line {line + 1}: {rule}" in fault
 
 
+@settings(deadline=None)
 @given(st.text(max_size=300))
 def test_no_text_is_answered_with_anything_but_an_input_error(text):
     sets, faults = tle.parse_tle(text, "x")

@@ -72,7 +72,7 @@ def test_a_one_second_scan_finds_no_other_passes(kind):
             assert held or (kind == "geostationary" and overlap_s.sum() == pytest.approx(last - first))
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 @given(orbits(), sites())
 def test_any_orbit_over_any_site(elements, site):
     clock, _, track, passes = passes_of(elements, [site], days=0.6)

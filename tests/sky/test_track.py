@@ -49,7 +49,7 @@ def test_velocity_is_skyfields_in_round_low_orbit():
     assert np.abs(ours - full_chain_km(elements, time_s)[1]).max() < SGP4_VELOCITY_KM_S
 
 
-@settings(max_examples=25, deadline=None)
+@settings(max_examples=25)
 @given(orbits())
 def test_any_orbit_is_within_a_metre_between_grid_points(elements):
     clock = clock_of(1.0)
