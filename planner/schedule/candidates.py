@@ -188,8 +188,11 @@ def _priced(week: Week, own: list[Candidate], conversions: tuple[Conversion, Con
 
 def _states(week: Week, satellite: Satellite, own: list[Candidate], conversions) -> SatelliteStates:
     power, span_s = week.powers[satellite.name], week.mission.span_s
-    edges = [0.0, span_s, *(c.opens_s for c in own), *(c.closes_s for c in own)]
-    events_s = np.unique(np.concatenate([edges, idle_changes_s(power, conversions[0])]))
+    # the charge turns where the Sun comes and goes and where sessions end: there it is lowest or highest
+    last_s: dict[int, float] = {}
+    for candidate in own:
+        last_s[candidate.row] = max(candidate.closes_s, last_s.get(candidate.row, 0.0))
+    events_s = np.unique(np.concatenate([[0.0, span_s], list(last_s.values()), idle_changes_s(power, conversions[0])]))
     produced_mbit = np.zeros(len(events_s) - 1)
     for edges_s, rate_mbps in week.produced[satellite.name]:
         sum_mbit = np.concatenate([[0.0], np.cumsum(rate_mbps * np.diff(edges_s))])

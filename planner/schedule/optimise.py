@@ -186,9 +186,9 @@ def _least_energy(week: WeekProgramme, states: SatelliteStates, on_air: dict[int
         if i in on_air:
             by_step = [(column, -step.cheapest_per_s_wh) for step, column in on_air[i].pairs]
             programme.row([(cost, 1.0), (v.flown, -candidate.least.fixed_wh), *by_step], lowest=0.0)
-        first, last = np.searchsorted(states.events_s, [candidate.opens_s, candidate.closes_s])
-        terms[int(first)].append((cost, 1.0))
-        for event in range(int(first) + 1, int(last)):
+        first, last = states.around(candidate.opens_s, candidate.closes_s)
+        terms[first].append((cost, 1.0))
+        for event in range(first + 1, last):
             active[event].append((cost, 1.0))
     _energy_chain(programme, states.least, terms, active)
 
@@ -206,9 +206,9 @@ def _relaxed_data(week: WeekProgramme, states: SatelliteStates) -> None:
     """As `_likely_data`, relaxed: the yield is taken when the window closes, and room is not asked for before."""
     terms, active = defaultdict(list), defaultdict(list)
     for _, candidate, v in _of_satellite(week, states.satellite):
-        first, last = np.searchsorted(states.events_s, [candidate.opens_s, candidate.closes_s])
-        terms[int(last) - 1].append((v.volume, 1.0))
-        for event in range(int(first) + 1, int(last)):
+        first, last = states.around(candidate.opens_s, candidate.closes_s)
+        terms[last - 1].append((v.volume, 1.0))
+        for event in range(first + 1, last):
             active[event].append((v.volume, -1.0))
     _data_chain(week.programme, states, terms, active)
 

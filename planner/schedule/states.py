@@ -35,7 +35,13 @@ class SatelliteStates:
     room_mbit: float
 
     def shares(self, opens_s: float, closes_s: float) -> list[tuple[int, float]]:
-        """(interval, share) of a window whose ends are events: where a session's cost and yield fall."""
-        first, last = np.searchsorted(self.events_s, [opens_s, closes_s])
-        lengths_s = np.diff(self.events_s[first : last + 1])
-        return [(int(first + i), float(length / lengths_s.sum())) for i, length in enumerate(lengths_s)]
+        """(interval, share) of a window: where a session's cost and yield fall."""
+        first, last = self.around(opens_s, closes_s)
+        edges_s = np.clip(self.events_s[first : last + 1], opens_s, closes_s)
+        lengths_s = np.diff(edges_s)
+        return [(first + i, float(length / lengths_s.sum())) for i, length in enumerate(lengths_s) if length > 0]
+
+    def around(self, opens_s: float, closes_s: float) -> tuple[int, int]:
+        """The last event at or before a window opens, and the first at or after it closes."""
+        first = int(np.searchsorted(self.events_s, opens_s, side="right")) - 1
+        return first, int(np.searchsorted(self.events_s, closes_s, side="left"))
