@@ -54,10 +54,17 @@ def week_figure(
     -------
     Figure, A4 landscape; its axes in order: lanes, charge, data
     """
-    begin, end = window or (mission.start, mission.end)
     satellite = satellite or mission.satellites[0].name
+    figure = week_page(mission, plan, window=window, time_zone=time_zone, satellite=satellite)
+    draw_plan(figure, mission, plan, satellite=satellite, selected=selected)
+    return figure
+
+
+def week_page(mission: Mission, plan, *, window, time_zone: tzinfo, satellite: str) -> Figure:
+    """The page before the plan is drawn: axes, closures, eclipses, legend, the same for every plan of the mission."""
+    begin, end = window or (mission.start, mission.end)
     with style.on_paper():
-        figure = style.new_figure(title=finding(plan))
+        figure = style.new_figure(title=" ")
         figure.set_layout_engine("none")  # a layout that measures every label costs a third of a redraw
         stations = lanes_of(mission, plan)
         heights = [min(0.5 * len(stations) + 0.4, 6.0), 2.2, 1.5]
@@ -65,13 +72,38 @@ def week_figure(
         room = {"left": left, "right": 0.962, "top": 0.945, "bottom": 0.115, "hspace": 0.17}
         lanes, charge, data = figure.subplots(3, 1, sharex=True, height_ratios=heights, gridspec_kw=room)
         lanes.set_xlim(mdates.date2num(begin), mdates.date2num(end))
-        _draw_lanes(lanes, mission, stations, plan, selected)
-        _draw_charge(charge, mission, plan, satellite)
-        _draw_data(data, mission, plan, satellite)
+        _draw_closures(lanes, mission, stations)
+        battery = plan.battery[plan.battery["satellite"] == satellite]
+        _shade_eclipses(charge, battery, days(battery["time_utc"]))
         for axes in (lanes, charge, data):
             style.time_axis(axes, time_zone, label=axes is data)
-        _legend(figure, mission, plan)
+        lanes.tick_params(axis="x", labelbottom=False)
+        charge.tick_params(axis="x", labelbottom=False)
+        _legend(figure, mission)
     return figure
+
+
+def draw_plan(
+    figure: Figure, mission: Mission, plan, *, satellite: str, selected: str | None = None, replacing=()
+) -> list[Artist]:
+    """Draw a plan onto the page of `week_page`, in place of the artists `replacing` of the plan drawn before.
+
+    Returns the artists that differ from plan to plan, in drawing order: a canvas may draw these alone over the page.
+    """
+    lanes, charge, data = figure.axes
+    title = figure.texts[0]
+    lasting = {title, lanes.yaxis, charge.yaxis, data.yaxis}
+    for artist in replacing:
+        if artist not in lasting:
+            artist.remove()
+    title.set_text(finding(plan))
+    with style.on_paper():
+        drawn = [
+            *_draw_lanes(lanes, mission, lanes_of(mission, plan), plan, selected),
+            *_draw_charge(charge, mission, plan, satellite),
+            *_draw_data(data, mission, plan, satellite),
+        ]
+    return [title, *sorted(drawn, key=lambda artist: artist.get_zorder())]
 
 
 def finding(plan) -> str:
@@ -117,23 +149,17 @@ def _data_amount(mbit: float) -> str:
     return f"{mbit / 1000:.0f} Gbit" if mbit >= 10_000 else f"{mbit:.0f} Mbit"
 
 
-def _draw_lanes(axes, mission: Mission, stations: list, plan, selected: str | None) -> None:
-    marks = style.mode_marks(_modes(mission))
+def _draw_lanes(axes, mission: Mission, stations: list, plan, selected: str | None) -> list[Artist]:
     count = len(stations)
-    all_passes = plan.passes.assign(begin=days(plan.passes["aos_utc"]), end=days(plan.passes["los_utc"]))
-    all_contacts = plan.contacts.assign(begin=days(plan.contacts["tx_on_utc"]), end=days(plan.contacts["tx_off_utc"]))
-    for row, station in enumerate(stations):
-        foot = count - 1 - row
-        _draw_closures(axes, mission, station, foot)
-        passes = all_passes[all_passes["station"] == station.name]
-        _draw_passes(axes, passes, foot)
-        contacts = all_contacts[all_contacts["station"] == station.name]
-        for index, (mode, mark) in enumerate(marks.items()):
-            _draw_sessions(
-                axes, contacts[contacts["mode"] == mode], foot, mark, FIRST_MARKER + MARKER_STEP * (index % 2)
-            )
-        axes.axhline(foot, color=style.PALE, linewidth=0.6, zorder=1)
-        _point_out(axes, passes[passes["pass_id"] == selected], foot)
+    foot_of = {station.name: count - 1 - row for row, station in enumerate(stations)}
+    passes, contacts = (
+        _in_lanes(plan.passes, "aos", "los", foot_of),
+        _in_lanes(plan.contacts, "tx_on", "tx_off", foot_of),
+    )
+    drawn = [*_draw_passes(axes, passes), *_point_out(axes, passes[passes["pass_id"] == selected])]
+    for index, (mode, mark) in enumerate(style.mode_marks(_modes(mission)).items()):
+        own = contacts[contacts["mode"] == mode]
+        drawn += _draw_sessions(axes, own, mark, FIRST_MARKER + MARKER_STEP * (index % 2))
     flown = plan.contacts.groupby("station")["pass_id"].nunique() if len(plan.contacts) else {}
     between = "\n" if count <= TWO_LINES else ", "
     seen = plan.passes["station"].value_counts()
@@ -148,79 +174,106 @@ def _draw_lanes(axes, mission: Mission, stations: list, plan, selected: str | No
     axes.set_ylim(0, count)
     more = "" if count == len(mission.stations) else f" (the busiest {count} of {len(mission.stations)})"
     axes.set_ylabel(f"station, passes flown of all{more}")
-    axes.tick_params(axis="x", labelbottom=False)
+    return [*drawn, axes.yaxis]
 
 
-def _draw_closures(axes, mission: Mission, station, foot: float) -> None:
-    edges_s = np.array([0.0, *np.ravel(open_windows_s(mission, station)), mission.span_s]).reshape(-1, 2)
-    begin, end = (mdates.date2num(mission.start) + edges_s[edges_s[:, 1] > edges_s[:, 0]] / DAY_S).T
-    bars = _bars(begin, end, foot + 0.02, np.full(len(begin), foot + 0.98))
-    axes.add_collection(
-        PolyCollection(bars, facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", linewidth=0, zorder=0.5)
+def _in_lanes(table: pd.DataFrame, opens: str, closes: str, foot_of: dict[str, int]) -> pd.DataFrame:
+    """The rows whose station has a lane, with `begin` and `end` in days and the lane's `foot`."""
+    here = table[table["station"].isin(list(foot_of))]
+    foot = here["station"].map(foot_of).to_numpy(dtype=float)
+    return here.assign(begin=days(here[f"{opens}_utc"]), end=days(here[f"{closes}_utc"]), foot=foot)
+
+
+def _draw_closures(axes, mission: Mission, stations: list) -> None:
+    bars = []
+    for row, station in enumerate(stations):
+        foot = len(stations) - 1 - row
+        edges_s = np.array([0.0, *np.ravel(open_windows_s(mission, station)), mission.span_s]).reshape(-1, 2)
+        begin, end = (mdates.date2num(mission.start) + edges_s[edges_s[:, 1] > edges_s[:, 0]] / DAY_S).T
+        bars.append(_bars(begin, end, np.full(len(begin), foot + 0.02), np.full(len(begin), foot + 0.98)))
+        axes.axhline(foot, color=style.PALE, linewidth=0.6, zorder=1)
+    closed = PolyCollection(
+        np.concatenate(bars), facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", linewidth=0, zorder=0.5
     )
+    axes.add_collection(closed, autolim=False)
 
 
-def _draw_passes(axes, passes: pd.DataFrame, foot: float) -> None:
+def _draw_passes(axes, passes: pd.DataFrame) -> list[Artist]:
     """A bar as long as the pass and as high as it climbs; hollow where nothing can be sent."""
-    begin, end, verdict = (passes[name].to_numpy() for name in ("begin", "end", "verdict"))
+    begin, end, foot, verdict = (passes[name].to_numpy() for name in ("begin", "end", "foot", "verdict"))
     climbs = passes["max_elevation_deg"].to_numpy(dtype=float) / 90
     bars = _bars(begin, end, foot + FOOT, foot + FOOT + 0.08 + (FLOWN_TOP - FOOT - 0.08) * climbs)
-    for name, (face, edge) in FILLS.items():
-        chosen = bars[verdict == name]
-        axes.add_collection(PolyCollection(chosen, facecolor=face, edgecolor=edge, linewidth=0.7, zorder=2))
+    drawn: list[Artist] = [
+        axes.add_collection(
+            PolyCollection(bars[verdict == name], facecolor=face, edgecolor=edge, linewidth=0.7, zorder=2),
+            autolim=False,
+        )
+        for name, (face, edge) in FILLS.items()
+    ]
     dropped = verdict == "dropped"
-    axes.plot(((begin + end) / 2)[dropped], np.full(dropped.sum(), foot + FIRST_MARKER), "x", color=style.BLACK, ms=4)
+    middle, height = ((begin + end) / 2)[dropped], foot[dropped] + FIRST_MARKER
+    return drawn + axes.plot(middle, height, "x", color=style.BLACK, ms=4, scalex=False, scaley=False)
 
 
-def _draw_sessions(axes, contacts: pd.DataFrame, foot: float, mark, marker_height: float) -> None:
+def _draw_sessions(axes, contacts: pd.DataFrame, mark, marker_height: float) -> list[Artist]:
     colour, marker = mark
-    begin, end = contacts["begin"].to_numpy(), contacts["end"].to_numpy()
-    bars = _bars(begin, end, foot + FOOT, np.full(len(begin), foot + FLOWN_TOP))
-    axes.add_collection(PolyCollection(bars, facecolor=colour, edgecolor=colour, linewidth=1.1, zorder=3))
-    heights = np.full(len(begin), foot + marker_height)
-    axes.plot((begin + end) / 2, heights, marker, color=colour, ms=4.2, mec="white", mew=0.3, zorder=4)
+    begin, end, foot = (contacts[name].to_numpy() for name in ("begin", "end", "foot"))
+    bars = PolyCollection(
+        _bars(begin, end, foot + FOOT, foot + FLOWN_TOP), facecolor=colour, edgecolor=colour, linewidth=1.1, zorder=3
+    )
+    axes.add_collection(bars, autolim=False)
+    marks = axes.plot(
+        (begin + end) / 2, foot + marker_height, marker, color=colour, ms=4.2, mec="white", mew=0.3, zorder=4,
+        scalex=False, scaley=False,
+    )  # fmt: skip
+    return [bars, *marks]
 
 
-def _bars(begin, end, foot: float, top):
+def _bars(begin, end, foot, top):
     """Corners (n, 4, 2) of upright bars."""
-    feet = np.full(len(begin), foot)
-    x, y = np.stack([begin, end, end, begin], axis=-1), np.stack([feet, feet, top, top], axis=-1)
+    x, y = np.stack([begin, end, end, begin], axis=-1), np.stack([foot, foot, top, top], axis=-1)
     return np.stack([x, y], axis=-1)
 
 
-def _point_out(axes, passes: pd.DataFrame, foot: float) -> None:
-    for begin, end in zip(passes["begin"], passes["end"], strict=True):
-        axes.add_patch(Rectangle((begin, foot), end - begin, 1.0, facecolor=style.YELLOW, alpha=0.5, zorder=0.8))
-        axes.plot([(begin + end) / 2], [foot + 0.5], "o", ms=24, mfc="none", mec=style.BLACK, mew=1.0, zorder=5)
+def _point_out(axes, passes: pd.DataFrame) -> list[Artist]:
+    drawn: list[Artist] = []
+    for begin, end, foot in zip(passes["begin"], passes["end"], passes["foot"], strict=True):
+        patch = Rectangle((begin, foot), end - begin, 1.0, facecolor=style.YELLOW, alpha=0.5, zorder=0.8)
+        ring = {"ms": 24, "mfc": "none", "mec": style.BLACK, "mew": 1.0, "zorder": 5}
+        drawn += [axes.add_patch(patch), *axes.plot([(begin + end) / 2], [foot + 0.5], "o", scalex=False, **ring)]
+    return drawn
 
 
-def _draw_charge(axes, mission: Mission, plan, satellite: str) -> None:
+def _draw_charge(axes, mission: Mission, plan, satellite: str) -> list[Artist]:
     battery = plan.battery[plan.battery["satellite"] == satellite]
     time = days(battery["time_utc"])
-    _shade_eclipses(axes, battery, time)
     floor, end = mission.policy.soc_floor_pct, mission.policy.soc_end_pct
-    axes.plot(time, battery["soc_pct"], color=style.SKY_BLUE, linewidth=0.9, label="nominal", zorder=3)
-    axes.plot(time, battery["soc_worst_pct"], color=style.BLACK, linewidth=1.1, label="pessimistic", zorder=4)
-    axes.axhline(floor, color=style.VERMILLION, linestyle="--", linewidth=1.2, label=f"floor {floor:g} %", zorder=3)
-    axes.plot(
-        [mdates.date2num(mission.end)], [end], marker="<", ms=8, color=style.VERMILLION, linestyle="",
-        label=f"at least {end:g} % at the end", zorder=5,
-    )  # fmt: skip
+    drawn: list[Artist] = [
+        *axes.plot(time, battery["soc_pct"], color=style.SKY_BLUE, linewidth=0.9, label="nominal", zorder=3),
+        *axes.plot(time, battery["soc_worst_pct"], color=style.BLACK, linewidth=1.1, label="pessimistic", zorder=4),
+        axes.axhline(
+            floor, color=style.VERMILLION, linestyle="--", linewidth=1.2, label=f"floor {floor:g} %", zorder=3
+        ),
+        *axes.plot(
+            [mdates.date2num(mission.end)], [end], marker="<", ms=8, color=style.VERMILLION, linestyle="",
+            label=f"at least {end:g} % at the end", zorder=5,
+        ),
+    ]  # fmt: skip
     lowest_shown = floor
     if len(battery):
         lowest = int(np.argmin(battery["soc_worst_pct"].to_numpy()))
         value = float(battery["soc_worst_pct"].iloc[lowest])
         lowest_shown = min(floor, value)
-        axes.plot(
+        drawn += axes.plot(
             [time[lowest]], [value], "o", ms=7, mfc="none", mec=style.VERMILLION, mew=1.3, zorder=6,
             label=f"lowest {value:.1f} %",
         )  # fmt: skip
     axes.set_ylim(lowest_shown - 4, 101)
     axes.set_ylabel("state of charge, %")
-    style.legend_above(axes)
     if len(mission.satellites) > 1:
         axes.set_ylabel(f"{satellite}\nstate of charge, %")
-    axes.tick_params(axis="x", labelbottom=False)
+    style.legend_above(axes)
+    return [*drawn, axes.get_legend(), axes.yaxis]
 
 
 def _shade_eclipses(axes, battery: pd.DataFrame, time: np.ndarray) -> None:
@@ -233,22 +286,25 @@ def _shade_eclipses(axes, battery: pd.DataFrame, time: np.ndarray) -> None:
     )  # fmt: skip
 
 
-def _draw_data(axes, mission: Mission, plan, satellite: str) -> None:
+def _draw_data(axes, mission: Mission, plan, satellite: str) -> list[Artist]:
     recorder = plan.recorder[plan.recorder["satellite"] == satellite]
     time, stored = days(recorder["time_utc"]), recorder["stored_mbit"].to_numpy(dtype=float) / 1000
     room = mission.satellite(satellite).spacecraft.recorder.usable_mbit / 1000
-    axes.fill_between(time, stored, color=style.GREEN, alpha=0.3, linewidth=0, zorder=2)
-    axes.plot(time, stored, color=style.GREEN, label="stored", zorder=3)
-    axes.axhline(room, color=style.BLACK, linestyle="-.", linewidth=1.0, label=f"room {room:,.0f} Gbit")
+    drawn: list[Artist] = [
+        axes.fill_between(time, stored, color=style.GREEN, alpha=0.3, linewidth=0, zorder=2),
+        *axes.plot(time, stored, color=style.GREEN, label="stored", zorder=3),
+        axes.axhline(room, color=style.BLACK, linestyle="-.", linewidth=1.0, label=f"room {room:,.0f} Gbit"),
+    ]
     lost = float(recorder["lost_mbit"].iloc[-1]) / 1000 if len(recorder) else 0.0
     if lost > 0:
-        axes.plot([], [], " ", label=f"{lost:,.1f} Gbit lost for want of room")
+        drawn += axes.plot([], [], " ", label=f"{lost:,.1f} Gbit lost for want of room")
     axes.set_ylim(0, max(room, stored.max(initial=0.0)) * 1.12)
     axes.set_ylabel("data aboard, Gbit")
     style.legend_above(axes)
+    return [*drawn, axes.get_legend(), axes.yaxis]
 
 
-def _legend(figure: Figure, mission: Mission, plan) -> None:
+def _legend(figure: Figure, mission: Mission) -> None:
     marks = style.mode_marks(_modes(mission))
     handles: list[Artist] = [
         Line2D([], [], color=colour, marker=marker, linewidth=5, ms=5, mec="white", label=f"session, {mode}")
@@ -262,9 +318,8 @@ def _legend(figure: Figure, mission: Mission, plan) -> None:
     handles += [
         Patch(facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", label="station closed"),
         Patch(facecolor="#E4E7EC", label="eclipse"),
+        Line2D([], [], color=style.BLACK, marker="x", linestyle="", label="dropped by hand"),
     ]
-    if (plan.passes["verdict"] == "dropped").any():
-        handles.append(Line2D([], [], color=style.BLACK, marker="x", linestyle="", label="dropped by hand"))
     figure.legend(handles=handles, loc="lower left", bbox_to_anchor=(0.005, 0.0), ncols=4)
 
 
