@@ -4,7 +4,8 @@
     python benchmarks/passes.py --fleet    # 200 satellites x 50 stations x 7 days on every core, with a progress bar
 
 Times of the first are processor seconds of all threads, the best of several runs that alternate, so that a busy
-machine disturbs little and both sides alike. The library finds events; ours find them and add ids, azimuths, TCA and sunlight.
+machine disturbs little and both sides alike. The library finds events; ours find them and add ids, azimuths, TCA and
+sunlight.
 """
 
 import argparse
@@ -126,12 +127,13 @@ def fleet_of(count: int):
 
 def fleet() -> dict:
     """Time for 50, 100 and 200 satellites, and the memory of this process and the largest of its children."""
+    from rich.console import Console
     from rich.progress import Progress
 
     clock, everywhere = Clock(START, DAYS * 86_400.0), stations(50)
     times, found = {}, 0
     for count in (50, 100, 200):
-        with Progress(transient=True) as bar:
+        with Progress(transient=True, console=Console(stderr=True)) as bar:
             task = bar.add_task(f"{count} satellites x {len(everywhere)} stations", total=count)
             begin = time.perf_counter()
             _, passes = observe_fleet(

@@ -22,8 +22,7 @@ def turn(vector, angle_rad):
 def fixed_from_teme(clock: Clock, time_s, position_km, velocity_km_s):
     """TEME position and velocity (n, 3) turned into the Earth-fixed frame, velocity relative to the turning Earth."""
     angle_rad, rate_rad_s = clock.earth_angle_rad(time_s)
-    position_km = turn(position_km, angle_rad)
-    velocity_km_s = turn(velocity_km_s, angle_rad)
+    position_km, velocity_km_s = turn(np.stack([position_km, velocity_km_s]), angle_rad)
     velocity_km_s[..., 0] += rate_rad_s * position_km[..., 1]
     velocity_km_s[..., 1] -= rate_rad_s * position_km[..., 0]
     return position_km, velocity_km_s

@@ -153,7 +153,7 @@ def _peaks(track: Track, sites: Sites, nodes: _Nodes, above, rises):
     if len(top) == len(rises):
         return nodes.time_s[top]
     station, owner = nodes.station_index[top], np.searchsorted(rises, top, side="right") - 1
-    sine = _sine(track.at(nodes.time_s[top])[0], sites.position_km[station], sites.axes[station, 2])
+    sine = _sine(track.place_km(nodes.time_s[top]), sites.position_km[station], sites.axes[station, 2])
     order = np.lexsort((sine, owner))
     last = np.searchsorted(owner[order], np.arange(len(rises)), side="right") - 1
     return nodes.time_s[top[order[last]]]
@@ -168,7 +168,7 @@ def highest_s(track: Track, sites: Sites, station_index, begin_s, end_s):
     """The moment within [begin_s, end_s] at which the satellite stands highest above each station, all (n,)."""
     site_km, up = sites.position_km[station_index], sites.axes[station_index, 2]
     times = np.linspace(begin_s, end_s, SEARCH_POINTS)
-    best = np.argmax(_sine(track.at(times)[0], site_km, up), axis=0)
+    best = np.argmax(_sine(track.place_km(times), site_km, up), axis=0)
     everyone = np.arange(len(begin_s))
     low = times[np.maximum(best - 1, 0), everyone]
     high = times[np.minimum(best + 1, SEARCH_POINTS - 1), everyone]

@@ -153,7 +153,7 @@ def _sunlit_fraction(clock: Clock, track: Track, aos_s, los_s):
     edges_s = eclipse_edges_s(track, clock, within=np.cumsum(begun - ended)[:-1] > 0)
     # between edges the share is constant but in penumbra, where it runs nearly straight from one to the other
     moments_s = np.sort(np.concatenate([aos_s, los_s, edges_s - EDGE_S, edges_s + EDGE_S]))
-    visible = visible_sun_fraction(track.at(moments_s)[0], sun_position_km(clock, moments_s))
+    visible = visible_sun_fraction(track.place_km(moments_s), sun_position_km(clock, moments_s))
     collected = np.append(0.0, np.cumsum((visible[1:] + visible[:-1]) / 2 * np.diff(moments_s)))
     lit_s = np.interp(los_s, moments_s, collected) - np.interp(aos_s, moments_s, collected) if len(aos_s) else los_s
     return np.clip(lit_s / np.maximum(los_s - aos_s, 1e-9), 0.0, 1.0)

@@ -94,9 +94,17 @@ class Track:
                 f"time_s must lie within {self.time_s[0]:.3f} to {self.time_s[-1]:.3f} s,"
                 f" got {time_s.min():.3f} to {time_s.max():.3f}"
             )
-        index = self.interval(time_s)
-        position_km, velocity_km_s = evaluate(self.quintics[..., index], time_s - self.time_s[index])
+        position_km, velocity_km_s = evaluate(*self._pieces(time_s))
         return np.moveaxis(position_km, 0, -1), np.moveaxis(velocity_km_s, 0, -1)
+
+    def place_km(self, time_s):
+        """The position alone, as `at`."""
+        return np.moveaxis(place(*self._pieces(np.asarray(time_s, dtype=float))), 0, -1)
+
+    def _pieces(self, time_s):
+        """Polynomials that hold at the moments, and the seconds since each one's beginning."""
+        index = self.interval(time_s)
+        return self.quintics[..., index], time_s - self.time_s[index]
 
 
 def evaluate(quintics, seconds):
