@@ -32,7 +32,7 @@ class Refusal:
 def find_candidates(
     week: Week, wishes: Wishes, only: tuple[int, str] | None = None
 ) -> tuple[list[Candidate], list[Refusal]]:
-    """Every usable window of every pass and mode (or of `only` one row and mode), and a refusal for each without one."""
+    """Every usable window of every pass and mode (or of `only` one row and mode); a refusal for each without one."""
     found: list[Candidate] = []
     refused: list[Refusal] = []
     frozen = {(session.pass_id, session.mode): session for session in wishes.frozen}

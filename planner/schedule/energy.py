@@ -1,8 +1,8 @@
 """The battery as the programme sees it: how fast stored energy changes, with likely losses and with the least possible.
 
-Stored energy is the integral of open-circuit voltage over charge, so a change of voltage with charge touches only the
-losses. `likely` takes voltage and resistance at a middle charge; `least` the highest voltage the charger reaches and the
-lowest resistance over charge, which no real week can beat.
+Stored energy is the integral of open-circuit voltage over charge, so a voltage that changes with charge touches only
+the losses. `likely` takes voltage and resistance at a middle charge; `least` the highest voltage that the charger
+reaches and the lowest resistance over charge, which no real week can beat.
 """
 
 from dataclasses import dataclass

@@ -51,7 +51,7 @@ class WeekProgramme:
 
 
 def plan_programme(problem: Problem) -> WeekProgramme:
-    """The programme whose solution is the plan: likely losses, volume exact for sessions that span their pass's peak."""
+    """The programme whose solution is the plan: likely losses; volume exact for sessions that span a pass's peak."""
     week = WeekProgramme(problem)
     largest = max((c.most_mbit for c in problem.candidates), default=0.0)
     for candidate in problem.candidates:
@@ -80,8 +80,8 @@ def plan_programme(problem: Problem) -> WeekProgramme:
 def bound_programme(problem: Problem) -> WeekProgramme:
     """A relaxation that holds every plan that is safe under the full physics; its optimum bounds their volume [Mbit].
 
-    Losses are the least possible, a session's volume the most that its length, start and stop could give, and its energy
-    is charged where it hurts least.
+    Losses are the least possible, a session's volume the most that its length, start and stop could give, and its
+    energy is charged where it hurts least.
     """
     week = WeekProgramme(problem)
     for candidate in problem.candidates:

@@ -3,11 +3,12 @@
 HiGHS hears no signal until it returns; in a child it can be ended at once by Ctrl-C or by a cancelled re-plan.
 """
 
+import atexit
 import contextlib
 import pickle
 import subprocess
 import sys
-import tempfile
+import threading
 import time
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass, field
@@ -20,6 +21,7 @@ from planner.errors import MachineError
 
 WORKER = Path(__file__).with_name("worker.py")
 LOOK_EVERY_S = 0.05  # how often a waiting parent looks for a cancelled re-plan
+_waiting: list[subprocess.Popen] = []
 
 
 @dataclass(frozen=True)
@@ -83,10 +85,41 @@ class Programme:
         }
 
 
+def start_worker() -> None:
+    """Have a worker loaded and waiting before it is needed; it ends by itself when this process does."""
+    if not _waiting:
+        pipe = subprocess.PIPE
+        _waiting.append(subprocess.Popen([sys.executable, str(WORKER)], stdin=pipe, stdout=pipe, stderr=pipe))
+
+
+def _take_worker() -> subprocess.Popen:
+    """A worker that waits for its question; the next one begins to load."""
+    while True:
+        start_worker()
+        worker = _waiting.pop()
+        if worker.poll() is None:
+            start_worker()
+            return worker
+        _close(worker)
+
+
+def _close(worker: subprocess.Popen) -> None:
+    if worker.poll() is None:
+        worker.kill()
+    worker.wait()
+    for stream in (worker.stdin, worker.stdout, worker.stderr):
+        with contextlib.suppress(OSError):
+            stream.close()
+
+
+@atexit.register
+def _close_waiting() -> None:
+    while _waiting:
+        _close(_waiting.pop())
+
+
 class Solving:
     """A programme being solved in a child process; leaving the `with` block ends the child, whatever happened.
-
-    Question and answer go through unnamed temporary files, so no pipe can fill and block.
 
     Parameters
     ----------
@@ -96,23 +129,26 @@ class Solving:
 
     def __init__(self, programme: Programme, *, relative_gap: float, time_limit_s: float | None = None):
         limit = {} if time_limit_s is None else {"time_limit": time_limit_s}
+        question = pickle.dumps(programme.arrays() | {"options": {"mip_rel_gap": relative_gap} | limit})
         self._began = time.perf_counter()
-        with contextlib.ExitStack() as files:
-            question, self._answer, self._words = (files.enter_context(tempfile.TemporaryFile()) for _ in range(3))
-            pickle.dump(programme.arrays() | {"options": {"mip_rel_gap": relative_gap} | limit}, question)
-            question.seek(0)
-            command = [sys.executable, str(WORKER)]
-            self._process = subprocess.Popen(command, stdin=question, stdout=self._answer, stderr=self._words)
-            self._files = files.pop_all()
+        self._worker = _take_worker()
+        # a thread of its own, so that no pipe can fill and block
+        self._asking = threading.Thread(target=self._ask, args=(question,), daemon=True)
+        self._answer, self._words = b"", b""
+        self._asking.start()
+
+    def _ask(self, question: bytes) -> None:
+        with contextlib.suppress(OSError, ValueError):  # the worker was ended
+            self._answer, self._words = self._worker.communicate(question)
 
     def __enter__(self) -> "Solving":
         return self
 
     def __exit__(self, *_) -> None:
-        if self._process.poll() is None:
-            self._process.kill()
-        self._process.wait()
-        self._files.close()
+        if self._worker.poll() is None:
+            self._worker.kill()
+        self._asking.join()
+        _close(self._worker)
 
     def solution(self, cancelled: Callable[[], bool] = lambda: False) -> Solution:
         """Wait for the answer.
@@ -122,19 +158,14 @@ class Solving:
         KeyboardInterrupt : interrupted, or `cancelled` (asked every 50 ms) says True
         MachineError : the child ended without an answer
         """
-        while self._process.poll() is None:
+        while self._asking.is_alive():
             if cancelled():
                 raise KeyboardInterrupt
-            time.sleep(LOOK_EVERY_S)
-        self._answer.seek(0)
-        content = self._answer.read()
-        if self._process.returncode or not content:
-            self._words.seek(0)
-            words = self._words.read().decode(errors="replace").strip().splitlines()
-            raise MachineError(
-                f"the solver ended without an answer: {words[-1] if words else self._process.returncode}"
-            )
-        return Solution(seconds=time.perf_counter() - self._began, **pickle.loads(content))
+            self._asking.join(LOOK_EVERY_S)
+        if self._worker.returncode or not self._answer:
+            words = self._words.decode(errors="replace").strip().splitlines()
+            raise MachineError(f"the solver ended without an answer: {words[-1] if words else self._worker.returncode}")
+        return Solution(seconds=time.perf_counter() - self._began, **pickle.loads(self._answer))
 
 
 def solve(programme: Programme, *, cancelled: Callable[[], bool] = lambda: False, **options) -> Solution:

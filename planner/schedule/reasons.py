@@ -3,14 +3,13 @@
 import numpy as np
 
 from planner.mission.contacts import Session
-from planner.power.limits import Breach
 from planner.schedule.candidates import Refusal
 from planner.schedule.flown import Flown
 from planner.schedule.frames import contact_id
 from planner.schedule.problem import Problem
 from planner.schedule.sessions import Candidate
 
-CHARGE_LIMITS = ("SoC floor", "end-of-span SoC", "depth of discharge")
+LITTLE = 0.05  # of what a session could send: less than that stored is next to nothing
 
 
 def verdicts(flown: Flown, problem: Problem, refusals: list[Refusal]) -> list[tuple[str, str]]:
@@ -96,10 +95,20 @@ def _no_upload(flown: Flown, problem: Problem, candidate: Candidate) -> str:
 
 
 def _nothing_stored(flown: Flown, candidate: Candidate) -> str:
-    stored_mbit = flown.recorder[candidate.satellite].stored_at_mbit(candidate.closes_s)
-    if stored_mbit > 0.01 * candidate.most_mbit:
+    """What it could bring beyond the plan is what stays stored from then on: the rest, later sessions bring anyway."""
+    series = flown.recorder[candidate.satellite]
+    later = np.flatnonzero(series.time_s >= candidate.closes_s)
+    if not len(later):
         return ""
-    return f"storage empty: {stored_mbit:.0f} Mbit left when it could send {candidate.most_mbit:.0f} Mbit"
+    lowest = later[int(np.argmin(series.stored_mbit[later]))]
+    spare_mbit = float(series.stored_mbit[lowest])
+    if spare_mbit > LITTLE * candidate.most_mbit:
+        return ""
+    when = flown.week.sky.clock.iso(series.time_s[lowest])[:16] + "Z"
+    return (
+        f"storage: it could send {candidate.most_mbit:.0f} Mbit, but planned sessions leave no more than"
+        f" {spare_mbit:.0f} Mbit aboard ({when})"
+    )
 
 
 def _policy(flown: Flown, problem: Problem, candidate: Candidate) -> str:
@@ -112,40 +121,56 @@ def _policy(flown: Flown, problem: Problem, candidate: Candidate) -> str:
     return ""
 
 
-def _shortest(candidate: Candidate) -> Session:
-    """The shortest session around the fastest moment of the candidate's window."""
-    on_s = np.clip(
+def _no_energy(flown: Flown, candidate: Candidate) -> str:
+    """Whether the shortest session, around the fastest moment, finds the energy it would take.
+
+    What is spare at a moment is the least stored energy above its floor from then until the battery is next full: what
+    is taken before that is made up by the Sun that would have been spilled.
+    """
+    begin_s = np.clip(
         candidate.peak_s - candidate.shortest_s / 2, candidate.opens_s, candidate.closes_s - candidate.shortest_s
     )
-    return candidate.session(float(on_s), float(on_s + candidate.shortest_s))
-
-
-def _no_energy(flown: Flown, candidate: Candidate) -> str:
-    """What breaks when the shortest session is added to the plan."""
-    trial = flown.with_session(_shortest(candidate))
-    breaches = trial.worst[candidate.satellite].breaches(trial.week.mission.policy)
-    if not breaches:
+    needed_wh = candidate.likely.fixed_wh + candidate.likely.on_air_wh(begin_s, begin_s + candidate.shortest_s)
+    spare_wh, at_s, asked = spare_energy_wh(flown, candidate.satellite, float(begin_s))
+    if needed_wh <= spare_wh:
         return ""
-    breach: Breach = min(breaches, key=lambda b: b.limit not in CHARGE_LIMITS)
-    when = trial.week.sky.clock.iso(breach.time_s)[:16] + "Z"
-    if breach.limit == "SoC floor":
-        lowest = f"would take the charge to {breach.value:.1f} % ({when}), floor {breach.bound:g} %"
-        return f"energy: even {candidate.shortest_s:.0f} s {lowest}"
-    if breach.limit == "end-of-span SoC":
-        left = f"would leave {breach.value:.1f} % at the end, {breach.bound:g} % asked"
-        return f"energy: even {candidate.shortest_s:.0f} s {left}"
-    return f"{breach.limit}: {breach.value:.2f} {breach.unit} ({when}), limit {breach.bound:.2f} {breach.unit}"
+    when = flown.week.sky.clock.iso(at_s)[:16] + "Z"
+    return (
+        f"energy: even {candidate.shortest_s:.0f} s take {needed_wh:.2f} Wh,"
+        f" and {max(spare_wh, 0.0):.2f} Wh are to spare ({asked} at {when})"
+    )
+
+
+def spare_energy_wh(flown: Flown, satellite: str, from_s: float) -> tuple[float, float, str]:
+    """Energy that could be taken at `from_s` without breaking a charge limit later: how much, when it binds, which."""
+    series, power, policy = flown.worst[satellite], flown.week.powers[satellite], flown.week.mission.policy
+    later = series.time_s >= from_s
+    time_s, stored_wh = series.time_s[later], series.stored_wh[later]
+    spilled = np.flatnonzero(series.spill_w[later] > 0)
+    until = spilled[0] + 1 if len(spilled) else len(time_s)
+    lowest = int(np.argmin(stored_wh[:until]))
+    spare_wh = float(stored_wh[lowest] - power.stored_wh(policy.soc_floor_pct))
+    if not len(spilled):
+        end_wh = float(stored_wh[-1] - power.stored_wh(policy.soc_end_pct))
+        if end_wh < spare_wh:
+            return end_wh, float(time_s[-1]), f"{policy.soc_end_pct:g} % asked"
+    return spare_wh, float(time_s[lowest]), f"floor {policy.soc_floor_pct:g} %"
 
 
 def _not_worth_it(flown: Flown, problem: Problem, candidate: Candidate) -> str:
     """It would fit; what it earns against what it costs."""
     cost = problem.stations[candidate.station].cost
     price_mbit = problem.policy.cost_mbit * (cost.per_pass + cost.per_minute * candidate.longest_s / 60)
-    stored_mbit = flown.recorder[candidate.satellite].stored_mbit[-1]
     if price_mbit > candidate.most_mbit:
         return f"not worth it: at most {candidate.most_mbit:.0f} Mbit for a station cost of {price_mbit:.0f} Mbit"
-    energy_wh = candidate.likely.fixed_wh + candidate.likely.on_air_wh(candidate.opens_s, candidate.closes_s)
-    return (
-        f"not worth it: {energy_wh:.2f} Wh for at most {candidate.most_mbit:.0f} Mbit;"
-        f" other sessions bring more of the {stored_mbit:.0f} Mbit still stored at the end"
-    )
+    taken_wh = candidate.likely.fixed_wh + candidate.likely.on_air_wh(candidate.opens_s, candidate.closes_s)
+    own = candidate.most_mbit / max(taken_wh, 1e-9)
+    rivals = [_yield_mbit_per_wh(flown, session) for session in flown.of(candidate.satellite)]
+    poorest = min((rival for rival in rivals if rival > own), default=None)
+    beaten = "" if poorest is None else f"; planned sessions bring from {poorest:.0f} Mbit/Wh"
+    return f"not worth it: {taken_wh:.2f} Wh for at most {candidate.most_mbit:.0f} Mbit ({own:.0f} Mbit/Wh{beaten})"
+
+
+def _yield_mbit_per_wh(flown: Flown, session: Session) -> float:
+    draw = flown.week.powers[session.satellite].session_draw(session)
+    return flown.volume_mbit[session] / max(draw.added_wh, 1e-9)

@@ -12,6 +12,7 @@ from planner.link.table import LinkTable, link_table
 from planner.mission.models import Mission, Satellite
 from planner.power.balance import SatellitePower
 from planner.schedule.hours import Windows, open_windows_s
+from planner.schedule.programme import start_worker
 from planner.sky import Sky, observe
 
 SAMPLE_STEP_S = 5.0
@@ -88,6 +89,7 @@ class Week:
 
 def prepare(mission: Mission, *, progress: Progress = lambda stage: None) -> Week:
     """Compute passes, links and power of a mission; `progress` hears the name of each stage as it begins."""
+    start_worker()
     progress("passes")
     sky = observe(mission, sample_step_s=SAMPLE_STEP_S)
     links, powers = {}, {}

@@ -37,7 +37,10 @@ def main() -> None:
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # the parent ends this process itself
     output = os.dup(1)
     os.dup2(2, 1)  # whatever the solver prints must not mix with the answer
-    found = pickle.dumps(answer(pickle.load(sys.stdin.buffer)))
+    question = sys.stdin.buffer.read()
+    if not question:  # the parent ended without asking
+        return
+    found = pickle.dumps(answer(pickle.loads(question)))
     with os.fdopen(output, "wb") as stream:
         stream.write(found)
 
