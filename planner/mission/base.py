@@ -1,10 +1,13 @@
 """What every described thing has in common: frozen, no unknown keys, no silent conversion, no NaN."""
 
+import math
 from typing import Annotated
 
 from pydantic import AfterValidator, BaseModel, ConfigDict, Field
 
-LARGEST = 1e12  # no quantity in a mission is larger in its own unit; keeps 1e308 out of the arithmetic
+# No quantity in a mission is larger or smaller in its own unit; keeps 1e308 and 1e-308 out of the arithmetic
+LARGEST, SMALLEST = 1e12, 1e-9
+LARGEST_DB = 300.0
 
 
 class Described(BaseModel):
@@ -19,18 +22,33 @@ def _one_printable_line(text: str) -> str:
     return text
 
 
+def _plain_path(text: str) -> str:
+    if not text.strip() or not text.isprintable():
+        raise ValueError("must be a file name in printable characters")
+    return text
+
+
+def _not_tiny(value: float) -> float:
+    if value < SMALLEST:
+        raise ValueError(f"must be at least {SMALLEST:g}")
+    return value
+
+
 def _not_null(vector: tuple[float, float, float]) -> tuple[float, float, float]:
-    if not any(vector):
+    if math.hypot(*vector) < SMALLEST:
         raise ValueError("must not be the null vector")
     return vector
 
 
 Name = Annotated[str, AfterValidator(_one_printable_line)]
-Positive = Annotated[float, Field(gt=0, le=LARGEST)]
+FileName = Annotated[str, AfterValidator(_plain_path)]
+Positive = Annotated[float, Field(gt=0, le=LARGEST), AfterValidator(_not_tiny)]
 NonNegative = Annotated[float, Field(ge=0, le=LARGEST)]
 Real = Annotated[float, Field(ge=-LARGEST, le=LARGEST)]
+Decibel = Annotated[float, Field(ge=-LARGEST_DB, le=LARGEST_DB)]
+LossDecibel = Annotated[float, Field(ge=0, le=LARGEST_DB)]
 Percent = Annotated[float, Field(ge=0, le=100)]
 Fraction = Annotated[float, Field(ge=0, le=1)]
 Efficiency = Annotated[float, Field(gt=0, le=1)]
 Celsius = Annotated[float, Field(ge=-150, le=200)]
-BodyAxis = Annotated[tuple[float, float, float], AfterValidator(_not_null)]
+BodyAxis = Annotated[tuple[Real, Real, Real], AfterValidator(_not_null)]

@@ -1,13 +1,14 @@
 """From files to a Mission: everything read, everything checked, all faults told at once."""
 
 from collections.abc import Callable
+from datetime import UTC, datetime
 from pathlib import Path
 from typing import Annotated, Any, TypeVar
 
-from pydantic import AwareDatetime, Field, ValidationError
+from pydantic import AfterValidator, AwareDatetime, Field, ValidationError
 
 from planner.errors import InputError
-from planner.mission.base import Described, Name
+from planner.mission.base import Described, FileName, Name
 from planner.mission.elements import read_elements
 from planner.mission.models import Mission, Policy, Satellite, Spacecraft, StartState
 from planner.mission.names import alike
@@ -16,14 +17,23 @@ from planner.mission.station import Station
 from planner.mission.text import faults_of, nearest, read_toml, sha256
 
 DEFAULT_MISSION = Path("missions/marshlight.toml")
+FIRST_YEAR, LAST_YEAR = 1957, 2049  # what two-digit years of element sets and the Sun's ephemeris both cover
+MOST_SATELLITES, MOST_STATIONS = 100, 500
+MOST_STATION_DAYS = 10_000  # satellites x stations x days: some 50 000 passes, which fit in 1 GB
 Model = TypeVar("Model", bound=Described)
+
+
+def _in_known_years(moment: datetime) -> datetime:
+    if not FIRST_YEAR <= moment.year <= LAST_YEAR:
+        raise ValueError(f"must be in the years {FIRST_YEAR} to {LAST_YEAR}")
+    return moment
 
 
 class SatelliteTable(Described):
     """`[[satellite]]`: what one satellite has of its own."""
 
     name: Name
-    spacecraft: str | None = None
+    spacecraft: FileName | None = None
     start_state: StartState | None = None
 
 
@@ -31,9 +41,9 @@ class MissionTables(Described):
     """The mission file's own keys; the spacecraft's tables stand beside them."""
 
     name: Name
-    elements: str
-    stations: Annotated[tuple[str, ...], Field(min_length=1)]
-    start: AwareDatetime
+    elements: FileName
+    stations: Annotated[tuple[FileName, ...], Field(min_length=1, max_length=MOST_STATIONS)]
+    start: Annotated[AwareDatetime, AfterValidator(_in_known_years)]
     days: Annotated[float, Field(gt=0, le=60)]
     policy: Policy
     start_state: StartState | None = None
@@ -63,9 +73,6 @@ class _Reader:
         self.read[name] = self.folder / name
         return self.read[name]
 
-    def tables(self, name: str) -> dict[str, Any]:
-        return self.attempt(read_toml, self.path(name)) or {}
-
     def model(self, kind: type[Model], raw: dict[str, Any], path: Path, known: type | None = None) -> Model | None:
         try:
             return kind.model_validate(raw)
@@ -93,10 +100,12 @@ def load_mission(path: str | Path = DEFAULT_MISSION) -> Mission:
     shared = {key: value for key, value in raw.items() if key in Spacecraft.model_fields}
     tables = reader.model(MissionTables, own, path, _MissionFile)
     spacecraft = _spacecraft(reader, shared, path) if shared or not own.get("satellite") else None
-    names = tables.stations if tables else own.get("stations", ())
-    stations = [_station(reader, name) for name in names if isinstance(name, str)]
+    orbits = _orbits(reader, own)
+    stations = [_station(reader, name) for name in _file_names(own.get("stations"))[:MOST_STATIONS]]
     reader.stop_on_faults()
-    satellites = _satellites(reader, tables, spacecraft, path)
+    _check_size(reader, tables, len(orbits), path)
+    reader.stop_on_faults()
+    satellites = _satellites(reader, tables, orbits, spacecraft, path)
     _check_names(reader, stations, "stations", path)
     reader.stop_on_faults()
     return Mission(
@@ -108,6 +117,32 @@ def load_mission(path: str | Path = DEFAULT_MISSION) -> Mission:
         policy=tables.policy,
         inputs=tuple((name, sha256(file)) for name, file in sorted(reader.read.items())),
     )
+
+
+def _file_names(value: Any) -> list[str]:
+    """The file names in what may be no list of them, so that these files can be checked beside it."""
+    return [text for text in value if isinstance(text, str) and text.isprintable()] if isinstance(value, tuple) else []
+
+
+def _orbits(reader: _Reader, own: dict[str, Any]) -> dict[str, Any]:
+    """Read even where other keys are at fault, so that all faults can be told at once."""
+    names, start = _file_names((own.get("elements"),)), own.get("start")
+    at = start if isinstance(start, datetime) and start.tzinfo else datetime(FIRST_YEAR, 1, 1, tzinfo=UTC)
+    found = [reader.attempt(read_elements, reader.path(name), at) for name in names]
+    return found[0] if found and found[0] else {}
+
+
+def _check_size(reader: _Reader, tables: MissionTables, satellites: int, path: Path) -> None:
+    if satellites > MOST_SATELLITES:
+        reader.faults.append(
+            f"{path.parent / tables.elements}: must hold at most {MOST_SATELLITES} satellites, got {satellites}"
+        )
+    station_days = satellites * len(tables.stations) * tables.days
+    if station_days > MOST_STATION_DAYS:
+        reader.faults.append(
+            f"{path}: satellites x stations x days must be at most {MOST_STATION_DAYS},"
+            f" got {satellites} x {len(tables.stations)} x {tables.days:g} = {station_days:g}"
+        )
 
 
 def _station(reader: _Reader, name: str) -> Station | None:
@@ -124,6 +159,12 @@ def _spacecraft(reader: _Reader, raw: dict[str, Any], path: Path) -> Spacecraft 
     return reader.model(Spacecraft, raw, path)
 
 
+def _own_spacecraft(reader: _Reader, name: str) -> Spacecraft | None:
+    path = reader.path(name)
+    raw = reader.attempt(read_toml, path)
+    return None if raw is None else _spacecraft(reader, raw, path)
+
+
 def _with_pattern(reader: _Reader, transmitter: Any) -> Any:
     antenna = transmitter.get("antenna") if isinstance(transmitter, dict) else None
     if (
@@ -136,23 +177,20 @@ def _with_pattern(reader: _Reader, transmitter: Any) -> Any:
     return transmitter | {"antenna": antenna | {"samples": samples}}
 
 
-def _satellites(reader: _Reader, tables: MissionTables, shared: Spacecraft | None, path: Path) -> list[Satellite]:
-    orbits = reader.attempt(read_elements, reader.path(tables.elements), tables.start) or {}
+def _satellites(
+    reader: _Reader, tables: MissionTables, orbits: dict[str, Any], shared: Spacecraft | None, path: Path
+) -> list[Satellite]:
+    _check_names(reader, list(tables.satellite), "satellite", path)
     own = {table.name: table for table in tables.satellite}
-    if orbits:
-        reader.faults.extend(
-            f"{path}: satellite.name: must be a satellite of {tables.elements}, got {name!r}{nearest(name, orbits)}"
-            for name in own
-            if name not in orbits
-        )
+    reader.faults.extend(
+        f"{path}: satellite.name: must be a satellite of {tables.elements}, got {name!r}{nearest(name, orbits)}"
+        for name in own
+        if name not in orbits
+    )
     satellites = []
     for name, elements in orbits.items():
         table = own.get(name, SatelliteTable(name=name))
-        spacecraft = (
-            shared
-            if table.spacecraft is None
-            else _spacecraft(reader, reader.tables(table.spacecraft), path.parent / table.spacecraft)
-        )
+        spacecraft = shared if table.spacecraft is None else _own_spacecraft(reader, table.spacecraft)
         start_state = table.start_state or tables.start_state
         if start_state is None:
             reader.faults.append(f"{path}: start_state: is required, for {name}")
@@ -170,10 +208,11 @@ def _check_age(reader: _Reader, name: str, elements: Any, tables: MissionTables,
     age_days = (tables.start - elements.epoch).total_seconds() / 86_400
     limit_days = tables.policy.elements_max_age_days
     if abs(age_days) > limit_days:
+        age, mend = ("old", "newer") if age_days > 0 else ("after it", "older")
         reader.faults.append(
             f"{path.parent / tables.elements}: {name}: epoch {elements.epoch:%Y-%m-%dT%H:%M:%SZ} must be within"
-            f" policy.elements_max_age_days = {limit_days:g} of the start, got {age_days:.1f} days;"
-            " fetch newer elements"
+            f" policy.elements_max_age_days = {limit_days:g} of the start, got {abs(age_days):.1f} days {age};"
+            f" fetch {mend} elements"
         )
 
 

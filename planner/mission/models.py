@@ -3,9 +3,10 @@
 from datetime import datetime, timedelta
 from typing import Annotated, Any
 
-from pydantic import AwareDatetime, Field, field_validator, model_validator
+from pydantic import AwareDatetime, Field, ValidationError, field_validator, model_validator
 
-from planner.mission.base import Described, Name, NonNegative, Percent, Positive, Real
+from planner.errors import InputError
+from planner.mission.base import Decibel, Described, Name, NonNegative, Percent, Positive
 from planner.mission.elements import ElementSet, Ephemeris
 from planner.mission.names import alike
 from planner.mission.pointing import Pointing
@@ -21,6 +22,7 @@ from planner.mission.power import (
     check_windows,
 )
 from planner.mission.station import Station
+from planner.mission.text import faults_of
 from planner.mission.transmitter import Transmitter
 
 
@@ -40,7 +42,7 @@ class Policy(Described):
     soc_floor_pct: Percent
     soc_end_pct: Percent
     # link
-    link_margin_db: Real = 3.0
+    link_margin_db: Decibel = 3.0
     availability_pct: Annotated[float, Field(ge=50, le=99.999)] = 99.0
     enforce_flux_limit: bool = False
     # sessions
@@ -186,20 +188,28 @@ class Mission(Described):
         """The satellite of that name; KeyError otherwise."""
         return {satellite.name: satellite for satellite in self.satellites}[name]
 
-    def with_changes(self, **tables: dict[str, Any]) -> "Mission":
+    def with_changes(
+        self, *, policy: dict[str, Any] | None = None, start_state: dict[str, Any] | None = None
+    ) -> "Mission":
         """A copy with some keys of `policy`, and of every satellite's `start_state`, changed and checked anew.
 
         >>> mission.with_changes(policy={"soc_floor_pct": 55.0}, start_state={"soc_pct": 80.0})
+
+        Raises
+        ------
+        InputError : with every fault, each naming table, key, rule and value
         """
-        policy = Policy.model_validate(self.policy.model_dump() | tables.get("policy", {}))
         satellites = tuple(
-            satellite.model_copy(
-                update={
-                    "start_state": StartState.model_validate(
-                        satellite.start_state.model_dump() | tables.get("start_state", {})
-                    )
-                }
-            )
-            for satellite in self.satellites
+            one.model_copy(update={"start_state": _changed("start_state", one.start_state, start_state)})
+            for one in self.satellites
         )
-        return self.model_copy(update={"policy": policy, "satellites": satellites})
+        return self.model_copy(update={"policy": _changed("policy", self.policy, policy), "satellites": satellites})
+
+
+def _changed(table: str, described: Described, changes: dict[str, Any] | None):
+    """A table with some keys changed; InputError where it is then at fault."""
+    raw = described.model_dump() | (changes or {})
+    try:
+        return type(described).model_validate(raw)
+    except ValidationError as error:
+        raise InputError(*faults_of(table, error, raw, type(described))) from None

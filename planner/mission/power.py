@@ -6,11 +6,11 @@ from typing import Annotated, Literal
 
 from pydantic import AwareDatetime, Field, field_validator, model_validator
 
-from planner.mission.base import BodyAxis, Celsius, Described, Efficiency, Name, NonNegative, Percent, Positive
+from planner.mission.base import BodyAxis, Celsius, Described, Efficiency, Name, NonNegative, Percent, Positive, Real
 
 When = Literal["always", "sunlit", "eclipse", "windows"]
 Windows = tuple[tuple[AwareDatetime, AwareDatetime], ...]
-Table = tuple[tuple[float, float], ...]
+Table = tuple[tuple[Real, Real], ...]
 # Cell voltages an operator commonly stays between, for cycle life and headroom (common practice, no source)
 DERATED_V = {"LiFePO4": (2.8, 3.5), "Li-ion": (3.0, 4.1)}
 

@@ -6,7 +6,7 @@ from typing import Annotated, Literal
 
 from pydantic import AwareDatetime, Field, field_validator, model_validator
 
-from planner.mission.base import Described, Efficiency, Name, NonNegative, Positive
+from planner.mission.base import Described, Efficiency, LossDecibel, Name, NonNegative, Positive
 from planner.mission.transmitter import BandName, Polarisation
 
 Weekday = Literal["mon", "tue", "wed", "thu", "fri", "sat", "sun"]
@@ -17,7 +17,7 @@ class GroundAntenna(Described):
     efficiency: Efficiency = 0.6
     pointing_error_deg: NonNegative = 0.0
     autotrack: bool = Field(default=False, description="follows the signal: the age of the elements costs no gain")
-    axial_ratio_db: NonNegative = 0.0
+    axial_ratio_db: LossDecibel = 0.0
     polarisations: Annotated[tuple[Polarisation, ...], Field(min_length=1)] = ("RHCP", "LHCP")
     max_azimuth_rate_deg_s: Positive = 10.0
     max_elevation_rate_deg_s: Positive = 5.0
@@ -28,10 +28,10 @@ class Receiver(Described):
 
     bands: Annotated[tuple[BandName, ...], Field(min_length=1)]
     noise_temperature_k: Positive | None = None
-    feed_loss_db: NonNegative = 0.0
-    amplifier_gain_db: NonNegative = 50.0
-    cable_loss_db: NonNegative = 0.0
-    following_noise_figure_db: NonNegative = 0.0
+    feed_loss_db: LossDecibel = 0.0
+    amplifier_gain_db: LossDecibel = 50.0
+    cable_loss_db: LossDecibel = 0.0
+    following_noise_figure_db: LossDecibel = 0.0
     ground_spillover_k: NonNegative = 10.0
     gt_dbk: Annotated[float, Field(ge=-60, le=80)] | None = None
 

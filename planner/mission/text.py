@@ -20,15 +20,19 @@ def read_bytes(path: Path) -> bytes:
     """The file's bytes; InputError if it is missing, not a regular file, unreadable or over 50 MB."""
     try:
         status = path.stat()
-        if not stat.S_ISREG(status.st_mode):
-            raise InputError(f"{path}: must be a regular file")
-        if status.st_size > LARGEST_FILE_BYTES:
-            raise InputError(f"{path}: must be at most 50 MB, got {status.st_size / 1e6:.1f} MB")
-        return path.read_bytes()
+        if stat.S_ISREG(status.st_mode) and status.st_size <= LARGEST_FILE_BYTES:
+            return path.read_bytes()
     except FileNotFoundError:
         raise InputError(f"{path}: no such file{_nearest_file(path)}") from None
     except (OSError, ValueError) as error:
         raise InputError(f"{path}: cannot be read: {getattr(error, 'strerror', None) or error}") from None
+    if not stat.S_ISREG(status.st_mode):
+        raise InputError(f"{path}: must be a regular file, got {_kind(status.st_mode)}")
+    raise InputError(f"{path}: must be at most 50 MB, got {status.st_size / 1e6:.1f} MB")
+
+
+def _kind(mode: int) -> str:
+    return "a folder" if stat.S_ISDIR(mode) else "a device or pipe"
 
 
 def read_text(path: Path) -> str:
@@ -69,15 +73,23 @@ def shown(value: Any) -> str:
     return text if len(text) <= LONGEST_VALUE_SHOWN else text[: LONGEST_VALUE_SHOWN - 1] + "…"
 
 
-def faults_of(path: Path, error: ValidationError, raw: Any, model: type | None = None) -> list[str]:
+def faults_of(path: Path | str, error: ValidationError, raw: Any, model: type | None = None) -> list[str]:
     """One line per fault that pydantic found: file, key, rule, value received."""
-    return [_fault(path, entry, raw, model) for entry in error.errors(include_url=False)]
+    entries = [entry for entry in error.errors(include_url=False) if not _only_shrunk(entry)]
+    return [_fault(path, entry, raw, model) for entry in entries]
 
 
-def _fault(path: Path, entry: Mapping[str, Any], raw: Any, model: type | None) -> str:
+def _only_shrunk(entry: Mapping[str, Any]) -> bool:
+    """A list counted as too short only because entries of it are at fault, which is told already."""
+    return entry["type"] == "too_short" and len(entry["input"]) >= entry["ctx"]["min_length"]
+
+
+def _fault(path: Path | str, entry: Mapping[str, Any], raw: Any, model: type | None) -> str:
     key, holder = _key(entry["loc"], raw)
     kind, context, value = entry["type"], entry.get("ctx", {}), entry["input"]
     place = f"{path}: {key}" if key else f"{path}"
+    if kind == "union_tag_invalid":
+        value = context["tag"]
     if kind == "missing":
         return f"{place}: is required"
     if kind == "extra_forbidden":
@@ -107,6 +119,7 @@ def _rule(kind: str, context: Mapping[str, Any], message: str) -> str:
         "datetime_type": "must be a date and time without quotes, such as 2026-12-07T00:00:00Z",
         "time_type": "must be a time of day without quotes, such as 06:30:00",
         "too_short": "must have at least {min_length} entries",
+        "too_long": "must have at most {max_length} entries",
         "missing_argument": "is required",
     }
     return rules[kind].format(**context) if kind in rules else message[0].lower() + message[1:]

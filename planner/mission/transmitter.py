@@ -4,7 +4,18 @@ from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
-from planner.mission.base import BodyAxis, Described, Efficiency, Fraction, Name, NonNegative, Positive, Real
+from planner.mission.base import (
+    BodyAxis,
+    Decibel,
+    Described,
+    Efficiency,
+    FileName,
+    Fraction,
+    LossDecibel,
+    Name,
+    NonNegative,
+    Positive,
+)
 from planner.mission.pointing import Law
 
 Polarisation = Literal["RHCP", "LHCP", "horizontal", "vertical"]
@@ -28,7 +39,7 @@ class GainOnly(Described):
     """A gain and nothing else: usable only where the antenna looks straight at the station."""
 
     kind: Literal["gain only"]
-    gain_dbi: Real
+    gain_dbi: Decibel
 
 
 class Parabola(Described):
@@ -41,7 +52,7 @@ class CosinePower(Described):
     """Patch, or array of patches: gain falls as a power of the cosine of the off-axis angle."""
 
     kind: Literal["patch", "array"]
-    gain_dbi: Real
+    gain_dbi: Decibel
 
 
 class ReflectingArray(Described):
@@ -58,7 +69,7 @@ class MeasuredPattern(Described):
     """Off-axis angle [deg] and gain [dBi] from a CSV file; `samples` is filled in when the file is read."""
 
     kind: Literal["measured pattern"]
-    file: str
+    file: FileName
     samples: tuple[tuple[float, float], ...] = ()
 
 
@@ -72,7 +83,7 @@ class OwnModcod(Described):
 
     name: Name
     bits_per_symbol: Positive
-    required_esn0_db: Real
+    required_esn0_db: Decibel
 
 
 class Transmitter(Described):
@@ -80,9 +91,9 @@ class Transmitter(Described):
     # radio
     frequency_mhz: Annotated[float, Field(ge=30, lt=75_000)]
     rf_power_w: Positive
-    line_loss_db: NonNegative = 0.0
+    line_loss_db: LossDecibel = 0.0
     polarisation: Polarisation = "RHCP"
-    axial_ratio_db: NonNegative = 0.0
+    axial_ratio_db: LossDecibel = 0.0
     pointing_error_deg: NonNegative = 0.0
     antenna: Antenna
     boresight: BodyAxis = (0.0, 0.0, 1.0)
@@ -93,10 +104,10 @@ class Transmitter(Described):
     modcods: Annotated[tuple[Name, ...], Field(min_length=1)]
     own_modcods: tuple[OwnModcod, ...] = ()
     modcod_choice: Literal["fixed", "best for the pass", "variable"] = "fixed"
-    hysteresis_db: NonNegative = 0.5
+    hysteresis_db: LossDecibel = 0.5
     shortest_dwell_s: NonNegative = 10.0
     pilots: bool = Field(default=False, description="DVB-S2 pilot symbols are sent; other codes ignore it")
-    implementation_loss_db: NonNegative = 1.0
+    implementation_loss_db: LossDecibel = 1.0
     acquisition_s: NonNegative = 5.0
     modcod_change_s: NonNegative = 0.0
     upper_layer_overhead_pct: Annotated[float, Field(ge=0, lt=100)] = 0.0
