@@ -55,21 +55,25 @@ def week_figure(
     Figure, A4 landscape; its axes in order: lanes, charge, data
     """
     satellite = satellite or mission.satellites[0].name
-    figure = week_page(mission, plan, window=window, time_zone=time_zone, satellite=satellite)
+    figure = week_page(mission, plan, satellite=satellite, window=window, time_zone=time_zone)
     draw_plan(figure, mission, plan, satellite=satellite, selected=selected)
     return figure
 
 
-def week_page(mission: Mission, plan, *, window, time_zone: tzinfo, satellite: str) -> Figure:
+def week_page(
+    mission: Mission, plan, *, satellite: str, window=None, time_zone: tzinfo = UTC, size_in=style.A4_LANDSCAPE_IN
+) -> Figure:
     """The page before the plan is drawn: axes, closures, eclipses, legend, the same for every plan of the mission."""
     begin, end = window or (mission.start, mission.end)
     with style.on_paper():
-        figure = style.new_figure(title=" ")
+        figure = style.new_figure(size_in, title=" ")
         figure.set_layout_engine("none")  # a layout that measures every label costs a third of a redraw
         stations = lanes_of(mission, plan)
         heights = [min(0.5 * len(stations) + 0.4, 6.0), 2.2, 1.5]
-        left = 0.035 + 0.0052 * max(len(_short(station.name)) for station in stations)
-        room = {"left": left, "right": 0.962, "top": 0.945, "bottom": 0.115, "hspace": 0.17}
+        width_in, height_in = size_in
+        left_in = 0.41 + 0.061 * max(len(_short(station.name)) for station in stations)
+        room = {"left": left_in / width_in, "right": 1 - 0.44 / width_in, "hspace": 0.17}
+        room |= {"top": 1 - 0.455 / height_in, "bottom": 0.95 / height_in}
         lanes, charge, data = figure.subplots(3, 1, sharex=True, height_ratios=heights, gridspec_kw=room)
         lanes.set_xlim(mdates.date2num(begin), mdates.date2num(end))
         _draw_closures(lanes, mission, stations)

@@ -113,14 +113,15 @@ class SatellitePower:
         foreign = {session.satellite for session in sessions} - {self.satellite.name}
         if foreign:
             raise ValueError(f"sessions must be of {self.satellite.name}, got {', '.join(sorted(foreign))}")
-        new = [session for session in dict.fromkeys(sessions) if session not in self._courses]
-        if len(self._courses) + len(new) > MOST_COURSES_KEPT:
-            self._courses.clear()
+        kept = self._courses
+        new = [session for session in dict.fromkeys(sessions) if session not in kept]
+        if len(kept) + len(new) > MOST_COURSES_KEPT:
+            kept = self._courses = {}  # not cleared: another thread may be reading the old one
             new = list(dict.fromkeys(sessions))
         if new:
             traced = trace_sessions(self.mission, self.satellite, self._sunshine, new)
-            self._courses.update(zip(new, traced, strict=True))
-        return [self._courses[session] for session in sessions]
+            kept.update(zip(new, traced, strict=True))
+        return [kept[session] for session in sessions]
 
     def _overlay(self, course: SessionCourse, corner: CornerName) -> Overlay:
         craft, assumed = self.satellite.spacecraft, self.corner(corner)
