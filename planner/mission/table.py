@@ -11,6 +11,8 @@ from planner.mission.text import nearest, read_text, shown
 
 FORMULA = re.compile(r"'*[=+\-@\t\r]")  # what a spreadsheet would run, behind apostrophes or none
 
+SEPARATORS = {";": "semicolons", "\t": "tabs"}
+
 
 def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[str, str]]]:
     """Each row as (line number, {column: text}), blank rows left out, one apostrophe before = + - @ undone.
@@ -22,11 +24,12 @@ def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[st
     text = read_text(path)
     header, *rows = list(_rows(path, text)) or [(1, [])]
     columns = [column.strip() for column in header[1]]
-    if len(columns) == 1 and ";" in columns[0]:
-        raise InputError(
-            f"{path}: line {header[0]}: columns must be separated by commas, got semicolons;"
-            " save as comma-separated CSV with decimal points"
-        )
+    for other, name in SEPARATORS.items():
+        if len(columns) == 1 and other in columns[0]:
+            raise InputError(
+                f"{path}: line {header[0]}: columns must be separated by commas, got {name};"
+                " save as comma-separated CSV with decimal points"
+            )
     missing = [name for name in required if name not in columns]
     if missing:
         raise InputError(

@@ -61,7 +61,7 @@ def sha256(path: Path) -> str:
 
 def nearest(word: str, known: Iterable[str]) -> str:
     """'; did you mean "soc_floor_pct"?' or nothing."""
-    by_folded = {name.casefold(): name for name in known}
+    by_folded = {name.casefold(): name for name in known if name.isprintable()}
     close = difflib.get_close_matches(str(word).casefold(), by_folded, n=1, cutoff=0.6)
     return f'; did you mean "{by_folded[close[0]]}"?' if close else ""
 
