@@ -6,7 +6,7 @@ from collections.abc import Iterable
 
 def slug(name: str) -> str:
     """Lower case, with every run of other characters than letters and digits as one hyphen."""
-    return re.sub(r"[^\w]+|_+", "-", name.lower()).strip("-") or "x"
+    return re.sub(r"[\W_]+", "-", name.lower()).strip("-") or "x"
 
 
 def alike(names: Iterable[str]) -> list[tuple[str, str]]:
