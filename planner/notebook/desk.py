@@ -164,7 +164,9 @@ class Desk:
         """The modes of the satellite whose pass is looked at."""
         satellite = self.mission.satellites[0]
         if self.pass_id in self.prepared.row_of:
-            satellite = self.mission.satellite(str(self.prepared.sky.passes.satellite[self.prepared.row_of[self.pass_id]]))
+            satellite = self.mission.satellite(
+                str(self.prepared.sky.passes.satellite[self.prepared.row_of[self.pass_id]])
+            )
         return [transmitter.mode for transmitter in satellite.spacecraft.transmitter]
 
     def session(self):

@@ -1,0 +1,39 @@
+"""What must be in view whatever else is: this is a planning aid, and how old the elements are."""
+
+from html import escape
+
+import ipywidgets as widgets
+
+from planner.charts import style
+from planner.mission.models import Mission
+from planner.notebook.pieces import FULL
+from planner.schedule.result import CAUTIONS
+from planner.units import DAY_S
+
+
+def caution_box(mission: Mission) -> widgets.HTML:
+    """Every caution, in a frame that stays on the page."""
+    items = "".join(f"<li>{escape(text)}</li>" for text in [*CAUTIONS, *_element_ages(mission)])
+    return widgets.HTML(
+        f'<div style="border:2px solid {style.ORANGE};border-left-width:10px;padding:5px 12px;line-height:1.35">'
+        f'<b>⚠ Before anything is transmitted</b><ul style="margin:2px 0 2px 18px;padding:0">{items}</ul></div>',
+        layout=FULL,
+    )
+
+
+def _element_ages(mission: Mission) -> list[str]:
+    policy = mission.policy
+    ages = [
+        (satellite.name, (mission.start - satellite.elements.epoch).total_seconds() / DAY_S)
+        for satellite in mission.satellites
+    ]
+    told = [f"{name}: elements {_age(days)} at the start" for name, days in ages[:4]]
+    if len(ages) > 4:
+        oldest = max(ages, key=lambda pair: pair[1])
+        told = [f"{len(ages)} satellites, the oldest elements ({oldest[0]}) {_age(oldest[1])} at the start"]
+    renewed = f"the plan counts on new ones every {policy.elements_refresh_days:g} days"
+    return [f"{text}; {renewed}." for text in told]
+
+
+def _age(days: float) -> str:
+    return f"{days:.1f} days old" if days >= 0 else f"of an epoch {-days:.1f} days later, not yet known,"

@@ -1,0 +1,179 @@
+"""What if: values of the mission changed, stations and modes switched off, passes kept or dropped, and a re-plan."""
+
+from dataclasses import replace
+
+import ipywidgets as widgets
+
+from planner.errors import InputError
+from planner.export.compare import HEADINGS, compare_plans
+from planner.notebook.background import Background
+from planner.notebook.changes import Changes
+from planner.notebook.desk import WEEK, Desk
+from planner.notebook.pieces import NumberField, line_html, lines_html, table_html, told_in
+
+FIELDS = (  # table of the mission file, key, what the field says, unit, step
+    ("policy", "soc_floor_pct", "charge never below", "%", 1.0),
+    ("policy", "soc_end_pct", "charge at the end", "%", 1.0),
+    ("start_state", "soc_pct", "charge at the start", "%", 1.0),
+    ("policy", "link_margin_db", "required margin", "dB", 0.5),
+    ("policy", "availability_pct", "availability", "%", 0.1),
+)
+ROWS_SHOWN = 10
+
+
+class WhatIf:
+    """The fields beside the wishes, the re-plan and its outcome."""
+
+    def __init__(self, desk: Desk):
+        self.desk = desk
+        self.message = widgets.HTML()
+        self.fields = {key: self._field(*entry) for entry in FIELDS for key in [entry[1]]}
+        self.stations = self._switches([station.name for station in desk.asked.stations], "stations_off")
+        modes = [t.mode for satellite in desk.asked.satellites for t in satellite.spacecraft.transmitter]
+        self.modes = self._switches(list(dict.fromkeys(modes)), "modes_off")
+        self.reset = widgets.Button(description="as in the file", tooltip="undo every change made here")
+        self.reset.on_click(lambda _: self._as_in_the_file())
+        numbers = widgets.VBox([field.widget for field in self.fields.values()])
+        switches = widgets.VBox(
+            [widgets.HTML("stations in use"), *self.stations, widgets.HTML("modes in use"), *self.modes, self.reset]
+        )
+        self.widget = widgets.VBox([widgets.HBox([numbers, switches], layout={"flex_flow": "row wrap"}), self.message])
+
+    def _field(self, table: str, key: str, label: str, unit: str, step: float) -> NumberField:
+        def take(value: float) -> None:
+            self.desk.alter(self.desk.changes.with_value(table, key, value))
+
+        return NumberField(label, unit, self._asked(table, key), take, step)
+
+    def _asked(self, table: str, key: str) -> float:
+        source = self.desk.asked.policy if table == "policy" else self.desk.asked.satellites[0].start_state
+        return float(getattr(source, key))
+
+    def _switches(self, names: list[str], what: str) -> list[widgets.Checkbox]:
+        boxes = [widgets.Checkbox(True, description=name, indent=False) for name in names]
+        for box in boxes:
+            box.observe(lambda change: self._switched(what, names, boxes, change), "value")
+        return boxes
+
+    def _switched(self, what: str, names: list[str], boxes, change) -> None:
+        off = frozenset(name for name, box in zip(names, boxes, strict=True) if not box.value)
+        if off == getattr(self.desk.changes, what):
+            return
+        self.message.value = ""
+        try:
+            self.desk.alter(replace(self.desk.changes, **{what: off}))
+        except InputError as fault:
+            self.message.value = lines_html(fault.faults, "bad")
+            change["owner"].value = True
+
+    def _as_in_the_file(self) -> None:
+        self.message.value = ""
+        with told_in(self.message):
+            self.desk.alter(Changes())
+            self.desk.leave_open()
+            for table, key, *_ in FIELDS:
+                self.fields[key].put(self._asked(table, key))
+            for box in (*self.stations, *self.modes):
+                box.value = True
+
+
+class Wishes:
+    """Keep, drop or leave open the pass that is looked at; and what has been wished so far."""
+
+    def __init__(self, desk: Desk):
+        self.desk = desk
+        self.keep = widgets.Button(description="keep this pass", icon="check", tooltip="this mode must be flown")
+        self.drop = widgets.Button(description="drop this pass", icon="times", tooltip="nothing is sent on it")
+        self.open = widgets.Button(description="leave it open", tooltip="the plan may decide")
+        self.told, self.message = widgets.HTML(), widgets.HTML()
+        self.keep.on_click(lambda _: self._wish(lambda: desk.keep_pass(desk.pass_id, desk.mode)))
+        self.drop.on_click(lambda _: self._wish(lambda: desk.drop_pass(desk.pass_id)))
+        self.open.on_click(lambda _: self._wish(lambda: desk.leave_open(desk.pass_id)))
+        buttons = widgets.HBox([self.keep, self.drop, self.open], layout={"flex_flow": "row wrap"})
+        self.widget = widgets.VBox([buttons, self.message, self.told])
+        desk.watch(lambda what: self.refresh())
+        self.refresh()
+
+    def _wish(self, act) -> None:
+        self.message.value = ""
+        with told_in(self.message):
+            act()
+
+    def refresh(self) -> None:
+        """Say what is wished, and let only that be pressed which makes sense."""
+        desk, known = self.desk, self.desk.pass_id in self.desk.prepared.row_of
+        kept = (desk.pass_id, desk.mode) in desk.keep
+        dropped = desk.pass_id in desk.drop
+        self.keep.disabled, self.drop.disabled = not known or kept, not known or dropped
+        self.open.disabled = not (dropped or any(pass_id == desk.pass_id for pass_id, _ in desk.keep))
+        wishes = [f"kept: {pass_id} in {mode}" for pass_id, mode in sorted(desk.keep)]
+        wishes += [f"dropped: {pass_id}" for pass_id in sorted(desk.drop)]
+        self.told.value = lines_html(wishes)
+
+
+class Replan:
+    """Plan the whole week anew beside the page, and show what that changed."""
+
+    def __init__(self, desk: Desk):
+        self.desk = desk
+        self.button = widgets.Button(description="plan the week anew", button_style="primary", icon="refresh")
+        self.cancel = widgets.Button(description="cancel", icon="stop", disabled=True)
+        self.status, self.difference = widgets.HTML(), widgets.HTML()
+        self.status.add_class("replan-status")
+        self.difference.add_class("week-difference")
+        self.background = Background(self._running)
+        self.button.on_click(lambda _: self.start())
+        self.cancel.on_click(lambda _: self._cancelled())
+        self.widget = widgets.VBox([widgets.HBox([self.button, self.cancel]), self.status, self.difference])
+        desk.watch(lambda what: self.refresh() if what == WEEK else None)
+
+    def start(self) -> None:
+        """Begin a re-plan."""
+        self.button.disabled, self.cancel.disabled = True, False
+        self.background.start(self.desk.replan, self._done, self._failed)
+
+    def _cancelled(self) -> None:
+        self.cancel.disabled = True
+        self.background.cancel()
+
+    def _running(self, stage: str, seconds: float) -> None:
+        self.status.value = line_html(f"planning for {seconds:.0f} s: {stage or 'beginning'} …")
+
+    def _done(self, plan) -> None:
+        self.button.disabled, self.cancel.disabled = False, True
+        with told_in(self.status):
+            self.desk.take(plan)
+            summary = plan.summary
+            most = f"nothing better than {summary['upper_bound_mbit']:.0f} Mbit exists (gap {summary['gap_pct']:.2f} %)"
+            self.status.value = line_html(f"planned: {summary['volume_mbit']:.0f} Mbit; {most}", "good")
+
+    def _failed(self, fault: BaseException) -> None:
+        self.button.disabled, self.cancel.disabled = False, True
+        if isinstance(fault, KeyboardInterrupt):
+            self.status.value = line_html("cancelled; the week shown is the one before")
+            return
+        self.status.value = line_html("no week: the one before is still shown", "bad") + lines_html(
+            str(fault).splitlines(), "bad"
+        )
+
+    def refresh(self) -> None:
+        """Show how the week differs from the plan before it, and which rules it breaks."""
+        desk, before = self.desk, self.desk.compared_with
+        if not desk.is_planned and not self.background.is_running:
+            self.status.value = line_html("changed by hand and simulated; not optimised anew")
+        text = ""
+        if before is not None:
+            found = compare_plans(before, desk.sketch)
+            text = line_html(f"Against the plan before: {found.headline()}")
+            rows = found.rows()
+            if rows:
+                text += table_html(HEADINGS, rows[:ROWS_SHOWN], right=[5])
+            if len(rows) > ROWS_SHOWN:
+                text += line_html(f"… and {len(rows) - ROWS_SHOWN} more")
+        self.difference.value = text
+        if desk.faults:
+            self.difference.value = (
+                text + line_html(f"{len(desk.faults)} rules are broken:") + lines_html(desk.faults, "bad", most=6)
+            )
+        elif not desk.is_planned:
+            self.difference.value = text + line_html("every limit and every rule holds", "good")
