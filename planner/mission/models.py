@@ -48,6 +48,9 @@ class Policy(Described):
     # sessions
     min_session_s: Positive = 90.0
     turnaround_s: NonNegative = 120.0
+    clock_guard_s: NonNegative = Field(
+        default=0.5, description="kept inside AOS and LOS for clocks, beside the elements' one-sigma timing error"
+    )
     max_sessions_per_day: Annotated[int, Field(ge=1)] | None = None
     longest_gap_h: Positive | None = None
     daily_contact_modes: tuple[Name, ...] = Field(

@@ -120,6 +120,7 @@ class Transmitter(Described):
     cooldown_s: NonNegative = 0.0
     cooldown_power_w: NonNegative = 0.0
     longest_on_s: Positive | None = None
+    most_on_per_orbit_s: Positive | None = Field(default=None, description="on air in any one revolution")
     # operation
     session_law: Law | None = Field(default=None, description="pointing in session; None takes pointing.session")
     uplink: bool = Field(default=False, description="the contact also carries commands up")

@@ -4,17 +4,15 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from planner.data.volume import Profile
 from planner.mission.models import Satellite
 from planner.mission.transmitter import Transmitter
 from planner.schedule.energy import CORNER, Conversion, energy_states, idle_changes_s, least, likely, session_cost
-from planner.schedule.hours import intersect
 from planner.schedule.problem import Problem
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
 from planner.schedule.week import Week
+from planner.schedule.windows import usable_windows
 from planner.schedule.wishes import Wishes
-from planner.sky.passes import Passes
 
 DAY_S = 86_400.0
 
@@ -79,6 +77,7 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
                 for satellite in week.mission.satellites
                 for a in satellite.spacecraft.transmitter
             },
+            orbit_s={track.satellite: track.period_s for track in week.sky.tracks},
             keep=wishes.keep | {(session.pass_id, session.mode) for session in wishes.frozen},
             frozen=wishes.frozen,
         ),
@@ -103,53 +102,17 @@ def commands_until_s(week: Week, satellite: Satellite) -> float:
     return DAY_S if until is None else (until - week.mission.start).total_seconds()
 
 
-def _windows(week, wishes, satellite, transmitter, row, frozen):
+def _windows(week: Week, wishes: Wishes, satellite: Satellite, transmitter: Transmitter, row: int, frozen):
     """((verdict, reason), [(profile, opens_s, closes_s)]) of one pass and mode."""
-    policy, passes = week.mission.policy, week.sky.passes
-    station = passes.station[row]
-    table, place = week.place_of[row, transmitter.mode]
-    profiles = week.profiles(row, transmitter.mode)
     if frozen is not None:
+        profiles = week.profiles(row, transmitter.mode)
         best = max(profiles, key=lambda p: p.volume_mbit(frozen.tx_on_s, frozen.tx_off_s))
         return ("", ""), [(best, frozen.tx_on_s, frozen.tx_off_s)]
-    if passes.pass_id[row] in wishes.drop:
+    if week.sky.passes.pass_id[row] in wishes.drop:
         return ("dropped", "dropped by hand"), []
-    if table.reasons[place]:
-        return ("unusable", table.reasons[place]), []
-    usable = [(p, *window) for p in profiles for window in p.windows_s()]
-    if not usable:
-        return ("unusable", _below_margin(week, passes, row, transmitter, profiles)), []
-    earliest_s = max(wishes.freeze_until_s, 0.0) + _lead_s(satellite, transmitter)
-    whole = [(earliest_s, week.mission.span_s)]
-    opened = [(p, *w) for p, a, b in usable for w in intersect([(a, b)], week.open_s[station])]
-    if not opened:
-        return ("unusable", f"{station} is closed"), []
-    free = [(p, *w) for p, a, b in opened for w in intersect([(a, b)], whole)]
-    long_enough = [(p, a, b) for p, a, b in free if b - a >= policy.min_session_s]
-    if not long_enough:
-        longest_s = max((b - a for _, a, b in free), default=0.0)
-        return ("unusable", f"too short: {longest_s:.0f} s usable, the policy asks {policy.min_session_s:.0f} s"), []
-    return ("unusable", "acquisition takes the whole window"), [w for w in long_enough if w[0].volume_mbit(*w[1:]) > 0]
-
-
-def _below_margin(week: Week, passes: Passes, row: int, transmitter: Transmitter, profiles: list[Profile]) -> str:
-    best_db = max(float(np.max(profile.margin_db, initial=-np.inf)) for profile in profiles)
-    return (
-        f"below margin all along: {best_db:.1f} dB at the best moment, {week.mission.policy.link_margin_db:g} dB asked"
-        f" (highest elevation {passes.max_elevation_deg[row]:.1f} deg)"
-    )
-
-
-def _lead_s(satellite: Satellite, transmitter: Transmitter) -> float:
-    """The longest the satellite can be busy before transmission: warm-up, or half a turn to the session's attitude."""
-    return max(transmitter.warmup_s, _longest_slew_s(satellite, transmitter))
-
-
-def _longest_slew_s(satellite: Satellite, transmitter: Transmitter) -> float:
-    pointing = satellite.spacecraft.pointing
-    if (transmitter.session_law or pointing.session) == pointing.idle:
-        return 0.0
-    return 180.0 / pointing.slew_rate_deg_s + pointing.settle_s
+    earliest_s = max(wishes.freeze_until_s, 0.0)
+    reason, windows = usable_windows(week, satellite, transmitter, row, earliest_s)
+    return ("unusable", reason), windows
 
 
 def _candidate(week: Week, transmitter: Transmitter, row: int, profile, opens_s, closes_s, *, frozen) -> Candidate:

@@ -11,6 +11,7 @@ from planner.power.limits import Breach
 from planner.schedule.candidates import commands_until_s
 from planner.schedule.flown import Flown
 from planner.schedule.problem import DAY_S, HOUR_S
+from planner.schedule.windows import turning_s
 
 # Times in files have milliseconds: what is closer than that is the same moment
 SAME_MOMENT_S = 2e-3
@@ -80,6 +81,10 @@ def _on_air(flown: Flown, session: Session) -> Iterator[Fault]:
     if not _covered(flown.week.open_s[session.station], session):
         text = f"{session.station} is closed during the transmission"
         yield Fault("opening hours", session, session.tx_on_s, np.nan, np.nan, "", text)
+    satellite = flown.week.mission.satellite(session.satellite)
+    if not _covered(turning_s(flown.week, satellite, satellite.spacecraft.mode(session.mode)), session):
+        text = "it turns the satellite while the payload keeps the idle attitude (pointing.no_slew_windows)"
+        yield Fault("no slew", session, session.tx_on_s, np.nan, np.nan, "", text)
     yield from _commands(flown, session)
 
 
@@ -125,6 +130,7 @@ def _pairs(flown: Flown) -> Iterator[Fault]:
     mission = flown.week.mission
     for name in [satellite.name for satellite in mission.satellites]:
         own = flown.of(name)
+        yield from _too_much_per_orbit(flown, name)
         for index, first in enumerate(own):
             for second in own[index + 1 :]:
                 yield from _too_close(flown, first, second, f"satellite {name}")
@@ -150,6 +156,21 @@ def _too_close(flown: Flown, first: Session, second: Session, what: str) -> Iter
             f" ({second.mode}), {least_s:.1f} s needed"
         )
         yield Fault("turnaround", second, second.tx_on_s, pause_s, least_s, "s", text)
+
+
+def _too_much_per_orbit(flown: Flown, satellite: str) -> Iterator[Fault]:
+    """Seconds on air of one mode from each of its starts to a revolution later."""
+    orbit_s = flown.week.sky.track(satellite).period_s
+    for session in flown.of(satellite):
+        most_s = flown.week.mission.satellite(satellite).spacecraft.mode(session.mode).most_on_per_orbit_s
+        if most_s is None:
+            continue
+        until_s = session.tx_on_s + orbit_s
+        same = [s for s in flown.of(satellite) if s.mode == session.mode and session.tx_on_s <= s.tx_on_s < until_s]
+        on_air_s = sum(min(s.tx_off_s, until_s) - s.tx_on_s for s in same)
+        if on_air_s > most_s + SAME_MOMENT_S:
+            text = f"{on_air_s:.1f} s of {session.mode} on air within one revolution, {most_s:g} s allowed"
+            yield Fault("on air per orbit", session, session.tx_on_s, on_air_s, most_s, "s", text)
 
 
 def _busy_s(flown: Flown, first: Session, second: Session) -> float:

@@ -277,6 +277,7 @@ def _policy_rows(week: WeekProgramme) -> None:
                 programme.row([(v.flown, 1.0) for c, v in within if c.mode in policy.daily_contact_modes], lowest=1.0)
         if policy.longest_gap_h is not None:
             _longest_gap(programme, own, policy.longest_gap_h * HOUR_S, problem.span_s)
+        _on_air_per_orbit(programme, own, problem.orbit_s[states.satellite])
     if policy.cost_budget is not None:
         terms = []
         for candidate, v in flown:
@@ -287,6 +288,16 @@ def _policy_rows(week: WeekProgramme) -> None:
         if problem.needs_upload(candidate):
             uploads = [(week.variables[i].flown, 1.0) for i in problem.uploads_for(index)]
             programme.row([*uploads, (v.flown, -1.0)], lowest=0.0)
+
+
+def _on_air_per_orbit(programme: Programme, own: list, orbit_s: float) -> None:
+    """From each window on, no more seconds of its mode within a revolution than the transmitter bears."""
+    for candidate, _ in own:
+        most_s = candidate.transmitter.most_on_per_orbit_s
+        if most_s is not None:
+            begin_s, end_s = candidate.opens_s, candidate.closes_s + orbit_s
+            near = [v for c, v in own if c.mode == candidate.mode and begin_s <= c.opens_s < end_s]
+            programme.row([(v.length, 1.0) for v in near], highest=most_s)
 
 
 def _longest_gap(programme: Programme, own: list, gap_s: float, span_s: float) -> None:

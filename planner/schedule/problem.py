@@ -22,7 +22,7 @@ class Problem:
     keep : (pass_id, mode) that must fly;  frozen : sessions that must fly just as they are
     midnight_s : the UTC midnights within the span [s]
     commands_until_s : sessions that end before need no upload in the span, by satellite
-    overlapping : the modes that may be on air on the same pass as a satellite's mode
+    overlapping : the modes that may be on air on the same pass as a satellite's mode;  orbit_s : revolutions [s]
     """
 
     candidates: tuple[Candidate, ...]
@@ -33,6 +33,7 @@ class Problem:
     midnight_s: np.ndarray
     commands_until_s: dict[str, float]
     overlapping: dict[tuple[str, str], frozenset[str]]
+    orbit_s: dict[str, float]
     keep: frozenset[tuple[str, str]] = frozenset()
     frozen: tuple[Session, ...] = ()
 

@@ -100,7 +100,9 @@ class Search:
         for _ in range(MOST_MENDS):
             chosen = week.sessions(solution.values)
             flown = self._flown(week.problem, chosen)
-            faults = find_faults(flown)
+            faults = [
+                fault for fault in find_faults(flown) if fault.session not in problem.frozen
+            ]  # those stay as they are
             if not faults:
                 at = {candidate_key(c): i for i, c in enumerate(problem.candidates)}
                 return flown, solution, [(at[candidate_key(week.problem.candidates[i])], *t) for i, *t in chosen]
