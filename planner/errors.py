@@ -1,12 +1,25 @@
 """What can go wrong, by who can mend it; the command line turns each into its exit status."""
 
+MOST_TOLD, LONGEST_TOLD = 50, 1000  # faults; characters of one
+
 
 class InputError(ValueError):
-    """What the user gave is wrong (exit 2). Holds every fault found, each one line naming file, key, value and rule."""
+    """What the user gave is wrong (exit 2). Holds every fault found, each naming file, key, value and rule.
+
+    Beyond fifty faults only their number is told; what a terminal could not print is escaped.
+    """
 
     def __init__(self, *faults: str):
-        self.faults = faults
-        super().__init__("\n".join(faults))
+        more = (f"and {len(faults) - MOST_TOLD} more faults",) if len(faults) > MOST_TOLD else ()
+        self.faults = (*map(_printable, faults[:MOST_TOLD]), *more)
+        super().__init__("\n".join(self.faults))
+
+
+def _printable(fault: str) -> str:
+    shown = fault if len(fault) <= LONGEST_TOLD else fault[:LONGEST_TOLD] + "…"
+    if shown.replace("\n", "").isprintable():
+        return shown
+    return "".join(c if c.isprintable() or c == "\n" else c.encode("unicode_escape").decode() for c in shown)
 
 
 class NoWeekError(RuntimeError):

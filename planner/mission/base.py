@@ -16,8 +16,13 @@ class Described(BaseModel):
     model_config = ConfigDict(frozen=True, extra="forbid", strict=True, allow_inf_nan=False, ser_json_timedelta="float")
 
 
+def is_name(text: str) -> bool:
+    """Whether text can name something: one printable line of 1 to 80 characters."""
+    return bool(text.strip()) and text.isprintable() and len(text) <= 80
+
+
 def _one_printable_line(text: str) -> str:
-    if not text.strip() or not text.isprintable() or len(text) > 80:
+    if not is_name(text):
         raise ValueError("must be one printable line of 1 to 80 characters")
     return text
 

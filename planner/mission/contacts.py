@@ -66,7 +66,7 @@ def _stated(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission)
             session = Session(on_s, off_s, row["satellite"], row["station"], row["mode"], row["pass_id"])
             contacts.append(StatedContact(session, line, row))
     if faults:
-        raise InputError(*faults[:50])
+        raise InputError(*faults)
     return sorted(contacts, key=lambda contact: contact.session)
 
 

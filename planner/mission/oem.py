@@ -2,6 +2,7 @@
 
 from datetime import datetime
 
+from planner.mission.base import is_name
 from planner.mission.ccsds import date, keyword_lines
 from planner.mission.orbit import Ephemeris, Segment
 
@@ -88,6 +89,9 @@ class _Reader:
         for keyword in REQUIRED:
             if keyword not in meta:
                 self.faults.append(f"{self.path}: metadata at line {first}: {keyword} must be given, got none")
+        number, name = meta.get("OBJECT_NAME", (first, "not given"))
+        if not is_name(name):
+            self.fault(number, "OBJECT_NAME must be one printable line of 1 to 80 characters", name)
         for keyword, allowed in (("CENTER_NAME", ("EARTH",)), ("TIME_SYSTEM", ("UTC",)), ("INTERPOLATION", METHODS)):
             number, value = meta.get(keyword, (first, allowed[0]))
             if value.upper() not in allowed:

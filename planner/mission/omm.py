@@ -5,6 +5,7 @@ import io
 import json
 from xml.etree import ElementTree
 
+from planner.mission.base import is_name
 from planner.mission.ccsds import date, keyword_lines
 from planner.mission.orbit import ElementSet
 
@@ -90,7 +91,10 @@ def parse_json(text: str, path: str) -> Parsed:
 
 def parse_csv(text: str, path: str) -> Parsed:
     """One row a message under a header of keywords."""
-    rows = list(csv.reader(io.StringIO(text)))
+    try:
+        rows = list(csv.reader(io.StringIO(text, newline="")))
+    except csv.Error as error:
+        return [], [f"{path}: must be CSV: {error}"]
     header = [keyword.strip() for keyword in rows[0]]
     messages, faults = [], []
     for number, row in enumerate(rows[1:], 2):
@@ -138,8 +142,8 @@ def _element_set(where: str, values: dict[str, str]) -> tuple[ElementSet | None,
     numbers |= {field: converted(keyword, _number(keyword), 0.0) for keyword, field in OPTIONAL_NUMBERS.items()}
     epoch = converted("EPOCH", date)
     name, number = values["OBJECT_NAME"], values.get("NORAD_CAT_ID", "")
-    if not name.isprintable() or len(name) > 80:
-        faults.append(f"{where}: OBJECT_NAME must be printable, up to 80 characters, got {name!r}")
+    if not is_name(name):
+        faults.append(f"{where}: OBJECT_NAME must be one printable line of 1 to 80 characters, got {name!r}")
     revolution = converted("REV_AT_EPOCH", _whole, 0)
     if faults:
         return None, faults

@@ -32,5 +32,5 @@ def read_pattern(path: Path) -> tuple[tuple[float, float], ...]:
     if not faults and (len(rows) < 2 or rows[0][0] != 0):
         faults.append(f"{path}: must have two rows or more and begin at off_axis_deg 0, got {len(rows)} rows")
     if faults:
-        raise InputError(*faults[:20])
+        raise InputError(*faults)
     return tuple(rows)

@@ -10,7 +10,6 @@ from planner.errors import InputError
 from planner.mission.text import nearest, read_text, shown
 
 FORMULA = re.compile(r"'*[=+\-@\t\r]")  # what a spreadsheet would run, behind apostrophes or none
-
 SEPARATORS = {";": "semicolons", "\t": "tabs"}
 
 
@@ -39,7 +38,7 @@ def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[st
         raise InputError(f"{path}: line {header[0]}: column names must differ, got {shown(columns)}")
     faults = [_width_fault(path, line, cells, columns) for line, cells in rows if len(cells) != len(columns)]
     if faults:
-        raise InputError(*faults[:20])
+        raise InputError(*faults)
     return [(line, dict(zip(columns, map(_plain, cells), strict=True))) for line, cells in rows]
 
 

@@ -75,7 +75,8 @@ def test_every_faulty_cell_is_told(tmp_path, marshlight):
 def test_at_most_fifty_faults_are_told(tmp_path, marshlight):
     with pytest.raises(InputError) as caught:
         read_contacts(written(tmp_path, *[with_cell("satellite", "X")] * 90), marshlight)
-    assert len(caught.value.faults) == 50
+    assert len(caught.value.faults) == 51
+    assert caught.value.faults[-1] == "and 40 more faults"
 
 
 def test_no_contacts_are_contacts(tmp_path, marshlight):
