@@ -1,6 +1,6 @@
 """When a station is open."""
 
-from datetime import datetime, time, timedelta
+from datetime import UTC, datetime, time, timedelta
 
 import numpy as np
 
@@ -22,16 +22,20 @@ def open_windows_s(mission: Mission, station: Station) -> Windows:
 
 def _daily_windows_s(mission: Mission, station: Station) -> Windows:
     """Windows of the named days, a day too early and too late; one that closes before it opens runs past midnight."""
-    midnight = datetime.combine(mission.start.date(), time(), tzinfo=mission.start.tzinfo) - timedelta(days=1)
+    midnight = datetime.combine(mission.start.astimezone(UTC).date(), time(), tzinfo=UTC) - timedelta(days=1)
     windows = []
     for day in range(int(np.ceil(mission.days)) + 3):
         begin_s = (midnight + timedelta(days=day) - mission.start).total_seconds()
         if WEEKDAYS[(midnight + timedelta(days=day)).weekday()] not in station.hours.days:
             continue
         for opens, closes in station.hours.open or ((time(), time()),):
-            open_s, close_s = (t.hour * 3600 + t.minute * 60 + t.second for t in (opens, closes))
+            open_s, close_s = (_seconds(t) for t in (opens, closes))
             windows.append((begin_s + open_s, begin_s + close_s + (86_400 if close_s <= open_s else 0)))
     return windows
+
+
+def _seconds(moment: time) -> float:
+    return moment.hour * 3600 + moment.minute * 60 + moment.second + moment.microsecond * 1e-6
 
 
 def merge(windows: Windows) -> Windows:
