@@ -108,11 +108,13 @@ def _link_options(link: argparse.ArgumentParser) -> None:
 
 
 def _week_options(week: argparse.ArgumentParser) -> None:
-    week.add_argument("--out", required=True, metavar="DIR", help="folder for the files; replaced whole or not at all")
+    week.add_argument("--out", default="week", metavar="DIR", help="folder for the files, default week; replaced whole")
     week.add_argument("--keep", action="append", default=[], metavar="PASS:MODE", help=KEEP_HELP)
     week.add_argument("--drop", action="append", default=[], metavar="PASS", help="do not fly this pass (repeatable)")
     week.add_argument("--from", dest="previous", metavar="CONTACTS.csv", help="change as few of these as possible")
     week.add_argument("--freeze-until", metavar="UTC", help="contacts of --from that begin before stay as they are")
+    week.add_argument("--explain", action="store_true", help="also what keeping each left-out pass would cost (minutes)")
+    week.add_argument("--prices", action="store_true", help="also what one more Wh, W, dB or station is worth (minutes)")
     week.add_argument("--time-limit", type=float, metavar="S", help="best plan found in S seconds, its gap told")
 
 

@@ -104,6 +104,10 @@ def week(mission: Mission, arguments, freeze_until: datetime | None) -> int:
             time_limit_s=arguments.time_limit,
             progress=tell,
         )
+        if arguments.explain:
+            plan = plan.explained(tell)
+        if arguments.prices:
+            plan = plan.priced(tell)
         tell("tables and the picture")
         log = {
             "finished_utc": datetime.now(UTC).isoformat(timespec="seconds"),
@@ -114,6 +118,8 @@ def week(mission: Mission, arguments, freeze_until: datetime | None) -> int:
         }
         write_week(folder, mission, plan, log)
     _say_week(plan, Path(arguments.out), arguments.quiet, time.perf_counter() - began)
+    if arguments.previous is not None:
+        _say_changes(mission, arguments.previous, plan)
     return DONE
 
 
@@ -144,6 +150,20 @@ def _say_week(plan, folder: Path, quiet: bool, seconds: float) -> None:
         for caution in s["cautions"]:
             printing.say(f"caution: {caution}")
     printing.say(f"written to {folder} in {seconds:.1f} s")
+
+
+def _say_changes(mission: Mission, previous: str, plan) -> None:
+    """What the re-plan changed against the contacts it was given."""
+    from planner.export.compare import HEADINGS, compare_plans
+    from planner.schedule.flown import Flown
+    from planner.schedule.result import GivenWeek
+    from planner.schedule.wishes import sessions_of
+
+    known = [s for s in sessions_of(previous, mission) if s.pass_id in plan.flown.week.row_of]
+    found = compare_plans(GivenWeek(Flown(plan.flown.week, tuple(known))), plan)
+    printing.say(f"against {previous}: {found.headline()}")
+    if not found.is_same:
+        printing.table([(heading, "left") for heading in HEADINGS], found.rows())
 
 
 def _days(contacts):

@@ -4,7 +4,7 @@ from pathlib import Path
 
 from planner.charts.week import week_figure
 from planner.export.calendar import calendar_files
-from planner.export.contacts import battery_csv, contacts_csv, passes_csv, recorder_csv
+from planner.export.contacts import battery_csv, contacts_csv, passes_csv, recorder_csv, table_csv
 from planner.export.folder import ClaimedFolder, verify_set
 from planner.export.render import png_bytes
 from planner.mission.models import Mission
@@ -30,12 +30,14 @@ def write_week(folder: ClaimedFolder, mission: Mission, plan, run_log: dict) -> 
 
 def week_files(mission: Mission, plan, previous_calendar: bytes | None = None) -> dict[str, bytes]:
     """Every file of the week but its index, by name."""
+    prices = getattr(plan, "prices", None)
     return {
         "contacts.csv": contacts_csv(plan.contacts),
         "passes.csv": passes_csv(plan.passes),
         "battery.csv": battery_csv(plan.battery),
         "recorder.csv": recorder_csv(plan.recorder),
         **calendar_files(mission, plan.contacts, previous_calendar),
+        **({} if prices is None else {"prices.csv": table_csv(prices)}),
         "week.png": png_bytes(week_figure(mission, plan)),
     }
 

@@ -19,10 +19,14 @@ BOUND_GAP = 2e-3
 
 @dataclass(frozen=True, eq=False)
 class Plan:
-    """Sessions that keep every limit, the programme's own account of them, and how they were found."""
+    """Sessions that keep every limit, the programme's own account of them, and how they were found.
+
+    `problem` is as posed, `corrected` as last solved: its costs and gains follow the simulated battery.
+    """
 
     flown: Flown
     problem: Problem
+    corrected: Problem
     refusals: list[Refusal]
     solution: Solution
     upper_bound_mbit: float
@@ -67,7 +71,7 @@ def make_plan(
         progress("schedule, upper bound")
         bound = bounding.solution(cancelled)
         stopwatch.lap("waiting for the bound")
-    return Plan(flown, problem, refusals, solution, bound.bound, search.solutions, stopwatch.laps)
+    return Plan(flown, problem, search.problem, refusals, solution, bound.bound, search.solutions, stopwatch.laps)
 
 
 def _check_idle(week: Week) -> None:

@@ -2,7 +2,7 @@
 
 import platform
 from collections.abc import Callable, Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import datetime
 from functools import cached_property, lru_cache
 from importlib.metadata import version
@@ -103,17 +103,35 @@ class WeekPlan(GivenWeek):
     """A plan that keeps every limit at the pessimistic corner, with the reason for every pass and the proof."""
 
     plan: Plan
+    explanations: dict | None = None  # by pass id, from `explained`
+    prices: pd.DataFrame | None = None  # from `priced`
 
     @classmethod
     def of(cls, plan: Plan) -> "WeekPlan":
         return cls(plan.flown, plan)
+
+    def explained(self, progress: Progress = lambda stage: None, cancelled=lambda: False) -> "WeekPlan":
+        """The same plan, `passes` telling too what keeping each left-out pass would cost. A solution for each pass."""
+        from planner.schedule.explain import explain
+
+        return replace(self, explanations=explain(self.plan, progress, cancelled))
+
+    def priced(self, progress: Progress = lambda stage: None, cancelled=lambda: False) -> "WeekPlan":
+        """The same plan with `.prices`: what one more Wh, W, dB, Mbit, station hour or station is worth. Minutes."""
+        from planner.schedule.prices import price_list
+
+        return replace(self, prices=price_list(self, progress, cancelled))
 
     @cached_property
     def passes(self) -> pd.DataFrame:
         """Every pass with its verdict and the reason for it."""
         found = verdicts(self.plan.flown, self.plan.problem, self.plan.refusals)
         sky = self.flown.week.sky
-        return sky.passes.frame(sky.clock).assign(verdict=[v for v, _ in found], reason=[r for _, r in found])
+        table = sky.passes.frame(sky.clock).assign(verdict=[v for v, _ in found], reason=[r for _, r in found])
+        if self.explanations is None:
+            return table
+        texts = [self.explanations[p].text if p in self.explanations else "" for p in table["pass_id"]]
+        return table.assign(if_kept=texts)
 
     @cached_property
     def summary(self) -> dict:
