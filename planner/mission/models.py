@@ -1,6 +1,7 @@
 """The mission: one frozen tree that holds everything the user describes."""
 
 from datetime import datetime, timedelta
+from itertools import pairwise
 from typing import Annotated, Any
 
 from pydantic import AwareDatetime, Field, ValidationError, field_validator, model_validator
@@ -88,10 +89,28 @@ class ElementAging(Described):
     in_track_km_per_day2: NonNegative = 0.5
 
 
+class DataClass(Described):
+    """Data of one priority: what a Mbit of it is worth fresh, and at which age it is worth nothing any more.
+
+    The worth falls in a straight line with age. Heavier classes are sent first, and lighter ones give way to them when
+    the recorder is full.
+    """
+
+    name: Name
+    weight: Positive = 1.0
+    latency_h: Positive | None = Field(default=None, description="None: worth does not fall with age")
+
+    @property
+    def fading_per_h(self) -> float:
+        """Worth that a stored Mbit loses in an hour."""
+        return 0.0 if self.latency_h is None else self.weight / self.latency_h
+
+
 class Source(Described):
     """A payload that fills the recorder."""
 
     name: Name
+    data_class: Name | None = Field(default=None, description="None: the lightest class")
     rate_mbps: NonNegative
     when: When = "sunlit"
     windows: Windows = ()
@@ -107,6 +126,33 @@ class Recorder(Described):
     capacity_mbit: Positive
     reserve_mbit: NonNegative = Field(default=0.0, description="kept free for housekeeping")
     source: tuple[Source, ...] = ()
+    data_class: tuple[DataClass, ...] = ()
+
+    @property
+    def classes(self) -> tuple[DataClass, ...]:
+        """From the heaviest to the lightest; one of weight 1 where none is described."""
+        return tuple(sorted(self.data_class, key=lambda c: -c.weight)) or (DataClass(name="data"),)
+
+    def class_index(self, source: Source) -> int:
+        """Place of a source's data in `classes`."""
+        names = [data_class.name for data_class in self.classes]
+        return len(names) - 1 if source.data_class is None else names.index(source.data_class)
+
+    @model_validator(mode="after")
+    def _classes(self):
+        names = [data_class.name for data_class in self.data_class]
+        if len(set(names)) < len(names):
+            raise ValueError(f"data_class names must differ, got {names}")
+        unknown = [s.data_class for s in self.source if s.data_class is not None and s.data_class not in names]
+        if unknown:
+            raise ValueError(f"source.data_class must name one of {names}, got {unknown}")
+        fading = [data_class.fading_per_h for data_class in self.classes]
+        if any(lighter > heavier for heavier, lighter in pairwise(fading)):
+            raise ValueError(
+                "weight / latency_h must not be higher for a lighter data_class (it would have to be sent first),"
+                f" got {[f'{value:.3g}' for value in fading]} from the heaviest on"
+            )
+        return self
 
     @model_validator(mode="after")
     def _room(self):

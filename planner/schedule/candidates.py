@@ -156,10 +156,13 @@ def _states(week: Week, satellite: Satellite, own: list[Candidate], conversions)
     for candidate in own:
         last_s[candidate.row] = max(candidate.closes_s, last_s.get(candidate.row, 0.0))
     events_s = np.unique(np.concatenate([[0.0, span_s], list(last_s.values()), idle_changes_s(power, conversions[0])]))
-    produced_mbit = np.zeros(len(events_s) - 1)
-    for edges_s, rate_mbps in week.produced[satellite.name]:
+    classes = satellite.spacecraft.recorder.classes
+    produced_mbit = np.zeros((len(classes), len(events_s) - 1))
+    for own_class, (edges_s, rate_mbps) in week.produced[satellite.name]:
         sum_mbit = np.concatenate([[0.0], np.cumsum(rate_mbps * np.diff(edges_s))])
-        produced_mbit += np.diff(np.interp(events_s, edges_s, sum_mbit))
+        produced_mbit[own_class] += np.diff(np.interp(events_s, edges_s, sum_mbit))
+    stored_mbit = np.zeros(len(classes))
+    stored_mbit[-1] = satellite.start_state.stored_mbit
     likely_states, least_states = (
         energy_states(power, week.mission.policy, conversion, events_s) for conversion in conversions
     )
@@ -169,6 +172,8 @@ def _states(week: Week, satellite: Satellite, own: list[Candidate], conversions)
         likely=likely_states,
         least=least_states,
         produced_mbit=produced_mbit,
-        stored_mbit=satellite.start_state.stored_mbit,
+        stored_mbit=stored_mbit,
         room_mbit=satellite.spacecraft.recorder.usable_mbit,
+        weights=np.array([data_class.weight for data_class in classes]),
+        fading_per_h=np.array([data_class.fading_per_h for data_class in classes]),
     )

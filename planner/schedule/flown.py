@@ -8,6 +8,7 @@ import numpy as np
 from planner.data.recorder import RecorderSeries, simulate_recorder
 from planner.data.volume import Profile
 from planner.mission.contacts import Session
+from planner.mission.models import Satellite
 from planner.power.series import BatterySeries
 from planner.schedule.week import Week
 
@@ -45,17 +46,27 @@ class Flown:
 
     @cached_property
     def recorder(self) -> dict[str, RecorderSeries]:
-        """Storage through the span, by satellite."""
-        return {
-            satellite.name: simulate_recorder(
-                satellite.start_state.stored_mbit,
-                satellite.spacecraft.recorder.usable_mbit,
-                self.week.mission.span_s,
-                self.week.produced[satellite.name],
-                [self._offer(session) for session in self.of(satellite.name) if session in self.coding],
-            )
-            for satellite in self.week.mission.satellites
-        }
+        """Storage through the span, by satellite, all data classes together."""
+        return {satellite.name: self._stored(satellite, None) for satellite in self.week.mission.satellites}
+
+    def heaviest(self, satellite: Satellite) -> list[RecorderSeries]:
+        """Storage of the heaviest class, of the two heaviest, … of all.
+
+        Heavier classes are sent first and never give way, so the heaviest few fare as if there were no others.
+        """
+        count = len(satellite.spacecraft.recorder.classes)
+        return [self._stored(satellite, lightest) for lightest in range(count - 1)] + [self.recorder[satellite.name]]
+
+    def _stored(self, satellite: Satellite, lightest: int | None) -> RecorderSeries:
+        """Storage of the classes down to `lightest`; what is stored at the start is of the lightest class of all."""
+        produced = self.week.produced[satellite.name]
+        return simulate_recorder(
+            satellite.start_state.stored_mbit if lightest is None else 0.0,
+            satellite.spacecraft.recorder.usable_mbit,
+            self.week.mission.span_s,
+            [rates for own, rates in produced if lightest is None or own <= lightest],
+            [self._offer(session) for session in self.of(satellite.name) if session in self.coding],
+        )
 
     def _offer(self, session: Session):
         return self.coding[session].delivery(session.tx_on_s, session.tx_off_s)

@@ -19,6 +19,7 @@ from planner.schedule.states import EnergyStates, SatelliteStates
 # Ties: fewer sessions, then earlier ones. Shares of the largest session's volume, far below the gap asked for.
 FEWER_SESSIONS = 1e-5
 EARLIER = 1e-7
+NOT_LOST = 1e-4  # Mbit that a Mbit lost to a full recorder costs: enough to avoid it where that is free
 SMALL = 0.02  # of the largest volume: below it a session's shape does not matter
 
 
@@ -194,30 +195,59 @@ def _least_energy(week: WeekProgramme, states: SatelliteStates, on_air: dict[int
 
 
 def _likely_data(week: WeekProgramme, states: SatelliteStates) -> None:
-    """Stored data event by event; a session's yield falls evenly over its window."""
-    terms = defaultdict(list)
-    for _, candidate, v in _of_satellite(week, states.satellite):
-        for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
-            terms[interval].append((v.volume, share))
-    _data_chain(week.programme, states, terms, defaultdict(list))
+    """Stored data event by event, a session's yield falling evenly over its window.
+
+    One chain for the heaviest class, one for the two heaviest, … one for all: heavier classes are sent first, so each
+    chain lives as if there were no lighter class. A session sends at most as much of the heavier ones as of all.
+    """
+    programme, own = week.programme, _of_satellite(week, states.satellite)
+    steps, fading = -np.diff(states.weights, append=0.0), -np.diff(states.fading_per_h, append=0.0)
+    sent = {i: v.volume for i, _, v in own}
+    for lightest in reversed(range(len(states.weights))):
+        if lightest == len(states.weights) - 1:
+            for column in sent.values():
+                programme.gain[column] = float(steps[lightest])
+        else:
+            sent = {i: _part_of(programme, column, float(steps[lightest])) for i, column in sent.items()}
+        terms = defaultdict(list)
+        for i, candidate, _ in own:
+            for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
+                terms[interval].append((sent[i], share))
+        _data_chain(programme, states, lightest, terms, defaultdict(list), float(fading[lightest]))
+
+
+def _part_of(programme: Programme, whole: int, gain: float) -> int:
+    """A column that may not exceed another."""
+    part = programme.variable(0, np.inf, gain=gain)
+    programme.row([(part, 1.0), (whole, -1.0)], highest=0.0)
+    return part
 
 
 def _relaxed_data(week: WeekProgramme, states: SatelliteStates) -> None:
-    """As `_likely_data`, relaxed: the yield is taken when the window closes, and room is not asked for before."""
+    """All data, relaxed: the yield is taken when the window closes, and room is not asked for before."""
     terms, active = defaultdict(list), defaultdict(list)
     for _, candidate, v in _of_satellite(week, states.satellite):
         first, last = states.around(candidate.opens_s, candidate.closes_s)
         terms[last - 1].append((v.volume, 1.0))
         for event in range(first + 1, last):
             active[event].append((v.volume, -1.0))
-    _data_chain(week.programme, states, terms, active)
+    _data_chain(week.programme, states, len(states.weights) - 1, terms, active, 0.0)
 
 
-def _data_chain(programme: Programme, states: SatelliteStates, terms: dict, active: dict) -> None:
-    """stored[i + 1] = stored[i] + produced - delivered - lost, from empty to full."""
-    before = programme.variable(states.stored_mbit, states.stored_mbit)
-    for interval, produced_mbit in enumerate(states.produced_mbit.tolist()):
-        after, lost = programme.variable(0, np.inf), programme.variable(0, np.inf)
+def _data_chain(
+    programme: Programme, states: SatelliteStates, lightest: int, terms: dict, active: dict, fading_per_h: float
+) -> None:
+    """stored[i + 1] = stored[i] + produced - delivered - lost, from empty to full, of the classes down to `lightest`.
+
+    What is stored loses worth by the hour; by Little's law that charges every Mbit with its age.
+    """
+    start_mbit = float(states.stored_mbit[: lightest + 1].sum())
+    before = programme.variable(start_mbit, start_mbit)
+    hours = np.diff(states.events_s) / HOUR_S
+    hours = (hours + np.append(hours[1:], 0.0)) / 2  # each event stands for half of both intervals beside it
+    for interval, produced_mbit in enumerate(states.produced_mbit[: lightest + 1].sum(axis=0).tolist()):
+        after = programme.variable(0, np.inf, gain=-fading_per_h * float(hours[interval]))
+        lost = programme.variable(0, np.inf, gain=-NOT_LOST * float(states.weights[lightest]))
         chain = [(after, 1.0), (before, -1.0), (lost, 1.0), *terms[interval]]
         programme.row(chain, lowest=produced_mbit, highest=produced_mbit)
         programme.row([(after, 1.0), *active[interval + 1]], highest=states.room_mbit)

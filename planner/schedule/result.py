@@ -11,7 +11,7 @@ import numpy as np
 import pandas as pd
 
 from planner.link import check_modes
-from planner.mission.models import Mission
+from planner.mission.models import Mission, Satellite
 from planner.schedule import frames
 from planner.schedule.flown import Flown
 from planner.schedule.plan import Plan, make_plan
@@ -79,6 +79,7 @@ class GivenWeek:
             "soc_end_pct": _rounded(min(float(series.soc_pct[-1]) for series in worst), 3),
             "stored_end_mbit": _rounded(sum(float(series.stored_mbit[-1]) for series in stored), 3),
             "lost_mbit": _rounded(sum(float(series.lost_mbit[-1]) for series in stored), 3),
+            "data_classes": [row for satellite in mission.satellites for row in _data_classes(flown, satellite)],
             "elements_age_days_max": _rounded(_oldest_age_days(flown), 4),
             "cautions": self._cautions(),
             "policy": mission.policy.model_dump(mode="json"),
@@ -146,6 +147,29 @@ class WeekPlan(GivenWeek):
             "status": plan.solution.status,
             "solutions": plan.solutions,
         }
+
+
+def _data_classes(flown: Flown, satellite: Satellite) -> list[dict]:
+    """What became of each class: by Little's law, what was stored over time per Mbit sent is its mean age."""
+    classes, rows, before = satellite.spacecraft.recorder.classes, [], np.zeros(4)
+    for data_class, series in zip(classes, flown.heaviest(satellite), strict=True):
+        held_mbit_h = float(np.trapezoid(series.stored_mbit, series.time_s)) / 3600
+        sums = np.array([series.delivered_mbit[-1], series.lost_mbit[-1], series.stored_mbit[-1], held_mbit_h])
+        delivered, lost, stored, held = sums - before
+        before = sums
+        rows.append(
+            {
+                "satellite": satellite.name,
+                "name": data_class.name,
+                "weight": data_class.weight,
+                "delivered_mbit": _rounded(delivered, 3),
+                "lost_mbit": _rounded(lost, 3),
+                "stored_end_mbit": _rounded(stored, 3),
+                "mean_age_h": _rounded(held / delivered, 3) if delivered > 0 else None,
+                "worth": _rounded(data_class.weight * delivered - data_class.fading_per_h * held, 3),
+            }
+        )
+    return rows
 
 
 def _oldest_age_days(flown) -> float:

@@ -23,6 +23,9 @@ class EnergyStates:
 class SatelliteStates:
     """Events (n + 1,), rising from 0 to the span's end, and what happens between them.
 
+    Data classes run from the heaviest to the lightest. produced_mbit (classes, n), stored_mbit (classes,), weights and
+    fading_per_h (classes,): of each class alone.
+
     `likely` has the losses that the battery will have; `least` the smallest that physics allows, for the bound.
     """
 
@@ -31,8 +34,10 @@ class SatelliteStates:
     likely: EnergyStates
     least: EnergyStates
     produced_mbit: np.ndarray
-    stored_mbit: float
+    stored_mbit: np.ndarray
     room_mbit: float
+    weights: np.ndarray
+    fading_per_h: np.ndarray
 
     def shares(self, opens_s: float, closes_s: float) -> list[tuple[int, float]]:
         """(interval, share) of a window: where a session's cost and yield fall."""

@@ -51,8 +51,8 @@ class Week:
         return {station.name: open_windows_s(self.mission, station) for station in self.mission.stations}
 
     @cached_property
-    def produced(self) -> dict[str, list[Rates]]:
-        """What each satellite's payloads record."""
+    def produced(self) -> dict[str, list[tuple[int, Rates]]]:
+        """What each satellite's payloads record: (place of its data class, rates)."""
         return {
             satellite.name: _production(satellite, self.powers[satellite.name]) for satellite in self.mission.satellites
         }
@@ -102,17 +102,17 @@ def prepare(mission: Mission, *, progress: Progress = lambda stage: None) -> Wee
     return Week(mission, sky, links, powers)
 
 
-def _production(satellite: Satellite, power: SatellitePower) -> list[Rates]:
-    """Payloads record at their duty-cycled rate in sunlight, eclipse, windows, or always."""
-    idle = power.idle("nominal")
+def _production(satellite: Satellite, power: SatellitePower) -> list[tuple[int, Rates]]:
+    """(data class, rates): payloads record at their duty-cycled rate in sunlight, eclipse, windows, or always."""
+    idle, recorder = power.idle("nominal"), satellite.spacecraft.recorder
     start = power.mission.start
+    share = {"always": np.ones_like(idle.visible_sun), "sunlit": idle.visible_sun, "eclipse": 1 - idle.visible_sun}
     rates = []
-    for source in satellite.spacecraft.recorder.source:
+    for source in recorder.source:
+        own, rate_mbps = recorder.class_index(source), source.rate_mbps * source.duty
         if source.when == "windows":
-            for begin, end in source.windows:
-                edges_s = np.array([(begin - start).total_seconds(), (end - start).total_seconds()])
-                rates.append((edges_s, np.array([source.rate_mbps * source.duty])))
-            continue
-        share = {"always": np.ones_like(idle.visible_sun), "sunlit": idle.visible_sun, "eclipse": 1 - idle.visible_sun}
-        rates.append((idle.edges_s, source.rate_mbps * source.duty * share[source.when]))
+            spans = [[(moment - start).total_seconds() for moment in window] for window in source.windows]
+            rates += [(own, (np.array(span_s), np.array([rate_mbps]))) for span_s in spans]
+        else:
+            rates.append((own, (idle.edges_s, rate_mbps * share[source.when])))
     return rates
