@@ -54,9 +54,15 @@ def on_paper():
     return matplotlib.rc_context(ON_PAPER)
 
 
-def new_figure(size_in=A4_LANDSCAPE_IN, title: str = "") -> Figure:
-    """An empty figure that belongs to no window. `title` says the finding."""
-    figure = Figure(figsize=size_in, layout=ConstrainedLayoutEngine(w_pad=0.1, h_pad=0.05))
+def new_figure(size_in=A4_LANDSCAPE_IN, title: str = "", *, onto: Figure | None = None) -> Figure:
+    """An empty figure that belongs to no window, or the figure `onto` emptied. `title` says the finding."""
+    if onto is None:
+        figure = Figure(figsize=size_in)
+    else:
+        figure = onto
+        figure.clear()
+        figure.set_size_inches(*size_in)
+    figure.set_layout_engine(ConstrainedLayoutEngine(w_pad=0.1, h_pad=0.05))
     if title:
         figure.suptitle(title, x=0.012, ha="left", fontsize=min(12.5, 1.6 * size_in[0]), fontweight="bold")
     return figure

@@ -61,12 +61,22 @@ def week_figure(
 
 
 def week_page(
-    mission: Mission, plan, *, satellite: str, window=None, time_zone: tzinfo = UTC, size_in=style.A4_LANDSCAPE_IN
+    mission: Mission,
+    plan,
+    *,
+    satellite: str,
+    window=None,
+    time_zone: tzinfo = UTC,
+    size_in=style.A4_LANDSCAPE_IN,
+    onto: Figure | None = None,
 ) -> Figure:
-    """The page before the plan is drawn: axes, closures, eclipses, legend, the same for every plan of the mission."""
+    """The page before the plan is drawn: axes, closures, eclipses, legend, the same for every plan of the mission.
+
+    `onto` is a figure to draw on instead of a new one; what was on it is wiped off.
+    """
     begin, end = window or (mission.start, mission.end)
     with style.on_paper():
-        figure = style.new_figure(size_in, title=" ")
+        figure = style.new_figure(size_in, title=" ", onto=onto)
         figure.set_layout_engine("none")  # a layout that measures every label costs a third of a redraw
         stations = lanes_of(mission, plan)
         heights = [min(0.5 * len(stations) + 0.4, 6.0), 2.2, 1.5]

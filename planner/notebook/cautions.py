@@ -13,10 +13,10 @@ from planner.units import DAY_S
 
 def caution_box(mission: Mission) -> widgets.HTML:
     """Every caution, in a frame that stays on the page."""
-    items = "".join(f"<li>{escape(text)}</li>" for text in [*CAUTIONS, *_element_ages(mission)])
+    first, *others = [*CAUTIONS, *_element_ages(mission)]
     return widgets.HTML(
-        f'<div style="border:2px solid {style.ORANGE};border-left-width:10px;padding:5px 12px;line-height:1.35">'
-        f'<b>⚠ Before anything is transmitted</b><ul style="margin:2px 0 2px 18px;padding:0">{items}</ul></div>',
+        f'<div style="border:1px solid {style.ORANGE};border-left-width:10px;padding:3px 12px;line-height:1.35">'
+        f"<b>⚠ {escape(first)}</b> {' '.join(escape(text) for text in others)}</div>",
         layout=FULL,
     )
 

@@ -25,12 +25,13 @@ class PassView:
         self.header, self.message = widgets.HTML(), widgets.HTML()
         self.mode = widgets.Dropdown(options=desk.modes, description="mode", layout=widgets.Layout(width="240px"))
         self.mode.observe(self._mode_chosen, "value")
-        self.earlier = widgets.Button(description="◀ pass before", tooltip="the pass before this one")
-        self.later = widgets.Button(description="next pass ▶", tooltip="the pass after this one")
+        narrow = widgets.Layout(width="110px")
+        self.earlier = widgets.Button(description="◀ pass before", tooltip="the pass before this one", layout=narrow)
+        self.later = widgets.Button(description="next pass ▶", tooltip="the pass after this one", layout=narrow)
         self.earlier.on_click(lambda _: self._step(-1))
         self.later.on_click(lambda _: self._step(+1))
-        self.link = widgets.Image(format="png", layout=widgets.Layout(max_width="100%", width="940px"))
-        self.sky = widgets.Image(format="png", layout=widgets.Layout(max_width="100%", width="560px"))
+        self.link = widgets.Image(format="png", layout=_hidden("940px"))
+        self.sky = widgets.Image(format="png", layout=_hidden("560px"))
         self.budget, self.energy = widgets.HTML(), widgets.HTML()
         self.energy.add_class("pass-energy")
         self.tabs = widgets.Tab([self.link, self.sky, self.budget, self.energy], titles=TITLES)
@@ -38,8 +39,8 @@ class PassView:
         self._asking = Background(self._asking_told)
         self._shown: dict[int, object] = {}
         self.place = widgets.VBox([self.tabs])
-        choices = widgets.HBox([self.earlier, self.later, self.mode], layout={"flex_flow": "row wrap"})
-        self.widget = widgets.VBox([self.header, choices, self.message, self.place])
+        self.choices = widgets.HBox([self.earlier, self.later, self.mode])
+        self.widget = widgets.VBox([self.message, self.place])
         desk.watch(lambda what: self.refresh())
         self.refresh()
 
@@ -49,10 +50,10 @@ class PassView:
         self._shown.clear()
         known = desk.pass_id in desk.prepared.row_of
         self.place.layout.display = None if known else "none"
+        self.message.value = "" if known else line_html("No pass is open.")
         self.mode.options = desk.modes
         with self.mode.hold_trait_notifications():
             self.mode.value = desk.mode if desk.mode in desk.modes else desk.modes[0]
-        self.message.value = ""
         self.header.value = self._header_html() if known else line_html(self._nothing_open())
         if known:
             self._fill()
@@ -112,14 +113,14 @@ class PassView:
             desk.mission, desk.prepared.sky, table, desk.pass_id, option=option, session=session,
             time_zone=self._time_zone(),
         )  # fmt: skip
-        self.link.value = png_bytes(figure, dpi=DPI)
+        _show(self.link, figure)
 
     def _fill_sky(self) -> None:
         desk = self.desk
         figure = skytrack_figure(
             desk.mission, desk.prepared.sky, desk.pass_id, session=desk.session(), time_zone=self._time_zone()
         )
-        self.sky.value = png_bytes(figure, dpi=DPI)
+        _show(self.sky, figure)
 
     def _fill_budget(self) -> None:
         desk = self.desk
@@ -151,6 +152,15 @@ class PassView:
 
     def _asking_told(self, stage: str, seconds: float) -> None:
         self.energy.value = line_html(f"asking the battery … {seconds:.0f} s")
+
+
+def _hidden(width: str) -> widgets.Layout:
+    """Of a picture that is not drawn yet."""
+    return widgets.Layout(max_width="100%", width=width, display="none")
+
+
+def _show(image: widgets.Image, figure) -> None:
+    image.value, image.layout.display = png_bytes(figure, dpi=DPI), None
 
 
 def answer_html(answer) -> str:

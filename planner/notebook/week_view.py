@@ -14,7 +14,8 @@ from planner.notebook.desk import Desk
 from planner.notebook.pieces import figures_html, line_html
 
 WIDTHS = {"narrow page": 760, "middle page": 920, "wide page": 1240}
-DPI, LEAST_HEIGHT_PX, LANE_PX = 100, 520, 34
+DPI, LANE_PX, REST_PX = 100, 34, 430  # of the picture's height: each lane, and all but the lanes
+MOST_LANES_PX = 700
 WHOLE = "whole span"
 MOST_BUTTONS = 8  # days, up to which each has a button of its own
 
@@ -26,32 +27,24 @@ class WeekPicture:
         self._clicked = clicked
         self._artists: list = []
         self._page = None
-        self.canvas = self._new_canvas(Figure(dpi=DPI))
-        self.place = widgets.Box([], layout=widgets.Layout(overflow="auto"))
-
-    def _new_canvas(self, figure: Figure) -> Canvas:
-        canvas = Canvas(figure)
-        FigureManager(canvas, 0)
-        canvas.header_visible = canvas.footer_visible = canvas.resizable = False
-        canvas.toolbar_visible = False
-        canvas.mpl_connect("draw_event", self._page_drawn)
-        canvas.mpl_connect("button_press_event", self._pressed)
-        return canvas
+        self.canvas = Canvas(Figure(dpi=DPI))
+        FigureManager(self.canvas, 0)
+        self.canvas.header_visible = self.canvas.footer_visible = self.canvas.resizable = False
+        self.canvas.toolbar_visible = False
+        self.canvas.mpl_connect("draw_event", self._page_drawn)
+        self.canvas.mpl_connect("button_press_event", self._pressed)
+        self.widget = widgets.Box([self.canvas], layout=widgets.Layout(overflow="auto"))
 
     def turn_page(self, desk: Desk, satellite: str, window, time_zone, width_px: int) -> None:
         """Draw page and plan anew: another width, window, time zone or set of stations."""
         stations = len(desk.mission.stations)
-        height_px = max(LEAST_HEIGHT_PX, min(LANE_PX * stations, 700) + 340)
-        size_in = (width_px / DPI, height_px / DPI)
-        figure = week_page(
-            desk.mission, desk.sketch, satellite=satellite, window=window, time_zone=time_zone, size_in=size_in
-        )
-        figure.set_dpi(DPI)
-        self.canvas.close()
+        size_in = (width_px / DPI, (min(LANE_PX * stations, MOST_LANES_PX) + REST_PX) / DPI)
         self._page, self._artists = None, []
-        self.canvas = self._new_canvas(figure)
+        week_page(
+            desk.mission, desk.sketch, satellite=satellite, window=window, time_zone=time_zone, size_in=size_in,
+            onto=self.canvas.figure,
+        )  # fmt: skip
         self._draw(desk, satellite)
-        self.place.children = [self.canvas]
         self.canvas.draw_idle()
 
     def redraw(self, desk: Desk, satellite: str) -> None:
@@ -114,7 +107,7 @@ class WeekView:
         for choice in (self.day, self.zone, self.satellite, self.width):
             choice.observe(lambda change: self.turn_page(), "value")
         choices = widgets.HBox([self.day, self.zone, self.satellite, self.width], layout={"flex_flow": "row wrap"})
-        self.widget = widgets.VBox([self.figures, choices, self.message, self.picture.place])
+        self.widget = widgets.VBox([self.figures, choices, self.message, self.picture.widget])
         self._page_of = None
         desk.watch(lambda what: self.redraw())
         self.turn_page()

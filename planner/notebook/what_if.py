@@ -18,7 +18,7 @@ FIELDS = (  # table of the mission file, key, what the field says, unit, step
     ("policy", "link_margin_db", "required margin", "dB", 0.5),
     ("policy", "availability_pct", "availability", "%", 0.1),
 )
-ROWS_SHOWN = 10
+ROWS_SHOWN = 40
 
 
 class WhatIf:
@@ -85,18 +85,16 @@ class Wishes:
         self.keep = widgets.Button(description="keep this pass", icon="check", tooltip="this mode must be flown")
         self.drop = widgets.Button(description="drop this pass", icon="times", tooltip="nothing is sent on it")
         self.open = widgets.Button(description="leave it open", tooltip="the plan may decide")
-        self.told, self.message = widgets.HTML(), widgets.HTML()
+        self.told = widgets.HTML()
         self.keep.on_click(lambda _: self._wish(lambda: desk.keep_pass(desk.pass_id, desk.mode)))
         self.drop.on_click(lambda _: self._wish(lambda: desk.drop_pass(desk.pass_id)))
         self.open.on_click(lambda _: self._wish(lambda: desk.leave_open(desk.pass_id)))
-        buttons = widgets.HBox([self.keep, self.drop, self.open], layout={"flex_flow": "row wrap"})
-        self.widget = widgets.VBox([buttons, self.message, self.told])
+        self.buttons = widgets.HBox([self.keep, self.drop, self.open])
         desk.watch(lambda what: self.refresh())
         self.refresh()
 
     def _wish(self, act) -> None:
-        self.message.value = ""
-        with told_in(self.message):
+        with told_in(self.told):
             act()
 
     def refresh(self) -> None:
@@ -106,8 +104,8 @@ class Wishes:
         dropped = desk.pass_id in desk.drop
         self.keep.disabled, self.drop.disabled = not known or kept, not known or dropped
         self.open.disabled = not (dropped or any(pass_id == desk.pass_id for pass_id, _ in desk.keep))
-        wishes = [f"kept: {pass_id} in {mode}" for pass_id, mode in sorted(desk.keep)]
-        wishes += [f"dropped: {pass_id}" for pass_id in sorted(desk.drop)]
+        kept, dropped = [f"{pass_id} in {mode}" for pass_id, mode in sorted(desk.keep)], sorted(desk.drop)
+        wishes = [f"{what}: {', '.join(names)}" for what, names in (("kept", kept), ("dropped", dropped)) if names]
         self.told.value = lines_html(wishes)
 
 
@@ -124,7 +122,8 @@ class Replan:
         self.background = Background(self._running)
         self.button.on_click(lambda _: self.start())
         self.cancel.on_click(lambda _: self._cancelled())
-        self.widget = widgets.VBox([widgets.HBox([self.button, self.cancel]), self.status, self.difference])
+        row = widgets.HBox([self.button, self.cancel, self.status], layout={"flex_flow": "row wrap"})
+        self.widget = widgets.VBox([row, self.difference])
         desk.watch(lambda what: self.refresh() if what == WEEK else None)
 
     def start(self) -> None:
@@ -159,21 +158,24 @@ class Replan:
     def refresh(self) -> None:
         """Show how the week differs from the plan before it, and which rules it breaks."""
         desk, before = self.desk, self.desk.compared_with
-        if not desk.is_planned and not self.background.is_running:
+        if desk.plan is not None and not desk.is_planned and not self.background.is_running:
             self.status.value = line_html("changed by hand and simulated; not optimised anew")
-        text = ""
-        if before is not None:
-            found = compare_plans(before, desk.sketch)
-            text = line_html(f"Against the plan before: {found.headline()}")
-            rows = found.rows()
-            if rows:
-                text += table_html(HEADINGS, rows[:ROWS_SHOWN], right=[5])
-            if len(rows) > ROWS_SHOWN:
-                text += line_html(f"… and {len(rows) - ROWS_SHOWN} more")
-        self.difference.value = text
+        text = "" if before is None else difference_html(before, desk.sketch)
         if desk.faults:
-            self.difference.value = (
-                text + line_html(f"{len(desk.faults)} rules are broken:") + lines_html(desk.faults, "bad", most=6)
-            )
-        elif not desk.is_planned:
-            self.difference.value = text + line_html("every limit and every rule holds", "good")
+            broken = f"{len(desk.faults)} rules are broken:" if len(desk.faults) > 1 else "A rule is broken:"
+            text += line_html(broken) + lines_html(desk.faults, "bad", most=4)
+        elif desk.plan is not None and not desk.is_planned:
+            text += line_html("every limit and every rule holds", "good")
+        self.difference.value = text
+
+
+def difference_html(before, after) -> str:
+    """What changed from one week to another: the sum, and each contact when it is asked for."""
+    found = compare_plans(before, after)
+    head = line_html(f"Against the plan before: {found.headline()}")
+    if found.is_same:
+        return head
+    table = table_html(HEADINGS, found.rows()[:ROWS_SHOWN], right=[5])
+    more = len(found.rows()) - ROWS_SHOWN
+    rest = line_html(f"… and {more} more") if more > 0 else ""
+    return f"{head}<details><summary>contact by contact</summary>{table}{rest}</details>"

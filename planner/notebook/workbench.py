@@ -34,15 +34,23 @@ class Workbench:
         self.wishes, self.replan, self.what_if = Wishes(self.desk), Replan(self.desk), WhatIf(self.desk)
         self.opened = PassView(self.desk, self._time_zone)
         self.hand_over = HandOver(self.desk, folder)
+        wrapped = widgets.Layout(flex_flow="row wrap")
+        self.tabs = widgets.Tab(
+            [self.opened.widget, self.what_if.widget, self.hand_over.widget],
+            titles=("the pass", "what if", "hand-over"),
+        )
         self.widget = widgets.VBox(
             [
                 caution_box(mission),
-                heading(f"{mission.name}: the week"), self.week.widget,
-                heading("The pass"), self.wishes.widget, self.opened.widget,
-                heading("What if"), self.what_if.widget, self.replan.widget,
-                heading("Hand-over"), self.hand_over.widget,
+                heading(f"{mission.name}: the week"),
+                self.week.widget,
+                self.opened.header,
+                widgets.HBox([self.opened.choices, self.wishes.buttons], layout=wrapped),
+                self.wishes.told,
+                self.replan.widget,
+                self.tabs,
             ]
-        )  # fmt: skip
+        )
         if plan is None:
             self.replan.start()
         else:
