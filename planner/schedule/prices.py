@@ -13,7 +13,7 @@ from planner.schedule.hours import open_windows_s
 from planner.schedule.result import WeekPlan, plan_week, prepared
 
 COLUMNS = ("item", "change", "amount", "unit", "volume_mbit", "worth_mbit_per_unit", "uncertain_mbit_per_unit")
-LARGER = 1.05  # capacities and areas are tried this much larger
+LARGER = 1.15  # capacities and areas are tried this much larger: enough to stand out of the gaps
 HOUR_S = 3600.0
 
 
@@ -31,10 +31,10 @@ class Variant:
 def price_list(plan: WeekPlan, progress: Callable[[str], None], cancelled: Callable[[], bool]) -> pd.DataFrame:
     """Marginal worths in Mbit a span, one row a change, from a full plan of each changed mission.
 
-    Half of both plans' solver gaps is the uncertainty: what is smaller may be nothing.
+    Each plan lies somewhere below its bound, so half of both gaps is the uncertainty: what is smaller may be nothing.
     """
     mission = plan.flown.week.mission
-    base_mbit, base_gap = plan.summary["volume_mbit"], plan.summary["solver_gap_pct"]
+    base_mbit, base_gap_mbit = plan.summary["volume_mbit"], _gap_mbit(plan)
     rows = []
     for variant in variants(mission, plan):
         progress(f"pricing {variant.item}: {variant.change}")
@@ -44,11 +44,14 @@ def price_list(plan: WeekPlan, progress: Callable[[str], None], cancelled: Calla
             rows.append((variant.item, variant.change, variant.amount, variant.unit, np.nan, np.nan, np.nan))
             continue
         volume_mbit = changed.summary["volume_mbit"]
-        gap_mbit = (base_gap + changed.summary["solver_gap_pct"]) / 200 * max(volume_mbit, base_mbit)
         worth = (volume_mbit - base_mbit) / variant.amount
-        uncertain = abs(gap_mbit / variant.amount)
+        uncertain = abs((base_gap_mbit + _gap_mbit(changed)) / 2 / variant.amount)
         rows.append((variant.item, variant.change, variant.amount, variant.unit, volume_mbit, worth, uncertain))
     return pd.DataFrame(rows, columns=list(COLUMNS))
+
+
+def _gap_mbit(plan: WeekPlan) -> float:
+    return plan.summary["upper_bound_mbit"] - plan.summary["volume_mbit"]
 
 
 def variants(mission: Mission, plan: WeekPlan) -> Iterator[Variant]:
