@@ -14,8 +14,6 @@ from planner.sky import aging
 from planner.sky.sites import station_position_km
 from planner.units import DAY_S
 
-OLDEST_DAYS = 3650.0  # elements that never grow too old are said to hold for ten years
-
 CONTACT_COLUMNS = (
     "contact_id", "pass_id", "satellite", "station", "mode", "aos_utc", "tx_on_utc", "tx_off_utc", "los_utc",
     "duration_s", "aos_azimuth_deg", "los_azimuth_deg", "max_elevation_deg", "min_margin_db", "volume_mbit",
@@ -122,8 +120,14 @@ def _ground_beam_deg(flown: Flown, session: Session) -> float:
 
 
 def _oldest_epoch(flown: Flown, session: Session, row: int) -> str:
-    """The oldest element epoch with which the dish keeps the satellite inside its half-power beam."""
+    """The oldest element epoch with which the dish keeps the satellite inside its half-power beam.
+
+    Never older than the policy allows; a dish that follows the signal asks for no more than that.
+    """
     week = flown.week
+    oldest_days = week.mission.policy.elements_max_age_days
+    if week.mission.station(session.station).antenna.autotrack:
+        return week.sky.clock.iso(session.tx_on_s - oldest_days * DAY_S)
     samples = week.sky.samples
     inside = samples.of(row)
     age_days = aging.oldest_age_days(
@@ -133,7 +137,7 @@ def _oldest_epoch(flown: Flown, session: Session, row: int) -> str:
         samples.velocity_km_s[inside],
         station_position_km(week.mission.station(session.station)),
     )
-    return week.sky.clock.iso(session.tx_on_s - min(age_days, OLDEST_DAYS) * DAY_S)
+    return week.sky.clock.iso(session.tx_on_s - min(age_days, oldest_days) * DAY_S)
 
 
 def _commands_from(flown: Flown, session: Session) -> str:
