@@ -24,7 +24,8 @@ def pdf_bytes(figures: Iterable[Figure], title: str) -> bytes:
 
     file = io.BytesIO()
     undated = {"CreationDate": None, "ModDate": None}
-    with PdfPages(file, metadata={"Title": title, "Creator": PRODUCT, "Producer": PRODUCT} | undated) as pages:
+    metadata = {"Title": title, "Creator": PRODUCT, "Producer": PRODUCT} | undated
+    with on_paper(), PdfPages(file, metadata=metadata) as pages:  # fonts are written as the file closes
         for figure in figures:
             _save(figure, pages, format="pdf")
     return file.getvalue()

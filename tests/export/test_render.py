@@ -58,3 +58,9 @@ def test_letters_that_the_font_lacks_are_no_warning():
     with warnings.catch_warnings():
         warnings.simplefilter("error")
         png_bytes(figure("🛰 $_{ \\frac"))
+
+
+def test_the_fonts_of_a_pdf_are_truetype_ones_that_every_viewer_draws():
+    content = pdf_bytes([style.new_figure(title="charge")], "title")
+    assert b"/Subtype /Type3" not in content
+    assert b"/CIDFontType2" in content or b"/TrueType" in content
