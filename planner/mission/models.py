@@ -2,7 +2,7 @@
 
 from datetime import datetime, timedelta
 from itertools import pairwise
-from typing import Annotated, Any
+from typing import Annotated, Any, Literal
 
 from pydantic import AwareDatetime, Field, ValidationError, field_validator, model_validator
 
@@ -42,6 +42,11 @@ class Policy(Described):
     # battery
     soc_floor_pct: Percent
     soc_end_pct: Percent
+    floor_risk_pct: Annotated[float, Field(gt=0, lt=50)] | None = Field(
+        default=None,
+        description="instead of the pessimistic corner: most probability that a week spread about nominal breaks"
+        " soc_floor_pct or soc_end_pct (upper end of its 95 % interval)",
+    )
     # link
     link_margin_db: Decibel = 3.0
     availability_pct: Annotated[float, Field(ge=50, le=99.999)] = 99.0
@@ -67,6 +72,11 @@ class Policy(Described):
     elements_max_age_days: Positive = 14.0
     upload_lead_h: NonNegative | None = Field(default=None, description="None: commands are always aboard")
     upload_reach_h: Positive = 48.0
+
+    @property
+    def charge_corner(self) -> Literal["nominal", "pessimistic"]:
+        """The corner whose charge the optimiser steers by."""
+        return "pessimistic" if self.floor_risk_pct is None else "nominal"
 
     @model_validator(mode="after")
     def _consistent(self):

@@ -81,7 +81,7 @@ def afford(mission: Mission, pass_id: str, mode: str, contacts=None) -> Affordab
         reason = next(r.reason for r in refused)
         return Affordability(pass_id, satellite, station, mode, False, reason)
     sessions = plan_week(mission).flown.sessions if contacts is None else sessions_of(contacts, mission)
-    return _answer(Flown(week, tuple(sessions)), max(found, key=lambda c: c.most_mbit))
+    return _answer(Flown(week, tuple(filter(week.reaches, sessions))), max(found, key=lambda c: c.most_mbit))
 
 
 def _answer(flown: Flown, candidate: Candidate) -> Affordability:
@@ -148,9 +148,8 @@ def _best_start_s(candidate: Candidate, duration_s: float) -> float:
 
 def _new_breaches(base: Flown, trial: Flown, satellite: str) -> list[Breach]:
     """Limits that the trial breaks and the base did not; those on stored charge first."""
-    policy = base.week.mission.policy
-    known = {(b.limit, round(b.time_s)) for b in base.worst[satellite].breaches(policy)}
-    new = [b for b in trial.worst[satellite].breaches(policy) if (b.limit, round(b.time_s)) not in known]
+    known = {(b.limit, round(b.time_s)) for b in base.breaches(satellite)}
+    new = [b for b in trial.breaches(satellite) if (b.limit, round(b.time_s)) not in known]
     return sorted(new, key=lambda breach: (breach.limit != "SoC floor", breach.time_s))
 
 
@@ -217,7 +216,5 @@ def _conflicts(base: Flown, session: Session) -> list[str]:
     """Rules other than the battery's that the session would break beside the others."""
     known = {fault.text for fault in find_faults(base)}
     trial = base.with_session(session)
-    battery = {
-        breach_text(trial, name, b) for name, s in trial.worst.items() for b in s.breaches(base.week.mission.policy)
-    }
+    battery = {breach_text(trial, name, breach) for name in base.week.powers for breach in trial.breaches(name)}
     return [fault.text for fault in find_faults(trial) if fault.text not in known | battery]

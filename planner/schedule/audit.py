@@ -82,10 +82,18 @@ def audit(mission: Mission, contacts) -> Audit:
     """
     stated = read_contacts(contacts, mission)
     week = prepared(mission)
-    flown = Flown(week, tuple(contact.session for contact in stated))
-    faults = [*find_faults(flown), *_wishes_broken(flown)]
     lines = {contact.session: contact.line for contact in stated}
+    flown = Flown(week, tuple(contact.session for contact in stated if week.reaches(contact.session)))
+    faults = [*_beyond(flown, lines), *find_faults(flown), *_wishes_broken(flown)]
     return Audit(flown, tuple(faults), tuple(_stale(flown, stated)), lines)
+
+
+def _beyond(flown: Flown, sessions) -> list[Fault]:
+    """Sessions so far from the span that nothing more can be said of them."""
+    clock, span_s = flown.week.sky.clock, flown.week.mission.span_s
+    text = f"on air outside the mission's span, {clock.iso(0.0)} to {clock.iso(span_s)}"
+    outside = [session for session in sessions if not flown.week.reaches(session)]
+    return [Fault("span", session, session.tx_on_s, session.tx_on_s, span_s, "s", text) for session in outside]
 
 
 def _wishes_broken(flown: Flown) -> list[Fault]:

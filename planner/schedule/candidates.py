@@ -6,7 +6,7 @@ import numpy as np
 
 from planner.mission.models import Satellite
 from planner.mission.transmitter import Transmitter
-from planner.schedule.energy import CORNER, Conversion, energy_states, idle_changes_s, least, likely, session_cost
+from planner.schedule.energy import Conversion, energy_states, idle_changes_s, least, likely, session_cost
 from planner.schedule.problem import Problem
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
@@ -57,7 +57,7 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
     for satellite in week.mission.satellites:
         own = [candidate for candidate in found if candidate.satellite == satellite.name]
         power = week.powers[satellite.name]
-        conversions = likely(power, week.mission.policy), least(power)
+        conversions = likely(power, week.mission.policy), least(power, week.mission.policy)
         priced += _priced(week, own, conversions)
         states.append(_states(week, satellite, own, conversions))
     midnight_s = week.sky.clock.midnight_s(np.arange(1, int(np.ceil(week.mission.days)) + 2))
@@ -138,7 +138,7 @@ def _priced(week: Week, own: list[Candidate], conversions: tuple[Conversion, Con
     if not own:
         return []
     power = week.powers[own[0].satellite]
-    draws = power.session_draws([c.session(c.opens_s, c.closes_s) for c in own], CORNER)
+    draws = power.session_draws([c.session(c.opens_s, c.closes_s) for c in own], week.mission.policy.charge_corner)
     priced = []
     for candidate, draw in zip(own, draws, strict=True):
         before_s, after_s = candidate.opens_s - draw.edges_s[0], draw.edges_s[-1] - candidate.closes_s

@@ -28,6 +28,7 @@ class Fault:
     bound: float
     unit: str
     text: str
+    satellite: str = ""  # whose battery, where it is one's
 
 
 def find_faults(flown: Flown) -> list[Fault]:
@@ -225,9 +226,9 @@ def cost_of(flown: Flown) -> float:
 
 
 def _battery(flown: Flown) -> Iterator[Fault]:
-    """Limits of battery and bus at the pessimistic corner."""
-    for satellite, series in flown.worst.items():
-        for breach in series.breaches(flown.week.mission.policy):
+    """Limits of battery and bus."""
+    for satellite in flown.week.powers:
+        for breach in flown.breaches(satellite):
             yield Fault(
                 breach.limit,
                 session_at(flown, satellite, breach.time_s),
@@ -236,11 +237,15 @@ def _battery(flown: Flown) -> Iterator[Fault]:
                 breach.bound,
                 breach.unit,
                 breach_text(flown, satellite, breach),
+                satellite,
             )
 
 
 def breach_text(flown: Flown, satellite: str, breach: Breach) -> str:
     """A battery limit's breach as one sentence."""
+    if breach.limit == "floor risk":
+        asked = f"{breach.bound:g} % allowed by policy.floor_risk_pct"
+        return f"{satellite}: floor risk: up to {breach.value:.2f} % of weeks fall below floor or end charge, {asked}"
     size = f"{breach.value:.2f} {breach.unit} against the limit {breach.bound:.2f} {breach.unit}"
     return f"{satellite}: {breach.limit}: {size} from {flown.week.sky.clock.iso(breach.time_s)}"
 

@@ -12,12 +12,12 @@ import numpy as np
 from planner.mission.models import Policy
 from planner.power.balance import SatellitePower
 from planner.power.battery import battery_current_a
+from planner.power.corners import CornerName
 from planner.power.session import SessionDraw
 from planner.schedule.sessions import EnergyCost
 from planner.schedule.states import EnergyStates
 
 WH_J = 3600.0
-CORNER = "pessimistic"  # the corner that every limit is held to
 
 
 @dataclass(frozen=True)
@@ -27,11 +27,12 @@ class Conversion:
     open_circuit_v: float
     ohm_at_25_c: float
     power: SatellitePower
+    corner: CornerName
     optimistic: bool = False  # neither the charger's voltage limit, cold, nor self-discharge holds anything back
 
     def stored_w(self, terminal_w: np.ndarray, battery_c: np.ndarray) -> np.ndarray:
         """Rate of change of stored energy (n,) [W]: negative when `terminal_w` (n,) is drawn, losses included."""
-        battery, cell = self.power.satellite.spacecraft.battery, self.power.corner(CORNER).cell
+        battery, cell = self.power.satellite.spacecraft.battery, self.power.corner(self.corner).cell
         resistance_ohm = self.ohm_at_25_c * cell.resistance_by_temperature(battery_c)
         out_a = battery_current_a(terminal_w, self.open_circuit_v, resistance_ohm)
         in_a = np.minimum(np.maximum(-out_a, 0.0), self._charge_limit_a(resistance_ohm, battery_c))
@@ -48,23 +49,26 @@ class Conversion:
         return np.where(barred, 0.0, np.minimum(most_a, max(headroom_v, 0.0) / resistance_ohm))
 
 
-def full_soc_pct(power: SatellitePower) -> float:
+def full_soc_pct(power: SatellitePower, corner: CornerName) -> float:
     """Charge at which the open-circuit voltage reaches the charger's upper limit."""
-    battery, cell = power.satellite.spacecraft.battery, power.corner(CORNER).cell
+    battery, cell = power.satellite.spacecraft.battery, power.corner(corner).cell
     return float(cell.soc_pct(np.interp(battery.cell_max_v, cell.knot_v, cell.charge_c)))
 
 
 def likely(power: SatellitePower, policy: Policy) -> Conversion:
     """At the charge halfway between floor and full."""
-    soc_pct = (policy.soc_floor_pct + full_soc_pct(power)) / 2
-    return Conversion(float(power.pack_open_circuit_v(soc_pct)), float(power.pack_resistance_ohm(soc_pct, 25.0)), power)
+    corner = policy.charge_corner
+    soc_pct = (policy.soc_floor_pct + full_soc_pct(power, corner)) / 2
+    open_circuit_v = float(power.pack_open_circuit_v(soc_pct, corner))
+    return Conversion(open_circuit_v, float(power.pack_resistance_ohm(soc_pct, 25.0, corner)), power, corner)
 
 
-def least(power: SatellitePower) -> Conversion:
+def least(power: SatellitePower, policy: Policy) -> Conversion:
     """At the highest voltage and the lowest resistance; the charger's own voltage headroom is not held against it."""
-    soc_pct = np.linspace(0.0, 100.0, 201)
-    lowest_ohm = float(power.pack_resistance_ohm(soc_pct, 25.0).min())
-    return Conversion(float(power.pack_open_circuit_v(full_soc_pct(power))), lowest_ohm, power, optimistic=True)
+    corner = policy.charge_corner
+    lowest_ohm = float(power.pack_resistance_ohm(np.linspace(0.0, 100.0, 201), 25.0, corner).min())
+    top_v = float(power.pack_open_circuit_v(full_soc_pct(power, corner), corner))
+    return Conversion(top_v, lowest_ohm, power, corner, optimistic=True)
 
 
 def idle_changes_s(power: SatellitePower, conversion: Conversion) -> np.ndarray:
@@ -77,10 +81,11 @@ def energy_states(power: SatellitePower, policy: Policy, conversion: Conversion,
     """Stored energy without sessions between `events_s` (n + 1,)."""
     edges_s, rate_w = _idle_rate_w(power, conversion)
     sum_wh = np.concatenate([[0.0], np.cumsum(rate_w * np.diff(edges_s))]) / WH_J
-    full_pct = full_soc_pct(power)
-    start_pct = min(power.corner(CORNER).start_soc_pct, full_pct)
+    corner = conversion.corner
+    full_pct = full_soc_pct(power, corner)
+    start_pct = min(power.corner(corner).start_soc_pct, full_pct)
     start_wh, full_wh, floor_wh, end_wh = (
-        float(power.stored_wh(soc_pct, CORNER))
+        float(power.stored_wh(soc_pct, corner))
         for soc_pct in (start_pct, full_pct, policy.soc_floor_pct, policy.soc_end_pct)
     )
     floors_wh = np.full(len(events_s), floor_wh)
@@ -90,7 +95,7 @@ def energy_states(power: SatellitePower, policy: Policy, conversion: Conversion,
 
 def session_cost(power: SatellitePower, draw: SessionDraw, conversion: Conversion) -> EnergyCost:
     """What a session over its whole window takes from the stored energy, beyond what the satellite takes anyway."""
-    idle = power.idle(CORNER)
+    idle = power.idle(conversion.corner)
     step_s = np.diff(draw.edges_s)
     middle_s = (draw.edges_s[1:] + draw.edges_s[:-1]) / 2
     at = np.clip(np.searchsorted(idle.edges_s, middle_s, side="right") - 1, 0, len(idle.battery_c) - 1)
@@ -105,5 +110,5 @@ def session_cost(power: SatellitePower, draw: SessionDraw, conversion: Conversio
 
 
 def _idle_rate_w(power: SatellitePower, conversion: Conversion) -> tuple[np.ndarray, np.ndarray]:
-    idle = power.idle(CORNER)
+    idle = power.idle(conversion.corner)
     return idle.edges_s, conversion.stored_w(idle.load_w - idle.array_w, idle.battery_c)

@@ -9,8 +9,12 @@ from planner.data.recorder import RecorderSeries, simulate_recorder
 from planner.data.volume import Profile
 from planner.mission.contacts import Session
 from planner.mission.models import Satellite
+from planner.power.batch import Batch, Share, share_of
+from planner.power.limits import Breach
 from planner.power.series import BatterySeries
 from planner.schedule.week import Week
+
+CHARGE_LIMITS = ("SoC floor", "end-of-span SoC", "depth of discharge")
 
 
 @dataclass(frozen=True, eq=False)
@@ -31,6 +35,39 @@ class Flown:
     @cached_property
     def nominal(self) -> dict[str, BatterySeries]:
         return {name: power.simulate(self.of(name), "nominal") for name, power in self.week.powers.items()}
+
+    @property
+    def held(self) -> dict[str, BatterySeries]:
+        """Battery at the corner whose charge the optimiser steers by."""
+        return self.worst if self.week.mission.policy.charge_corner == "pessimistic" else self.nominal
+
+    @cached_property
+    def spread(self) -> dict[str, Batch]:
+        """Weeks spread about nominal, by satellite."""
+        return {name: power.perturbed(self.of(name)) for name, power in self.week.powers.items()}
+
+    def short_pct(self, satellite: str) -> np.ndarray:
+        """What each spread week is short of floor or end charge [% of charge], negative where some is to spare."""
+        policy, batch = self.week.mission.policy, self.spread[satellite]
+        return np.maximum(policy.soc_floor_pct - batch.soc_min_pct, policy.soc_end_pct - batch.soc_end_pct)
+
+    def risk(self, satellite: str) -> Share:
+        """Probability that the week breaks its floor or end charge, with its 95 % interval."""
+        short_pct = self.short_pct(satellite)
+        return share_of(int(np.sum(short_pct > 0)), len(short_pct))
+
+    def breaches(self, satellite: str) -> list[Breach]:
+        """Limits of battery and bus that break at the pessimistic corner; where the policy asks for a probability
+        instead, charge by that probability and the rest at nominal."""
+        policy = self.week.mission.policy
+        found = list(self.held[satellite].breaches(policy))
+        if policy.floor_risk_pct is None:
+            return found
+        kept = [breach for breach in found if breach.limit not in CHARGE_LIMITS]
+        high_pct = 100 * self.risk(satellite).high
+        if high_pct > policy.floor_risk_pct:
+            kept.append(Breach("floor risk", 0.0, high_pct, policy.floor_risk_pct, "%"))
+        return kept
 
     @cached_property
     def coding(self) -> dict[Session, Profile]:

@@ -79,8 +79,8 @@ def _check_idle(week: Week) -> None:
     idle = Flown(week, ())
     lines = [
         f"even without a session: {breach_text(idle, satellite, breach)}"
-        for satellite, series in idle.worst.items()
-        for breach in series.breaches(week.mission.policy)
+        for satellite in week.powers
+        for breach in idle.breaches(satellite)
     ]
     if lines:
         raise NoWeekError("\n".join(lines[:10]))

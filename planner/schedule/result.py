@@ -77,6 +77,7 @@ class GivenWeek:
             "soc_min_pct": _rounded(min(float(series.soc_pct.min()) for series in worst), 3),
             "soc_floor_pct": mission.policy.soc_floor_pct,
             "soc_end_pct": _rounded(min(float(series.soc_pct[-1]) for series in worst), 3),
+            "floor_risk_pct": {name: _risk(flown, name) for name in flown.week.powers},
             "stored_end_mbit": _rounded(sum(float(series.stored_mbit[-1]) for series in stored), 3),
             "lost_mbit": _rounded(sum(float(series.lost_mbit[-1]) for series in stored), 3),
             "data_classes": [row for satellite in mission.satellites for row in _data_classes(flown, satellite)],
@@ -147,6 +148,12 @@ class WeekPlan(GivenWeek):
             "status": plan.solution.status,
             "solutions": plan.solutions,
         }
+
+
+def _risk(flown: Flown, satellite: str) -> dict:
+    """Probability that a week spread about nominal breaks floor or end charge, with its 95 % interval."""
+    share = flown.risk(satellite)
+    return {name: _rounded(100 * value, 3) for name, value in share._asdict().items()}
 
 
 def _data_classes(flown: Flown, satellite: Satellite) -> list[dict]:

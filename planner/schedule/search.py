@@ -8,8 +8,9 @@ import numpy as np
 
 from planner.errors import NoWeekError
 from planner.mission.contacts import Session
+from planner.power.batch import share_of
 from planner.schedule.checks import Fault, find_faults
-from planner.schedule.flown import Flown
+from planner.schedule.flown import CHARGE_LIMITS, Flown
 from planner.schedule.optimise import WeekProgramme, plan_programme
 from planner.schedule.problem import Problem
 from planner.schedule.programme import Solution, solve
@@ -23,7 +24,6 @@ COARSE_GAP = 1e-2
 APPROACHES = 2  # after them the corrections hardly move
 MOST_FULL_SOLVES, MOST_MENDS = 3, 8
 SHORTEST_SOLVE_S = 1.0
-CHARGE_LIMITS = ("SoC floor", "end-of-span SoC", "depth of discharge")
 MARGIN_WH = 0.004  # asked for beyond a floor that broke, so that rounding to whole seconds does not break it again
 
 Chosen = list[tuple[int, float, float]]  # (candidate, tx_on_s, tx_off_s)
@@ -116,7 +116,7 @@ class Search:
 
     def _giving_up(self, problem: Problem, faults: list[Fault]) -> Problem:
         """What breaks a limit of its own is given up; a rule of the week that breaks is told."""
-        hopeless = [fault for fault in faults if fault.rule not in CHARGE_LIMITS]
+        hopeless = [fault for fault in faults if fault.rule not in (*CHARGE_LIMITS, "floor risk")]
         for fault in hopeless:
             if fault.session is None:
                 raise NoWeekError(f"no plan keeps this limit: {fault.text}")
@@ -158,11 +158,22 @@ class Search:
                 price_wh = flown_wh + start_wh * (on_s - candidate.opens_s) + length_wh * (off_s - on_s)
                 for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
                     cost_wh[interval] += share * price_wh
-        series = flown.worst[states.satellite]
+        series = flown.held[states.satellite]
         stored_wh = np.interp(states.events_s, series.time_s, series.stored_wh)
         modelled_wh = np.minimum(stored_wh[:-1] + states.likely.gain_wh - cost_wh, states.likely.full_wh)
         gain_wh = states.likely.gain_wh + stored_wh[1:] - modelled_wh
-        return replace(states, likely=replace(states.likely, gain_wh=gain_wh))
+        floor_wh = states.likely.floor_wh
+        if self.week.mission.policy.floor_risk_pct is not None:
+            floor_wh = floor_wh + self._risk_wh(flown, states.satellite)
+        return replace(states, likely=replace(states.likely, gain_wh=gain_wh, floor_wh=floor_wh))
+
+    def _risk_wh(self, flown: Flown, satellite: str) -> float:
+        """How much higher the floors must be for the risk to be as allowed; negative where they may be lower."""
+        short_pct = np.sort(flown.short_pct(satellite))[::-1]
+        allowed = 1e-2 * self.week.mission.policy.floor_risk_pct
+        broken = max((k for k in range(len(short_pct)) if share_of(k, len(short_pct)).high <= allowed), default=0)
+        power, corner = self.week.powers[satellite], self.week.mission.policy.charge_corner
+        return float(power.stored_wh(100.0, corner) - power.stored_wh(100.0 - short_pct[broken], corner))
 
     def _tightened(self, problem: Problem, flown: Flown, faults: list[Fault]) -> Problem:
         """More energy asked for around each breach: what was missing, and a margin."""
@@ -170,8 +181,10 @@ class Search:
         for states in problem.states:
             floor_wh = states.likely.floor_wh.copy()
             series, power = flown.worst[states.satellite], self.week.powers[states.satellite]
-            for fault in faults:
-                if fault.rule in CHARGE_LIMITS and fault.text.startswith(f"{states.satellite}:"):
+            for fault in (fault for fault in faults if fault.satellite == states.satellite):
+                if fault.rule == "floor risk":
+                    floor_wh += max(self._risk_wh(flown, states.satellite), 0.0) + MARGIN_WH
+                elif fault.rule in CHARGE_LIMITS:
                     missing_pct = abs(fault.value - fault.bound)
                     missing_wh = float(power.stored_wh(100.0) - power.stored_wh(100.0 - missing_pct)) + MARGIN_WH
                     event = int(np.searchsorted(states.events_s, _lowest_s(series, fault)))

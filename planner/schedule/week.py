@@ -9,6 +9,7 @@ import numpy as np
 from planner.data.recorder import Rates
 from planner.data.volume import Profile
 from planner.link.table import LinkTable, link_table
+from planner.mission.contacts import Session
 from planner.mission.models import Mission, Satellite
 from planner.power.balance import SatellitePower
 from planner.schedule.hours import Windows, open_windows_s
@@ -16,6 +17,7 @@ from planner.schedule.programme import start_worker
 from planner.sky import Sky, observe
 
 SAMPLE_STEP_S = 5.0
+REACH_S = 1800.0  # tracks go on for a revolution and more beyond the span; slews and cool-down need room too
 Progress = Callable[[str], None]
 
 
@@ -56,6 +58,10 @@ class Week:
         return {
             satellite.name: _production(satellite, self.powers[satellite.name]) for satellite in self.mission.satellites
         }
+
+    def reaches(self, session: Session) -> bool:
+        """Whether a session lies in the span, or so little beyond it that the orbit is known there."""
+        return session.tx_on_s >= -REACH_S and session.tx_off_s <= self.mission.span_s + REACH_S
 
     def profiles(self, row: int, mode: str) -> list[Profile]:
         """The ways of coding `mode` on the pass of `row`."""
