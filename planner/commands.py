@@ -159,7 +159,9 @@ def _say_changes(mission: Mission, previous: str, plan) -> None:
     from planner.schedule.result import GivenWeek
     from planner.schedule.wishes import sessions_of
 
-    known = [s for s in sessions_of(previous, mission) if s.pass_id in plan.flown.week.row_of]
+    known = [
+        s for s in sessions_of(previous, mission) if s.pass_id in plan.flown.week.row_of and plan.flown.week.reaches(s)
+    ]
     found = compare_plans(GivenWeek(Flown(plan.flown.week, tuple(known))), plan)
     printing.say(f"against {previous}: {found.headline()}")
     if not found.is_same:
