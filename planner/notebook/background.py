@@ -4,13 +4,14 @@ import asyncio
 import threading
 import time
 from collections.abc import Callable
+from concurrent.futures import Future
 from typing import Any
 
 LOOK_EVERY_S = 0.2  # how often the running time is told and a finished work noticed
 
 
 class Background:
-    """One piece of work at a time. Every callback is called in the kernel's loop, where widgets may be touched.
+    """One piece of work at a time. Every callback is called in the loop in which this was made: the kernel's own.
 
     Parameters
     ----------
@@ -20,7 +21,8 @@ class Background:
     def __init__(self, running: Callable[[str, float], None]):
         self._running = running
         self._stop = threading.Event()
-        self._task: asyncio.Task | None = None
+        self._loop = asyncio.get_running_loop()
+        self._task: Future | None = None
         self.stage = ""
 
     @property
@@ -31,8 +33,7 @@ class Background:
         """Run `work(progress, cancelled)`, then `done(result)` or `failed(exception)`. Ends a work before it."""
         self.cancel()
         self._stop, self.stage = threading.Event(), ""
-        loop = asyncio.get_running_loop()
-        self._task = loop.create_task(self._run(work, self._stop, done, failed))
+        self._task = asyncio.run_coroutine_threadsafe(self._run(work, self._stop, done, failed), self._loop)
 
     def cancel(self) -> None:
         """Ask the work to end; `failed` then hears its KeyboardInterrupt."""
@@ -41,7 +42,7 @@ class Background:
     async def finished(self) -> None:
         """Wait until the work has ended and its callback is through."""
         while self.is_running:
-            await asyncio.shield(self._task)
+            await asyncio.sleep(LOOK_EVERY_S / 4)
 
     async def _run(self, work, stop: threading.Event, done: Callable, failed: Callable) -> None:
         began = time.perf_counter()
@@ -50,7 +51,7 @@ class Background:
             if stop is self._stop:
                 self.stage = stage
 
-        future = asyncio.get_running_loop().run_in_executor(None, _caught, work, progress, stop.is_set)
+        future = self._loop.run_in_executor(None, _caught, work, progress, stop.is_set)
         while not future.done():
             if stop is self._stop:
                 self._running(self.stage, time.perf_counter() - began)

@@ -1,8 +1,11 @@
 """What lies on the operator's desk: the mission, what was changed by hand, the plan, the pass being looked at.
 
 State only. The week shown is derived from it by `planner.schedule.trial`; whoever shows something watches the desk.
+A notebook's page may call from several threads at once (JupyterLab sends widget messages past the cells): `lock` lets
+one at a time change what lies here or draw it.
 """
 
+import threading
 from collections.abc import Callable
 from functools import cached_property
 
@@ -35,6 +38,7 @@ class Desk:
         self.pass_id: str | None = None
         self.mode = asked.satellites[0].spacecraft.transmitter[0].mode
         self._watchers: list[Callable[[str], None]] = []
+        self.lock = threading.RLock()
 
     def watch(self, watcher: Callable[[str], None]) -> None:
         """`watcher` hears WEEK or LOOK after each change."""
@@ -79,17 +83,18 @@ class Desk:
 
     def _change(self, **state) -> None:
         """Take a changed state, or leave all as it was if no week can be derived from it."""
-        kept = dict(self.__dict__)
-        for name in ("week", "sketch", "faults"):
-            self.__dict__.pop(name, None)
-        self.__dict__.update(state)
-        try:
-            _ = self.sketch.summary
-        except Exception:
-            self.__dict__.clear()
-            self.__dict__.update(kept)
-            raise
-        self._tell(WEEK)
+        with self.lock:
+            kept = dict(self.__dict__)
+            for name in ("week", "sketch", "faults"):
+                self.__dict__.pop(name, None)
+            self.__dict__.update(state)
+            try:
+                _ = self.sketch.summary
+            except Exception:
+                self.__dict__.clear()
+                self.__dict__.update(kept)
+                raise
+            self._tell(WEEK)
 
     def alter(self, changes: Changes) -> None:
         """Take changed values of the mission.
@@ -153,8 +158,10 @@ class Desk:
         if mode is None and pass_id is not None:
             flown = [session.mode for session in self.week.flown.sessions if session.pass_id == pass_id]
             mode = self.mode if self.mode in flown or not flown else flown[0]
-        self.pass_id, self.mode = pass_id, self._known_mode(mode or self.mode)
-        self._tell(LOOK)
+        with self.lock:
+            self.pass_id = pass_id
+            self.mode = self._known_mode(mode or self.mode)
+            self._tell(LOOK)
 
     def _known_mode(self, mode: str) -> str:
         return mode if mode in self.modes else self.modes[0]

@@ -11,7 +11,7 @@ from planner.errors import InputError
 from planner.export.folder import INDEX, claim_folder
 from planner.export.week import write_week
 from planner.notebook.desk import WEEK, Desk
-from planner.notebook.pieces import line_html, lines_html, told_in
+from planner.notebook.pieces import button, line_html, lines_html, told_in
 from planner.schedule.result import GivenWeek
 
 
@@ -22,15 +22,15 @@ class HandOver:
         self.desk = desk
         self.folder = widgets.Text(folder, description="into folder", continuous_update=False,
                                    layout=widgets.Layout(width="420px"))  # fmt: skip
-        self.write = widgets.Button(description="write the week", icon="save", button_style="primary")
+        self.write = button("write the week", icon="save", button_style="primary")
         self.replace = widgets.Checkbox(False, description="replace the week that is there", indent=False)
         self.replace.layout.display = "none"
         self.written = widgets.HTML()
         self.written.add_class("hand-over-written")
         self.file = widgets.Text("", placeholder="path of a contacts.csv", description="audit file",
                                  continuous_update=False, layout=widgets.Layout(width="420px"))  # fmt: skip
-        self.audit = widgets.Button(description="audit it", icon="search")
-        self.show = widgets.Button(description="show it as the week", disabled=True)
+        self.audit = button("audit it", icon="search")
+        self.show = button("show it as the week", disabled=True)
         self.verdict = widgets.HTML()
         self.verdict.add_class("hand-over-audit")
         self._audited: planner.Audit | None = None

@@ -11,7 +11,7 @@ from planner.errors import InputError
 from planner.export.render import png_bytes
 from planner.notebook.background import Background
 from planner.notebook.desk import Desk
-from planner.notebook.pieces import line_html, lines_html, table_html, told_in
+from planner.notebook.pieces import button, line_html, lines_html, table_html, told_in
 
 DPI = 110
 TITLES = ("link over the pass", "track over the sky", "budget line by line", "can the battery pay?")
@@ -25,9 +25,8 @@ class PassView:
         self.header, self.message = widgets.HTML(), widgets.HTML()
         self.mode = widgets.Dropdown(options=desk.modes, description="mode", layout=widgets.Layout(width="240px"))
         self.mode.observe(self._mode_chosen, "value")
-        narrow = widgets.Layout(width="110px")
-        self.earlier = widgets.Button(description="◀ pass before", tooltip="the pass before this one", layout=narrow)
-        self.later = widgets.Button(description="next pass ▶", tooltip="the pass after this one", layout=narrow)
+        self.earlier = button("◀ pass before")
+        self.later = button("next pass ▶")
         self.earlier.on_click(lambda _: self._step(-1))
         self.later.on_click(lambda _: self._step(+1))
         self.link = widgets.Image(format="png", layout=_hidden("940px"))
@@ -81,7 +80,7 @@ class PassView:
         return (
             f"<b>{escape(f'{row.satellite} over {row.station}, {row.aos_utc[:10]}')}</b>{escape(beside)} "
             f"<code>{escape(self.desk.pass_id)}</code>" + line_html(text)
-            + line_html(f"{row.verdict}: {row.reason}")
+            + line_html(row.reason if row.reason.startswith(row.verdict) else f"{row.verdict}: {row.reason}")
         )  # fmt: skip
 
     def _mode_chosen(self, change) -> None:
@@ -101,7 +100,7 @@ class PassView:
         if tab is None or tab in self._shown or self.desk.pass_id not in self.desk.prepared.row_of:
             return
         self._shown[tab] = True
-        with told_in(self.message):
+        with self.desk.lock, told_in(self.message):
             (self._fill_link, self._fill_sky, self._fill_budget, self._ask_energy)[tab]()
 
     def _fill_link(self) -> None:

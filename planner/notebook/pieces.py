@@ -14,6 +14,12 @@ FULL = widgets.Layout(width="100%")
 MARKS = {"good": ("✔", style.GREEN), "bad": ("✘", style.VERMILLION), "note": ("", style.INK)}
 
 
+def button(text: str, tooltip: str = "", **options) -> widgets.Button:
+    """A button as wide as its words."""
+    layout = widgets.Layout(width="auto", padding="0 12px")
+    return widgets.Button(description=text, tooltip=tooltip or text, layout=layout, **options)
+
+
 def heading(text: str) -> widgets.HTML:
     """A section's title."""
     return widgets.HTML(

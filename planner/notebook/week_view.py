@@ -13,21 +13,33 @@ from planner.errors import InputError
 from planner.notebook.desk import Desk
 from planner.notebook.pieces import figures_html, line_html
 
-WIDTHS = {"narrow page": 760, "middle page": 920, "wide page": 1240}
+WIDTHS = {"narrow page": 620, "middle page": 840, "wide page": 1000, "widest page": 1280}
 DPI, LANE_PX, REST_PX = 100, 34, 430  # of the picture's height: each lane, and all but the lanes
 MOST_LANES_PX = 700
 WHOLE = "whole span"
 MOST_BUTTONS = 8  # days, up to which each has a button of its own
 
 
+class OrderlyCanvas(Canvas):
+    """A canvas that draws and hears clicks only while nobody changes the figure."""
+
+    def __init__(self, figure: Figure, lock):
+        self._lock = lock
+        super().__init__(figure)
+
+    def _handle_message(self, *arguments) -> None:
+        with self._lock:
+            super()._handle_message(*arguments)
+
+
 class WeekPicture:
     """A canvas on which a plan is redrawn without drawing the page below it again."""
 
-    def __init__(self, clicked: Callable[[str], None]):
+    def __init__(self, clicked: Callable[[str], None], lock):
         self._clicked = clicked
         self._artists: list = []
         self._page = None
-        self.canvas = Canvas(Figure(dpi=DPI))
+        self.canvas = OrderlyCanvas(Figure(dpi=DPI), lock)
         FigureManager(self.canvas, 0)
         self.canvas.header_visible = self.canvas.footer_visible = self.canvas.resizable = False
         self.canvas.toolbar_visible = False
@@ -91,7 +103,7 @@ class WeekView:
 
     def __init__(self, desk: Desk, clicked: Callable[[str], None]):
         self.desk = desk
-        self.picture = WeekPicture(clicked)
+        self.picture = WeekPicture(clicked, desk.lock)
         self.figures = widgets.HTML()
         self.figures.add_class("week-figures")
         self.day = _day_choice(desk)
@@ -102,7 +114,7 @@ class WeekView:
         names = [satellite.name for satellite in desk.asked.satellites]
         self.satellite = widgets.Dropdown(options=names, description="charge of")
         self.satellite.layout.display = None if len(names) > 1 else "none"
-        self.width = widgets.Dropdown(options=WIDTHS, value=920, layout=widgets.Layout(width="130px"))
+        self.width = widgets.Dropdown(options=WIDTHS, value=840, layout=widgets.Layout(width="130px"))
         self.message = widgets.HTML()
         for choice in (self.day, self.zone, self.satellite, self.width):
             choice.observe(lambda change: self.turn_page(), "value")
@@ -128,9 +140,10 @@ class WeekView:
         except InputError as fault:
             zone = UTC
             self.message.value = line_html(f"{fault}; shown in UTC", "bad")
-        self._page_of = self._page_key()
-        self.picture.turn_page(self.desk, self.satellite.value, self.day.value, zone, self.width.value)
-        self._tell_figures()
+        with self.desk.lock:
+            self._page_of = self._page_key()
+            self.picture.turn_page(self.desk, self.satellite.value, self.day.value, zone, self.width.value)
+            self._tell_figures()
 
     def redraw(self) -> None:
         """Draw the desk's week, over the page where that is still the right one."""

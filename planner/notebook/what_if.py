@@ -9,7 +9,7 @@ from planner.export.compare import HEADINGS, compare_plans
 from planner.notebook.background import Background
 from planner.notebook.changes import Changes
 from planner.notebook.desk import WEEK, Desk
-from planner.notebook.pieces import NumberField, line_html, lines_html, table_html, told_in
+from planner.notebook.pieces import NumberField, button, line_html, lines_html, table_html, told_in
 
 FIELDS = (  # table of the mission file, key, what the field says, unit, step
     ("policy", "soc_floor_pct", "charge never below", "%", 1.0),
@@ -31,13 +31,13 @@ class WhatIf:
         self.stations = self._switches([station.name for station in desk.asked.stations], "stations_off")
         modes = [t.mode for satellite in desk.asked.satellites for t in satellite.spacecraft.transmitter]
         self.modes = self._switches(list(dict.fromkeys(modes)), "modes_off")
-        self.reset = widgets.Button(description="as in the file", tooltip="undo every change made here")
+        self.reset = button("as in the file", "undo every change made here")
         self.reset.on_click(lambda _: self._as_in_the_file())
         numbers = widgets.VBox([field.widget for field in self.fields.values()])
-        switches = widgets.VBox(
-            [widgets.HTML("stations in use"), *self.stations, widgets.HTML("modes in use"), *self.modes, self.reset]
-        )
-        self.widget = widgets.VBox([widgets.HBox([numbers, switches], layout={"flex_flow": "row wrap"}), self.message])
+        stations = widgets.VBox([widgets.HTML("<b>stations in use</b>"), *self.stations], layout=_column())
+        modes = widgets.VBox([widgets.HTML("<b>modes in use</b>"), *self.modes, self.reset], layout=_column())
+        columns = widgets.HBox([numbers, stations, modes], layout={"flex_flow": "row wrap"})
+        self.widget = widgets.VBox([columns, self.message])
 
     def _field(self, table: str, key: str, label: str, unit: str, step: float) -> NumberField:
         def take(value: float) -> None:
@@ -50,7 +50,7 @@ class WhatIf:
         return float(getattr(source, key))
 
     def _switches(self, names: list[str], what: str) -> list[widgets.Checkbox]:
-        boxes = [widgets.Checkbox(True, description=name, indent=False) for name in names]
+        boxes = [widgets.Checkbox(True, description=name, indent=False, layout={"width": "auto"}) for name in names]
         for box in boxes:
             box.observe(lambda change: self._switched(what, names, boxes, change), "value")
         return boxes
@@ -77,14 +77,18 @@ class WhatIf:
                 box.value = True
 
 
+def _column() -> widgets.Layout:
+    return widgets.Layout(margin="0 0 0 40px", max_height="420px", overflow="auto")
+
+
 class Wishes:
     """Keep, drop or leave open the pass that is looked at; and what has been wished so far."""
 
     def __init__(self, desk: Desk):
         self.desk = desk
-        self.keep = widgets.Button(description="keep this pass", icon="check", tooltip="this mode must be flown")
-        self.drop = widgets.Button(description="drop this pass", icon="times", tooltip="nothing is sent on it")
-        self.open = widgets.Button(description="leave it open", tooltip="the plan may decide")
+        self.keep = button("keep this pass", "this mode must be flown on it", icon="check")
+        self.drop = button("drop this pass", "nothing is sent on it", icon="times")
+        self.open = button("leave it open", "the plan may decide")
         self.told = widgets.HTML()
         self.keep.on_click(lambda _: self._wish(lambda: desk.keep_pass(desk.pass_id, desk.mode)))
         self.drop.on_click(lambda _: self._wish(lambda: desk.drop_pass(desk.pass_id)))
@@ -114,8 +118,8 @@ class Replan:
 
     def __init__(self, desk: Desk):
         self.desk = desk
-        self.button = widgets.Button(description="plan the week anew", button_style="primary", icon="refresh")
-        self.cancel = widgets.Button(description="cancel", icon="stop", disabled=True)
+        self.button = button("plan the week anew", button_style="primary", icon="refresh")
+        self.cancel = button("cancel", icon="stop", disabled=True)
         self.status, self.difference = widgets.HTML(), widgets.HTML()
         self.status.add_class("replan-status")
         self.difference.add_class("week-difference")
@@ -151,9 +155,8 @@ class Replan:
         if isinstance(fault, KeyboardInterrupt):
             self.status.value = line_html("cancelled; the week shown is the one before")
             return
-        self.status.value = line_html("no week: the one before is still shown", "bad") + lines_html(
-            str(fault).splitlines(), "bad"
-        )
+        what = "no week" if self.desk.plan is None else "no week; the one before is still shown"
+        self.status.value = line_html(what, "bad") + lines_html(str(fault).splitlines(), "bad")
 
     def refresh(self) -> None:
         """Show how the week differs from the plan before it, and which rules it breaks."""

@@ -10,7 +10,7 @@ import planner
 from planner.mission.files import DEFAULT_MISSION
 from planner.mission.models import Mission
 from planner.notebook.cautions import caution_box
-from planner.notebook.desk import Desk
+from planner.notebook.desk import LOOK, Desk
 from planner.notebook.hand_over import HandOver
 from planner.notebook.pass_view import PassView
 from planner.notebook.pieces import USER_FAULTS, heading, lines_html
@@ -51,6 +51,7 @@ class Workbench:
                 self.tabs,
             ]
         )
+        self.desk.watch(self._turn_to_the_pass)
         if plan is None:
             self.replan.start()
         else:
@@ -61,6 +62,10 @@ class Workbench:
             return self.week.time_zone
         except planner.InputError:  # told beside the field
             return UTC
+
+    def _turn_to_the_pass(self, what: str) -> None:
+        if what == LOOK:
+            self.tabs.selected_index = 0
 
     async def planned(self) -> planner.WeekPlan:
         """Wait for the plan that is being made; the shown week."""
