@@ -9,6 +9,7 @@ from pathlib import Path
 from planner import printing
 from planner.errors import InputError, MachineError, NoWeekError
 from planner.mission.files import DEFAULT_MISSION, load_mission
+from planner.mission.models import Mission
 
 DONE, NO, WRONG_INPUT, MACHINE, INTERRUPTED = 0, 1, 2, 3, 130
 KEEP_HELP = "fly this pass in this mode, as PASS:MODE (may be repeated)"
@@ -28,6 +29,9 @@ def main(argv: list[str] | None = None) -> int:
     except MachineError as error:
         printing.fault([str(error)])
         return MACHINE
+    except MemoryError:
+        printing.fault(["the machine's memory does not hold this mission; plan fewer days, stations or satellites"])
+        return MACHINE
     except OSError as error:
         if isinstance(error, BrokenPipeError):
             printing.close_quietly()
@@ -43,7 +47,7 @@ def _parser() -> argparse.ArgumentParser:
     parser = argparse.ArgumentParser(
         prog="python -m planner",
         description="Plan a week of downlink sessions that a small satellite's battery can pay for.",
-        epilog="Exit status: 0 done; 1 the answer is no; 2 the input is wrong; 3 the machine could not; 130 interrupted.",
+        epilog="Exit status: 0 done; 1 the answer is no; 2 wrong input; 3 the machine could not; 130 interrupted.",
     )
     commands = parser.add_subparsers(dest="command", required=True, metavar="COMMAND")
     add = _Adder(commands)
@@ -113,8 +117,8 @@ def _week_options(week: argparse.ArgumentParser) -> None:
     week.add_argument("--drop", action="append", default=[], metavar="PASS", help="do not fly this pass (repeatable)")
     week.add_argument("--from", dest="previous", metavar="CONTACTS.csv", help="change as few of these as possible")
     week.add_argument("--freeze-until", metavar="UTC", help="contacts of --from that begin before stay as they are")
-    week.add_argument("--explain", action="store_true", help="also what keeping each left-out pass would cost (minutes)")
-    week.add_argument("--prices", action="store_true", help="also what one more Wh, W, dB or station is worth (minutes)")
+    week.add_argument("--explain", action="store_true", help="also what keeping each left-out pass costs (minutes)")
+    week.add_argument("--prices", action="store_true", help="also what a further Wh, W, dB or station is worth")
     week.add_argument("--time-limit", type=float, metavar="S", help="best plan found in S seconds, its gap told")
 
 
@@ -131,23 +135,35 @@ def _hand_over_options(add: _Adder) -> None:
     pointing.add_argument("--force", action="store_true", help="also where elements are too old for the beam")
 
 
+def _mission(path: str) -> Mission:
+    """The mission, its modes checked against what the link can compute; faults name the file."""
+    from planner.link import check_modes
+
+    mission = load_mission(path)
+    try:
+        check_modes(mission)
+    except InputError as error:
+        raise InputError(*(f"{path}: {fault}" for fault in error.faults)) from None
+    return mission
+
+
 def _check(arguments) -> int:
     from planner.commands import check
 
-    return check(load_mission(arguments.mission))
+    return check(_mission(arguments.mission))
 
 
 def _passes(arguments) -> int:
     from planner.commands import passes
 
-    return passes(load_mission(arguments.mission), arguments.csv)
+    return passes(_mission(arguments.mission), arguments.csv)
 
 
 def _link(arguments) -> int:
     from planner import link_budget
 
     budget = link_budget(
-        load_mission(arguments.mission),
+        _mission(arguments.mission),
         arguments.station,
         arguments.mode,
         elevation_deg=arguments.elevation,
@@ -166,7 +182,7 @@ def _week(arguments) -> int:
     freeze = None if arguments.freeze_until is None else _moment(arguments.freeze_until)
     if arguments.time_limit is not None and not 0 < arguments.time_limit < 1e6:
         raise InputError(f"--time-limit must be above 0 s and below 1e6 s, got {arguments.time_limit:g}")
-    return week(load_mission(arguments.mission), arguments, freeze)
+    return week(_mission(arguments.mission), arguments, freeze)
 
 
 def _moment(text: str) -> datetime:
@@ -185,14 +201,14 @@ def _audit(arguments) -> int:
     if len(arguments.files) > 2:
         raise InputError(f"audit takes a mission file and a contacts file, got {len(arguments.files)} files")
     mission, contacts = [str(DEFAULT_MISSION), *arguments.files][-2:]
-    return show_audit(load_mission(mission), contacts, arguments.json)
+    return show_audit(_mission(mission), contacts, arguments.json)
 
 
 def _afford(arguments) -> int:
     from planner.commands import show_affordability
 
     return show_affordability(
-        load_mission(arguments.mission), arguments.pass_id, arguments.mode, arguments.contacts, arguments.json
+        _mission(arguments.mission), arguments.pass_id, arguments.mode, arguments.contacts, arguments.json
     )
 
 
@@ -205,13 +221,13 @@ def _compare(arguments) -> int:
 def _pointing(arguments) -> int:
     from planner.commands import write_pointing
 
-    return write_pointing(load_mission(arguments.mission), arguments)
+    return write_pointing(_mission(arguments.mission), arguments)
 
 
 def _cards(arguments) -> int:
     from planner.commands import write_cards
 
-    return write_cards(load_mission(arguments.mission), Path(arguments.contacts), Path(arguments.out))
+    return write_cards(_mission(arguments.mission), Path(arguments.contacts), Path(arguments.out))
 
 
 if __name__ == "__main__":

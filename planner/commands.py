@@ -16,9 +16,6 @@ DONE, NO = 0, 1
 
 def check(mission: Mission) -> int:
     """Print what was understood."""
-    from planner.link import check_modes
-
-    check_modes(mission)
     printing.say(f"{mission.name}: {mission.days:g} days from {mission.start.astimezone(UTC):%Y-%m-%dT%H:%M:%SZ}")
     printing.say("")
     printing.table(
@@ -33,6 +30,8 @@ def check(mission: Mission) -> int:
     printing.say("")
     printing.table([("policy", "left"), ("", "left")], [(k, str(v)) for k, v in mission.policy.model_dump().items()])
     printing.say("")
+    printing.table([("file read, from the mission's folder", "left"), ("SHA-256", "left")],
+                   [(name, digest[:16] + "…") for name, digest in mission.inputs])  # fmt: skip
     printing.say(f"{len(mission.inputs)} files read, no fault found.")
     return DONE
 
@@ -75,8 +74,8 @@ def passes(mission: Mission, csv: str | None) -> int:
         write_file(csv, passes_csv(found))
         printing.say(f"{len(found)} passes written to {csv}")
         return DONE
-    columns = [("pass_id", "left"), ("station", "left"), ("aos_utc", "left"), ("los_utc", "left"), ("duration", "right"),
-               ("max el.", "right"), ("range", "right"), ("sunlit", "right")]  # fmt: skip
+    columns = [("pass_id", "left"), ("station", "left"), ("aos_utc", "left"), ("los_utc", "left"),
+               ("duration", "right"), ("max el.", "right"), ("range", "right"), ("sunlit", "right")]  # fmt: skip
     printing.table(columns, [
         (p.pass_id, p.station, p.aos_utc[:19] + "Z", p.los_utc[:19] + "Z", f"{p.duration_s:.0f} s",
          f"{p.max_elevation_deg:.1f} deg", f"{p.tca_range_km:.0f} km", f"{100 * p.sunlit_fraction:.0f} %")

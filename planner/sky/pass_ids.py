@@ -1,6 +1,5 @@
 """Names of passes that outlive an element update."""
 
-import re
 from dataclasses import replace
 from datetime import timedelta
 
@@ -8,6 +7,7 @@ import numpy as np
 
 from planner.errors import InputError
 from planner.mission.elements import Ephemeris
+from planner.mission.names import alike, slug
 from planner.sky.clock import Clock
 from planner.sky.propagate import states
 from planner.sky.sites import Sites
@@ -17,21 +17,13 @@ EQUATORIAL_DEG = 1.0  # orbits flatter than this have no steady northernmost and
 SIDEREAL_DAY_S = 86_164.0905  # from memory
 
 
-def slug(name: str) -> str:
-    """Lower case, with every run of other characters than letters and digits as one hyphen."""
-    return re.sub(r"[^\w]+|_+", "-", name.lower()).strip("-") or "x"
-
-
 def refuse_equal_slugs(kind: str, names) -> None:
     """InputError when two names of one kind would give the same pass ids."""
-    seen: dict[str, str] = {}
-    for name in names:
-        if slug(name) in seen:
-            raise InputError(
-                f"{kind} names must differ in more than case, blanks and signs, because pass ids are made of them,"
-                f" got {seen[slug(name)]!r} and {name!r}"
-            )
-        seen[slug(name)] = name
+    for first, second in alike(names):
+        raise InputError(
+            f"{kind} names must differ in more than case, blanks and signs, because pass ids are made of them,"
+            f" got {first!r} and {second!r}"
+        )
 
 
 def pass_ids(clock: Clock, track: Track, sites: Sites, station_index, aos_s, by_day) -> np.ndarray:
