@@ -95,6 +95,26 @@ def write_set(folder, files: Mapping[str, bytes], summary: Mapping, **options) -
     return claimed.mended
 
 
+def write_file(path, content: bytes) -> None:
+    """Write one file of its own, whole or not at all: a temporary file beside it, then replace.
+
+    Raises
+    ------
+    MachineError : the machine does not let us write; what was there is kept
+    InputError : the path is a folder, a link, or not a plain file
+    """
+    path = Path(path)
+    if not path.name or path.is_symlink() or (path.exists() and not path.is_file()):
+        raise InputError(f"{path}: must be a plain file or a new name (links are not followed for output)")
+    coming = path.with_name(f".{path.name}.{os.getpid()}")
+    with _machine_faults(path, "nothing was written"):
+        try:
+            _write(coming, content)
+            os.replace(coming, path)
+        finally:
+            coming.unlink(missing_ok=True)
+
+
 class ClaimedFolder:
     """A folder held by this run. `mended`: one line for each thing that an earlier, interrupted run had left."""
 

@@ -13,7 +13,7 @@ import pytest
 
 from planner.errors import InputError, MachineError
 from planner.export import folder as rooms
-from planner.export.folder import claim_folder, json_bytes, verify_set, write_set
+from planner.export.folder import claim_folder, json_bytes, verify_set, write_file, write_set
 
 OLD = {"contacts.csv": b"old contacts\n", "passes.csv": b"the same\n", "gone.csv": b"only in the old set\n"}
 NEW = {"contacts.csv": b"new contacts\n", "passes.csv": b"the same\n", "added.csv": b"only in the new set\n"}
@@ -368,3 +368,25 @@ def test_json_refuses_what_json_has_no_word_for():
     assert json_bytes({"soc_min_pct": 61.25, "note": "Ø"}) == '{\n  "soc_min_pct": 61.25,\n  "note": "Ø"\n}\n'.encode()
     with pytest.raises(ValueError, match="Out of range float values are not JSON compliant"):
         json_bytes({"soc_min_pct": float("nan")})
+
+
+def test_a_single_file_is_written_whole_and_replaces_the_one_before(tmp_path):
+    target = tmp_path / "passes.csv"
+    write_file(target, b"old")
+    write_file(target, b"new")
+    assert target.read_bytes() == b"new"
+    assert [entry.name for entry in tmp_path.iterdir()] == ["passes.csv"]
+
+
+def test_a_single_file_is_not_written_through_a_link_or_over_a_folder(tmp_path):
+    (tmp_path / "elsewhere").write_bytes(b"theirs")
+    (tmp_path / "link").symlink_to(tmp_path / "elsewhere")
+    for target in (tmp_path / "link", tmp_path):
+        with pytest.raises(InputError, match="links are not followed"):
+            write_file(target, b"mine")
+    assert (tmp_path / "elsewhere").read_bytes() == b"theirs"
+
+
+def test_a_single_file_in_a_missing_folder_is_told(tmp_path):
+    with pytest.raises(MachineError, match="nothing was written"):
+        write_file(tmp_path / "none" / "passes.csv", b"new")
