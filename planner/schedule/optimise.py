@@ -11,7 +11,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from planner.schedule.crowding import OnAir, crowded, fits, seconds_on_air, share_time, uneven
-from planner.schedule.problem import DAY_S, HOUR_S, Problem
+from planner.schedule.problem import HOUR_S, Problem
 from planner.schedule.programme import Programme
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import EnergyStates, SatelliteStates
@@ -302,9 +302,9 @@ def _policy_rows(week: WeekProgramme) -> None:
             if policy.max_sessions_per_day is not None:
                 today = [(v.flown, 1.0) for c, v in own if c.opens_s < end_s and c.closes_s > begin_s]
                 programme.row(today, highest=policy.max_sessions_per_day)
-            if policy.daily_contact_modes and end_s - begin_s == DAY_S:
-                within = [(c, v) for c, v in own if begin_s <= c.opens_s and c.closes_s <= end_s]
-                programme.row([(v.flown, 1.0) for c, v in within if c.mode in policy.daily_contact_modes], lowest=1.0)
+        for begin_s, end_s in problem.whole_days() if policy.daily_contact_modes else ():
+            daily = problem.within_day(states.satellite, begin_s, end_s)
+            programme.row([(week.variables[i].flown, 1.0) for i in daily], lowest=1.0)
         if policy.longest_gap_h is not None:
             _longest_gap(programme, own, policy.longest_gap_h * HOUR_S, problem.span_s)
         _on_air_per_orbit(programme, own, problem.orbit_s[states.satellite])

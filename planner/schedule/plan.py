@@ -94,5 +94,19 @@ def _check_wishes(problem: Problem, refusals: list[Refusal], week: Week) -> None
         f"keep {pass_id}:{mode}: {why.get((pass_id, mode), 'no such pass in the span')}"
         for pass_id, mode in sorted(problem.keep - possible)
     ]
+    lines += _days_without_contact(problem, week)
     if lines:
         raise NoWeekError("\n".join(lines))
+
+
+def _days_without_contact(problem: Problem, week: Week) -> list[str]:
+    """Whole days on which no usable pass of a daily mode lies, so that the policy cannot be met."""
+    modes = " or ".join(problem.policy.daily_contact_modes)
+    days = problem.whole_days() if problem.policy.daily_contact_modes else []
+    date = week.sky.clock.iso
+    return [
+        f"policy.daily_contact_modes: no usable pass of {states.satellite} in {modes} on {date(begin_s)[:10]}"
+        for states in problem.states
+        for begin_s, end_s in days
+        if not problem.within_day(states.satellite, begin_s, end_s)
+    ]

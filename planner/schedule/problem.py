@@ -54,6 +54,21 @@ class Problem:
         edges = np.unique(np.concatenate([[0.0], self.midnight_s, [self.span_s]]))
         return list(zip(edges[:-1].tolist(), edges[1:].tolist(), strict=True))
 
+    def within_day(self, satellite: str, begin_s: float, end_s: float) -> list[int]:
+        """Candidates of the daily modes whose whole window lies within a day."""
+        return [
+            i
+            for i, c in enumerate(self.candidates)
+            if c.satellite == satellite
+            and c.mode in self.policy.daily_contact_modes
+            and begin_s <= c.opens_s
+            and c.closes_s <= end_s
+        ]
+
+    def whole_days(self) -> list[tuple[float, float]]:
+        """(begin, end) of the UTC days that lie in the span uncut: those that ask for a daily contact."""
+        return [(begin_s, end_s) for begin_s, end_s in self.days() if end_s - begin_s == DAY_S]
+
     def needs_upload(self, candidate: Candidate) -> bool:
         return self.policy.upload_lead_h is not None and candidate.closes_s > self.commands_until_s[candidate.satellite]
 

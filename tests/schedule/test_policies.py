@@ -134,6 +134,17 @@ def test_a_policy_of_risk_holds_the_probability_and_brings_no_less(two_day_missi
     assert plan.summary["volume_mbit"] >= allowed_loss * two_day_plan.summary["volume_mbit"]
 
 
+def test_a_day_without_a_pass_for_its_required_contact_is_named(two_day_mission):
+    stations = tuple(station for station in two_day_mission.stations if station.name == "Vardholm")
+    deaf = stations[0].model_copy(update={"receiver": stations[0].receiver[:1]})  # K band only
+    mission = two_day_mission.model_copy(update={"stations": (deaf,)})
+    with pytest.raises(planner.NoWeekError) as told:
+        planner.plan_week(mission)
+    assert str(told.value).splitlines()[0] == (
+        "policy.daily_contact_modes: no usable pass of MARSHLIGHT-1 in S low rate on 2026-12-07"
+    )
+
+
 def test_explaining_tells_what_keeping_a_pass_costs_and_keeping_it_costs_no_more(two_day_mission, two_day_plan):
     explained = two_day_plan.explained()
     left_out = explained.passes[explained.passes["verdict"] == "left out"]
