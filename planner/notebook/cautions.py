@@ -15,10 +15,17 @@ def caution_box(mission: Mission) -> widgets.HTML:
     """Every caution, in a frame that stays on the page."""
     first, *others = [*CAUTIONS, *_element_ages(mission)]
     return widgets.HTML(
-        f'<div style="border:1px solid {style.ORANGE};border-left-width:10px;padding:3px 12px;line-height:1.35">'
+        f'<div style="border:1px solid {style.ORANGE};border-left-width:10px;box-sizing:border-box;'
+        f'padding:3px 12px;line-height:1.35">'
         f"<b>⚠ {escape(first)}</b> {' '.join(escape(text) for text in others)}</div>",
         layout=FULL,
     )
+
+
+def caution_line(about: str) -> widgets.HTML:
+    """The caution that goes with what is done here, named by its first words."""
+    text = next(text for text in CAUTIONS if text.startswith(about))
+    return widgets.HTML(f'<div style="color:#555;line-height:1.35">⚠ {escape(text)}</div>', layout=FULL)
 
 
 def _element_ages(mission: Mission) -> list[str]:

@@ -10,6 +10,7 @@ import planner
 from planner.errors import InputError
 from planner.export.folder import INDEX, claim_folder
 from planner.export.week import write_week
+from planner.notebook.cautions import caution_line
 from planner.notebook.desk import WEEK, Desk
 from planner.notebook.pieces import button, line_html, lines_html, told_in
 from planner.schedule.result import GivenWeek
@@ -43,6 +44,7 @@ class HandOver:
             [
                 widgets.HBox([self.folder, self.write, self.replace], layout=wrapped), self.written,
                 widgets.HBox([self.file, self.audit, self.show], layout=wrapped), self.verdict,
+                caution_line("Planning aid"),
             ]
         )  # fmt: skip
         desk.watch(lambda what: self._week_changed() if what == WEEK else None)

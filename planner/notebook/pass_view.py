@@ -10,6 +10,7 @@ from planner.charts.skytrack import skytrack_figure
 from planner.errors import InputError
 from planner.export.render import png_bytes
 from planner.notebook.background import Background
+from planner.notebook.cautions import caution_line
 from planner.notebook.desk import Desk
 from planner.notebook.pieces import button, line_html, lines_html, table_html, told_in
 
@@ -33,7 +34,8 @@ class PassView:
         self.sky = widgets.Image(format="png", layout=_hidden("560px"))
         self.budget, self.energy = widgets.HTML(), widgets.HTML()
         self.energy.add_class("pass-energy")
-        self.tabs = widgets.Tab([self.link, self.sky, self.budget, self.energy], titles=TITLES)
+        pages = (self.link, "Power flux"), (self.sky, "Antennas"), (self.budget, "Power flux"), (self.energy, "Lithium")
+        self.tabs = widgets.Tab([widgets.VBox([page, caution_line(about)]) for page, about in pages], titles=TITLES)
         self.tabs.observe(lambda change: self._fill(), "selected_index")
         self._asking = Background(self._asking_told)
         self._shown: dict[int, object] = {}
