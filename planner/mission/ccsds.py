@@ -14,12 +14,13 @@ def date(text: str) -> datetime:
     match = DATE.fullmatch(text.strip())
     if not match:
         raise ValueError("must be a date as 2026-12-06T18:00:00.000 or 2026-340T18:00:00.000")
-    year, month, day, day_of_year, hour, minute, second = (int(part) if part else None for part in match.groups()[:7])
+    month, day, day_of_year = match[2], match[3], match[4]
+    year, hour, minute, second = (int(part) for part in match.group(1, 5, 6, 7))
     fraction = timedelta(microseconds=round(float(match[8] or 0) * 1e6))
     try:
         if day_of_year is None:
-            return datetime(year, month, day, hour, minute, second, tzinfo=UTC) + fraction
-        moment = datetime(year, 1, 1, hour, minute, second, tzinfo=UTC) + timedelta(days=day_of_year - 1)
+            return datetime(year, int(month), int(day), hour, minute, second, tzinfo=UTC) + fraction
+        moment = datetime(year, 1, 1, hour, minute, second, tzinfo=UTC) + timedelta(days=int(day_of_year) - 1)
     except ValueError as error:
         raise ValueError(f"must be a date that exists ({error})") from None
     if moment.year != year:

@@ -56,7 +56,8 @@ def read_contacts(contacts, mission: Mission) -> list[StatedContact]:
 
 
 def _stated(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission) -> list[StatedContact]:
-    contacts, faults = [], []
+    contacts: list[StatedContact] = []
+    faults: list[str] = []
     for line, row in rows:
         found = _row_faults(row, mission)
         if found:

@@ -101,8 +101,10 @@ def load_mission(path: str | Path = DEFAULT_MISSION) -> Mission:
     tables = reader.model(MissionTables, own, path, _MissionFile)
     spacecraft = _spacecraft(reader, shared, path) if shared or not own.get("satellite") else None
     orbits = _orbits(reader, own)
-    stations = [_station(reader, name) for name in _file_names(own.get("stations"))[:MOST_STATIONS]]
+    read = [_station(reader, name) for name in _file_names(own.get("stations"))[:MOST_STATIONS]]
     reader.stop_on_faults()
+    assert tables is not None  # what could not be read is a fault
+    stations = [station for station in read if station is not None]
     _check_size(reader, tables, len(orbits), path)
     reader.stop_on_faults()
     satellites = _satellites(reader, tables, orbits, spacecraft, path)
@@ -242,5 +244,5 @@ def _check_references(
 def _check_names(reader: _Reader, described: list, what: str, path: Path) -> None:
     reader.faults.extend(
         f"{path}: {what}: names must differ in their letters and digits, got {first!r} and {second!r}"
-        for first, second in alike(thing.name for thing in described if thing is not None)
+        for first, second in alike(thing.name for thing in described)
     )

@@ -33,7 +33,8 @@ class _Reader:
     """Goes through the lines once: header, then metadata and states by turns; covariances are passed over."""
 
     def __init__(self, path: str):
-        self.path, self.faults = path, []
+        self.path = path
+        self.faults: list[str] = []
         self.created: datetime | None = None
         self.segments: list[tuple[str, str, Segment]] = []
         self.meta: dict[str, tuple[int, str]] = {}

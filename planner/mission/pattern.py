@@ -11,7 +11,8 @@ COLUMNS = ("off_axis_deg", "gain_dbi")
 
 def read_pattern(path: Path) -> tuple[tuple[float, float], ...]:
     """((off_axis_deg, gain_dbi), …), rising in angle from 0; InputError names the line of each fault."""
-    rows, faults = [], []
+    rows: list[tuple[float, float]] = []
+    faults: list[str] = []
     for line, row in read_table(path, COLUMNS):
         try:
             angle_deg, gain_dbi = (float(row[column]) for column in COLUMNS)
