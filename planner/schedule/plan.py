@@ -3,6 +3,8 @@
 from collections.abc import Callable
 from dataclasses import dataclass
 
+import numpy as np
+
 from planner.errors import NoWeekError
 from planner.schedule.candidates import Refusal, pose
 from planner.schedule.checks import breach_text
@@ -71,7 +73,15 @@ def make_plan(
         progress("schedule, upper bound")
         bound = bounding.solution(cancelled)
         stopwatch.lap("waiting for the bound")
-    return Plan(flown, problem, search.problem, refusals, solution, bound.bound, search.solutions, stopwatch.laps)
+    bound_mbit = min(most_there_is_mbit(problem), bound.bound if np.isfinite(bound.bound) else np.inf)
+    return Plan(flown, problem, search.problem, refusals, solution, bound_mbit, search.solutions, stopwatch.laps)
+
+
+def most_there_is_mbit(problem: Problem) -> float:
+    """A bound that needs no solver: all data there are, and all that the windows could send."""
+    data = sum(float(states.stored_mbit.sum() + states.produced_mbit.sum()) for states in problem.states)
+    sent = [max(problem.candidates[i].most_mbit for i in group) for group in problem.of_pass_and_mode()]
+    return min(data, float(sum(sent)))
 
 
 def _check_idle(week: Week) -> None:

@@ -23,7 +23,7 @@ RELATIVE_GAP = 8.5e-4  # … of which rounding and mending may take a little
 COARSE_GAP = 1e-2
 APPROACHES = 2  # after them the corrections hardly move
 MOST_FULL_SOLVES, MOST_MENDS = 3, 8
-SHORTEST_SOLVE_S = 1.0
+SHORTEST_SOLVE_S = 3.0  # even when the limit is used up: a mending must come to an end
 MARGIN_WH = 0.004  # asked for beyond a floor that broke, so that rounding to whole seconds does not break it again
 
 Chosen = list[tuple[int, float, float]]  # (candidate, tx_on_s, tx_off_s)
@@ -40,6 +40,11 @@ class Stopwatch:
     def lap(self, stage: str) -> None:
         now = time.perf_counter()
         self.laps[stage], self._last = now - self._last, now
+
+    def is_over(self) -> bool:
+        """Whether the limit is used up."""
+        left_s = self.left_s()
+        return left_s is not None and left_s <= SHORTEST_SOLVE_S
 
     def left_s(self) -> float | None:
         if self._limit_s is None:
@@ -66,43 +71,55 @@ class Search:
 
     def run(self) -> tuple[Flown, Solution]:
         """Sessions without a fault, and their solution with the bound of the last programme solved in full."""
-        self._approach()
+        few, coarse_bound = self._approach()
         best = None
         for _ in range(MOST_FULL_SOLVES):
-            week, full = self._solve(self.problem, RELATIVE_GAP)
-            found = self._mended(self.problem, week, full)
+            problem = self.problem
+            week, full = self._solve(problem, RELATIVE_GAP, must=False)
+            if full.values is None:
+                if full.status != "time limit":
+                    raise NoWeekError(no_solution(problem, full))
+                problem = problem.only(few)  # what the coarse solution flew is at hand
+                week, full = self._solve(problem, RELATIVE_GAP)
+                full = replace(full, bound=coarse_bound, status="time limit")
+            found = self._mended(problem, week, full)
             if found is not None:
                 flown, mended, chosen = found
                 if best is None or mended.objective > best[1].objective:
                     best = flown, replace(mended, bound=full.bound, status=full.status)
-                if best[1].gap_pct <= 100 * SOLVER_GAP or full.status == "time limit":
+                if best[1].gap_pct <= 100 * SOLVER_GAP:
                     break
-                self.problem = self._corrected(self.problem, chosen)
+                self.problem = self._corrected(self.problem, chosen) if problem is self.problem else self.problem
+            if self.stopwatch.is_over():
+                break
         if best is None:
             raise NoWeekError(f"no plan kept every limit in {self.solutions} solutions; the last broke: {self.broke}")
         return best
 
-    def _approach(self) -> None:
-        """Correct the problem by a coarse solution, and by what becomes of its sessions under the corrected problem."""
-        week, solution = self._solve(self.problem, COARSE_GAP)
-        chosen = week.sessions(solution.values)
+    def _approach(self) -> tuple[set[int], float]:
+        """Correct the problem by a coarse solution, and by what becomes of its sessions under the corrected problem.
+
+        Returns the candidates flown so far and the bound of the coarse programme.
+        """
+        week, coarse = self._solve(self.problem, COARSE_GAP)
+        chosen = week.sessions(coarse.values)
         for _ in range(APPROACHES):
             self.problem = self._corrected(self.problem, chosen)
             few = [i for i, *_ in chosen]
             week, solution = self._solve(self.problem.only(set(few)), COARSE_GAP / 4, must=False)
             if solution.values is None:
-                return
+                return set(few), coarse.bound
             chosen = [(few[i], on_s, off_s) for i, on_s, off_s in week.sessions(solution.values)]
         self.problem = self._corrected(self.problem, chosen)
+        return {i for i, *_ in chosen}, coarse.bound
 
     def _mended(self, problem: Problem, week: WeekProgramme, solution: Solution):
         """(flown, solution, chosen among `problem`'s candidates) once no limit breaks; None if that is not reached."""
         for _ in range(MOST_MENDS):
             chosen = week.sessions(solution.values)
             flown = self._flown(week.problem, chosen)
-            faults = [
-                fault for fault in find_faults(flown) if fault.session not in problem.frozen
-            ]  # those stay as they are
+            # frozen sessions stay as they are, whatever newer elements say of them
+            faults = [fault for fault in find_faults(flown) if fault.session not in problem.frozen]
             if not faults:
                 at = {candidate_key(c): i for i, c in enumerate(problem.candidates)}
                 return flown, solution, [(at[candidate_key(week.problem.candidates[i])], *t) for i, *t in chosen]
