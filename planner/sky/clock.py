@@ -93,13 +93,13 @@ class Clock:
         angle_rad, rate_rad_day = theta_GMST1982(whole, ut1_fraction)
         return angle_rad, rate_rad_day / DAY_S
 
-    def datetime(self, time_s: float) -> datetime:
-        """The aware UTC datetime of one moment, to the microsecond."""
-        return self.start + timedelta(seconds=float(time_s))
-
     def seconds(self, moment: datetime) -> float:
         """Seconds of `moment` after start; InputError when it carries no time zone."""
         return (aware(moment, "moment") - self.start) / timedelta(seconds=1)
+
+    def datetime(self, time_s: float) -> datetime:
+        """The aware UTC datetime of one moment, to the microsecond."""
+        return self.start + timedelta(seconds=float(time_s))
 
     def iso(self, time_s):
         """ISO 8601 UTC with milliseconds and a Z: a str for a scalar, an array of str (n,) for an array."""

@@ -3,6 +3,7 @@
 import numpy as np
 
 from planner.sky.sites import Sites, look_from, rates_deg_s
+from planner.sky.track import Track
 
 POINTS = 801  # around the top of each pass in question
 AROUND_S = 60.0  # and half a turn at the mount's rate, the most it can fall behind
@@ -10,7 +11,7 @@ AROUND_S = 60.0  # and half a turn at the mount's rate, the most it can fall beh
 WORTH_A_LOOK = 0.9
 
 
-def lost_window_s(track, sites: Sites, station_index, aos_s, tca_s, los_s):
+def lost_window_s(track: Track, sites: Sites, station_index, aos_s, tca_s, los_s):
     """When the mount lags behind one satellite's passes (n,): begin and end, both (n,), both at TCA if it never does.
 
     The mount follows until its limit, turns at full rate, and is back on the satellite when it has caught up. It does
@@ -35,7 +36,7 @@ def lost_window_s(track, sites: Sites, station_index, aos_s, tca_s, los_s):
     return begin_s, end_s
 
 
-def _may_be_too_fast(track, sites: Sites, station_index, tca_s, limits):
+def _may_be_too_fast(track: Track, sites: Sites, station_index, tca_s, limits):
     """Passes whose rates at TCA come near a limit, (n,) bool; elevation cannot outrun the line of sight itself."""
     position_km, velocity_km_s = track.at(tca_s)
     site_km, axes = sites.position_km[station_index], sites.axes[station_index]

@@ -73,7 +73,7 @@ class Track:
         """Index of the grid interval that holds each moment, shape of `time_s`."""
         return np.clip(np.searchsorted(self.time_s, time_s, side="right") - 1, 0, len(self.time_s) - 2)
 
-    def at(self, time_s):
+    def at(self, time_s) -> tuple[np.ndarray, np.ndarray]:
         """State between the grid's points, within a metre of what the elements say there.
 
         Parameters
@@ -101,16 +101,17 @@ class Track:
         """The position alone, as `at`."""
         return np.moveaxis(place(*self._pieces(np.asarray(time_s, dtype=float))), 0, -1)
 
-    def _pieces(self, time_s):
+    def _pieces(self, time_s) -> tuple[np.ndarray, np.ndarray]:
         """Polynomials that hold at the moments, and the seconds since each one's beginning."""
         index = self.interval(time_s)
         return self.quintics[..., index], time_s - self.time_s[index]
 
 
-def evaluate(quintics, seconds):
+def evaluate(quintics, seconds) -> tuple[np.ndarray, np.ndarray]:
     """Position and velocity (3, ...) of polynomials (6, 3, ...) at `seconds` (...) after each one's left end."""
-    position, velocity = quintics[5], 0.0
-    for coefficient in quintics[4::-1]:
+    velocity = quintics[5]
+    position = quintics[5] * seconds + quintics[4]
+    for coefficient in quintics[3::-1]:
         velocity = velocity * seconds + position
         position = position * seconds + coefficient
     return position, velocity
