@@ -73,10 +73,18 @@ def perturb(satellite: Satellite, corner: Corner) -> Perturbation:
         normal = np.clip(random.standard_normal(spread.samples), -FURTHEST_SIGMA, FURTHEST_SIGMA)
         return np.maximum(1 + one_sigma_pct / 100 * normal, 0.01)
 
-    spreads = (spread.capacity_pct, spread.resistance_pct, spread.array_pct, spread.load_pct, spread.transmitter_pct)
-    factors = [factor(one_sigma_pct) for one_sigma_pct in spreads]
-    error_pct = random.uniform(-start.soc_error_pct, start.soc_error_pct, spread.samples)
-    return Perturbation(*factors, np.clip(corner.start_soc_pct + error_pct, 0.0, 100.0))
+    def start_soc_pct():
+        error_pct = random.uniform(-start.soc_error_pct, start.soc_error_pct, spread.samples)
+        return np.clip(corner.start_soc_pct + error_pct, 0.0, 100.0)
+
+    return Perturbation(
+        capacity=factor(spread.capacity_pct),
+        resistance=factor(spread.resistance_pct),
+        array=factor(spread.array_pct),
+        load=factor(spread.load_pct),
+        transmitter=factor(spread.transmitter_pct),
+        start_soc_pct=start_soc_pct(),
+    )
 
 
 def run_batch(satellite: Satellite, corner: Corner, intervals: Intervals, perturbation: Perturbation) -> Batch:

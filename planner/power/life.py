@@ -1,7 +1,7 @@
 """Battery life: charge cycles counted by rainflow, and the share of the cycle life they use."""
 
 import itertools
-from typing import NamedTuple
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -9,7 +9,8 @@ from planner.mission.power import Battery
 from planner.power import chemistry
 
 
-class Cycle(NamedTuple):
+@dataclass(frozen=True)
+class Cycle:
     """A closed cycle (count 1) or an open half (count 0.5) of the given depth, between two rows of the history."""
 
     depth: float
@@ -36,7 +37,8 @@ def count_cycles(history) -> list[Cycle]:
     Source: ASTM E1049-85, section 5.4.4 (rainflow counting), rules 1 to 6.
     """
     history = np.asarray(history, dtype=float)
-    points, cycles = [], []
+    points: list[int] = []
+    cycles: list[Cycle] = []
 
     def cycle(begin: int, end: int, count: float) -> Cycle:
         low, high = sorted((float(history[begin]), float(history[end])))
