@@ -207,7 +207,7 @@ def _draw_closures(axes, mission: Mission, stations: list) -> None:
         bars.append(_bars(begin, end, np.full(len(begin), foot + 0.02), np.full(len(begin), foot + 0.98)))
         axes.axhline(foot, color=style.PALE, linewidth=0.6, zorder=1)
     closed = PolyCollection(
-        np.concatenate(bars), facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", linewidth=0, zorder=0.5
+        list(np.concatenate(bars)), facecolor="#F2F2F2", edgecolor="#C4C4C4", hatch="////", linewidth=0, zorder=0.5
     )
     axes.add_collection(closed, autolim=False)
 

@@ -85,11 +85,11 @@ def budget_lines(
     ------
     InputError : the station cannot hear the mode, a gain-only antenna has to look sideways, a G/T out of reach
     """
-    if reason := cannot_hear(transmitter, station):
+    polarisation_db = _mismatch_db(transmitter, station)
+    if (reason := cannot_hear(transmitter, station)) or polarisation_db is None:
         raise InputError(reason)
     sent = _space_end(transmitter, geometry)
     heard = _ground_end(transmitter, station, geometry, attenuation, clear_zenith_gas_db)
-    polarisation_db = _mismatch_db(transmitter, station)
     free_space_db = free_space_loss_db(geometry.slant_range_km, transmitter.frequency_mhz * 1e6)
     losses_db = (
         sent["transmit_pointing_loss_db"]

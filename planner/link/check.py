@@ -24,7 +24,7 @@ def check_modes(mission: Mission) -> None:
 
 
 def _faults(satellite: Satellite, transmitter: Transmitter) -> list[str]:
-    faults = []
+    faults: list[str] = []
     for check in (
         lambda: modcods_of(transmitter),
         lambda: steady(session_law(satellite, transmitter), transmitter),

@@ -172,7 +172,7 @@ def _chosen(transmitter: Transmitter, name: str | None, esn0_db: float, margin_d
 
 
 def _page(mission, craft, place, transmitter, modcod, availability_pct, geometry, lines, where) -> Budget:
-    value = {name: _scalar(number) for name, number in vars(lines).items() if name != "attenuation"}
+    value = {name: _number(array) for name, array in vars(lines).items() if name != "attenuation"}
     esn0_db = value["esn0_db"]
     ebn0_db = float(ebn0_db_of(esn0_db, modcod))
     margin_db = esn0_db - transmitter.implementation_loss_db - modcod.required_esn0_db
@@ -189,15 +189,17 @@ def _page(mission, craft, place, transmitter, modcod, availability_pct, geometry
         station=place.name,
         mode=transmitter.mode,
         modcod=modcod.name,
-        elevation_deg=_scalar(geometry.elevation_deg),
+        elevation_deg=_number(geometry.elevation_deg),
         availability_pct=availability_pct,
-        slant_range_km=_scalar(geometry.slant_range_km),
-        atmospheric_loss_db=_scalar(lines.attenuation.total_db),
+        slant_range_km=_number(geometry.slant_range_km),
+        atmospheric_loss_db=_number(lines.attenuation.total_db),
         ebn0_db=ebn0_db,
         required_db=modcod.required_esn0_db,
         margin_db=margin_db,
         flux_limit_dbw_m2=limit,
-        lines=tuple(Line(item, _scalar(number), unit, source) for item, number, unit, source in table),
+        lines=tuple(
+            Line(item, None if array is None else _number(array), unit, source) for item, array, unit, source in table
+        ),
         notes=_notes(mission, transmitter, margin_db, value, limit),
         **{name: value[name] for name in SHARED},
     )
@@ -209,9 +211,9 @@ SHARED = (
 )  # fmt: skip
 
 
-def _scalar(number) -> float | None:
-    """The one number of an array, as a plain float."""
-    return None if number is None else float(np.asarray(number).reshape(-1)[0])
+def _number(array) -> float:
+    """The first number of an array or the scalar, as a plain float."""
+    return float(np.asarray(array).reshape(-1)[0])
 
 
 def _share(transmitter: Transmitter, modcod: Modcod, lines: Lines) -> float:
@@ -246,6 +248,7 @@ def _path_lines(transmitter: Transmitter, geometry: Geometry, lines: Lines, wher
 
 def _receive_lines(transmitter: Transmitter, place: Station, lines: Lines) -> list[tuple]:
     receiver = place.receiver_for(transmitter.band)
+    assert receiver is not None  # a station that does not hear the band was refused
     stated = receiver.gt_dbk is not None
     parts = [] if stated else [
         ("ground spillover", receiver.ground_spillover_k, "K", "station file"),
