@@ -74,13 +74,13 @@ def passes(mission: Mission, csv: str | None) -> int:
         write_file(csv, passes_csv(found))
         printing.say(f"{len(found)} passes written to {csv}")
         return DONE
-    columns = [("pass_id", "left"), ("station", "left"), ("aos_utc", "left"), ("los_utc", "left"),
-               ("duration", "right"), ("max el.", "right"), ("range", "right"), ("sunlit", "right")]  # fmt: skip
-    printing.table(columns, [
-        (p.pass_id, p.station, p.aos_utc[:19] + "Z", p.los_utc[:19] + "Z", f"{p.duration_s:.0f} s",
-         f"{p.max_elevation_deg:.1f} deg", f"{p.tca_range_km:.0f} km", f"{100 * p.sunlit_fraction:.0f} %")
-        for p in found.itertuples()
-    ])  # fmt: skip
+    printing.table(
+        [("pass_id", "left"), ("station", "left"), ("aos_utc", "left"), ("los_utc", "left"), ("duration", "right"),
+         ("max el.", "right"), ("range", "right"), ("sunlit", "right")],
+        [(p["pass_id"], p["station"], p["aos_utc"][:19] + "Z", p["los_utc"][:19] + "Z", f"{p['duration_s']:.0f} s",
+          f"{p['max_elevation_deg']:.1f} deg", f"{p['tca_range_km']:.0f} km", f"{100 * p['sunlit_fraction']:.0f} %")
+         for p in found.to_dict("records")],
+    )  # fmt: skip
     printing.say(f"{len(found)} passes")
     return DONE
 
@@ -126,9 +126,11 @@ def _say_week(plan, folder: Path, quiet: bool, seconds: float) -> None:
     s = plan.summary
     verdicts = plan.passes["verdict"].value_counts()
     if not quiet:
-        columns = [("day", "left"), ("contacts", "right"), ("Mbit", "right"), ("minutes on air", "right"),
-                   ("lowest charge", "right")]  # fmt: skip
-        printing.table(columns, _days(plan.contacts))
+        printing.table(
+            [("day", "left"), ("contacts", "right"), ("Mbit", "right"), ("minutes on air", "right"),
+             ("lowest charge", "right")],
+            _days(plan.contacts),
+        )  # fmt: skip
         printing.say("")
     printing.say(
         f"{s['contacts']} contacts on {verdicts.get('planned', 0)} of {s['passes']} passes"

@@ -4,18 +4,27 @@ import os
 import sys
 from collections.abc import Callable, Iterable, Sequence
 from contextlib import contextmanager
+from typing import Literal
 
 from rich.console import Console
 from rich.table import Table
 
+Column = tuple[str, Literal["left", "right"]]  # heading, and where its texts stand
 PLAIN_WIDTH = 200  # columns when nobody's terminal says otherwise
+
+
+class _Screen(Console):
+    """A console that leaves it to the command line what a closed pipe means."""
+
+    def on_broken_pipe(self) -> None:
+        raise BrokenPipeError
 
 
 def screen(stderr: bool = False) -> Console:
     """A console that follows NO_COLOR and is plain when piped."""
     stream = sys.stderr if stderr else sys.stdout
     width = None if stream.isatty() else PLAIN_WIDTH
-    return Console(
+    return _Screen(
         stderr=stderr, width=width, highlight=False, soft_wrap=not stream.isatty(), emoji=False, markup=False
     )
 
@@ -24,8 +33,8 @@ def say(text: str) -> None:
     screen().print(text)
 
 
-def table(columns: Sequence[tuple[str, str]], rows: Iterable[Sequence[str]], title: str | None = None) -> None:
-    """A table; each column is (heading, "left" or "right")."""
+def table(columns: Sequence[Column], rows: Iterable[Sequence[str]], title: str | None = None) -> None:
+    """A table of texts."""
     grid = Table(title=title, title_justify="left", box=None, pad_edge=False, header_style="bold")
     for heading, justify in columns:
         grid.add_column(heading, justify=justify, no_wrap=True)
