@@ -2,6 +2,9 @@
 
 import sys
 
-from planner.cli import main
+try:
+    from planner.cli import main
 
-sys.exit(main())
+    sys.exit(main())
+except KeyboardInterrupt:  # while the first modules were still loading
+    sys.exit(130)
