@@ -199,17 +199,17 @@ def _give_way(base: Flown, session: Session) -> tuple[Session, ...]:
         for gone in sets[:100]:
             if fits(gone):
                 return tuple(sorted(gone))
-    gone = []
+    given_up: list[Session] = []
     for other in sorted(own, key=lambda s: abs(s.tx_on_s - session.tx_on_s)):
-        gone.append(other)
-        if fits(gone):
+        given_up.append(other)
+        if fits(given_up):
             break
     else:
         return ()
-    for other in list(gone):
-        if fits([s for s in gone if s is not other]):
-            gone.remove(other)
-    return tuple(sorted(gone))
+    for other in list(given_up):
+        if fits([s for s in given_up if s is not other]):
+            given_up.remove(other)
+    return tuple(sorted(given_up))
 
 
 def _conflicts(base: Flown, session: Session) -> list[str]:

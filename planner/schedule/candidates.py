@@ -52,7 +52,7 @@ def find_candidates(
 def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
     """The optimiser's problem, costs of sessions and states of satellites filled in."""
     found, refused = find_candidates(week, wishes)
-    found = _with_bonus(week, wishes, found)
+    found = [replace(c, stays=True) if (c.pass_id, c.mode) in wishes.previous else c for c in found]
     states, priced = [], []
     for satellite in week.mission.satellites:
         own = [candidate for candidate in found if candidate.satellite == satellite.name]
@@ -83,17 +83,6 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
         ),
         refused,
     )
-
-
-def _with_bonus(week: Week, wishes: Wishes, found: list[Candidate]) -> list[Candidate]:
-    """A previous plan's sessions share policy.replan_loss_pct of their volume as a bonus for staying: so no more than
-    that share can be lost to change fewer of them."""
-    before = {(c.pass_id, c.mode): c for c in found if (c.pass_id, c.mode) in wishes.previous}
-    if not before:
-        return found
-    volume_mbit = sum(candidate.most_mbit for candidate in before.values())
-    bonus_mbit = week.mission.policy.replan_loss_pct / 100 * volume_mbit / len(wishes.previous)
-    return [replace(c, bonus_mbit=bonus_mbit) if (c.pass_id, c.mode) in before else c for c in found]
 
 
 def commands_until_s(week: Week, satellite: Satellite) -> float:

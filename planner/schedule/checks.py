@@ -2,7 +2,7 @@
 
 from collections.abc import Iterator
 from dataclasses import dataclass
-from itertools import pairwise
+from itertools import combinations
 
 import numpy as np
 
@@ -96,6 +96,8 @@ def _covered(windows: list[tuple[float, float]], session: Session) -> bool:
 def upload_contact(flown: Flown, session: Session) -> Session | None:
     """The latest contact that could carry a session's commands up in time."""
     policy = flown.week.mission.policy
+    if policy.upload_lead_h is None:  # commands are always aboard
+        return None
     found = [
         other
         for other in flown.of(session.satellite)
@@ -117,13 +119,10 @@ def needs_upload(flown: Flown, session: Session) -> bool:
 
 
 def _commands(flown: Flown, session: Session) -> Iterator[Fault]:
-    if needs_upload(flown, session) and upload_contact(flown, session) is None:
-        policy = flown.week.mission.policy
-        text = (
-            f"no contact with uplink between {policy.upload_reach_h:g} h and {policy.upload_lead_h:g} h before it can"
-            " carry its commands"
-        )
-        yield Fault("commands aboard", session, session.tx_on_s, np.nan, policy.upload_lead_h, "h", text)
+    lead_h, reach_h = flown.week.mission.policy.upload_lead_h, flown.week.mission.policy.upload_reach_h
+    if lead_h is not None and needs_upload(flown, session) and upload_contact(flown, session) is None:
+        text = f"no contact with uplink between {reach_h:g} h and {lead_h:g} h before it can carry its commands"
+        yield Fault("commands aboard", session, session.tx_on_s, np.nan, lead_h, "h", text)
 
 
 def _pairs(flown: Flown) -> Iterator[Fault]:
@@ -136,8 +135,8 @@ def _pairs(flown: Flown) -> Iterator[Fault]:
             for second in own[index + 1 :]:
                 yield from _too_close(flown, first, second, f"satellite {name}")
     for name in [station.name for station in mission.stations]:
-        own = [session for session in flown.sessions if session.station == name]
-        for first, second in pairwise(own):
+        there = [session for session in flown.sessions if session.station == name]
+        for first, second in combinations(there, 2):
             if first.satellite != second.satellite:
                 yield from _too_close(flown, first, second, f"station {name}")
 
@@ -199,14 +198,14 @@ def _policy(flown: Flown) -> Iterator[Fault]:
                 text = f"{satellite.name}: no contact in {modes} on {iso(begin_s)[:10]}, the policy asks one a day"
                 yield Fault("daily contact", None, begin_s, 0, 1, "", text)
         if policy.longest_gap_h is not None:
-            yield from _gaps(flown, satellite.name, own)
+            yield from _gaps(flown, satellite.name, own, policy.longest_gap_h * HOUR_S)
     if policy.cost_budget is not None and (cost := cost_of(flown)) > policy.cost_budget + 1e-6:
         text = f"station cost {cost:.2f} is above the budget {policy.cost_budget:g}"
         yield Fault("station budget", None, mission.span_s, cost, policy.cost_budget, "", text)
 
 
-def _gaps(flown: Flown, satellite: str, own: tuple[Session, ...]) -> Iterator[Fault]:
-    longest_s, iso = flown.week.mission.policy.longest_gap_h * HOUR_S, flown.week.sky.clock.iso
+def _gaps(flown: Flown, satellite: str, own: tuple[Session, ...], longest_s: float) -> Iterator[Fault]:
+    iso = flown.week.sky.clock.iso
     ends = [0.0, *(s.tx_off_s for s in own)]
     begins = [*(s.tx_on_s for s in own), flown.week.mission.span_s]
     for end_s, begin_s in zip(ends, begins, strict=True):

@@ -64,8 +64,8 @@ def seconds_on_air(programme: Programme, candidate: Candidate, v) -> OnAir:
     rates = [(column, -step.fastest_mbps) for step, column in zip(steps, columns, strict=True)]
     programme.row([(v.volume, 1.0), *rates], highest=0.0)
     rises = [programme.variable(0, 1) for _ in steps]
-    shares = [[]] + [[(column, 1 / step.seconds)] for step, column in zip(steps, columns, strict=True)]
-    for before, share, rise in zip(shares, shares[1:], rises, strict=False):
+    each = [[(column, 1 / step.seconds)] for step, column in zip(steps, columns, strict=True)]
+    for before, share, rise in zip([[], *each], each, rises, strict=False):
         programme.row([*share, *((column, -factor) for column, factor in before), (rise, -1.0)], highest=0.0)
     programme.row([*((rise, 1.0) for rise in rises), (v.flown, -1.0)], highest=0.0)
     return OnAir(steps, columns)

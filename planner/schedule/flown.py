@@ -73,13 +73,11 @@ class Flown:
     def coding(self) -> dict[Session, Profile]:
         """The way of coding that brings each session most; sessions on no known pass are left out."""
         known = [s for s in self.sessions if (self.week.row_of.get(s.pass_id), s.mode) in self.week.place_of]
-        return {
-            s: max(
-                self.week.profiles(self.week.row_of[s.pass_id], s.mode),
-                key=lambda profile, s=s: profile.volume_mbit(s.tx_on_s, s.tx_off_s),
-            )
-            for s in known
-        }
+        return {session: self._best_profile(session) for session in known}
+
+    def _best_profile(self, session: Session) -> Profile:
+        profiles = self.week.profiles(self.week.row_of[session.pass_id], session.mode)
+        return max(profiles, key=lambda profile: profile.volume_mbit(session.tx_on_s, session.tx_off_s))
 
     @cached_property
     def recorder(self) -> dict[str, RecorderSeries]:

@@ -16,7 +16,8 @@ def open_windows_s(mission: Mission, station: Station) -> Windows:
     hours = station.hours
     whole = [(0.0, mission.span_s)]
     daily = _daily_windows_s(mission, station) if hours.open or len(hours.days) < 7 else whole
-    maintenance = [tuple((moment - mission.start).total_seconds() for moment in window) for window in hours.maintenance]
+    start = mission.start
+    maintenance = [((a - start).total_seconds(), (b - start).total_seconds()) for a, b in hours.maintenance]
     return subtract(intersect(merge(daily), whole), merge(maintenance))
 
 

@@ -19,6 +19,7 @@ from planner.schedule.states import EnergyStates, SatelliteStates
 # Ties: fewer sessions, then earlier ones. Shares of the largest session's volume, far below the gap asked for.
 FEWER_SESSIONS = 1e-5
 EARLIER = 1e-7
+STAYING = 1e-2  # of the objective, for each contact that stays: well above the solver's gap
 NOT_LOST = 1e-4  # Mbit that a Mbit lost to a full recorder costs: enough to avoid it where that is free
 SMALL = 0.02  # of the largest volume: below it a session's shape does not matter
 
@@ -51,6 +52,17 @@ class WeekProgramme:
         return chosen
 
 
+def staying_programme(problem: Problem, least_objective: float) -> WeekProgramme:
+    """The programme that changes as few of a previous plan's contacts as an objective of at least so much allows."""
+    week = plan_programme(problem)
+    programme = week.programme
+    programme.row([(column, gain) for column, gain in enumerate(programme.gain) if gain], lowest=least_objective)
+    for candidate, v in zip(problem.candidates, week.variables, strict=True):
+        if candidate.stays:
+            programme.gain[v.flown] += STAYING * abs(least_objective)
+    return week
+
+
 def plan_programme(problem: Problem) -> WeekProgramme:
     """The programme whose solution is the plan: likely losses; volume exact for sessions that span a pass's peak."""
     week = WeekProgramme(problem)
@@ -61,8 +73,7 @@ def plan_programme(problem: Problem) -> WeekProgramme:
         v = _session_variables(
             week,
             candidate,
-            flown_gain=candidate.bonus_mbit
-            - cost.per_pass * cost_mbit
+            flown_gain=-cost.per_pass * cost_mbit
             - largest * (FEWER_SESSIONS + EARLIER * candidate.opens_s / problem.span_s),
             second_gain=-cost.per_minute / 60 * cost_mbit,
         )
@@ -157,7 +168,7 @@ def _of_satellite(week: WeekProgramme, satellite: str) -> list[tuple[int, Candid
 
 def _likely_energy(week: WeekProgramme, states: SatelliteStates) -> None:
     """Stored energy event by event; a session's cost falls evenly over its window."""
-    terms = defaultdict(list)
+    terms: defaultdict[int, list[tuple[int, float]]] = defaultdict(list)
     for _, candidate, v in _of_satellite(week, states.satellite):
         price = list(zip((v.flown, v.start, v.length), candidate.cost_wh, strict=True))
         for interval, share in states.shares(candidate.opens_s, candidate.closes_s):

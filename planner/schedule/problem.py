@@ -75,6 +75,8 @@ class Problem:
     def uploads_for(self, index: int) -> list[int]:
         """Candidates whose contact could carry this one's commands, whatever start and stop are chosen."""
         wanted, policy = self.candidates[index], self.policy
+        if policy.upload_lead_h is None:  # commands are always aboard
+            return []
         latest_s = wanted.opens_s - policy.upload_lead_h * HOUR_S
         earliest_s = wanted.closes_s - policy.upload_reach_h * HOUR_S
         return [

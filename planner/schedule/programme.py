@@ -107,7 +107,7 @@ def _close(worker: subprocess.Popen) -> None:
     if worker.poll() is None:
         worker.kill()
     worker.wait()
-    for stream in (worker.stdin, worker.stdout, worker.stderr):
+    for stream in filter(None, (worker.stdin, worker.stdout, worker.stderr)):
         with contextlib.suppress(OSError):
             stream.close()
 

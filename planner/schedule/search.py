@@ -11,7 +11,7 @@ from planner.mission.contacts import Session
 from planner.power.batch import share_of
 from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import CHARGE_LIMITS, Flown
-from planner.schedule.optimise import WeekProgramme, plan_programme
+from planner.schedule.optimise import WeekProgramme, plan_programme, staying_programme
 from planner.schedule.problem import Problem
 from planner.schedule.programme import Solution, solve
 from planner.schedule.sessions import Candidate
@@ -94,7 +94,28 @@ class Search:
                 break
         if best is None:
             raise NoWeekError(f"no plan kept every limit in {self.solutions} solutions; the last broke: {self.broke}")
-        return best
+        return self._staying(*best) if any(c.stays for c in self.problem.candidates) else best
+
+    def _staying(self, flown: Flown, solution: Solution) -> tuple[Flown, Solution]:
+        """Among this plan's contacts and the previous one's: those that change least for policy.replan_loss_pct."""
+        planned = {(session.pass_id, session.mode) for session in flown.sessions}
+        few = {i for i, c in enumerate(self.problem.candidates) if c.stays or (c.pass_id, c.mode) in planned}
+        problem = self.problem.only(few)
+        least = solution.objective - self.week.mission.policy.replan_loss_pct / 100 * abs(solution.objective)
+        week = staying_programme(problem, least)
+        self.progress("schedule, changing few contacts")
+        stayed = solve(
+            week.programme,
+            relative_gap=RELATIVE_GAP,
+            time_limit_s=self.stopwatch.left_s(),
+            cancelled=self.cancelled,
+        )
+        found = None if stayed.values is None else self._mended(problem, week, stayed)
+        if found is None:
+            return flown, solution
+        worth = plan_programme(problem).programme.gain
+        objective = float(np.dot(worth, stayed.values[: len(worth)])) if found[1] is stayed else found[1].objective
+        return found[0], replace(solution, objective=objective)
 
     def _approach(self) -> tuple[set[int], float]:
         """Correct the problem by a coarse solution, and by what becomes of its sessions under the corrected problem.
@@ -102,6 +123,7 @@ class Search:
         Returns the candidates flown so far and the bound of the coarse programme.
         """
         week, coarse = self._solve(self.problem, COARSE_GAP)
+        assert coarse.values is not None  # without a solution `_solve` raises
         chosen = week.sessions(coarse.values)
         for _ in range(APPROACHES):
             self.problem = self._corrected(self.problem, chosen)
@@ -116,6 +138,8 @@ class Search:
     def _mended(self, problem: Problem, week: WeekProgramme, solution: Solution):
         """(flown, solution, chosen among `problem`'s candidates) once no limit breaks; None if that is not reached."""
         for _ in range(MOST_MENDS):
+            if solution.values is None:
+                return None
             chosen = week.sessions(solution.values)
             flown = self._flown(week.problem, chosen)
             # frozen sessions stay as they are, whatever newer elements say of them
@@ -127,17 +151,17 @@ class Search:
             small = week.problem.only({i for i, *_ in chosen})
             tighter = self._tightened(self._giving_up(small, faults), flown, faults)
             week, solution = self._solve(tighter, RELATIVE_GAP / 10, must=False)
-            if solution.values is None:
-                return None
         return None
 
     def _giving_up(self, problem: Problem, faults: list[Fault]) -> Problem:
         """What breaks a limit of its own is given up; a rule of the week that breaks is told."""
-        hopeless = [fault for fault in faults if fault.rule not in (*CHARGE_LIMITS, "floor risk")]
-        for fault in hopeless:
+        gone = set()
+        for fault in faults:
+            if fault.rule in (*CHARGE_LIMITS, "floor risk"):
+                continue
             if fault.session is None:
                 raise NoWeekError(f"no plan keeps this limit: {fault.text}")
-        gone = {(fault.session.pass_id, fault.session.mode) for fault in hopeless}
+            gone.add((fault.session.pass_id, fault.session.mode))
         self.problem = self.problem.without(gone)
         return problem.without(gone)
 
@@ -179,15 +203,19 @@ class Search:
         stored_wh = np.interp(states.events_s, series.time_s, series.stored_wh)
         modelled_wh = np.minimum(stored_wh[:-1] + states.likely.gain_wh - cost_wh, states.likely.full_wh)
         gain_wh = states.likely.gain_wh + stored_wh[1:] - modelled_wh
-        floor_wh = states.likely.floor_wh
-        if self.week.mission.policy.floor_risk_pct is not None:
-            floor_wh = floor_wh + self._risk_wh(flown, states.satellite)
+        floor_wh = states.likely.floor_wh + self._risk_wh(flown, states.satellite)
         return replace(states, likely=replace(states.likely, gain_wh=gain_wh, floor_wh=floor_wh))
 
     def _risk_wh(self, flown: Flown, satellite: str) -> float:
-        """How much higher the floors must be for the risk to be as allowed; negative where they may be lower."""
+        """How much higher the floors must be for the risk to be as allowed; negative where they may be lower.
+
+        0 where the policy holds the charge to its corner instead of a risk.
+        """
+        risk_pct = self.week.mission.policy.floor_risk_pct
+        if risk_pct is None:
+            return 0.0
         short_pct = np.sort(flown.short_pct(satellite))[::-1]
-        allowed = 1e-2 * self.week.mission.policy.floor_risk_pct
+        allowed = 1e-2 * risk_pct
         broken = max((k for k in range(len(short_pct)) if share_of(k, len(short_pct)).high <= allowed), default=0)
         power, corner = self.week.powers[satellite], self.week.mission.policy.charge_corner
         return float(power.stored_wh(100.0, corner) - power.stored_wh(100.0 - short_pct[broken], corner))

@@ -66,7 +66,7 @@ class Candidate:
     carries_commands: bool
     likely: EnergyCost = NO_COST
     least: EnergyCost = NO_COST
-    bonus_mbit: float = 0.0  # for staying as it was in a previous plan
+    stays: bool = False  # it was flown in a previous plan that should change little
     near_s: tuple[float, float] | None = None  # a start and stop at which the likely cost is to be exact
 
     @property

@@ -26,7 +26,7 @@ def usable_windows(
         return table.reasons[place], []
     windows = [(profile, *w) for profile in week.profiles(row, transmitter.mode) for w in profile.windows_s()]
     for reason, allowed in _rules(week, satellite, transmitter, row, earliest_s):
-        windows = [(profile, *w) for profile, *window in windows for w in intersect([tuple(window)], allowed)]
+        windows = [(profile, *w) for profile, *window in windows for w in intersect([(window[0], window[1])], allowed)]
         if not windows:
             return reason, []
     return _long_enough(week, windows)
