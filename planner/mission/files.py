@@ -19,7 +19,7 @@ from planner.mission.text import faults_of, nearest, read_toml, sha256
 DEFAULT_MISSION = Path("missions/marshlight.toml")
 FIRST_YEAR, LAST_YEAR = 1957, 2049  # what two-digit years of element sets and the Sun's ephemeris both cover
 MOST_SATELLITES, MOST_STATIONS = 100, 500
-MOST_STATION_DAYS = 10_000  # satellites x stations x days: some 50 000 passes, which fit in 1 GB
+MOST_STATION_DAYS = 5_000  # satellites x stations x days: some 25 000 passes, whose table fits in 1 GB
 Model = TypeVar("Model", bound=Described)
 
 

@@ -8,6 +8,7 @@ import numpy as np
 
 from planner.data.recorder import Rates
 from planner.data.volume import Profile
+from planner.errors import InputError
 from planner.link.table import LinkTable, link_table
 from planner.mission.contacts import Session
 from planner.mission.models import Mission, Satellite
@@ -18,6 +19,7 @@ from planner.sky import Sky, observe
 
 SAMPLE_STEP_S = 5.0
 REACH_S = 1800.0  # tracks go on for a revolution and more beyond the span; slews and cool-down need room too
+MOST_LINKS = 14_000  # passes x modes: their links, sampled, fill some 1 GB
 Progress = Callable[[str], None]
 
 
@@ -98,6 +100,7 @@ def prepare(mission: Mission, *, progress: Progress = lambda stage: None) -> Wee
     start_worker()
     progress("passes")
     sky = observe(mission, sample_step_s=SAMPLE_STEP_S)
+    _check_size(mission, sky)
     links, powers = {}, {}
     for satellite in mission.satellites:
         progress(f"links of {satellite.name}")
@@ -106,6 +109,16 @@ def prepare(mission: Mission, *, progress: Progress = lambda stage: None) -> Wee
         progress(f"power of {satellite.name}")
         powers[satellite.name] = SatellitePower(mission, sky, satellite.name)
     return Week(mission, sky, links, powers)
+
+
+def _check_size(mission: Mission, sky: Sky) -> None:
+    """InputError for more links than memory holds."""
+    modes = max(len(satellite.spacecraft.transmitter) for satellite in mission.satellites)
+    if len(sky.passes) * modes > MOST_LINKS:
+        raise InputError(
+            f"{mission.name}: passes x modes must be at most {MOST_LINKS} to be planned at once,"
+            f" got {len(sky.passes)} x {modes}; plan fewer days, stations or satellites"
+        )
 
 
 def _production(satellite: Satellite, power: SatellitePower) -> list[tuple[int, Rates]]:

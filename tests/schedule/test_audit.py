@@ -5,7 +5,7 @@ from datetime import timedelta
 import pandas as pd
 import pytest
 from referee import moment
-from small_missions import smaller, with_craft, with_station
+from small_missions import a_twin, smaller, with_craft, with_station
 
 import planner
 from planner.errors import InputError
@@ -237,3 +237,19 @@ def test_contacts_of_another_mission_are_refused(marshlight, plan):
     with pytest.raises(InputError) as caught:
         planner.audit(mission, plan.contacts)
     assert "station: must be one of ['Cape Tern'], got 'Vardholm'" in caught.value.faults[0]
+
+
+def test_an_antenna_is_busy_until_the_longer_of_two_modes_that_overlap(marshlight):
+    mission = a_twin(smaller(marshlight, 0.25, "Vardholm"))
+    times = [("MARSHLIGHT-1", K, 1000, 1300), ("MARSHLIGHT-1", S, 1001, 1061), ("MARSHLIGHT-2", K, 1290, 1500)]
+    contacts = pd.DataFrame(
+        [
+            {
+                "pass_id": satellite, "satellite": satellite, "station": "Vardholm", "mode": mode,
+                "tx_on_utc": text_of(mission.start + timedelta(seconds=on_s)),
+                "tx_off_utc": text_of(mission.start + timedelta(seconds=off_s)),
+            }
+            for satellite, mode, on_s, off_s in times
+        ]
+    )  # fmt: skip
+    assert any("station Vardholm: -70.0 s from tx_off of MARSHLIGHT-1 (K" in text for text in texts(mission, contacts))
