@@ -4,9 +4,12 @@ import shutil
 from pathlib import Path
 
 import pytest
+from hypothesis import settings
 
 import planner
 
+settings.register_profile("a busy machine", deadline=None)
+settings.load_profile("a busy machine")
 ROOT = Path(__file__).parents[1]
 
 
