@@ -7,6 +7,7 @@ from zoneinfo import ZoneInfo, available_timezones
 import ipywidgets as widgets
 from ipympl.backend_nbagg import Canvas, FigureManager
 from matplotlib.figure import Figure
+from traitlets import Bool
 
 from planner.charts.week import draw_plan, pass_at, week_page
 from planner.errors import InputError
@@ -21,7 +22,12 @@ MOST_BUTTONS = 8  # days, up to which each has a button of its own
 
 
 class OrderlyCanvas(Canvas):
-    """A canvas that draws and hears clicks only while nobody changes the figure."""
+    """A bare canvas that draws and hears clicks only while nobody changes the figure."""
+
+    header_visible = Bool(False).tag(sync=True)
+    footer_visible = Bool(False).tag(sync=True)
+    toolbar_visible = Bool(False).tag(sync=True)
+    resizable = Bool(False).tag(sync=True)
 
     def __init__(self, figure: Figure, lock):
         self._lock = lock
@@ -41,8 +47,6 @@ class WeekPicture:
         self._page = None
         self.canvas = OrderlyCanvas(Figure(dpi=DPI), lock)
         FigureManager(self.canvas, 0)
-        self.canvas.header_visible = self.canvas.footer_visible = self.canvas.resizable = False
-        self.canvas.toolbar_visible = False
         self.canvas.mpl_connect("draw_event", self._page_drawn)
         self.canvas.mpl_connect("button_press_event", self._pressed)
         self.widget = widgets.Box([self.canvas], layout=widgets.Layout(overflow="auto"))

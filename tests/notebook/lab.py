@@ -46,6 +46,7 @@ def server(module: str, arguments: list[str], folder: Path):
         port = probe.getsockname()[1]
     own = {f"JUPYTER_{name}_DIR": str(folder / ".jupyter" / name.lower()) for name in ("CONFIG", "DATA", "RUNTIME")}
     own["JUPYTERLAB_WORKSPACES_DIR"] = str(folder / ".jupyter" / "workspaces")
+    own["JUPYTERLAB_SETTINGS_DIR"] = str(_without_news(folder / ".jupyter" / "settings"))
     command = [sys.executable, "-m", module, *arguments, f"--port={port}"]
     address = f"http://127.0.0.1:{port}"
     with open(folder / "server.log", "w") as log:
@@ -56,6 +57,14 @@ def server(module: str, arguments: list[str], folder: Path):
         finally:
             process.terminate()
             process.wait()
+
+
+def _without_news(folder: Path) -> Path:
+    """Settings in which the page does not ask whether it may fetch news."""
+    own = folder / "@jupyterlab" / "apputils-extension" / "notification.jupyterlab-settings"
+    own.parent.mkdir(parents=True)
+    own.write_text('{"fetchNews": "false", "checkForUpdates": false}')
+    return folder
 
 
 def _wait_for(address: str, process: subprocess.Popen, log: Path) -> None:

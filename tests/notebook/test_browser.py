@@ -1,8 +1,5 @@
 """The three jobs in a real browser: look at the week, decide a pass, hand the week over."""
 
-import re
-import time
-
 import pytest
 from lab import artefacts, copy_project, require_chromium, server
 from playwright.sync_api import Page, expect, sync_playwright
@@ -10,12 +7,24 @@ from playwright.sync_api import Page, expect, sync_playwright
 import planner
 from planner.notebook.variants import shorter
 
-LAB = ["--no-browser", "--ip=127.0.0.1", "--IdentityProvider.token=", "--ServerApp.password=", "--allow-root",
-       "--LabApp.news_url=None"]  # fmt: skip
+LAB = ["--no-browser", "--ip=127.0.0.1", "--IdentityProvider.token=", "--ServerApp.password=", "--allow-root"]
 PLANNED_WITHIN_MS = 240_000
 SHOWN_WITHIN_MS = 60_000
 CLICK_STEP_PX = 6  # a pass of some minutes is wider than this when a day is in view
 DAYS = 2
+REDRAWN_WITHIN_MS = 300  # from a click to the redrawn picture, as the operator is promised
+BUSY_MACHINE = 4  # … on a machine that does nothing else; a test must not fail because this one does
+WATCH_THE_PICTURE = """() => {
+    const pen = CanvasRenderingContext2D.prototype, drawImage = pen.drawImage;
+    window.redrawn = new Promise(resolve => document.addEventListener("click", () => {
+        const began = performance.now();
+        pen.drawImage = function (...image) {
+            drawImage.apply(this, image);
+            pen.drawImage = drawImage;
+            resolve(performance.now() - began);
+        };
+    }, {once: true, capture: true}));
+}"""
 CANVAS = ".jupyter-matplotlib-canvas-div canvas"
 
 
@@ -28,28 +37,37 @@ def project(tmp_path):
     return tmp_path
 
 
-@pytest.mark.parametrize("width", [1440, 1024])
-def test_the_week_is_looked_at_questioned_and_handed_over(project, tmp_path, width):
-    chromium = require_chromium()
+def test_the_week_is_looked_at_questioned_and_handed_over(project, tmp_path):
+    chromium, pictures = require_chromium(), artefacts(tmp_path)
     with server("jupyterlab", LAB, project) as address, sync_playwright() as play:
         browser = play.chromium.launch(executable_path=chromium, args=["--no-sandbox", "--disable-gpu"])
-        page = browser.new_page(viewport={"width": width, "height": 1000})
-        open_notebook(page, address, hide_side_bar=width < 1200)
+        page = browser.new_page(viewport={"width": 1440, "height": 1000})
+        open_notebook(page, address)
         page.get_by_role("button", name="Tue 08").click()
         opened = click_a_planned_pass(page)
-        drop_it(page, artefacts(tmp_path), width)
+        drop_it(page, pictures)
         assert opened not in hand_over(page, project)
-        page.screenshot(path=artefacts(tmp_path) / f"workbench_{width}_handed_over.png")
+        page.screenshot(path=pictures / "handed_over.png")
+        page.set_viewport_size({"width": 1024, "height": 1000})
+        page.keyboard.press("Control+b")  # hides the side bar
+        assert the_picture_fits(page)
+        page.screenshot(path=pictures / "week_1024.png")
         browser.close()
     mission = shorter(planner.load_mission(project / "missions" / "marshlight.toml"), DAYS)
     assert planner.audit(mission, project / "handed" / "contacts.csv").safe
 
 
-def open_notebook(page: Page, address: str, hide_side_bar: bool) -> None:
+def the_picture_fits(page: Page) -> bool:
+    """Whether the whole picture is on a narrow page without scrolling sideways."""
+    page.locator(CANVAS).last.scroll_into_view_if_needed()
+    page.wait_for_timeout(500)
+    box = page.locator(CANVAS).last.bounding_box()
+    return box["x"] >= 0 and box["x"] + box["width"] <= 1024
+
+
+def open_notebook(page: Page, address: str) -> None:
     page.goto(f"{address}/lab/tree/notebooks/week.ipynb")
     expect(page.get_by_text("Python 3 (ipykernel) | Idle")).to_be_visible(timeout=SHOWN_WITHIN_MS)
-    if hide_side_bar:
-        page.keyboard.press("Control+b")
     page.get_by_role("menuitem", name="Run", exact=True).click()
     page.get_by_role("menuitem", name="Run All Cells", exact=True).click()
     expect(page.locator(".replan-status")).to_contain_text("planned:", timeout=PLANNED_WITHIN_MS)
@@ -68,18 +86,19 @@ def click_a_planned_pass(page: Page) -> str:
     pytest.fail("no planned pass opened")
 
 
-def drop_it(page: Page, folder, width: int) -> None:
-    """Drop the open pass: charge and figures change, and the difference is told."""
-    canvas, figures = page.locator(CANVAS).last, page.locator(".week-figures")
+def drop_it(page: Page, folder) -> None:
+    """Drop the open pass: charge and figures change in time, and the difference is told."""
+    figures = page.locator(".week-figures")
     page.wait_for_timeout(1500)  # until the tab with the link is drawn
-    page.screenshot(path=folder / f"workbench_{width}.png")
-    before, picture = figures.inner_text(), canvas.screenshot()
-    began = time.perf_counter()
+    page.screenshot(path=folder / "week_1440.png")
+    before = figures.inner_text()
+    page.evaluate(WATCH_THE_PICTURE)
     page.get_by_role("button", name="drop this pass").click()
-    expect(figures).not_to_have_text(re.compile(re.escape(before)))
-    print(f"\nfrom click to changed figures at {width} px: {1000 * (time.perf_counter() - began):.0f} ms")
+    redrawn_ms = page.evaluate("window.redrawn")
+    print(f"\nfrom click to redrawn picture: {redrawn_ms:.0f} ms")
+    assert redrawn_ms < BUSY_MACHINE * REDRAWN_WITHIN_MS
     expect(page.locator(".week-difference")).to_contain_text("0 gained, 1 lost, 0 moved")
-    assert canvas.screenshot() != picture
+    assert figures.inner_text() != before
 
 
 def hand_over(page: Page, project) -> str:
@@ -106,5 +125,5 @@ def test_the_page_is_served_as_an_app_without_code(project, tmp_path):
         expect(page.get_by_text("Planning aid: flight rules").first).to_be_visible()
         assert not page.get_by_text("open_workbench(").count()
         click_a_planned_pass(page)
-        page.screenshot(path=artefacts(tmp_path) / "workbench_app.png")
+        page.screenshot(path=artefacts(tmp_path) / "week_as_an_app.png")
         browser.close()
