@@ -22,7 +22,7 @@ SOLVER_GAP = 1e-3  # a plan is held to 0.1 % of its programme's optimum …
 RELATIVE_GAP = 8.5e-4  # … of which rounding and mending may take a little
 COARSE_GAP = 1e-2
 APPROACHES = 2  # after them the corrections hardly move
-MOST_FULL_SOLVES, MOST_MENDS = 3, 8
+MOST_FULL_SOLVES, MOST_MENDS = 4, 8
 SHORTEST_SOLVE_S = 3.0  # even when the limit is used up: a mending must come to an end
 MARGIN_WH = 0.004  # asked for beyond a floor that broke, so that rounding to whole seconds does not break it again
 
@@ -74,12 +74,13 @@ class Search:
         few, coarse_bound = self._approach()
         best = None
         for _ in range(MOST_FULL_SOLVES):
-            problem = self.problem
+            problem, whole = self.problem, True
             week, full = self._solve(problem, RELATIVE_GAP, must=False)
             if full.values is None:
                 if full.status != "time limit":
                     raise NoWeekError(no_solution(problem, full))
-                problem = problem.only(few)  # what the coarse solution flew is at hand
+                at_hand = {i for i, c in enumerate(problem.candidates) if candidate_key(c) in few}
+                problem, whole = problem.only(at_hand), False
                 week, full = self._solve(problem, RELATIVE_GAP)
                 full = replace(full, bound=coarse_bound, status="time limit")
             found = self._mended(problem, week, full)
@@ -89,7 +90,8 @@ class Search:
                     best = flown, replace(mended, bound=full.bound, status=full.status)
                 if best[1].gap_pct <= 100 * SOLVER_GAP:
                     break
-                self.problem = self._corrected(self.problem, chosen) if problem is self.problem else self.problem
+                if whole:
+                    self.problem = self._corrected(self.problem, _in_problem(self.problem, chosen))
             if self.stopwatch.is_over():
                 break
         if best is None:
@@ -117,10 +119,10 @@ class Search:
         objective = float(np.dot(worth, stayed.values[: len(worth)])) if found[1] is stayed else found[1].objective
         return found[0], replace(solution, objective=objective)
 
-    def _approach(self) -> tuple[set[int], float]:
+    def _approach(self) -> tuple[set[tuple], float]:
         """Correct the problem by a coarse solution, and by what becomes of its sessions under the corrected problem.
 
-        Returns the candidates flown so far and the bound of the coarse programme.
+        Returns the keys of the candidates flown so far, and the bound of the coarse programme.
         """
         week, coarse = self._solve(self.problem, COARSE_GAP)
         assert coarse.values is not None  # without a solution `_solve` raises
@@ -130,13 +132,13 @@ class Search:
             few = [i for i, *_ in chosen]
             week, solution = self._solve(self.problem.only(set(few)), COARSE_GAP / 4, must=False)
             if solution.values is None:
-                return set(few), coarse.bound
+                return {candidate_key(self.problem.candidates[i]) for i in few}, coarse.bound
             chosen = [(few[i], on_s, off_s) for i, on_s, off_s in week.sessions(solution.values)]
         self.problem = self._corrected(self.problem, chosen)
-        return {i for i, *_ in chosen}, coarse.bound
+        return {candidate_key(self.problem.candidates[i]) for i, *_ in chosen}, coarse.bound
 
     def _mended(self, problem: Problem, week: WeekProgramme, solution: Solution):
-        """(flown, solution, chosen among `problem`'s candidates) once no limit breaks; None if that is not reached."""
+        """(flown, solution, what is chosen by candidate key) once no limit breaks; None if that is not reached."""
         for _ in range(MOST_MENDS):
             if solution.values is None:
                 return None
@@ -145,8 +147,7 @@ class Search:
             # frozen sessions stay as they are, whatever newer elements say of them
             faults = [fault for fault in find_faults(flown) if fault.session not in problem.frozen]
             if not faults:
-                at = {candidate_key(c): i for i, c in enumerate(problem.candidates)}
-                return flown, solution, [(at[candidate_key(week.problem.candidates[i])], *t) for i, *t in chosen]
+                return flown, solution, {candidate_key(week.problem.candidates[i]): tuple(t) for i, *t in chosen}
             self.broke = faults[0].text
             small = week.problem.only({i for i, *_ in chosen})
             tighter = self._tightened(self._giving_up(small, faults), flown, faults)
@@ -245,6 +246,12 @@ def _lowest_s(series, fault: Fault) -> float:
         return series.lowest(fault.time_s)[0]
     later = np.flatnonzero(series.time_s >= fault.time_s - 1e-3)
     return float(series.time_s[later[np.argmin(np.abs(series.soc_pct[later] - fault.value))]])
+
+
+def _in_problem(problem: Problem, chosen: dict[tuple, tuple[float, float]]) -> Chosen:
+    """What is chosen, by the places of a problem's candidates."""
+    keys = [candidate_key(candidate) for candidate in problem.candidates]
+    return [(i, *chosen[key]) for i, key in enumerate(keys) if key in chosen]
 
 
 def candidate_key(candidate: Candidate) -> tuple:
