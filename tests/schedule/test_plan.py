@@ -158,7 +158,7 @@ def test_a_daily_contact_without_a_station_that_hears_it(marshlight):
     mission = smaller(marshlight, 1, "Vardholm", policy={"daily_contact_modes": (S,), "min_session_s": 800.0})
     with pytest.raises(NoWeekError) as caught:
         planner.plan_week(mission)
-    assert "policy.daily_contact_modes = ('S low rate',)" in str(caught.value)
+    assert "no usable pass of MARSHLIGHT-1 in S low rate on 2026-12-07" in str(caught.value)
 
 
 def test_a_budget_too_small_for_a_daily_contact(marshlight):
