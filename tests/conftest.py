@@ -1,6 +1,11 @@
 """What tests of several rooms start from: the demo mission, a folder of its files to spoil, a small planned week."""
 
+import csv
+import json
 import shutil
+import subprocess
+import sys
+from dataclasses import dataclass
 from pathlib import Path
 
 import pytest
@@ -31,9 +36,45 @@ def two_day_plan(two_day_mission):
     return planner.plan_week(two_day_mission)
 
 
+@pytest.fixture(scope="session")
+def copy_of_demo():
+    """Copies missions/, stations/ and tle_samples/ into a folder, and returns it."""
+
+    def copy(folder: Path) -> Path:
+        for name in ("missions", "stations", "tle_samples"):
+            shutil.copytree(ROOT / name, folder / name)
+        return folder
+
+    return copy
+
+
 @pytest.fixture
-def mission_folder(tmp_path):
+def mission_folder(copy_of_demo, tmp_path):
     """A copy of the demo's files; returns the folder that holds missions/, stations/ and tle_samples/."""
-    for name in ("missions", "stations", "tle_samples"):
-        shutil.copytree(ROOT / name, tmp_path / name)
-    return tmp_path
+    return copy_of_demo(tmp_path)
+
+
+@dataclass(frozen=True)
+class WrittenWeek:
+    """What `week` printed, and the folder it wrote."""
+
+    folder: Path
+    printed: list[str]
+
+    @property
+    def summary(self) -> dict:
+        return json.loads((self.folder / "summary.json").read_text())
+
+    def rows(self, name: str) -> list[dict[str, str]]:
+        """The rows of one of its tables."""
+        with (self.folder / name).open(newline="") as file:
+            return list(csv.DictReader(file))
+
+
+@pytest.fixture(scope="session")
+def demo_week(copy_of_demo, tmp_path_factory) -> WrittenWeek:
+    """The whole demo week, planned once for all tests, as a shell does it."""
+    folder = copy_of_demo(tmp_path_factory.mktemp("demo"))
+    words = [sys.executable, "-m", "planner", "week"]
+    done = subprocess.run(words, cwd=folder, capture_output=True, text=True, check=True)
+    return WrittenWeek(folder / "week", done.stdout.splitlines())
