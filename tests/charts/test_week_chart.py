@@ -37,7 +37,8 @@ def test_the_title_says_the_finding(plan):
     figures = plan.summary | {"volume_mbit": 214_300.0, "soc_min_pct": 61.23}
     plan = type(plan)(**vars(plan) | {"summary": figures})
     flown = plan.contacts["pass_id"].nunique()
-    assert finding(plan) == f"{flown} of {len(plan.passes)} passes flown, 214 Gbit, lowest charge 61.2 % (floor 60 %)"
+    told = f"{flown} of {len(plan.passes)} passes flown, 214 Gbit, lowest charge 61.2 %"
+    assert finding(plan) == f"{told} (floor {plan.summary['soc_floor_pct']:g} %)"
 
 
 def test_small_volumes_are_told_in_megabits(plan):
@@ -74,7 +75,8 @@ def test_modes_are_told_by_marker_as_well_as_by_colour(mission, plan):
 def test_floor_end_and_lowest_charge_are_named(mission, plan):
     texts = legend_texts(drawn(week_figure(mission, plan)))
     lowest = plan.battery["soc_worst_pct"].min()
-    assert {"floor 60 %", "at least 85 % at the end", f"lowest {lowest:.1f} %", "nominal", "pessimistic"} <= texts
+    floor, end = f"{mission.policy.soc_floor_pct:g} %", f"{mission.policy.soc_end_pct:g} %"
+    assert {f"floor {floor}", f"at least {end} at the end", f"lowest {lowest:.1f} %", "nominal", "pessimistic"} <= texts
     assert {"station closed", "eclipse", "dropped by hand", "room 400 Gbit"} <= texts
 
 
