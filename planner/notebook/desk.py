@@ -94,6 +94,7 @@ class Desk:
                 self.__dict__.clear()
                 self.__dict__.update(kept)
                 raise
+            self.mode = self._known_mode(self.mode)
             self._tell(WEEK)
 
     def alter(self, changes: Changes) -> None:

@@ -24,7 +24,7 @@ class HandOver:
         self.folder = widgets.Text(folder, description="into folder", continuous_update=False,
                                    layout=widgets.Layout(width="420px"))  # fmt: skip
         self.write = button("write the week", icon="save", button_style="primary")
-        self.replace = widgets.Checkbox(False, description="replace the week that is there", indent=False)
+        self.replace = widgets.Checkbox(False, description="replace what is there", indent=False)
         self.replace.layout.display = "none"
         self.written = widgets.HTML()
         self.written.add_class("hand-over-written")
@@ -67,11 +67,10 @@ class HandOver:
                 raise InputError("there is no week to write yet: plan it first")
             if self.desk.faults:
                 raise InputError("a week that breaks rules is not handed over", *self.desk.faults)
-            if (folder / INDEX).exists() and not self.replace.value:
+            if folder.is_dir() and any(folder.iterdir()) and not self.replace.value:
                 self.replace.layout.display = None
-                raise InputError(
-                    f"{folder.resolve()} holds a week already: tick “replace the week that is there” first"
-                )
+                what = "a week" if (folder / INDEX).exists() else "files"
+                raise InputError(f"{folder.resolve()} holds {what} already: tick “replace what is there” first")
             with claim_folder(folder) as claimed:
                 log = {"finished_utc": datetime.now(UTC).isoformat(timespec="seconds"), "machine": platform.platform()}
                 write_week(claimed, self.desk.mission, self.desk.week, log)

@@ -52,9 +52,9 @@ class PassView:
         known = desk.pass_id in desk.prepared.row_of
         self.place.layout.display = None if known else "none"
         self.message.value = "" if known else line_html("No pass is open.")
-        self.mode.options = desk.modes
-        with self.mode.hold_trait_notifications():
-            self.mode.value = desk.mode if desk.mode in desk.modes else desk.modes[0]
+        self.mode.unobserve(self._mode_chosen, "value")  # new options choose the first of them by themselves
+        self.mode.options, self.mode.value = desk.modes, desk.mode
+        self.mode.observe(self._mode_chosen, "value")
         self.header.value = self._header_html() if known else line_html(self._nothing_open())
         if known:
             self._fill()

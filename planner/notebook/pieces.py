@@ -10,7 +10,7 @@ from planner.charts import style
 from planner.errors import InputError, MachineError, NoWeekError
 
 USER_FAULTS = (InputError, NoWeekError, MachineError)
-FULL = widgets.Layout(width="100%")
+FULL = widgets.Layout(width="auto")
 MARKS = {"good": ("✔", style.GREEN), "bad": ("✘", style.VERMILLION), "note": ("", style.INK)}
 
 

@@ -33,9 +33,11 @@ class OrderlyCanvas(Canvas):
         self._lock = lock
         super().__init__(figure)
 
-    def _handle_message(self, *arguments) -> None:
+    def _handle_message(self, widget, content, buffers) -> None:
         with self._lock:
-            super()._handle_message(*arguments)
+            super()._handle_message(widget, content, buffers)
+        if content["type"] == "initialized":
+            self.send_state("resizable")  # the page takes every live canvas for resizable until it is told
 
 
 class WeekPicture:

@@ -83,3 +83,15 @@ def test_an_unsafe_file_is_called_unsafe_and_can_be_shown(on_bench, tmp_path):
         assert bench.desk.faults
 
     on_bench(act)
+
+
+def test_files_that_are_no_week_are_not_overwritten_either(on_bench, tmp_path):
+    (tmp_path / "out").mkdir()
+    (tmp_path / "out" / "contacts.csv").write_text("somebody else's")
+
+    def act(bench):
+        bench.hand_over.write.click()
+        assert "holds files already: tick" in without_markup(bench.hand_over.written.value)
+
+    on_bench(act)
+    assert (tmp_path / "out" / "contacts.csv").read_text() == "somebody else's"

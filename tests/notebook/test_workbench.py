@@ -3,14 +3,15 @@
 import asyncio
 
 import pytest
-from bench_examples import without_markup
+from bench_examples import HIGH, LOW, without_markup
 
 import planner
 from planner.notebook import find_file, open_workbench
 from planner.notebook.cautions import caution_box
 from planner.notebook.variants import larger_array, larger_battery, shorter, with_station, without_station
 from planner.notebook.workbench import Refused, Workbench
-from planner.schedule.result import CAUTIONS
+from planner.schedule.flown import Flown
+from planner.schedule.result import CAUTIONS, GivenWeek, prepared
 
 
 def test_a_mission_with_an_error_is_told_in_place(mission_folder):
@@ -107,3 +108,34 @@ def test_variants_change_what_they_say_and_nothing_else(mission):
 def test_a_plan_may_be_given(on_bench, plan):
     assert on_bench(lambda bench: bench.desk.week) is plan
     assert isinstance(plan, planner.WeekPlan)
+
+
+def test_of_several_satellites_one_is_chosen(mission, on_bench):
+    one = mission.satellites[0]
+    low = tuple(t.model_copy(update={"together_with": ()}) for t in one.spacecraft.transmitter if t.mode == LOW)
+    craft = one.spacecraft.model_copy(update={"transmitter": low})
+    fleet = mission.model_copy(
+        update={"satellites": (one, one.model_copy(update={"name": "TWIN", "spacecraft": craft}))}
+    )
+
+    def act(bench):
+        assert bench.week.satellite.layout.display is None
+        bench.week.satellite.value = "TWIN"
+        assert bench.week.picture.canvas.figure.axes[1].get_ylabel().startswith("TWIN")
+        passes = bench.desk.week.passes.set_index("satellite")["pass_id"]
+        bench.desk.look_at(passes["TWIN"].iloc[0])
+        assert bench.desk.modes == [bench.desk.mode] == [LOW]
+        assert bench.opened.mode.options == (LOW,)
+        bench.desk.look_at(passes[one.name].iloc[0])
+        assert bench.opened.mode.options == (HIGH, LOW)
+
+    on_bench(act, fleet, GivenWeek(Flown(prepared(fleet), ())))
+
+
+def test_a_mode_that_goes_off_is_no_longer_looked_at(on_bench, flown_pass):
+    def act(bench):
+        bench.desk.look_at(flown_pass.pass_id, HIGH)
+        next(box for box in bench.what_if.modes if box.description == HIGH).value = False
+        assert (bench.desk.mode, bench.opened.mode.value) == (LOW, LOW)
+
+    on_bench(act)
