@@ -29,8 +29,8 @@ def short_and_small(craft):
 
 
 CHALLENGES = {
-    "few sessions a day": lambda m: smaller(m, 1, "Vardholm", policy={"max_sessions_per_day": 3}),
-    "short gaps": lambda m: smaller(m, 0.75, "Vardholm", "Cape Tern", policy={"longest_gap_h": 7.0}),
+    "few sessions a day": lambda m: smaller(m, 0.6, "Vardholm", policy={"max_sessions_per_day": 3}),
+    "short gaps": lambda m: smaller(m, 0.5, "Vardholm", "Cape Tern", policy={"longest_gap_h": 5.0}),
     "a low start": lambda m: smaller(m, 0.6, "Vardholm", start_state={"soc_pct": 80.0}),
     "a small recorder, short transmissions": lambda m: with_craft(smaller(m, 0.75, "Dry Pan"), short_and_small),
     "a budget": lambda m: smaller(m, 0.75, "Vardholm", "Cape Tern", policy={"cost_budget": 8.0, "cost_mbit": 500.0}),
@@ -44,7 +44,7 @@ CHALLENGES = {
         smaller(m, 1, "Vardholm", "Corrie Head", policy={"turnaround_s": 6000.0}), "Vardholm",
         hours=Hours(open=((time(20), time(10)),), maintenance=((m.start, m.start + timedelta(hours=3)),)),
     ),
-    "two satellites": lambda m: a_twin(smaller(m, 0.5, "Vardholm"), behind_min=2.0),
+    "two satellites": lambda m: a_twin(smaller(m, 0.4, "Vardholm"), behind_min=2.0),
 }  # fmt: skip
 
 
@@ -85,7 +85,7 @@ def test_the_second_opinion_sees_what_is_spoiled(written_week, two_day_mission, 
 
 
 RELAXED = {
-    "floor and end": {"soc_floor_pct": 55.0, "soc_end_pct": 65.0},
+    "floor and end": {"soc_floor_pct": 62.0, "soc_end_pct": 76.0},
     "margin": {"link_margin_db": 1.0},
     "shortest session and turnaround": {"min_session_s": 30.0, "turnaround_s": 0.0},
 }
@@ -173,8 +173,8 @@ def test_a_budget_too_small_for_a_daily_contact(marshlight):
 
 @pytest.fixture(scope="module")
 def day(marshlight):
-    """Three quarters of a day and what is planned in it."""
-    mission = smaller(marshlight, 0.75, "Vardholm", "Cape Tern")
+    """Half a day and what is planned in it."""
+    mission = smaller(marshlight, 0.55, "Vardholm", "Cape Tern")
     return mission, planner.plan_week(mission)
 
 
@@ -187,8 +187,9 @@ def test_the_same_mission_gives_the_same_tables(day):
     assert plan.summary == again.summary
 
 
-def test_a_left_out_pass_that_is_kept_flies(day):
-    mission, plan = day
+def test_a_left_out_pass_that_is_kept_flies(marshlight):
+    mission = smaller(marshlight, 0.5, "Vardholm", modes=(K,), policy={"max_sessions_per_day": 1})
+    plan = planner.plan_week(mission)
     left = plan.passes[plan.passes["verdict"] == "left out"].iloc[0]
     wish = f"{left.pass_id}:{left.reason.partition(':')[0]}"
     kept = planner.plan_week(mission, keep=[wish])
@@ -272,7 +273,7 @@ def test_a_replan_changes_no_more_contacts_than_a_fresh_plan_and_loses_no_more_t
 
 def test_what_is_frozen_stays_and_nothing_new_begins_before(day):
     mission, plan = day
-    until = mission.start + timedelta(hours=12)
+    until = mission.start + timedelta(hours=9)
     weaker = mission.with_changes(start_state={"soc_pct": 88.0})
     again = planner.plan_week(weaker, previous=plan.contacts, freeze_until=until)
     limit = f"{until:%Y-%m-%dT%H:%M:%S.000Z}"
