@@ -11,6 +11,7 @@ from functools import cached_property
 
 import planner
 from planner.errors import InputError
+from planner.mission.contacts import Session
 from planner.mission.models import Mission
 from planner.notebook.changes import Changes
 from planner.schedule.checks import find_faults
@@ -171,13 +172,18 @@ class Desk:
     def modes(self) -> list[str]:
         """The modes of the satellite whose pass is looked at."""
         satellite = self.mission.satellites[0]
-        if self.pass_id in self.prepared.row_of:
-            satellite = self.mission.satellite(
-                str(self.prepared.sky.passes.satellite[self.prepared.row_of[self.pass_id]])
-            )
+        if self.opened is not None:
+            _, row = self.opened
+            satellite = self.mission.satellite(str(self.prepared.sky.passes.satellite[row]))
         return [transmitter.mode for transmitter in satellite.spacecraft.transmitter]
 
-    def session(self):
+    @property
+    def opened(self) -> tuple[str, int] | None:
+        """(pass id, row) of the pass looked at; None where none is, or its station is off."""
+        row = None if self.pass_id is None else self.prepared.row_of.get(self.pass_id)
+        return None if self.pass_id is None or row is None else (self.pass_id, row)
+
+    def session(self) -> Session | None:
         """The shown session of the mode on the pass looked at; None where there is none."""
         found = [s for s in self.week.flown.sessions if (s.pass_id, s.mode) == (self.pass_id, self.mode)]
         return found[0] if found else None

@@ -49,15 +49,14 @@ class PassView:
         """Show the pass as it stands now."""
         desk = self.desk
         self._shown.clear()
-        known = desk.pass_id in desk.prepared.row_of
-        self.place.layout.display = None if known else "none"
-        self.message.value = "" if known else line_html("No pass is open.")
+        opened = desk.opened
+        self.place.layout.display = "none" if opened is None else None
+        self.message.value = line_html("No pass is open.") if opened is None else ""
         self.mode.unobserve(self._mode_chosen, "value")  # new options choose the first of them by themselves
         self.mode.options, self.mode.value = desk.modes, desk.mode
         self.mode.observe(self._mode_chosen, "value")
-        self.header.value = self._header_html() if known else line_html(self._nothing_open())
-        if known:
-            self._fill()
+        self.header.value = line_html(self._nothing_open()) if opened is None else self._header_html(*opened)
+        self._fill()
 
     def _nothing_open(self) -> str:
         passes = self.desk.prepared.sky.passes
@@ -67,22 +66,24 @@ class PassView:
             return "No pass is open: click one in a lane above, or step through them here."
         return f"Pass {self.desk.pass_id} is not in the week as it is now set: its station is off."
 
-    def _header_html(self) -> str:
-        row = self.desk.week.passes.set_index("pass_id").loc[self.desk.pass_id]
+    def _header_html(self, pass_id: str, row: int) -> str:
+        about = self.desk.week.passes.set_index("pass_id").loc[pass_id]
         zone = self._time_zone()
-        local = [row[f"{event}_utc"][11:19] for event in ("aos", "tca", "los")]
+        local = [about[f"{event}_utc"][11:19] for event in ("aos", "tca", "los")]
+        verdict, reason = str(about.verdict), str(about.reason)
         text = (
-            f"AOS {local[0]}Z at {row.aos_azimuth_deg:.0f}° azimuth, TCA {local[1]}Z at {row.max_elevation_deg:.1f}°"
-            f" elevation and {row.tca_range_km:.0f} km, LOS {local[2]}Z at {row.los_azimuth_deg:.0f}°;"
-            f" {row.duration_s:.0f} s, {100 * row.sunlit_fraction:.0f} % sunlit"
+            f"AOS {local[0]}Z at {about.aos_azimuth_deg:.0f}° azimuth,"
+            f" TCA {local[1]}Z at {about.max_elevation_deg:.1f}° elevation and {about.tca_range_km:.0f} km,"
+            f" LOS {local[2]}Z at {about.los_azimuth_deg:.0f}°;"
+            f" {about.duration_s:.0f} s, {100 * about.sunlit_fraction:.0f} % sunlit"
         )
-        clock = self.desk.prepared.sky.clock
-        tca = clock.datetime(self.desk.prepared.sky.passes.tca_s[self.desk.prepared.row_of[self.desk.pass_id]])
+        sky = self.desk.prepared.sky
+        tca = sky.clock.datetime(sky.passes.tca_s[row])
         beside = "" if zone is None or str(zone) == "UTC" else f" ({tca.astimezone(zone):%a %d %b %H:%M} in {zone})"
         return (
-            f"<b>{escape(f'{row.satellite} over {row.station}, {row.aos_utc[:10]}')}</b>{escape(beside)} "
-            f"<code>{escape(self.desk.pass_id)}</code>" + line_html(text)
-            + line_html(row.reason if row.reason.startswith(row.verdict) else f"{row.verdict}: {row.reason}")
+            f"<b>{escape(f'{about.satellite} over {about.station}, {about.aos_utc[:10]}')}</b>{escape(beside)} "
+            f"<code>{escape(pass_id)}</code>" + line_html(text)
+            + line_html(reason if reason.startswith(verdict) else f"{verdict}: {reason}")
         )  # fmt: skip
 
     def _mode_chosen(self, change) -> None:
@@ -93,42 +94,41 @@ class PassView:
         order = self.desk.prepared.sky.passes.pass_id
         if not len(order):
             return
-        row = self.desk.prepared.row_of.get(self.desk.pass_id)
-        self.desk.look_at(str(order[0 if row is None else (row + by) % len(order)]))
+        opened = self.desk.opened
+        self.desk.look_at(str(order[0 if opened is None else (opened[1] + by) % len(order)]))
 
     def _fill(self) -> None:
         """Draw the open tab, once for each pass, mode and week."""
-        tab = self.tabs.selected_index
-        if tab is None or tab in self._shown or self.desk.pass_id not in self.desk.prepared.row_of:
+        tab, opened = self.tabs.selected_index, self.desk.opened
+        if tab is None or tab in self._shown or opened is None:
             return
         self._shown[tab] = True
         with self.desk.lock, told_in(self.message):
-            (self._fill_link, self._fill_sky, self._fill_budget, self._ask_energy)[tab]()
+            (self._fill_link, self._fill_sky, self._fill_budget, self._ask_energy)[tab](*opened)
 
-    def _fill_link(self) -> None:
+    def _fill_link(self, pass_id: str, row: int) -> None:
         desk, session = self.desk, self.desk.session()
-        table, _ = desk.prepared.place_of[desk.prepared.row_of[desk.pass_id], desk.mode]
-        coding = desk.week.flown.coding.get(session)
+        table, _ = desk.prepared.place_of[row, desk.mode]
+        coding = None if session is None else desk.week.flown.coding.get(session)
         option = next((o for o in table.options if coding is not None and o.label == coding.label), None)
         figure = contact_figure(
-            desk.mission, desk.prepared.sky, table, desk.pass_id, option=option, session=session,
+            desk.mission, desk.prepared.sky, table, pass_id, option=option, session=session,
             time_zone=self._time_zone(),
         )  # fmt: skip
         _show(self.link, figure)
 
-    def _fill_sky(self) -> None:
+    def _fill_sky(self, pass_id: str, row: int) -> None:
         desk = self.desk
         figure = skytrack_figure(
-            desk.mission, desk.prepared.sky, desk.pass_id, session=desk.session(), time_zone=self._time_zone()
+            desk.mission, desk.prepared.sky, pass_id, session=desk.session(), time_zone=self._time_zone()
         )
         _show(self.sky, figure)
 
-    def _fill_budget(self) -> None:
-        desk = self.desk
-        passes, row = desk.prepared.sky.passes, desk.prepared.row_of[desk.pass_id]
+    def _fill_budget(self, pass_id: str, row: int) -> None:
+        desk, passes = self.desk, self.desk.prepared.sky.passes
         try:
             budget = planner.link_budget(
-                desk.mission, str(passes.station[row]), desk.mode, pass_id=desk.pass_id,
+                desk.mission, str(passes.station[row]), desk.mode, pass_id=pass_id,
                 satellite=str(passes.satellite[row]), sky=desk.prepared.sky,
             )  # fmt: skip
         except InputError as fault:
@@ -142,9 +142,8 @@ class PassView:
             budget.notes
         )
 
-    def _ask_energy(self) -> None:
-        desk = self.desk
-        mission, pass_id, mode, contacts = desk.mission, desk.pass_id, desk.mode, list(desk.week.flown.sessions)
+    def _ask_energy(self, pass_id: str, row: int) -> None:
+        mission, mode, contacts = self.desk.mission, self.desk.mode, list(self.desk.week.flown.sessions)
         self._asking.start(
             lambda progress, cancelled: planner.afford(mission, pass_id, mode, contacts),
             lambda answer: setattr(self.energy, "value", answer_html(answer)),

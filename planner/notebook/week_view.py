@@ -1,7 +1,7 @@
 """The week on one picture that takes clicks: lanes of passes, charge, data."""
 
 from collections.abc import Callable
-from datetime import UTC, timedelta
+from datetime import UTC, datetime, timedelta
 from zoneinfo import ZoneInfo, available_timezones
 
 import ipywidgets as widgets
@@ -182,7 +182,7 @@ class WeekView:
 def _day_choice(desk: Desk):
     """The whole span, or one of its UTC days."""
     mission = desk.asked
-    options = [(WHOLE, None)]
+    options: list[tuple[str, tuple[datetime, datetime] | None]] = [(WHOLE, None)]
     begin = mission.start
     while begin < mission.end:
         midnight = begin.astimezone(UTC).replace(hour=0, minute=0, second=0, microsecond=0) + timedelta(days=1)

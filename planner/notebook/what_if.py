@@ -1,5 +1,6 @@
 """What if: values of the mission changed, stations and modes switched off, passes kept or dropped, and a re-plan."""
 
+from collections.abc import Callable
 from dataclasses import replace
 
 import ipywidgets as widgets
@@ -57,11 +58,13 @@ class WhatIf:
 
     def _switched(self, what: str, names: list[str], boxes, change) -> None:
         off = frozenset(name for name, box in zip(names, boxes, strict=True) if not box.value)
-        if off == getattr(self.desk.changes, what):
+        changes = self.desk.changes
+        altered = replace(changes, stations_off=off) if what == "stations_off" else replace(changes, modes_off=off)
+        if altered == changes:
             return
         self.message.value = ""
         try:
-            self.desk.alter(replace(self.desk.changes, **{what: off}))
+            self.desk.alter(altered)
         except InputError as fault:
             self.message.value = lines_html(fault.faults, "bad")
             change["owner"].value = True
@@ -90,27 +93,27 @@ class Wishes:
         self.drop = button("drop this pass", "nothing is sent on it", icon="times")
         self.open = button("leave it open", "the plan may decide")
         self.told = widgets.HTML()
-        self.keep.on_click(lambda _: self._wish(lambda: desk.keep_pass(desk.pass_id, desk.mode)))
-        self.drop.on_click(lambda _: self._wish(lambda: desk.drop_pass(desk.pass_id)))
-        self.open.on_click(lambda _: self._wish(lambda: desk.leave_open(desk.pass_id)))
+        self.keep.on_click(lambda _: self._wish(lambda pass_id: desk.keep_pass(pass_id, desk.mode)))
+        self.drop.on_click(lambda _: self._wish(desk.drop_pass))
+        self.open.on_click(lambda _: self._wish(desk.leave_open))
         self.buttons = widgets.HBox([self.keep, self.drop, self.open])
         desk.watch(lambda what: self.refresh())
         self.refresh()
 
-    def _wish(self, act) -> None:
-        with told_in(self.told):
-            act()
+    def _wish(self, act: Callable[[str], None]) -> None:
+        if self.desk.pass_id is not None:
+            with told_in(self.told):
+                act(self.desk.pass_id)
 
     def refresh(self) -> None:
         """Say what is wished, and let only that be pressed which makes sense."""
-        desk, known = self.desk, self.desk.pass_id in self.desk.prepared.row_of
+        desk, known = self.desk, self.desk.opened is not None
         kept = (desk.pass_id, desk.mode) in desk.keep
         dropped = desk.pass_id in desk.drop
         self.keep.disabled, self.drop.disabled = not known or kept, not known or dropped
         self.open.disabled = not (dropped or any(pass_id == desk.pass_id for pass_id, _ in desk.keep))
-        kept, dropped = [f"{pass_id} in {mode}" for pass_id, mode in sorted(desk.keep)], sorted(desk.drop)
-        wishes = [f"{what}: {', '.join(names)}" for what, names in (("kept", kept), ("dropped", dropped)) if names]
-        self.told.value = lines_html(wishes)
+        told = {"kept": [f"{pass_id} in {mode}" for pass_id, mode in sorted(desk.keep)], "dropped": sorted(desk.drop)}
+        self.told.value = lines_html(f"{what}: {', '.join(names)}" for what, names in told.items() if names)
 
 
 class Replan:
