@@ -1,9 +1,10 @@
 """What every described thing has in common: frozen, no unknown keys, no silent conversion, no NaN."""
 
 import math
+from datetime import datetime
 from typing import Annotated
 
-from pydantic import AfterValidator, BaseModel, ConfigDict, Field
+from pydantic import AfterValidator, AwareDatetime, BaseModel, ConfigDict, Field
 
 # No quantity in a mission is larger or smaller in its own unit; keeps 1e308 and 1e-308 out of the arithmetic
 LARGEST, SMALLEST = 1e12, 1e-9
@@ -45,6 +46,14 @@ def _not_null(vector: tuple[float, float, float]) -> tuple[float, float, float]:
     return vector
 
 
+def _forward(windows: tuple[tuple[datetime, datetime], ...]) -> tuple[tuple[datetime, datetime], ...]:
+    for begin, end in windows:
+        if begin >= end:
+            raise ValueError(f"a window must end after it begins, got {begin.isoformat()} to {end.isoformat()}")
+    return windows
+
+
+Windows = Annotated[tuple[tuple[AwareDatetime, AwareDatetime], ...], AfterValidator(_forward)]
 Name = Annotated[str, AfterValidator(_one_printable_line)]
 FileName = Annotated[str, AfterValidator(_plain_path)]
 Positive = Annotated[float, Field(gt=0, le=LARGEST), AfterValidator(_not_tiny)]

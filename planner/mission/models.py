@@ -7,7 +7,7 @@ from typing import Annotated, Any, Literal
 from pydantic import AwareDatetime, Field, ValidationError, field_validator, model_validator
 
 from planner.errors import InputError
-from planner.mission.base import Decibel, Described, Name, NonNegative, Percent, Positive
+from planner.mission.base import Decibel, Described, Name, NonNegative, Percent, Positive, Windows
 from planner.mission.elements import ElementSet, Ephemeris
 from planner.mission.names import alike
 from planner.mission.pointing import Pointing
@@ -19,7 +19,6 @@ from planner.mission.power import (
     Pessimistic,
     Spread,
     When,
-    Windows,
     check_windows,
 )
 from planner.mission.station import Station

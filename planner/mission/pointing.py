@@ -1,11 +1,10 @@
 """Where the satellite points: two body axes, each with something to look at."""
 
-from datetime import datetime
 from typing import Literal
 
-from pydantic import AwareDatetime, Field, field_validator, model_validator
+from pydantic import Field, model_validator
 
-from planner.mission.base import BodyAxis, Described, NonNegative, Positive
+from planner.mission.base import BodyAxis, Described, NonNegative, Positive, Windows
 
 LawName = Literal["nadir", "sun", "station", "velocity", "tumbling"]
 Target = Literal["nadir", "sun", "velocity", "orbit normal"]
@@ -42,7 +41,7 @@ class Pointing(Described):
     slew_rate_deg_s: Positive = 1.0
     settle_s: NonNegative = 10.0
     slew_power_w: NonNegative = Field(default=0.0, description="extra draw on the bus while turning")
-    no_slew_windows: tuple[tuple[AwareDatetime, AwareDatetime], ...] = Field(
+    no_slew_windows: Windows = Field(
         default=(), description="when a payload needs the idle attitude: no session that turns the satellite"
     )
 
@@ -50,11 +49,3 @@ class Pointing(Described):
     def longest_slew_s(self) -> float:
         """Half a turn and the time to settle."""
         return 180.0 / self.slew_rate_deg_s + self.settle_s
-
-    @field_validator("no_slew_windows")
-    @classmethod
-    def _forward(cls, windows: tuple[tuple[datetime, datetime], ...]):
-        for begin, end in windows:
-            if begin >= end:
-                raise ValueError(f"a window must end after it begins, got {begin.isoformat()} to {end.isoformat()}")
-        return windows

@@ -1,12 +1,12 @@
 """A ground station: where it stands, what it can hear, when it is open, what it costs."""
 
 import itertools
-from datetime import datetime, time
+from datetime import time
 from typing import Annotated, Literal
 
-from pydantic import AwareDatetime, Field, field_validator, model_validator
+from pydantic import Field, field_validator, model_validator
 
-from planner.mission.base import Described, Efficiency, LossDecibel, Name, NonNegative, Positive
+from planner.mission.base import Described, Efficiency, LossDecibel, Name, NonNegative, Positive, Windows
 from planner.mission.transmitter import BandName, Polarisation
 
 Weekday = Literal["mon", "tue", "wed", "thu", "fri", "sat", "sun"]
@@ -49,15 +49,7 @@ class Hours(Described):
 
     open: tuple[tuple[time, time], ...] = ()
     days: Annotated[tuple[Weekday, ...], Field(min_length=1)] = ("mon", "tue", "wed", "thu", "fri", "sat", "sun")
-    maintenance: tuple[tuple[AwareDatetime, AwareDatetime], ...] = ()
-
-    @field_validator("maintenance")
-    @classmethod
-    def _forward(cls, windows: tuple[tuple[datetime, datetime], ...]):
-        for begin, end in windows:
-            if begin >= end:
-                raise ValueError(f"a window must end after it begins, got {begin.isoformat()} to {end.isoformat()}")
-        return windows
+    maintenance: Windows = ()
 
 
 class Cost(Described):
