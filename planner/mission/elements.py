@@ -8,6 +8,7 @@ from planner.mission import oem, omm, tle
 from planner.mission.orbit import ElementSet, Ephemeris
 from planner.mission.text import read_text
 
+MOST_NESTED = 10_000_000  # a tree takes many times the memory of its text
 __all__ = ["ElementSet", "Ephemeris", "read_elements", "which_set"]
 
 
@@ -25,6 +26,8 @@ def read_elements(path, at: datetime) -> dict[str, ElementSet | Ephemeris]:
     if at.tzinfo is None:
         raise InputError(f"at must carry a time zone, got {at!r}; if it is UTC, write {at.isoformat()}+00:00")
     text = read_text(Path(path))
+    if text.lstrip()[:1] in ("<", "{", "[") and len(text) > MOST_NESTED:
+        raise InputError(f"{path}: must be at most {MOST_NESTED} characters as XML or JSON, got {len(text)}")
     sets, faults = _parser(text)(text, str(path))
     if not sets and not faults:
         faults = [f"{path}: must hold at least one element set or ephemeris, got none"]

@@ -10,6 +10,7 @@ from planner.errors import InputError
 from planner.mission.text import nearest, read_text, shown
 
 FORMULA = re.compile(r"'*[=+\-@\t\r]")  # what a spreadsheet would run, behind apostrophes or none
+MOST_COLUMNS = 1000
 SEPARATORS = {";": "semicolons", "\t": "tabs"}
 
 
@@ -22,6 +23,8 @@ def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[st
     """
     text = read_text(path)
     header, *rows = list(_rows(path, text)) or [(1, [])]
+    if len(header[1]) > MOST_COLUMNS:
+        raise InputError(f"{path}: line {header[0]}: must have at most {MOST_COLUMNS} columns, got {len(header[1])}")
     columns = [column.strip() for column in header[1]]
     for other, name in SEPARATORS.items():
         if len(columns) == 1 and other in columns[0]:

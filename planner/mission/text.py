@@ -13,6 +13,8 @@ from pydantic import ValidationError
 from planner.errors import InputError
 
 LARGEST_FILE_BYTES = 50_000_000
+MOST_LINES = 600_000  # with what is kept of each line, some hundred MB
+LINE_ENDS = "\n\r\v\f\x1c\x1d\x1e\x85\u2028\u2029"  # as str.splitlines has them
 LONGEST_VALUE_SHOWN = 60
 
 
@@ -36,13 +38,17 @@ def _kind(mode: int) -> str:
 
 
 def read_text(path: Path) -> str:
-    """The file as text, without a byte-order mark; InputError where it is not UTF-8."""
+    """The file as text, without a byte-order mark; InputError where it is not UTF-8 or has too many lines."""
     try:
-        return read_bytes(path).decode("utf-8-sig")
+        text = read_bytes(path).decode("utf-8-sig")
     except UnicodeDecodeError as error:
         raise InputError(
             f"{path}: must be UTF-8 text, byte {error.start} is {error.object[error.start]:#04x}"
         ) from None
+    lines = sum(map(text.count, LINE_ENDS)) - text.count("\r\n")
+    if lines > MOST_LINES:
+        raise InputError(f"{path}: must have at most {MOST_LINES} lines, got {lines}")
+    return text
 
 
 def read_toml(path: Path) -> dict[str, Any]:

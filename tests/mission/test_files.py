@@ -6,7 +6,7 @@ import pytest
 from mission_examples import ELEMENTS, MISSION, VARDHOLM, changed, faults
 
 from planner.errors import InputError
-from planner.mission import files, text
+from planner.mission import elements, files, text
 from planner.mission.files import load_mission
 
 MODES = "['K high rate', 'S low rate']"
@@ -356,3 +356,21 @@ def test_changes_are_checked_anew(marshlight):
     with pytest.raises(InputError) as caught:
         marshlight.with_changes(start_state={"soc_pc": 90.0})
     assert str(caught.value) == "start_state: soc_pc: unknown key"
+
+
+def test_files_of_more_lines_than_memory_holds(mission_folder, monkeypatch):
+    monkeypatch.setattr(text, "MOST_LINES", 20)
+    (mission_folder / ELEMENTS).write_bytes(b"x\n" * 10 + b"y\r\n" * 6 + "z\u2028".encode() * 5)
+    assert f"missions/../{ELEMENTS}: must have at most 20 lines, got 21" in faults_with_short_mission(mission_folder)
+
+
+def faults_with_short_mission(folder) -> list[str]:
+    """Of a mission file of few lines, that names one element file and one station."""
+    (folder / MISSION).write_text(f'elements = "../{ELEMENTS}"\nstations = ["none"]\n')
+    return faults(folder)
+
+
+def test_trees_that_memory_does_not_hold(mission_folder, monkeypatch):
+    monkeypatch.setattr(elements, "MOST_NESTED", 20)
+    (mission_folder / ELEMENTS).write_text("[" + "0, " * 10 + "0]")
+    assert faults(mission_folder) == [f"missions/../{ELEMENTS}: must be at most 20 characters as XML or JSON, got 33"]

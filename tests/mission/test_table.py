@@ -42,6 +42,17 @@ def test_what_is_no_such_table(tmp_path, content, message):
     assert caught.value.faults[0] == f"{path}: {message}"
 
 
+def test_more_columns_than_any_table_has(tmp_path):
+    path = written(tmp_path, "," * 5000)
+    with pytest.raises(InputError) as caught:
+        read_table(path, COLUMNS)
+    assert str(caught.value) == f"{path}: line 1: column 'name' is required\n{path}: line 1: column 'value' is required"
+    path = written(tmp_path, "a," * 5000)
+    with pytest.raises(InputError) as caught:
+        read_table(path, COLUMNS)
+    assert str(caught.value) == f"{path}: line 1: must have at most 1000 columns, got 5001"
+
+
 def test_an_empty_file_lacks_every_column(tmp_path):
     path = written(tmp_path, "")
     with pytest.raises(InputError) as caught:
