@@ -10,8 +10,9 @@ class InputError(ValueError):
     """
 
     def __init__(self, *faults: str):
-        more = (f"and {len(faults) - MOST_TOLD} more faults",) if len(faults) > MOST_TOLD else ()
-        self.faults = (*map(_printable, faults[:MOST_TOLD]), *more)
+        if len(faults) > MOST_TOLD + 1:  # one more may be the number itself, told on from another file's error
+            faults = (*faults[:MOST_TOLD], f"and {len(faults) - MOST_TOLD} more faults")
+        self.faults = tuple(map(_printable, faults))
         super().__init__("\n".join(self.faults))
 
 

@@ -8,7 +8,7 @@ from planner.mission import oem, omm, tle
 from planner.mission.orbit import ElementSet, Ephemeris
 from planner.mission.text import read_text
 
-MOST_NESTED = 10_000_000  # a tree takes many times the memory of its text
+MOST_NESTED = 5_000_000  # a tree takes many times the memory of its text
 __all__ = ["ElementSet", "Ephemeris", "read_elements", "which_set"]
 
 

@@ -374,3 +374,8 @@ def test_trees_that_memory_does_not_hold(mission_folder, monkeypatch):
     monkeypatch.setattr(elements, "MOST_NESTED", 20)
     (mission_folder / ELEMENTS).write_text("[" + "0, " * 10 + "0]")
     assert faults(mission_folder) == [f"missions/../{ELEMENTS}: must be at most 20 characters as XML or JSON, got 33"]
+
+
+def test_how_many_more_faults_there_are_survives_being_told_on(mission_folder):
+    (mission_folder / ELEMENTS).write_text("x\n" * 500)
+    assert faults(mission_folder)[-1] == "and 450 more faults"
