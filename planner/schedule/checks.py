@@ -129,33 +129,38 @@ def _pairs(flown: Flown) -> Iterator[Fault]:
     """Sessions too close to one another, on one satellite or on one station."""
     mission = flown.week.mission
     for name in [satellite.name for satellite in mission.satellites]:
-        own = flown.of(name)
         yield from _too_much_per_orbit(flown, name)
-        for index, first in enumerate(own):
-            for second in own[index + 1 :]:
-                yield from _too_close(flown, first, second, f"satellite {name}")
+        busy_s = _busy_s(flown, name)
+        for first, second in combinations(flown.of(name), 2):
+            craft = mission.satellite(name).spacecraft
+            if first.pass_id != second.pass_id or not craft.may_overlap(first.mode, second.mode):
+                turning_s = busy_s[first][1] + busy_s[second][0]
+                yield from _too_close(flown, first, second, f"satellite {name}", turning_s)
     for name in [station.name for station in mission.stations]:
         there = [session for session in flown.sessions if session.station == name]
         for first, second in combinations(there, 2):
             if first.satellite != second.satellite:
-                yield from _too_close(flown, first, second, f"station {name}")
+                yield from _too_close(flown, first, second, f"station {name}", 0.0)
 
 
-def _too_close(flown: Flown, first: Session, second: Session, what: str) -> Iterator[Fault]:
-    craft = flown.week.mission.satellite(first.satellite).spacecraft
-    if first.pass_id == second.pass_id and craft.may_overlap(first.mode, second.mode):
-        return
+def _too_close(flown: Flown, first: Session, second: Session, what: str, busy_s: float) -> Iterator[Fault]:
+    """`busy_s` from the first's tx_off to the second's tx_on, or the policy's turnaround before its warm-up."""
     warmup_s = flown.week.mission.satellite(second.satellite).spacecraft.mode(second.mode).warmup_s
     pause_s = second.tx_on_s - warmup_s - first.tx_off_s
-    least_s = flown.week.mission.policy.turnaround_s
-    if first.satellite == second.satellite:
-        least_s = max(least_s, _busy_s(flown, first, second) - warmup_s)
+    least_s = max(flown.week.mission.policy.turnaround_s, busy_s - warmup_s)
     if pause_s < least_s - SAME_MOMENT_S:
         text = (
             f"{what}: {pause_s:.1f} s from tx_off of {first.pass_id} ({first.mode}) to power_on of {second.pass_id}"
             f" ({second.mode}), {least_s:.1f} s needed"
         )
         yield Fault("turnaround", second, second.tx_on_s, pause_s, least_s, "s", text)
+
+
+def _busy_s(flown: Flown, satellite: str) -> dict[Session, tuple[float, float]]:
+    """How long one satellite is busy before each session's tx_on, and after its tx_off."""
+    own = flown.of(satellite)
+    draws = flown.week.powers[satellite].session_draws(own) if own else []
+    return {s: (s.tx_on_s - d.edges_s[0], d.edges_s[-1] - s.tx_off_s) for s, d in zip(own, draws, strict=True)}
 
 
 def _too_much_per_orbit(flown: Flown, satellite: str) -> Iterator[Fault]:
@@ -171,13 +176,6 @@ def _too_much_per_orbit(flown: Flown, satellite: str) -> Iterator[Fault]:
         if on_air_s > most_s + SAME_MOMENT_S:
             text = f"{on_air_s:.1f} s of {session.mode} on air within one revolution, {most_s:g} s allowed"
             yield Fault("on air per orbit", session, session.tx_on_s, on_air_s, most_s, "s", text)
-
-
-def _busy_s(flown: Flown, first: Session, second: Session) -> float:
-    """How long one satellite is busy after the first's tx_off and before the second's tx_on."""
-    power = flown.week.powers[first.satellite]
-    before, after = power.session_draws([first, second])
-    return float(before.edges_s[-1] - first.tx_off_s + second.tx_on_s - after.edges_s[0])
 
 
 def _policy(flown: Flown) -> Iterator[Fault]:
