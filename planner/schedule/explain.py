@@ -7,10 +7,9 @@ from planner.schedule.frames import contact_id
 from planner.schedule.optimise import plan_programme
 from planner.schedule.plan import Plan
 from planner.schedule.programme import solve
-from planner.schedule.search import COARSE_GAP
 from planner.schedule.sessions import Candidate
 
-EXPLAIN_GAP = COARSE_GAP / 20
+EXPLAIN_GAP = 5e-4
 
 
 @dataclass(frozen=True)

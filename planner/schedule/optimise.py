@@ -20,7 +20,7 @@ from planner.schedule.states import EnergyStates, SatelliteStates
 FEWER_SESSIONS = 1e-5
 EARLIER = 1e-7
 STAYING = 1e-2  # of the objective, for each contact that stays: well above the solver's gap
-NOT_LOST = 1e-4  # Mbit that a Mbit lost to a full recorder costs: enough to avoid it where that is free
+NOT_LOST = 1e-6  # Mbit that a Mbit lost to a full recorder costs: enough to avoid it where that is free
 SMALL = 0.02  # of the largest volume: below it a session's shape does not matter
 
 

@@ -17,11 +17,12 @@ from planner.schedule.programme import Solution, solve
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
 from planner.schedule.week import Progress, Week
+from planner.units import DAY_S
 
 SOLVER_GAP = 1e-3  # a plan is held to 0.1 % of its programme's optimum …
 RELATIVE_GAP = 8.5e-4  # … of which rounding and mending may take a little
-COARSE_GAP = 1e-2
-APPROACHES = 2  # after them the corrections hardly move
+COARSE_GAP = 2.5e-2  # coarse enough to end with the first good heuristic
+APPROACHES = 1  # more hardly move the corrections
 MOST_FULL_SOLVES, MOST_MENDS = 4, 8
 SHORTEST_SOLVE_S = 3.0  # even when the limit is used up: a mending must come to an end
 MARGIN_WH = 0.004  # asked for beyond a floor that broke, so that rounding to whole seconds does not break it again
@@ -88,6 +89,7 @@ class Search:
                 flown, mended, chosen = found
                 if best is None or mended.objective > best[1].objective:
                     best = flown, replace(mended, bound=full.bound, status=full.status)
+                best = best[0], replace(best[1], bound=max(full.bound, best[1].objective))
                 if best[1].gap_pct <= 100 * SOLVER_GAP:
                     break
                 if whole:
@@ -130,7 +132,7 @@ class Search:
         for _ in range(APPROACHES):
             self.problem = self._corrected(self.problem, chosen)
             few = [i for i, *_ in chosen]
-            week, solution = self._solve(self.problem.only(set(few)), COARSE_GAP / 4, must=False)
+            week, solution = self._solve(self.problem.only(set(few)), COARSE_GAP / 10, must=False)
             if solution.values is None:
                 return {candidate_key(self.problem.candidates[i]) for i in few}, coarse.bound
             chosen = [(few[i], on_s, off_s) for i, on_s, off_s in week.sessions(solution.values)]
@@ -149,6 +151,8 @@ class Search:
             if not faults:
                 return flown, solution, {candidate_key(week.problem.candidates[i]): tuple(t) for i, *t in chosen}
             self.broke = faults[0].text
+            deep = [fault for fault in faults if fault.rule == "depth of discharge"]
+            self.problem = self._tightened(self.problem, flown, deep)  # no row of the programme asks for depth
             small = week.problem.only({i for i, *_ in chosen})
             tighter = self._tightened(self._giving_up(small, faults), flown, faults)
             week, solution = self._solve(tighter, RELATIVE_GAP / 10, must=False)
@@ -235,7 +239,10 @@ class Search:
                     missing_wh = float(power.stored_wh(100.0) - power.stored_wh(100.0 - missing_pct)) + MARGIN_WH
                     event = int(np.searchsorted(states.events_s, _lowest_s(series, fault)))
                     for at in {max(event - 1, 1), min(max(event, 1), len(floor_wh) - 1)}:
-                        floor_wh[at] = min(floor_wh[at] + missing_wh, states.likely.full_wh)
+                        # a floor was believed to hold; a depth was not asked for: it counts from what there was
+                        there_wh = float(np.interp(states.events_s[at], series.time_s, series.stored_wh))
+                        held_wh = max(floor_wh[at], there_wh) if fault.rule == "depth of discharge" else floor_wh[at]
+                        floor_wh[at] = min(held_wh + missing_wh, states.likely.full_wh)
             tighter.append(replace(states, likely=replace(states.likely, floor_wh=floor_wh)))
         return replace(problem, states=tuple(tighter))
 
@@ -243,7 +250,7 @@ class Search:
 def _lowest_s(series, fault: Fault) -> float:
     """When a breach that begins at the fault's time is deepest."""
     if fault.rule == "depth of discharge":
-        return series.lowest(fault.time_s)[0]
+        return series.lowest(fault.time_s, fault.time_s + DAY_S)[0]
     later = np.flatnonzero(series.time_s >= fault.time_s - 1e-3)
     return float(series.time_s[later[np.argmin(np.abs(series.soc_pct[later] - fault.value))]])
 
