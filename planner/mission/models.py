@@ -21,7 +21,7 @@ from planner.mission.power import (
     When,
     check_windows,
 )
-from planner.mission.station import Station
+from planner.mission.station import Hours, Station
 from planner.mission.text import faults_of
 from planner.mission.transmitter import Transmitter
 
@@ -57,6 +57,7 @@ class Policy(Described):
         default=0.5, description="kept inside AOS and LOS for clocks, beside the elements' one-sigma timing error"
     )
     max_sessions_per_day: Annotated[int, Field(ge=1)] | None = None
+    shifts: Hours = Field(default=Hours(), description="when operators are there: contacts lie within their hours")
     longest_gap_h: Positive | None = None
     daily_contact_modes: tuple[Name, ...] = Field(
         default=(), description="at least one contact a UTC day in one of these"

@@ -82,6 +82,9 @@ def _on_air(flown: Flown, session: Session) -> Iterator[Fault]:
     if not _covered(flown.week.open_s[session.station], session):
         text = f"{session.station} is closed during the transmission"
         yield Fault("opening hours", session, session.tx_on_s, np.nan, np.nan, "", text)
+    if not _covered(flown.week.shifts_s, session):
+        text = "it lies outside the operators' shifts (policy.shifts)"
+        yield Fault("operators' shifts", session, session.tx_on_s, np.nan, np.nan, "", text)
     satellite = flown.week.mission.satellite(session.satellite)
     if not _covered(turning_s(flown.week, satellite, satellite.spacecraft.mode(session.mode)), session):
         text = "it turns the satellite while the payload keeps the idle attitude (pointing.no_slew_windows)"

@@ -5,7 +5,7 @@ from datetime import UTC, datetime, time, timedelta
 import numpy as np
 
 from planner.mission.models import Mission
-from planner.mission.station import Station
+from planner.mission.station import Hours, Station
 
 WEEKDAYS = ("mon", "tue", "wed", "thu", "fri", "sat", "sun")
 Windows = list[tuple[float, float]]
@@ -13,23 +13,27 @@ Windows = list[tuple[float, float]]
 
 def open_windows_s(mission: Mission, station: Station) -> Windows:
     """Unbroken stretches of the span in which the station is open, maintenance taken out [s after the start]."""
-    hours = station.hours
+    return open_hours_s(mission, station.hours)
+
+
+def open_hours_s(mission: Mission, hours: Hours) -> Windows:
+    """The same for hours alone: a station's, or the operators' shifts."""
     whole = [(0.0, mission.span_s)]
-    daily = _daily_windows_s(mission, station) if hours.open or len(hours.days) < 7 else whole
+    daily = _daily_windows_s(mission, hours) if hours.open or len(hours.days) < 7 else whole
     start = mission.start
     maintenance = [((a - start).total_seconds(), (b - start).total_seconds()) for a, b in hours.maintenance]
     return subtract(intersect(merge(daily), whole), merge(maintenance))
 
 
-def _daily_windows_s(mission: Mission, station: Station) -> Windows:
+def _daily_windows_s(mission: Mission, hours: Hours) -> Windows:
     """Windows of the named days, a day too early and too late; one that closes before it opens runs past midnight."""
     midnight = datetime.combine(mission.start.astimezone(UTC).date(), time(), tzinfo=UTC) - timedelta(days=1)
     windows = []
     for day in range(int(np.ceil(mission.days)) + 3):
         begin_s = (midnight + timedelta(days=day) - mission.start).total_seconds()
-        if WEEKDAYS[(midnight + timedelta(days=day)).weekday()] not in station.hours.days:
+        if WEEKDAYS[(midnight + timedelta(days=day)).weekday()] not in hours.days:
             continue
-        for opens, closes in station.hours.open or ((time(), time()),):
+        for opens, closes in hours.open or ((time(), time()),):
             open_s, close_s = (_seconds(t) for t in (opens, closes))
             windows.append((begin_s + open_s, begin_s + close_s + (86_400 if close_s <= open_s else 0)))
     return windows

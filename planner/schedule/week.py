@@ -13,7 +13,7 @@ from planner.link.table import LinkTable, link_table
 from planner.mission.contacts import Session
 from planner.mission.models import Mission, Satellite
 from planner.power.balance import SatellitePower
-from planner.schedule.hours import Windows, open_windows_s
+from planner.schedule.hours import Windows, open_hours_s, open_windows_s
 from planner.schedule.programme import start_worker
 from planner.sky import Sky, observe
 
@@ -53,6 +53,11 @@ class Week:
     def open_s(self) -> dict[str, Windows]:
         """Open windows of each station."""
         return {station.name: open_windows_s(self.mission, station) for station in self.mission.stations}
+
+    @cached_property
+    def shifts_s(self) -> Windows:
+        """When operators are there."""
+        return open_hours_s(self.mission, self.mission.policy.shifts)
 
     @cached_property
     def produced(self) -> dict[str, list[tuple[int, Rates]]]:

@@ -39,6 +39,7 @@ def _rules(week, satellite, transmitter, row: int, earliest_s: float) -> Iterato
     # a whole pass is only worth a word about its margin if the link table found none
     yield "below margin all along", [(0.0, span_s)]
     yield f"{passes.station[row]} is closed", week.open_s[str(passes.station[row])]
+    yield "outside the operators' shifts (policy.shifts)", week.shifts_s
     yield (
         f"shorter than its guards of {guard_s:.1f} s against clock and element error",
         [(passes.aos_s[row] + guard_s, passes.los_s[row] - guard_s)],

@@ -1,12 +1,13 @@
 """Rules beyond the battery's: data classes, payload windows, time on air per orbit, risk, guards."""
 
-from datetime import timedelta
+from datetime import time, timedelta
 
 import numpy as np
 import pytest
 
 import planner
 from planner.mission.models import DataClass, Recorder
+from planner.mission.station import Hours
 from planner.schedule.flown import Flown
 from planner.schedule.windows import timing_error_s
 
@@ -122,6 +123,18 @@ def test_sessions_keep_the_clock_guard_and_the_elements_error_inside_the_pass(tw
         assert guard_s > week.mission.policy.clock_guard_s
         assert session.tx_on_s >= week.sky.passes.aos_s[row] + guard_s - 1e-6
         assert session.tx_off_s <= week.sky.passes.los_s[row] - guard_s + 1e-6
+
+
+def test_contacts_lie_within_the_operators_shifts(two_day_mission, two_day_plan):
+    shift = Hours(open=((time(6), time(14)),))
+    mission = two_day_mission.with_changes(policy={"shifts": shift, "daily_contact_modes": (), "upload_lead_h": None})
+    plan = planner.plan_week(mission)
+    assert plan.flown.sessions
+    for moment in [*plan.contacts["tx_on_utc"], *plan.contacts["tx_off_utc"]]:
+        assert "06:00:00" <= moment[11:19] <= "14:00:00"
+    outside = [fault for fault in planner.audit(mission, two_day_plan.contacts).faults if "shifts" in fault.rule]
+    assert outside
+    assert "(policy.shifts)" in outside[0].text
 
 
 def test_a_policy_of_risk_holds_the_probability_and_brings_no_less(two_day_mission, two_day_plan):
