@@ -12,6 +12,7 @@ from planner.errors import InputError
 from planner.mission.models import Mission, Satellite
 
 DONE, NO = 0, 1
+MOST_STALE_SHOWN = 12
 
 
 def check(mission: Mission) -> int:
@@ -185,8 +186,10 @@ def show_audit(mission: Mission, contacts: str, as_json: bool) -> int:
         return DONE if verdict.safe else NO
     for text in verdict.texts():
         printing.say(f"BROKEN  {text}")
-    for figure in verdict.stale:
+    for figure in verdict.stale[:MOST_STALE_SHOWN]:
         printing.say(f"stale   {figure.text}")
+    if len(verdict.stale) > MOST_STALE_SHOWN:
+        printing.say(f"stale   and {len(verdict.stale) - MOST_STALE_SHOWN} more figures (--json lists all)")
     count = len(verdict.flown.sessions)
     if verdict.safe:
         printing.say(

@@ -48,8 +48,9 @@ def _single(flown: Flown) -> Iterator[Fault]:
             text = f"pass {session.pass_id} is not one of {session.satellite} over {session.station}"
             yield Fault("pass", session, session.tx_on_s, np.nan, np.nan, "", text)
         else:
-            yield from _inside_pass(flown, session, row)
-            yield from _on_air(flown, session)
+            outside = list(_inside_pass(flown, session, row))
+            yield from outside
+            yield from _on_air(flown, session, asks_margin=not outside)
 
 
 def _inside_pass(flown: Flown, session: Session, row: int) -> Iterator[Fault]:
@@ -65,14 +66,14 @@ def _inside_pass(flown: Flown, session: Session, row: int) -> Iterator[Fault]:
         yield Fault("inside the pass", session, session.tx_off_s, late_s, 0.0, "s", text)
 
 
-def _on_air(flown: Flown, session: Session) -> Iterator[Fault]:
-    """Length, margin and opening hours of a session that lies on a known pass."""
+def _on_air(flown: Flown, session: Session, asks_margin: bool) -> Iterator[Fault]:
+    """Length, margin (where the whole session lies in the pass), opening hours and shifts of a session on a pass."""
     policy = flown.week.mission.policy
     if session.duration_s < policy.min_session_s - SAME_MOMENT_S:
         text = f"{session.duration_s:.1f} s on air, the policy asks {policy.min_session_s:g} s"
         yield Fault("shortest session", session, session.tx_on_s, session.duration_s, policy.min_session_s, "s", text)
     profile = flown.coding[session]
-    if not _covered(profile.windows_s(), session):
+    if asks_margin and not _covered(profile.windows_s(), session):
         lowest_db = profile.lowest_margin_db(session.tx_on_s, session.tx_off_s)
         text = (
             f"the link is not usable all through the transmission: lowest margin {lowest_db:.2f} dB, the policy asks"
