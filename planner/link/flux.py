@@ -33,7 +33,7 @@ class FluxLimit:
         return self.low_dbw_m2 + ramp * self.rise_db
 
 
-# Rows "second-hand" were read in public transcriptions; rows "memory" were not read, so confirm them first.
+# Rows "second-hand" were read in public copies; rows "memory" were not read, so confirm them first.
 TABLE_21_4 = (
     FluxLimit(1525, 1530, -154, -144, 4e3, "memory"),
     FluxLimit(1670, 1700, -133, -133, 1.5e6, "memory"),

@@ -23,8 +23,8 @@ from planner.units import DAY_S
 PACKAGES = ("downlink-planner", "itur", "numpy", "pandas", "scipy", "sgp4", "skyfield", "skyfield-data")
 CAUTIONS = (
     "Planning aid: flight rules, the operator's licence and licensed practice come first.",
-    "Power flux-density is compared with ITU Radio Regulations Table 21-4 as transcribed; check the current Radio"
-    " Regulations and your licence.",
+    "Power flux-density is compared with ITU Radio Regulations Table 21-4 as copied second-hand; check the current"
+    " Radio Regulations and your licence.",
     "Antennas move without warning and transmit: keep clear of dishes and follow the station's exposure rules.",
     "Lithium cells: limits here are the mission file's; the cell maker's and the safety review's limits come first.",
 )
@@ -96,7 +96,7 @@ class GivenWeek:
         ]
         over = int(self.contacts["cautions"].str.contains("flux").sum())
         if over:
-            own.append(f"{over} contacts exceed the transcribed flux limit at some moment; see their cautions.")
+            own.append(f"{over} contacts exceed that flux limit at some moment; see their cautions.")
         return [*CAUTIONS, *own]
 
 

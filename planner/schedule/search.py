@@ -71,7 +71,10 @@ class Search:
     broke: str = field(default="")
 
     def run(self) -> tuple[Flown, Solution]:
-        """Sessions without a fault, and their solution with the bound of the last programme solved in full."""
+        """Sessions without a fault, and their solution with the bound of the programme that they came from.
+
+        When time ran out before a full solution, that bound is the coarse programme's, and the status says so.
+        """
         few, coarse_bound = self._approach()
         best = None
         for _ in range(MOST_FULL_SOLVES):
@@ -87,10 +90,10 @@ class Search:
             found = self._mended(problem, week, full)
             if found is not None:
                 flown, mended, chosen = found
-                if best is None or mended.objective > best[1].objective:
-                    best = flown, replace(mended, bound=full.bound, status=full.status)
-                best = best[0], replace(best[1], bound=max(full.bound, best[1].objective))
-                if best[1].gap_pct <= 100 * SOLVER_GAP:
+                proved = replace(mended, bound=full.bound, status=full.status)
+                if best is None or _preferred(proved, best[1]):
+                    best = flown, proved
+                if _is_proved(best[1]):
                     break
                 if whole:
                     self.problem = self._corrected(self.problem, _in_problem(self.problem, chosen))
@@ -245,6 +248,16 @@ class Search:
                         floor_wh[at] = min(held_wh + missing_wh, states.likely.full_wh)
             tighter.append(replace(states, likely=replace(states.likely, floor_wh=floor_wh)))
         return replace(problem, states=tuple(tighter))
+
+
+def _is_proved(solution: Solution) -> bool:
+    return solution.gap_pct <= 100 * SOLVER_GAP
+
+
+def _preferred(new: Solution, old: Solution) -> bool:
+    """Whether a plan is better, or as good within the gap and proved where the other is not."""
+    as_good = new.objective >= old.objective - SOLVER_GAP * abs(old.objective)
+    return new.objective > old.objective or (as_good and _is_proved(new) and not _is_proved(old))
 
 
 def _lowest_s(series, fault: Fault) -> float:

@@ -5,7 +5,7 @@ from hypothesis import strategies as st
 
 from planner.link.flux import flux_density_dbw_m2, flux_limit, share_in_bandwidth
 
-# ITU Radio Regulations Article 21, Table 21-4 (second-hand transcription): dB(W/m2) at 0-5, 15 and 25-90 deg
+# ITU Radio Regulations Article 21, Table 21-4 (second-hand copy): dB(W/m2) at 0-5, 15 and 25-90 deg
 ROWS = (
     (2245.0, -154.0, -149.0, -144.0, 4e3),
     (8200.0, -150.0, -145.0, -140.0, 4e3),

@@ -114,18 +114,21 @@ def test_a_southern_station_counts_from_the_northernmost_point():
     assert {t for s, t in tail if s == "n"} != {t for s, t in tail if s == "s"}
 
 
+# Two masts, south and north of a station, that cut every high pass in two
+MASTS = (
+    (0.0, 5.0),
+    (170.0, 5.0),
+    (175.0, 89.0),
+    (185.0, 89.0),
+    (190.0, 5.0),
+    (350.0, 5.0),
+    (355.0, 89.0),
+    (359.0, 89.0),
+)
+
+
 def test_letters_only_where_the_horizon_cuts_a_pass():
-    mast = (
-        (0.0, 5.0),
-        (170.0, 5.0),
-        (175.0, 89.0),
-        (185.0, 89.0),
-        (190.0, 5.0),
-        (350.0, 5.0),
-        (355.0, 89.0),
-        (359.0, 89.0),
-    )
-    plain, cut = (station(60.0, 10.0, name="x", horizon=line) for line in ((), mast))
+    plain, cut = (station(60.0, 10.0, name="x", horizon=line) for line in ((), MASTS))
     whole, pieces = found(elements_of("marshlight"), [plain]), found(elements_of("marshlight"), [cut])
     assert not any(name[-1].isalpha() for name in whole.pass_id)
     stems = {}
@@ -138,17 +141,7 @@ def test_letters_only_where_the_horizon_cuts_a_pass():
 
 
 def test_a_piece_keeps_its_letter_when_the_span_cuts_the_other_one_off():
-    mast = (
-        (0.0, 5.0),
-        (170.0, 5.0),
-        (175.0, 89.0),
-        (185.0, 89.0),
-        (190.0, 5.0),
-        (350.0, 5.0),
-        (355.0, 89.0),
-        (359.0, 89.0),
-    )
-    cut = station(60.0, 10.0, name="x", horizon=mast)
+    cut = station(60.0, 10.0, name="x", horizon=MASTS)
     pieces = found(elements_of("marshlight"), [cut])
     k = next(k for k, name in enumerate(pieces.pass_id) if name.endswith("a"))
     between_s = (pieces.los_s[k] + pieces.aos_s[k + 1]) / 2
