@@ -13,7 +13,7 @@ AU_KM = 149_597_870.700  # IAU 2012 B2, exact
 SUN_RADIUS_KM = 695_700.0  # IAU 2015 B3, nominal
 SOLAR_CONSTANT_W_M2 = 1361.0  # IAU 2015 B3, nominal, at 1 au
 KELVIN_AT_0_C = 273.15
-DAY_S = 86_400.0
+DAY_S, HOUR_S = 86_400.0, 3600.0
 
 
 def decibel_of_power(ratio):

@@ -10,8 +10,8 @@ from planner.mission.contacts import Session
 from planner.power.limits import Breach
 from planner.schedule.candidates import commands_until_s
 from planner.schedule.flown import Flown
-from planner.schedule.problem import DAY_S, HOUR_S
 from planner.schedule.windows import turning_s
+from planner.units import DAY_S, HOUR_S
 
 # Times in files have milliseconds: what is closer than that is the same moment
 SAME_MOMENT_S = 2e-3

@@ -11,10 +11,11 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from planner.schedule.crowding import OnAir, crowded, fits, seconds_on_air, share_time, uneven
-from planner.schedule.problem import HOUR_S, Problem
+from planner.schedule.problem import Problem
 from planner.schedule.programme import Programme
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import EnergyStates, SatelliteStates
+from planner.units import HOUR_S
 
 # Ties: fewer sessions, then earlier ones. Shares of the largest session's volume, far below the gap asked for.
 FEWER_SESSIONS = 1e-5

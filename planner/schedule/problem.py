@@ -11,8 +11,7 @@ from planner.mission.models import Policy
 from planner.mission.station import Station
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
-
-HOUR_S, DAY_S = 3600.0, 86_400.0
+from planner.units import DAY_S, HOUR_S
 
 
 @dataclass(frozen=True)
