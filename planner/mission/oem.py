@@ -1,15 +1,17 @@
 """Orbit ephemeris messages (OEM, CCSDS 502.0-B-3) as keyword lines."""
 
+import math
 from datetime import datetime
 
 from planner.mission.base import is_name
 from planner.mission.ccsds import date, keyword_lines
-from planner.mission.orbit import Ephemeris, Segment
+from planner.mission.orbit import Ephemeris, Segment, two_body
 
 FRAMES = {"TEME": "TEME", "EME2000": "EME2000", "GCRF": "GCRF"}  # and every ITRF realisation
 METHODS = ("HERMITE", "LAGRANGE", "LINEAR")
 REQUIRED = ("OBJECT_NAME", "OBJECT_ID", "CENTER_NAME", "REF_FRAME", "TIME_SYSTEM", "START_TIME", "STOP_TIME")
 DEFAULT_DEGREE = 7
+LOWEST_KM, HIGHEST_KM = 6350.0, 5e5  # from the Earth's centre: the poles' ground; a semi-major axis beyond the Moon's
 
 
 def parse_oem(text: str, path: str) -> tuple[list[Ephemeris], list[str]]:
@@ -77,8 +79,17 @@ class _Reader:
             self.fault(number, "must be a date and six or nine numbers: x y z [km], vx vy vz [km/s], ...", line)
         elif self.rows and moment <= self.rows[-1][0]:
             self.fault(number, "must be later than the state before", words[0])
+        elif not self.is_bound(state):
+            self.fault(number, "must be a state of an orbit about the Earth that stays above the ground", line)
         else:
             self.rows.append((moment, state))
+
+    def is_bound(self, state: tuple[float, ...]) -> bool:
+        if math.hypot(*state[:3]) < LOWEST_KM:
+            return False
+        frame = "ITRF" if self.meta.get("REF_FRAME", (0, ""))[1].upper().startswith("ITRF") else ""
+        axis_km, eccentricity, _ = two_body(state, frame)
+        return axis_km * (1 - eccentricity) > LOWEST_KM and 0 < axis_km < HIGHEST_KM
 
     def close_segment(self):
         """What has been read since META_START becomes a segment, or faults."""

@@ -1,5 +1,6 @@
 """The two ways an orbit is given: an SGP4 element set, or an ephemeris (states in a table)."""
 
+import math
 from datetime import UTC, datetime, timedelta
 from functools import cached_property
 from typing import Annotated, Literal
@@ -12,6 +13,7 @@ from planner.mission.base import Described, Name
 from planner.units import DAY_S, EARTH_GM_KM3_S2, EARTH_RATE_RAD_S
 
 EPOCH_OF_SGP4 = datetime(1949, 12, 31, tzinfo=UTC)
+SLOWEST_REV_DAY = 0.05  # slower ones reach to the Moon, beyond what SGP4 is made for
 
 
 class ElementSet(Described):
@@ -37,10 +39,16 @@ class ElementSet(Described):
     def sgp4_model(self):
         """The `sgp4` package's model of this set, with the WGS 72 constants such sets are made with.
 
-        Raises InputError with satellite, epoch and SGP4's own message when SGP4 refuses the set.
+        Raises InputError with satellite, epoch and SGP4's own message when SGP4 refuses the set, and for a mean motion
+        below SLOWEST_REV_DAY.
         """
         from sgp4.api import WGS72, Satrec
 
+        if self.mean_motion_rev_day < SLOWEST_REV_DAY:
+            raise InputError(
+                f"{self.name}: mean motion of the element set of epoch {_iso(self.epoch)} must be at least"
+                f" {SLOWEST_REV_DAY:g} rev/day, got {self.mean_motion_rev_day:g}"
+            )
         model = Satrec()
         days_1949 = (self.epoch - EPOCH_OF_SGP4) / timedelta(days=1)
         rad_min = self.mean_motion_rev_day * 2 * np.pi / 1440
@@ -94,16 +102,7 @@ class Ephemeris(Described):
     def shape(self) -> tuple[float, float, float]:
         """Semi-major axis [km], eccentricity, inclination [deg] of the middle state of the first segment, two-body."""
         segment = self.segment[0]
-        state = np.array(segment.state[len(segment.state) // 2])
-        position, velocity = state[:3], state[3:]
-        if segment.frame == "ITRF":
-            velocity = velocity + EARTH_RATE_RAD_S * np.array([-position[1], position[0], 0.0])
-        radius = np.linalg.norm(position)
-        axis_km = 1 / (2 / radius - velocity @ velocity / EARTH_GM_KM3_S2)
-        momentum = np.cross(position, velocity)
-        eccentric = np.cross(velocity, momentum) / EARTH_GM_KM3_S2 - position / radius
-        inclination_deg = np.degrees(np.arccos(momentum[2] / np.linalg.norm(momentum)))
-        return float(axis_km), float(np.linalg.norm(eccentric)), float(inclination_deg)
+        return two_body(segment.state[len(segment.state) // 2], segment.frame)
 
     @property
     def mean_motion_rev_day(self) -> float:
@@ -116,6 +115,21 @@ class Ephemeris(Described):
     @property
     def inclination_deg(self) -> float:
         return self.shape[2]
+
+
+def two_body(state: State, frame: str) -> tuple[float, float, float]:
+    """Semi-major axis [km], negative where the state escapes, eccentricity and inclination [deg] of Kepler's orbit.
+
+    The radius of the state must be above 0.
+    """
+    x, y, z, vx, vy, vz = state
+    if frame == "ITRF":
+        vx, vy = vx - EARTH_RATE_RAD_S * y, vy + EARTH_RATE_RAD_S * x
+    momentum = (y * vz - z * vy, z * vx - x * vz, x * vy - y * vx)
+    per_axis = 2 / math.hypot(x, y, z) - (vx * vx + vy * vy + vz * vz) / EARTH_GM_KM3_S2
+    eccentricity = math.sqrt(max(0.0, 1 - math.hypot(*momentum) ** 2 / EARTH_GM_KM3_S2 * per_axis))
+    inclination_deg = math.degrees(math.atan2(math.hypot(*momentum[:2]), momentum[2]))
+    return 1 / per_axis if per_axis else math.inf, eccentricity, inclination_deg
 
 
 def _iso(moment: datetime) -> str:

@@ -5,11 +5,13 @@ import numpy as np
 from planner.errors import InputError
 from planner.mission.elements import ElementSet, Ephemeris
 from planner.sky.clock import Clock
-from planner.sky.frames import fixed_from_teme, fixed_position_km
+from planner.sky.frames import fixed_from_teme, fixed_position_km, inertial_velocity_km_s
+from planner.units import EARTH_GM_KM3_S2, dot
 
 # Half the time over which a velocity is taken from positions.
 VELOCITY_STEP_S = 0.5
 ROUND_ENOUGH = 0.003  # eccentricity below which the velocity of SGP4 is within 3 cm/s of the rate of its position
+NEAREST_KM, FARTHEST_KM = 6350.0, 1e6  # from the Earth's centre: its poles' ground, and well beyond the Moon
 
 
 def states(clock: Clock, name: str, elements: ElementSet | Ephemeris, time_s):
@@ -18,15 +20,28 @@ def states(clock: Clock, name: str, elements: ElementSet | Ephemeris, time_s):
     Returns
     -------
     position_km (n, 3), velocity_km_s (n, 3) relative to the turning Earth, known (n,) bool: False outside the span
-    where SGP4 gives up or the ephemeris does not reach
+    where SGP4 gives up, the ephemeris does not reach, or the state is of no orbit about the Earth
 
     Raises
     ------
-    InputError : the same inside the span; tells satellite, epoch and SGP4's own message
+    InputError : the same inside the span; tells satellite, epoch and SGP4's own message, or the state
     """
     if isinstance(elements, Ephemeris):
-        return _interpolated(clock, name, elements, time_s)
-    return _propagated(clock, elements, time_s)
+        position_km, velocity_km_s, known = _interpolated(clock, name, elements, time_s)
+    else:
+        position_km, velocity_km_s, known = _propagated(clock, elements, time_s)
+    radius_km = np.sqrt(dot(position_km, position_km))
+    velocity = inertial_velocity_km_s(position_km, velocity_km_s)
+    energy = dot(velocity, velocity) / 2 - EARTH_GM_KM3_S2 / radius_km
+    sound = known & (radius_km > NEAREST_KM) & (radius_km < FARTHEST_KM) & (energy < 0)
+    astray = known & ~sound & (time_s >= 0) & (time_s <= clock.span_s)
+    if astray.any():
+        k = np.argmax(astray)
+        raise InputError(
+            f"{name}: the {elements.source} file's orbit must stay about the Earth, got {radius_km[k]:.6g} km from its"
+            f" centre at {np.linalg.norm(velocity[k]):.4g} km/s at {clock.iso(time_s[k])}"
+        )
+    return position_km, velocity_km_s, sound
 
 
 def _propagated(clock: Clock, elements: ElementSet, time_s):

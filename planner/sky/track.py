@@ -157,7 +157,11 @@ def track_elements(clock: Clock, name: str, elements: ElementSet | Ephemeris) ->
     beyond_s = min(DAY_S / elements.mean_motion_rev_day * 1.05, FARTHEST_BEYOND_S)
     time_s = grid_s(clock, elements, -beyond_s, clock.span_s + beyond_s)
     position_km, velocity_km_s, known = states(clock, name, elements, time_s)
-    return Track(name, elements, time_s[known], position_km[known], velocity_km_s[known])
+    if not known.all():  # the track ends with the span on the side where the orbit does
+        before_s, after_s = (beyond_s * known[side].all() for side in (time_s < 0, time_s > clock.span_s))
+        time_s = grid_s(clock, elements, -before_s, clock.span_s + after_s)
+        position_km, velocity_km_s, _ = states(clock, name, elements, time_s)
+    return Track(name, elements, time_s, position_km, velocity_km_s)
 
 
 def step_s(radius_km, eccentricity: float):
@@ -188,7 +192,7 @@ def grid_s(clock: Clock, elements, begin_s: float, end_s: float) -> np.ndarray:
     per_second = 1 / step_s(radius_km, e)
     count = np.concatenate([[0.0], np.cumsum((per_second[1:] + per_second[:-1]) / 2 * np.diff(time_s))])
     from_count, to_count = np.interp([begin_s, end_s], time_s, count)
-    grid = np.interp(np.linspace(from_count, to_count, 2 + int(to_count - from_count)), count, time_s)
+    grid = np.interp(np.linspace(from_count, to_count, 3 + int(to_count - from_count)), count, time_s)
     grid[0], grid[-1] = begin_s, end_s
     return grid
 

@@ -90,3 +90,19 @@ def with_true_checksums(content: bytes) -> bytes:
 
 def _sum(line: bytes) -> int:
     return sum(byte - 48 if 48 <= byte <= 57 else byte == 45 for byte in line)
+
+
+EDGES = ("0", "0.0", "1e-9", "1e-6", "0.001", "0.5", "1.0", "10.0", "60.0", "89.999", "90.0", "-90.0", "99.999", "100.0",
+         "180.0", "360.0", "1e3", "1e4", "1e6", "1e9", "1e12", "-1.0", "-150.0", "1", "2", "1000", "40000.0")  # fmt: skip
+FACTORS = (0.0, 1e-6, 0.01, 0.1, 0.5, 0.9, 1.1, 2.0, 10.0, 100.0, 1e6)
+
+
+def strained(content: bytes, number: int) -> bytes:
+    """The content with one to four of its numbers at an edge or scaled: what validation often lets through."""
+    chance = random.Random(number)
+    for _ in range(chance.choice((1, 1, 2, 4))):
+        one = chance.choice(list(NUMBER.finditer(content)) or [re.match(b"", content)])
+        edge, scaled = chance.choice(EDGES), repr(float(one[0] or 0) * chance.choice(FACTORS))
+        as_wide = re.sub(r"\d", lambda _: chance.choice("0123456789"), one[0].decode())  # columns stay where they are
+        content = content[: one.start()] + chance.choice((edge, scaled, as_wide)).encode() + content[one.end() :]
+    return content

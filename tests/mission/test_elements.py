@@ -249,6 +249,17 @@ def test_a_set_that_sgp4_refuses_tells_satellite_epoch_and_its_own_words(tmp_pat
     )
 
 
+@pytest.mark.parametrize("value", ["0.0", "-1.0", "1.5e-05"])
+def test_an_orbit_slower_than_the_moons_is_no_case_for_sgp4(tmp_path, value):
+    rows = json.loads((SAMPLES / "marshlight.omm.json").read_text())
+    rows[0]["MEAN_MOTION"] = value
+    (fault,) = faults_of(tmp_path, json.dumps(rows))
+    assert fault.endswith(
+        "MARSHLIGHT-1: mean motion of the element set of epoch 2026-12-06T18:00:00.000000Z must be at least"
+        f" 0.05 rev/day, got {float(value):g}"
+    )
+
+
 @pytest.mark.parametrize(
     ("text", "rule"),
     [
@@ -340,3 +351,25 @@ def test_segments_out_of_order_are_put_in_order(tmp_path):
     read = read_one(written(tmp_path, text))
     assert [segment.usable_from.day for segment in read.segment] == [6, 7]
     assert read.segment[0].usable_to == read.segment[1].usable_from
+
+
+@pytest.mark.parametrize(
+    "state",
+    [
+        "0 0 0 0 0 0",
+        "7000 0 0 0 0 0",  # falls
+        "7000 0 0 0 12 0",  # escapes: above 10.7 km/s at that radius
+        "1000 0 0 0 7.5 0",
+        "7000 0 0 0 6.9 0",  # perigee in the ground
+        "9e5 0 0 0 0.6 0",
+    ],
+)
+def test_a_state_of_no_orbit_about_the_earth_is_told(tmp_path, state):
+    lines = (SAMPLES / "marshlight.oem").read_text().splitlines()
+    number = next(k for k, line in enumerate(lines) if line.startswith("2026-12-06T22:03"))
+    lines[number] = f"2026-12-06T22:03:00.000 {state}"
+    (fault,) = faults_of(tmp_path, "\n".join(lines))
+    assert fault.endswith(
+        f"line {number + 1}: must be a state of an orbit about the Earth that stays above the ground,"
+        f" got {lines[number]!r}"
+    )

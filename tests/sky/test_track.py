@@ -113,6 +113,38 @@ def test_a_satellite_that_decays_after_the_span_is_no_fault():
     assert last_s <= track.time_s[-1] < last_s + track.period_s
 
 
+UNDERGROUND = (1000.0, 0.0, 0.0, 0.0, 1.0, 0.0)  # x, y, z [km], vx, vy, vz [km/s]
+
+
+def test_drag_that_throws_sgp4_off_is_told():
+    dragged = element_set(bstar=-10.0)
+    late_s = np.array([94_200.0])
+    error, (place_km,), _ = dragged.sgp4_model().sgp4_array(*clock_of().julian(late_s))
+    assert not error.any()
+    assert np.linalg.norm(place_km) > 1e6
+    with pytest.raises(InputError, match=r"^T: the TLE file's orbit must stay about the Earth, got \S+ km from its"):
+        states(clock_of(), "T", dragged, late_s)
+
+
+def test_a_track_ends_with_the_span_where_the_orbit_ends_beyond_it():
+    message = ephemeris_in("TEME")
+    (segment,) = message.segment
+    astray = segment.model_copy(update={"state": (UNDERGROUND,) * 30 + segment.state[30:]})  # to 23:30
+    track = track_elements(clock_of(1.0), "e", message.model_copy(update={"segment": (astray,)}))
+    assert track.time_s[0] == 0.0
+    assert track.time_s[-1] > DAY_S
+
+
+def test_a_state_astray_inside_the_span_is_told():
+    message = ephemeris_in("TEME")
+    (segment,) = message.segment
+    middle = len(segment.state) // 2
+    state = (*segment.state[:middle], UNDERGROUND, *segment.state[middle + 1 :])
+    astray = message.model_copy(update={"segment": (segment.model_copy(update={"state": state}),)})
+    with pytest.raises(InputError, match=r"^e: the OEM file's orbit must stay about the Earth, got \S+ km from its"):
+        track_elements(clock_of(1.0), "e", astray)
+
+
 def test_velocity_from_space_and_acceleration():
     track = track_elements(clock_of(1.0), "t", element_set())
     position, velocity = track.at(np.array([5000.0]))
