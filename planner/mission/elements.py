@@ -1,5 +1,6 @@
 """Orbits as the user gives them: a file of element sets (TLE, OMM) or an ephemeris message (OEM)."""
 
+import re
 from datetime import UTC, datetime
 from pathlib import Path
 
@@ -61,7 +62,7 @@ def _parser(text: str):
         return omm.parse_xml
     if begin.startswith(("{", "[")):
         return omm.parse_json
-    if "," in first_line and "MEAN_MOTION" in first_line:
+    if re.search(r"MEAN_MOTION\s*[,;\t]|[,;\t]\s*MEAN_MOTION", first_line):
         return omm.parse_csv
     if begin.startswith("CCSDS_OEM_VERS"):
         return oem.parse_oem

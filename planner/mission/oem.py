@@ -6,6 +6,7 @@ from datetime import datetime
 from planner.mission.base import is_name
 from planner.mission.ccsds import date, keyword_lines
 from planner.mission.orbit import Ephemeris, Segment, two_body
+from planner.mission.text import decimals
 
 FRAMES = {"TEME": "TEME", "EME2000": "EME2000", "GCRF": "GCRF"}  # and every ITRF realisation
 METHODS = ("HERMITE", "LAGRANGE", "LINEAR")
@@ -44,7 +45,7 @@ class _Reader:
         self.part = "header"
 
     def fault(self, number: int, rule: str, value: str):
-        self.faults.append(f"{self.path}: line {number}: {rule}, got {value!r}")
+        self.faults.append(f"{self.path}: line {number}: {rule}, got {value!r}{decimals(value)}")
 
     def take(self, number: int, keyword: str, value: str):
         if value == "META_START":

@@ -8,6 +8,8 @@ from xml.etree import ElementTree
 from planner.mission.base import is_name
 from planner.mission.ccsds import date, keyword_lines
 from planner.mission.orbit import ElementSet
+from planner.mission.table import MAYBE_DECIMAL_COMMAS, separator_fault
+from planner.mission.text import decimals
 
 NUMBERS = {
     "MEAN_MOTION": "mean_motion_rev_day",
@@ -96,12 +98,17 @@ def parse_csv(text: str, path: str) -> Parsed:
     except csv.Error as error:
         return [], [f"{path}: must be CSV: {error}"]
     header = [keyword.strip() for keyword in rows[0]]
+    if fault := separator_fault(header):
+        return [], [f"{path}: row 1: {fault}"]
     messages, faults = [], []
     for number, row in enumerate(rows[1:], 2):
         if len(row) == len(header):
             messages.append((f"{path}: row {number}", dict(zip(header, map(str.strip, row), strict=True))))
         elif any(row):
-            faults.append(f"{path}: row {number}: must have {len(header)} columns as the header, got {len(row)}")
+            faults.append(
+                f"{path}: row {number}: must have {len(header)} columns as the header, got {len(row)}"
+                + (MAYBE_DECIMAL_COMMAS if len(row) > len(header) else "")
+            )
     return _gathered(messages, faults, _bare())
 
 
@@ -135,7 +142,7 @@ def _element_set(where: str, values: dict[str, str]) -> tuple[ElementSet | None,
         try:
             return convert(values[keyword])
         except ValueError as error:
-            faults.append(f"{where}: {keyword} {error}, got {values[keyword]!r}")
+            faults.append(f"{where}: {keyword} {error}, got {values[keyword]!r}{decimals(values[keyword])}")
             return default
 
     numbers = {field: converted(keyword, _number(keyword)) for keyword, field in NUMBERS.items()}

@@ -4,7 +4,7 @@ from pathlib import Path
 
 from planner.errors import InputError
 from planner.mission.table import read_table
-from planner.mission.text import shown
+from planner.mission.text import decimals, shown
 
 COLUMNS = ("off_axis_deg", "gain_dbi")
 
@@ -20,6 +20,7 @@ def read_pattern(path: Path) -> tuple[tuple[float, float], ...]:
             faults.append(
                 f"{path}: line {line}: off_axis_deg and gain_dbi must be numbers,"
                 f" got {shown(row['off_axis_deg'])} and {shown(row['gain_dbi'])}"
+                + decimals(f"{row['off_axis_deg']} {row['gain_dbi']}")
             )
             continue
         if not 0 <= angle_deg <= 180 or not -200 <= gain_dbi <= 100:

@@ -11,6 +11,7 @@ from planner.mission.text import nearest, read_text, shown
 
 FORMULA = re.compile(r"'*[=+\-@\t\r]")  # what a spreadsheet would run, behind apostrophes or none
 MOST_COLUMNS = 1000
+MAYBE_DECIMAL_COMMAS = "; are there decimal commas?"
 SEPARATORS = {";": "semicolons", "\t": "tabs"}
 
 
@@ -26,12 +27,8 @@ def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[st
     if len(header[1]) > MOST_COLUMNS:
         raise InputError(f"{path}: line {header[0]}: must have at most {MOST_COLUMNS} columns, got {len(header[1])}")
     columns = [column.strip() for column in header[1]]
-    for other, name in SEPARATORS.items():
-        if len(columns) == 1 and other in columns[0]:
-            raise InputError(
-                f"{path}: line {header[0]}: columns must be separated by commas, got {name};"
-                " save as comma-separated CSV with decimal points"
-            )
+    if fault := separator_fault(columns):
+        raise InputError(f"{path}: line {header[0]}: {fault}")
     missing = [name for name in required if name not in columns]
     if missing:
         raise InputError(
@@ -45,6 +42,14 @@ def read_table(path: Path, required: tuple[str, ...]) -> list[tuple[int, dict[st
     return [(line, dict(zip(columns, map(_plain, cells), strict=True))) for line, cells in rows]
 
 
+def separator_fault(columns: list[str]) -> str:
+    """What is wrong with a header whose columns are not separated by commas; "" where nothing is."""
+    for other, name in SEPARATORS.items():
+        if len(columns) == 1 and other in columns[0]:
+            return f"columns must be separated by commas, got {name}; save as comma-separated CSV with decimal points"
+    return ""
+
+
 def _rows(path: Path, text: str) -> Iterator[tuple[int, list[str]]]:
     reader = csv.reader(io.StringIO(text, newline=""), strict=True)
     try:
@@ -56,7 +61,7 @@ def _rows(path: Path, text: str) -> Iterator[tuple[int, list[str]]]:
 
 
 def _width_fault(path: Path, line: int, cells: list[str], columns: list[str]) -> str:
-    mend = "; are there decimal commas?" if len(cells) > len(columns) else ""
+    mend = MAYBE_DECIMAL_COMMAS if len(cells) > len(columns) else ""
     return f"{path}: line {line}: must have {len(columns)} cells, got {len(cells)}{mend}"
 
 

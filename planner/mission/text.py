@@ -1,7 +1,9 @@
 """Reading a user's file as text or as TOML, and saying what is wrong with it."""
 
+import codecs
 import difflib
 import hashlib
+import re
 import stat
 import tomllib
 from collections.abc import Iterable, Mapping
@@ -16,6 +18,13 @@ LARGEST_FILE_BYTES = 50_000_000
 MOST_LINES = 600_000  # with what is kept of each line, some hundred MB
 LINE_ENDS = "\n\r\v\f\x1c\x1d\x1e\x85\u2028\u2029"  # as str.splitlines has them
 LONGEST_VALUE_SHOWN = 60
+DECIMAL_COMMA = re.compile(r"(?<![\d,.])[-+]?\d+,\d+(?![\d,])")
+# What a line of TOML that cannot be read often holds, and the mend
+TOML_MENDS = (
+    (re.compile(r"=\s*[-+]?\d+,\d"), "write decimals with a point"),
+    (re.compile(r"\d:\d\d:60"), "a leap second cannot be written, take the second before it or after"),
+    (re.compile(r"[“”„]"), "write straight quotes"),
+)
 
 
 def read_bytes(path: Path) -> bytes:
@@ -38,27 +47,53 @@ def _kind(mode: int) -> str:
 
 
 def read_text(path: Path) -> str:
-    """The file as text, without a byte-order mark; InputError where it is not UTF-8 or has too many lines."""
+    """The file as text, without a byte-order mark.
+
+    Raises
+    ------
+    InputError : it is not UTF-8, holds a NUL, or has too many lines
+    """
+    content = read_bytes(path)
     try:
-        text = read_bytes(path).decode("utf-8-sig")
+        text = content.decode("utf-8-sig")
     except UnicodeDecodeError as error:
-        raise InputError(
-            f"{path}: must be UTF-8 text, byte {error.start} is {error.object[error.start]:#04x}"
-        ) from None
+        raise _no_text(path, content, error.start) from None
+    if "\0" in text:
+        raise _no_text(path, content, content.index(0))
     lines = sum(map(text.count, LINE_ENDS)) - text.count("\r\n")
     if lines > MOST_LINES:
         raise InputError(f"{path}: must have at most {MOST_LINES} lines, got {lines}")
     return text
 
 
+def _no_text(path: Path, content: bytes, at: int) -> InputError:
+    wide = content.startswith((codecs.BOM_UTF16_LE, codecs.BOM_UTF16_BE)) or content[:200].count(0) > 20
+    mend = "; it looks like UTF-16, save it as UTF-8" if wide else ""
+    return InputError(f"{path}: must be UTF-8 text, byte {at} is {content[at]:#04x}{mend}")
+
+
 def read_toml(path: Path) -> dict[str, Any]:
     """The file's tables, lists as tuples; InputError with line and column where it is not TOML."""
+    text = read_text(path).replace("\r\n", "\n")
     try:
-        return _with_tuples(tomllib.loads(read_text(path).replace("\r\n", "\n")))
+        return _with_tuples(tomllib.loads(text))
     except tomllib.TOMLDecodeError as error:
-        raise InputError(f"{path}: must be TOML: {error}") from None
+        raise InputError(f"{path}: must be TOML: {error}{_toml_line(text, str(error))}") from None
     except RecursionError:
         raise InputError(f"{path}: must be TOML: nested too deeply") from None
+
+
+def _toml_line(text: str, error: str) -> str:
+    """The line that an error tells the number of, as ", got 'soc_pct = 92,0'; write decimals with a point"."""
+    told = re.search(r"at line (\d+)", error)
+    line = text.split("\n")[int(told[1]) - 1].strip() if told else ""
+    mends = [f"; {mend}" for pattern, mend in TOML_MENDS if pattern.search(line)]
+    return (f", got {shown(line)}" if line else "") + "".join(mends[:1])
+
+
+def decimals(text: str) -> str:
+    """The mend to stand behind a fault in a number: "; write decimals with a point", or nothing."""
+    return "; write decimals with a point" if DECIMAL_COMMA.search(text) else ""
 
 
 def sha256(path: Path) -> str:
@@ -102,7 +137,8 @@ def _fault(path: Path | str, entry: Mapping[str, Any], raw: Any, model: type | N
         return f"{place}: unknown key{nearest(key.rsplit('.', 1)[-1], _siblings(entry['loc'], model, holder))}"
     if kind == "value_error":
         return f"{place}: {context['error']}" + ("" if "got " in str(context["error"]) else f", got {shown(value)}")
-    return f"{place}: {_rule(kind, context, entry['msg'])}, got {shown(value)}"
+    mend = decimals(value) if kind == "float_type" and isinstance(value, str) else ""
+    return f"{place}: {_rule(kind, context, entry['msg'])}, got {shown(value)}{mend}"
 
 
 def _rule(kind: str, context: Mapping[str, Any], message: str) -> str:

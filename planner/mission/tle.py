@@ -5,6 +5,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 
 from planner.mission.orbit import ElementSet
+from planner.mission.text import decimals
 
 EXPECTED = {
     1: "1 NNNNNC NNNNNAAA NNNNN.NNNNNNNN +.NNNNNNNN +NNNNN-N +NNNNN-N N NNNNN",
@@ -73,7 +74,7 @@ class _LineCheck:
         try:
             return convert(text)
         except ValueError as error:
-            faults.append(self.fault(f"columns {first}-{last} ({name}) {error}, got {text!r}"))
+            faults.append(self.fault(f"columns {first}-{last} ({name}) {error}, got {text!r}{decimals(text)}"))
             return None
 
 

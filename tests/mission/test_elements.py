@@ -373,3 +373,29 @@ def test_a_state_of_no_orbit_about_the_earth_is_told(tmp_path, state):
         f"line {number + 1}: must be a state of an orbit about the Earth that stays above the ground,"
         f" got {lines[number]!r}"
     )
+
+
+@pytest.mark.parametrize(("separator", "name"), [(";", "semicolons"), ("\t", "tabs")])
+def test_a_table_of_messages_with_another_separator_is_told(tmp_path, separator, name):
+    text = (SAMPLES / "marshlight.omm.csv").read_text().replace(",", separator)
+    (fault,) = faults_of(tmp_path, text)
+    assert fault.endswith(
+        f"row 1: columns must be separated by commas, got {name}; save as comma-separated CSV with decimal points"
+    )
+
+
+@pytest.mark.parametrize(
+    ("sample", "old", "new", "told"),
+    [
+        ("marshlight.omm.csv", "15.08756051", "15,08756051",
+         "row 2: must have 21 columns as the header, got 22; are there decimal commas?"),
+        ("marshlight.omm.xml", "15.08756051", "15,08756051",
+         "message 1: MEAN_MOTION must be a number, got '15,08756051'; write decimals with a point"),
+        ("marshlight.oem", "-4230.214858", "-4230,214858", "-7.493160374'; write decimals with a point"),
+    ],
+)  # fmt: skip
+def test_decimal_commas_are_recognised(tmp_path, sample, old, new, told):
+    text = (SAMPLES / sample).read_text()
+    assert old in text
+    (fault,) = faults_of(tmp_path, text.replace(old, new, 1))
+    assert fault.endswith(told)

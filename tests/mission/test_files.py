@@ -285,14 +285,34 @@ def test_one_satellite_described_twice(mission_folder):
 @pytest.mark.parametrize(
     ("content", "message"),
     [
-        (b"name = 1\nname = 2\n", "must be TOML: Cannot overwrite a value (at line 2, column 9)"),
+        (b"name = 1\nname = 2\n", "must be TOML: Cannot overwrite a value (at line 2, column 9), got 'name = 2'"),
         (b"name = \xff", "must be UTF-8 text, byte 7 is 0xff"),
+        (b"name = 1\x00\n", "must be UTF-8 text, byte 8 is 0x00"),
+        ("name = 1".encode("utf-16"), "must be UTF-8 text, byte 0 is 0xff; it looks like UTF-16, save it as UTF-8"),
+        (b"n\0a\0" * 20, "must be UTF-8 text, byte 1 is 0x00; it looks like UTF-16, save it as UTF-8"),
         (b"x = " + b"[" * 5000, "must be TOML: nested too deeply"),
     ],
 )
 def test_what_is_not_toml(mission_folder, content, message):
     (mission_folder / MISSION).write_bytes(content)
     assert faults(mission_folder) == [f"{MISSION}: {message}"]
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "told"),
+    [
+        ("soc_pct = 92.0", "soc_pct = 92,0", "got 'soc_pct = 92,0'; write decimals with a point"),
+        ("start = 2026-12-07T00:00:00Z", "start = 2016-12-31T23:59:60Z",
+         "got 'start = 2016-12-31T23:59:60Z'; a leap second cannot be written, take the second before it or after"),
+        ('mode = "K high rate"', "mode = “K high rate”", "got 'mode = “K high rate”'; write straight quotes"),
+        ("soc_pct = 92.0", 'soc_pct = "92,0"',
+         "start_state.soc_pct: must be a number, got '92,0'; write decimals with a point"),
+    ],
+)  # fmt: skip
+def test_what_a_line_often_gets_wrong_is_told_with_its_mend(mission_folder, old, new, told):
+    changed(mission_folder, old, new)
+    (fault,) = faults(mission_folder)
+    assert fault.endswith(told)
 
 
 def test_an_empty_file_lacks_every_key(mission_folder):

@@ -23,6 +23,12 @@ def test_the_rows_of_a_pattern(tmp_path):
 @pytest.mark.parametrize(
     ("rows", "messages"),
     [
+        (
+            '"0,0","6,1"\n',
+            [
+                "line 2: off_axis_deg and gain_dbi must be numbers, got '0,0' and '6,1'; write decimals with a point",
+            ],
+        ),
         ("0,6\n10,six\n", ["line 3: off_axis_deg and gain_dbi must be numbers, got '10' and 'six'"]),
         ("0,6\n20,3\n10,4\n", ["line 4: off_axis_deg must rise, got 10 after 20"]),
         ("0,6\n181,3\n", ["line 3: must be 0..180 deg and -200..100 dBi, got 181 and 3"]),
