@@ -3,10 +3,12 @@
 Run by path, so that it loads numpy and scipy and nothing else.
 """
 
+import fcntl
 import os
 import pickle
 import signal
 import sys
+from contextlib import contextmanager
 
 import numpy as np
 from scipy.optimize import Bounds, LinearConstraint, milp
@@ -33,6 +35,19 @@ def answer(question: dict) -> dict:
     }
 
 
+@contextmanager
+def _ends_with_reader(pipe: int):
+    """Within, this process ends as soon as nobody reads the pipe any more: HiGHS would solve on for nobody.
+
+    Linux tells the writer of a pipe by SIGIO, which ends a process that does not handle it. Elsewhere nothing happens.
+    """
+    flags = fcntl.fcntl(pipe, fcntl.F_GETFL)
+    fcntl.fcntl(pipe, fcntl.F_SETOWN, os.getpid())
+    fcntl.fcntl(pipe, fcntl.F_SETFL, flags | os.O_ASYNC)
+    yield
+    fcntl.fcntl(pipe, fcntl.F_SETFL, flags)
+
+
 def main() -> None:
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # the parent ends this process itself
     output = os.dup(1)
@@ -40,7 +55,8 @@ def main() -> None:
     question = sys.stdin.buffer.read()
     if not question:  # the parent ended without asking
         return
-    found = pickle.dumps(answer(pickle.loads(question)))
+    with _ends_with_reader(output):
+        found = pickle.dumps(answer(pickle.loads(question)))
     with os.fdopen(output, "wb") as stream:
         stream.write(found)
 

@@ -1,6 +1,8 @@
 """The solver's child process: known optima, none, a limit, and an end at once when cancelled."""
 
 import os
+import subprocess
+import sys
 import time
 from pathlib import Path
 
@@ -11,6 +13,7 @@ from planner.errors import MachineError
 from planner.schedule import programme
 from planner.schedule.programme import Programme, Solving, solve
 
+ROOT = Path(__file__).parents[2]
 A_SECOND = 1.0
 A_BILLIONTH = 1e-6  # HiGHS' own feasibility tolerance
 
@@ -94,6 +97,34 @@ def test_cancelled_within_a_second_and_no_process_is_left():
             return
         time.sleep(0.05)
     pytest.fail("a solver still works")
+
+
+PARENT = """
+import time
+from test_programme import Solving, hard_knapsacks
+with Solving(hard_knapsacks(), relative_gap=0.0) as solving:
+    print(solving._worker.pid, flush=True)
+    time.sleep(600)
+"""
+
+
+def test_a_parent_killed_while_the_solver_works_takes_it_along():
+    paths = {"PYTHONPATH": os.pathsep.join((str(Path(__file__).parent), str(ROOT)))}
+    parent = subprocess.Popen([sys.executable, "-c", PARENT], stdout=subprocess.PIPE, env=os.environ | paths)
+    worker = Path(f"/proc/{int(parent.stdout.readline())}/stat")
+
+    def seconds_worked() -> float:
+        return int(worker.read_text().rpartition(")")[2].split()[11]) / os.sysconf("SC_CLK_TCK")
+
+    while seconds_worked() < 3 * A_SECOND:  # it has long read the programme, and solves
+        time.sleep(0.05)
+    parent.kill()
+    parent.communicate()
+    for _ in range(600):
+        if not worker.exists():
+            return
+        time.sleep(0.05)
+    pytest.fail("the solver goes on for nobody")
 
 
 def test_a_child_that_dies_is_the_machine_s_fault(monkeypatch, tmp_path):
