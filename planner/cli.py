@@ -6,10 +6,11 @@ import sys
 from datetime import datetime
 from pathlib import Path
 
-from planner import printing
+from planner import completion, printing
 from planner.errors import InputError, MachineError, NoWeekError
 from planner.mission.files import DEFAULT_MISSION, load_mission
 from planner.mission.models import Mission
+from planner.printing import Tell
 
 DONE, NO, WRONG_INPUT, MACHINE, INTERRUPTED = 0, 1, 2, 3, 130
 KEEP_HELP = "fly this pass in this mode, as PASS:MODE (may be repeated)"
@@ -17,9 +18,12 @@ KEEP_HELP = "fly this pass in this mode, as PASS:MODE (may be repeated)"
 
 def main(argv: list[str] | None = None) -> int:
     """Run one command; its exit status."""
-    arguments = _parser().parse_args(argv)
+    parser = _parser()
+    completion.offer(parser)
+    arguments = parser.parse_args(argv)
     try:
-        return arguments.run(arguments)
+        with printing.stages(arguments.quiet, arguments.verbose) as tell:
+            return arguments.run(arguments, tell)
     except InputError as error:
         printing.fault(error.faults)
         return WRONG_INPUT
@@ -147,21 +151,22 @@ def _mission(path: str) -> Mission:
     return mission
 
 
-def _check(arguments) -> int:
+def _check(arguments, tell: Tell) -> int:
     from planner.commands import check
 
     return check(_mission(arguments.mission))
 
 
-def _passes(arguments) -> int:
+def _passes(arguments, tell: Tell) -> int:
     from planner.commands import passes
 
-    return passes(_mission(arguments.mission), arguments.csv)
+    return passes(_mission(arguments.mission), arguments.csv, tell)
 
 
-def _link(arguments) -> int:
+def _link(arguments, tell: Tell) -> int:
     from planner import link_budget
 
+    tell("the link")
     budget = link_budget(
         _mission(arguments.mission),
         arguments.station,
@@ -176,13 +181,13 @@ def _link(arguments) -> int:
     return DONE
 
 
-def _week(arguments) -> int:
+def _week(arguments, tell: Tell) -> int:
     from planner.commands import week
 
     freeze = None if arguments.freeze_until is None else _moment(arguments.freeze_until)
     if arguments.time_limit is not None and not 0 < arguments.time_limit < 1e6:
         raise InputError(f"--time-limit must be above 0 s and below 1e6 s, got {arguments.time_limit:g}")
-    return week(_mission(arguments.mission), arguments, freeze)
+    return week(_mission(arguments.mission), arguments, freeze, tell)
 
 
 def _moment(text: str) -> datetime:
@@ -195,39 +200,39 @@ def _moment(text: str) -> datetime:
     return moment
 
 
-def _audit(arguments) -> int:
+def _audit(arguments, tell: Tell) -> int:
     from planner.commands import show_audit
 
     if len(arguments.files) > 2:
         raise InputError(f"audit takes a mission file and a contacts file, got {len(arguments.files)} files")
     mission, contacts = [str(DEFAULT_MISSION), *arguments.files][-2:]
-    return show_audit(_mission(mission), contacts, arguments.json)
+    return show_audit(_mission(mission), contacts, arguments.json, tell)
 
 
-def _afford(arguments) -> int:
+def _afford(arguments, tell: Tell) -> int:
     from planner.commands import show_affordability
 
     return show_affordability(
-        _mission(arguments.mission), arguments.pass_id, arguments.mode, arguments.contacts, arguments.json
+        _mission(arguments.mission), arguments.pass_id, arguments.mode, arguments.contacts, arguments.json, tell
     )
 
 
-def _compare(arguments) -> int:
+def _compare(arguments, tell: Tell) -> int:
     from planner.commands import show_comparison
 
     return show_comparison(arguments.old, arguments.new)
 
 
-def _pointing(arguments) -> int:
+def _pointing(arguments, tell: Tell) -> int:
     from planner.commands import write_pointing
 
-    return write_pointing(_mission(arguments.mission), arguments)
+    return write_pointing(_mission(arguments.mission), arguments, tell)
 
 
-def _cards(arguments) -> int:
+def _cards(arguments, tell: Tell) -> int:
     from planner.commands import write_cards
 
-    return write_cards(_mission(arguments.mission), Path(arguments.contacts), Path(arguments.out))
+    return write_cards(_mission(arguments.mission), Path(arguments.contacts), Path(arguments.out), tell)
 
 
 if __name__ == "__main__":

@@ -10,6 +10,7 @@ from pathlib import Path
 from planner import printing
 from planner.errors import InputError
 from planner.mission.models import Mission, Satellite
+from planner.printing import Tell
 
 DONE, NO = 0, 1
 MOST_STALE_SHOWN = 12
@@ -63,10 +64,11 @@ def _check_satellite(mission: Mission, satellite: Satellite) -> None:
     )  # fmt: skip
 
 
-def passes(mission: Mission, csv: str | None) -> int:
+def passes(mission: Mission, csv: str | None, tell: Tell) -> int:
     """Print every pass, or write the table."""
     from planner.face import find_passes
 
+    tell("passes")
     found = find_passes(mission)
     if csv is not None:
         from planner.export.contacts import passes_csv
@@ -86,14 +88,14 @@ def passes(mission: Mission, csv: str | None) -> int:
     return DONE
 
 
-def week(mission: Mission, arguments, freeze_until: datetime | None) -> int:
+def week(mission: Mission, arguments, freeze_until: datetime | None, tell: Tell) -> int:
     """Plan the week, write it whole or not at all, and say what it comes to."""
     from planner.export.folder import claim_folder
     from planner.export.week import write_week
     from planner.schedule.result import plan_week
 
     began = time.perf_counter()
-    with claim_folder(arguments.out) as folder, printing.stages(arguments.quiet, arguments.verbose) as tell:
+    with claim_folder(arguments.out) as folder:
         printing.fault(folder.mended)
         plan = plan_week(
             mission,
@@ -176,10 +178,11 @@ def _days(contacts):
                f"{group['soc_min_pct'].min():.1f} %")  # fmt: skip
 
 
-def show_audit(mission: Mission, contacts: str, as_json: bool) -> int:
+def show_audit(mission: Mission, contacts: str, as_json: bool, tell: Tell) -> int:
     """Print every broken rule and stale figure; the exit status is the verdict."""
     from planner.schedule.audit import audit
 
+    tell("passes, links and power")
     verdict = audit(mission, contacts)
     if as_json:
         printing.say(json.dumps(verdict.as_dict(), indent=2))
@@ -200,11 +203,13 @@ def show_audit(mission: Mission, contacts: str, as_json: bool) -> int:
     return NO
 
 
-def show_affordability(mission: Mission, pass_id: str, mode: str, contacts: str | None, as_json: bool) -> int:
+def show_affordability(
+    mission: Mission, pass_id: str, mode: str, contacts: str | None, as_json: bool, tell: Tell
+) -> int:
     """Print the go or no-go for one session; the exit status is the answer."""
     from planner.schedule.afford import afford
 
-    answer = afford(mission, pass_id, mode, contacts)
+    answer = afford(mission, pass_id, mode, contacts, progress=tell)
     if as_json:
         printing.say(json.dumps(answer.as_dict(), indent=2))
         return DONE if answer.affordable else NO
@@ -251,7 +256,7 @@ def show_comparison(old: str, new: str) -> int:
     return DONE
 
 
-def write_pointing(mission: Mission, arguments) -> int:
+def write_pointing(mission: Mission, arguments, tell: Tell) -> int:
     """Pointing tables for every contact of a file."""
     from planner.export.folder import write_set
     from planner.export.pointing import pointing_files
@@ -259,7 +264,9 @@ def write_pointing(mission: Mission, arguments) -> int:
     from planner.schedule.wishes import sessions_of
 
     sessions = sessions_of(Path(arguments.contacts), mission)
+    tell("passes, links and power")
     sky = prepared(mission).sky
+    tell("pointing tables")
     files = pointing_files(
         mission, sky, sessions, step_s=arguments.step, refracted=arguments.refracted, force=arguments.force
     )
@@ -270,7 +277,7 @@ def write_pointing(mission: Mission, arguments) -> int:
     return DONE
 
 
-def write_cards(mission: Mission, contacts: Path, out: Path) -> int:
+def write_cards(mission: Mission, contacts: Path, out: Path, tell: Tell) -> int:
     """A card for every contact of a file, and the week sheet."""
     from planner.export.cards import card_files
     from planner.export.folder import write_set
@@ -278,11 +285,17 @@ def write_cards(mission: Mission, contacts: Path, out: Path) -> int:
     from planner.schedule.audit import audit
     from planner.schedule.result import GivenWeek
 
+    tell("checking the contacts")
     verdict = audit(mission, contacts)
     if not verdict.safe:
         raise InputError(f"{contacts}: cards are made only of contacts that keep every limit", *verdict.texts())
     given = GivenWeek(verdict.flown)
-    files = dict(card_files(mission, verdict.flown.week.sky, given.contacts)) | sheet_files(mission, given)
+    files: dict[str, bytes] = {}
+    for name, content in card_files(mission, verdict.flown.week.sky, given.contacts):
+        tell(f"card {len(files) // 2 + 1} of {len(given.contacts)}")
+        files[name] = content
+    tell("the week sheet")
+    files |= sheet_files(mission, given)
     printing.fault(write_set(out, files, {"mission": mission.name, "cards": len(given.contacts)}, index="cards.json"))
     printing.say(f"{len(given.contacts)} cards and the week sheet written to {out}")
     return DONE

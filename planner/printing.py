@@ -1,15 +1,20 @@
 """What the commands say: tables and one-line findings, plain when piped."""
 
+import logging
 import os
 import sys
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
 from typing import Literal
 
 from rich.console import Console
+from rich.progress import Progress, SpinnerColumn, TextColumn, TimeElapsedColumn
 from rich.table import Table
 
 Column = tuple[str, Literal["left", "right"]]  # heading, and where its texts stand
+Tell = Callable[[str], None]
+_log = logging.getLogger(__name__)
+_moving: list[Progress] = []  # the line that tells the stage; it ends where there is something to say
 PLAIN_WIDTH = 200  # columns when nobody's terminal says otherwise
 
 
@@ -22,6 +27,7 @@ class _Screen(Console):
 
 def screen(stderr: bool = False) -> Console:
     """A console that follows NO_COLOR and is plain when piped."""
+    _stop_moving()
     stream = sys.stderr if stderr else sys.stdout
     width = None if stream.isatty() else PLAIN_WIDTH
     return _Screen(
@@ -44,30 +50,67 @@ def table(columns: Sequence[Column], rows: Iterable[Sequence[str]], title: str |
 
 
 @contextmanager
-def stages(quiet: bool, verbose: bool):
+def stages(quiet: bool, verbose: bool) -> Iterator[Tell]:
     """Tell which stage runs: a moving line on a terminal, a log when verbose, nothing when quiet or piped.
 
-    Yields a function that takes the name of each stage as it begins.
+    Yields a function that takes the name of each stage as it begins. The log also has what the planner decides.
     """
     console = screen(stderr=True)
-    if quiet or (not verbose and not console.is_terminal):
+    if verbose:
+        with _decisions_told():
+            yield _log.info
+    elif quiet or not console.is_terminal:
         yield _silent
-    elif verbose:
-        yield lambda stage: console.print(stage)
     else:
-        with console.status("reading") as status:
-            yield lambda stage: status.update(stage)
+        columns = SpinnerColumn(), TextColumn("{task.description}", markup=False), TimeElapsedColumn()
+        progress = Progress(*columns, console=console, transient=True)
+        line = progress.add_task("reading")
+
+        def tell(stage: str) -> None:
+            progress.update(line, description=stage)
+            progress.start()
+            _moving.append(progress)
+
+        tell("reading")
+        try:
+            yield tell
+        finally:
+            _stop_moving()
+
+
+def _stop_moving() -> None:
+    while _moving:
+        _moving.pop().stop()
+
+
+@contextmanager
+def _decisions_told() -> Iterator[None]:
+    """The package's log on standard error, each line with the seconds since the program began."""
+    package = logging.getLogger("planner")
+    handler = logging.StreamHandler(sys.stderr)
+    handler.setFormatter(_SinceStart())
+    package.addHandler(handler)
+    before = package.level
+    package.setLevel(logging.INFO)
+    try:
+        yield
+    finally:
+        package.setLevel(before)
+        package.removeHandler(handler)
+
+
+class _SinceStart(logging.Formatter):
+    def format(self, record: logging.LogRecord) -> str:
+        return f"{record.relativeCreated / 1000:7.2f} s  {record.getMessage()}"
 
 
 def _silent(stage: str) -> None:
     """Hears and says nothing."""
 
 
-Tell = Callable[[str], None]
-
-
 def fault(lines: Iterable[str]) -> None:
     """What went wrong, on standard error, one line each."""
+    _stop_moving()
     for line in lines:
         print(line, file=sys.stderr)
 

@@ -54,6 +54,24 @@ def mission_folder(copy_of_demo, tmp_path):
     return copy_of_demo(tmp_path)
 
 
+@pytest.fixture(scope="session")
+def quick_folder(copy_of_demo, tmp_path_factory):
+    """The demo's files, the mission cut down to two passes over one station: a week in some seconds."""
+    folder = copy_of_demo(tmp_path_factory.mktemp("quick"))
+    path = folder / "missions" / "marshlight.toml"
+    begin, _, rest = path.read_text().partition("stations = [")
+    text = f'{begin}stations = ["../stations/vardholm.toml"]{rest.partition("]")[2]}'
+    for old, new in {
+        "days = 7.0": "days = 0.4",
+        'daily_contact_modes = ["S low rate"]': "",
+        "upload_lead_h = 6.0": "",
+    }.items():
+        assert old in text
+        text = text.replace(old, new)
+    path.write_text(text)
+    return folder
+
+
 @dataclass(frozen=True)
 class WrittenWeek:
     """What `week` printed, and the folder it wrote."""

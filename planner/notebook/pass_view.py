@@ -145,7 +145,7 @@ class PassView:
     def _ask_energy(self, pass_id: str, row: int) -> None:
         mission, mode, contacts = self.desk.mission, self.desk.mode, list(self.desk.week.flown.sessions)
         self._asking.start(
-            lambda progress, cancelled: planner.afford(mission, pass_id, mode, contacts),
+            lambda progress, cancelled: planner.afford(mission, pass_id, mode, contacts, progress=progress),
             lambda answer: setattr(self.energy, "value", answer_html(answer)),
             lambda fault: setattr(self.energy, "value", lines_html(str(fault).splitlines(), "bad")),
         )

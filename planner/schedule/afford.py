@@ -16,6 +16,7 @@ from planner.schedule.flown import Flown
 from planner.schedule.frames import contact_id
 from planner.schedule.result import plan_week, prepared
 from planner.schedule.sessions import Candidate
+from planner.schedule.week import Progress
 from planner.schedule.wishes import Wishes, sessions_of
 
 STARTS = 9  # places in the window at which a transmission of a given length is tried
@@ -57,17 +58,21 @@ class Affordability:
         return asdict(self) | {"give_way": list(self.give_way), "conflicts": list(self.conflicts)}
 
 
-def afford(mission: Mission, pass_id: str, mode: str, contacts=None) -> Affordability:
+def afford(
+    mission: Mission, pass_id: str, mode: str, contacts=None, *, progress: Progress | None = None
+) -> Affordability:
     """Is one session affordable on energy, beside the contacts given (without them, the planned week)?
 
     The session asked about is the longest that window and mode allow. A contact already planned on that pass in that
-    mode, or one that cannot share the pass, is replaced.
+    mode, or one that cannot share the pass, is replaced. `progress` hears the name of each stage.
 
     Raises
     ------
     InputError : unknown pass or mode, or contacts that cannot be read
     NoWeekError : without contacts given, and no week can be planned
     """
+    tell = progress or (lambda stage: None)
+    tell("passes, links and power")
     week = prepared(mission)
     if pass_id not in week.row_of:
         raise InputError(f"pass must be in the span, got {pass_id!r}{nearest(pass_id, week.row_of)}")
@@ -80,7 +85,8 @@ def afford(mission: Mission, pass_id: str, mode: str, contacts=None) -> Affordab
     if not found:
         reason = next(r.reason for r in refused)
         return Affordability(pass_id, satellite, station, mode, False, reason)
-    sessions = plan_week(mission).flown.sessions if contacts is None else sessions_of(contacts, mission)
+    sessions = plan_week(mission, progress=tell).flown.sessions if contacts is None else sessions_of(contacts, mission)
+    tell("the battery with this session")
     return _answer(Flown(week, tuple(filter(week.reaches, sessions))), max(found, key=lambda c: c.most_mbit))
 
 

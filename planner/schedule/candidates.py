@@ -1,5 +1,7 @@
 """From every pass and mode to candidates, or to the reason why there is none."""
 
+import logging
+from collections import Counter
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -13,8 +15,9 @@ from planner.schedule.states import SatelliteStates
 from planner.schedule.week import Week
 from planner.schedule.windows import usable_windows
 from planner.schedule.wishes import Wishes
+from planner.units import DAY_S
 
-DAY_S = 86_400.0
+_log = logging.getLogger(__name__)
 
 
 @dataclass(frozen=True)
@@ -52,6 +55,7 @@ def find_candidates(
 def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
     """The optimiser's problem, costs of sessions and states of satellites filled in."""
     found, refused = find_candidates(week, wishes)
+    _tell_choice(found, refused)
     found = [replace(c, stays=True) if (c.pass_id, c.mode) in wishes.previous else c for c in found]
     states, priced = [], []
     for satellite in week.mission.satellites:
@@ -83,6 +87,15 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
         ),
         refused,
     )
+
+
+def _tell_choice(found: list[Candidate], refused: list[Refusal]) -> None:
+    """What there is to choose from, mode by mode."""
+    usable = Counter(candidate.mode for candidate in found)
+    out = Counter((refusal.mode, refusal.verdict) for refusal in refused)
+    for mode in sorted({*usable, *(mode for mode, _ in out)}):
+        rest = "".join(f", {out[mode, verdict]} passes {verdict}" for verdict in ("unusable", "dropped"))
+        _log.info("%s: %d windows to choose from%s", mode, usable[mode], rest)
 
 
 def commands_until_s(week: Week, satellite: Satellite) -> float:

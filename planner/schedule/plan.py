@@ -1,5 +1,6 @@
 """The plan: solve, re-simulate with the full physics, tighten where a limit breaks, and again."""
 
+import logging
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -17,6 +18,7 @@ from planner.schedule.week import Progress, Week
 from planner.schedule.wishes import Wishes
 
 BOUND_GAP = 2e-3
+_log = logging.getLogger(__name__)
 
 
 @dataclass(frozen=True, eq=False)
@@ -72,6 +74,7 @@ def make_plan(
         stopwatch.lap("solving and checking")
         progress("schedule, upper bound")
         bound = bounding.solution(cancelled)
+        _log.info("no week brings more than %.1f Mbit", bound.bound)
         stopwatch.lap("waiting for the bound")
     bound_mbit = min(most_there_is_mbit(problem), bound.bound if np.isfinite(bound.bound) else np.inf)
     return Plan(flown, problem, search.problem, refusals, solution, bound_mbit, search.solutions, stopwatch.laps)

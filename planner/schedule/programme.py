@@ -39,6 +39,12 @@ class Solution:
         """How far the objective may be from the programme's optimum, in percent of the bound."""
         return max(0.0, 100 * (self.bound - self.objective) / max(abs(self.bound), 1e-9))
 
+    def __str__(self) -> str:
+        found = "nothing found"
+        if self.values is not None:
+            found = f"worth {self.objective:.1f}, at most {self.bound:.1f} (gap {self.gap_pct:.3f} %)"
+        return f"{found}, {self.status} in {self.seconds:.2f} s"
+
 
 @dataclass
 class Programme:

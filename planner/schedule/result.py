@@ -1,5 +1,6 @@
 """The planned week as the outside sees it: four tables and a summary."""
 
+import logging
 import platform
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass, replace
@@ -19,6 +20,8 @@ from planner.schedule.reasons import verdicts
 from planner.schedule.week import Progress, Week, prepare
 from planner.schedule.wishes import read_wishes
 from planner.units import DAY_S
+
+_log = logging.getLogger(__name__)
 
 PACKAGES = ("downlink-planner", "itur", "numpy", "pandas", "scipy", "sgp4", "skyfield", "skyfield-data")
 CAUTIONS = (
@@ -230,4 +233,5 @@ def plan_week(
     tell("passes, links and power")
     week = prepared(mission)
     wishes = read_wishes(week, keep, drop, previous, freeze_until)
+    _log.info("by hand: %s", wishes)
     return WeekPlan.of(make_plan(week, wishes, time_limit_s=time_limit_s, progress=tell, cancelled=cancelled))

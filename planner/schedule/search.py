@@ -1,5 +1,6 @@
 """Solve, re-simulate with the full physics, correct the problem by what that showed, and solve again."""
 
+import logging
 import time
 from collections.abc import Callable
 from dataclasses import dataclass, field, replace
@@ -26,6 +27,8 @@ APPROACHES = 1  # more hardly move the corrections
 MOST_FULL_SOLVES, MOST_MENDS = 4, 8
 SHORTEST_SOLVE_S = 3.0  # even when the limit is used up: a mending must come to an end
 MARGIN_WH = 0.004  # asked for beyond a floor that broke, so that rounding to whole seconds does not break it again
+
+_log = logging.getLogger(__name__)
 
 Chosen = list[tuple[int, float, float]]  # (candidate, tx_on_s, tx_off_s)
 
@@ -152,8 +155,11 @@ class Search:
             # frozen sessions stay as they are, whatever newer elements say of them
             faults = [fault for fault in find_faults(flown) if fault.session not in problem.frozen]
             if not faults:
+                _log.info("%d sessions keep every limit in the full physics", len(flown.sessions))
                 return flown, solution, {candidate_key(week.problem.candidates[i]): tuple(t) for i, *t in chosen}
             self.broke = faults[0].text
+            for fault in faults:
+                _log.info("the full physics breaks a limit: %s", fault.text)
             deep = [fault for fault in faults if fault.rule == "depth of discharge"]
             self.problem = self._tightened(self.problem, flown, deep)  # no row of the programme asks for depth
             small = week.problem.only({i for i, *_ in chosen})
@@ -170,6 +176,7 @@ class Search:
             if fault.session is None:
                 raise NoWeekError(f"no plan keeps this limit: {fault.text}")
             gone.add((fault.session.pass_id, fault.session.mode))
+            _log.info("given up: %s on %s", fault.session.mode, fault.session.pass_id)
         self.problem = self.problem.without(gone)
         return problem.without(gone)
 
@@ -179,6 +186,7 @@ class Search:
         week = plan_programme(problem)
         limit_s = self.stopwatch.left_s()
         solution = solve(week.programme, relative_gap=gap, time_limit_s=limit_s, cancelled=self.cancelled)
+        _log.info("%s: %s", f"solution {self.solutions}, {len(problem.candidates)} windows", solution)
         if must and solution.values is None:
             raise NoWeekError(no_solution(problem, solution))
         return week, solution
@@ -211,6 +219,8 @@ class Search:
         stored_wh = np.interp(states.events_s, series.time_s, series.stored_wh)
         modelled_wh = np.minimum(stored_wh[:-1] + states.likely.gain_wh - cost_wh, states.likely.full_wh)
         gain_wh = states.likely.gain_wh + stored_wh[1:] - modelled_wh
+        off_wh = np.abs(gain_wh - states.likely.gain_wh).max(initial=0.0)
+        _log.info("%s: the programme follows the simulated battery, by up to %.3f Wh", states.satellite, off_wh)
         floor_wh = states.likely.floor_wh + self._risk_wh(flown, states.satellite)
         return replace(states, likely=replace(states.likely, gain_wh=gain_wh, floor_wh=floor_wh))
 

@@ -30,6 +30,13 @@ class Wishes:
     frozen: tuple[Session, ...] = ()
     freeze_until_s: float = -np.inf
 
+    def __str__(self) -> str:
+        kept = ", ".join(f"{pass_id}:{mode}" for pass_id, mode in sorted(self.keep)) or "nothing"
+        return (
+            f"kept {kept}; dropped {', '.join(sorted(self.drop)) or 'nothing'}; {len(self.previous)} contacts of the"
+            f" previous plan, {len(self.frozen)} of them frozen"
+        )
+
 
 def read_wishes(
     week: Week, keep: Iterable[str], drop: Iterable[str], previous, freeze_until: datetime | None
