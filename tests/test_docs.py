@@ -271,6 +271,26 @@ def test_the_python_lines_of_the_readme_run(desk, two_day_plan, monkeypatch):
     assert all(len(getattr(names["week"], table.strip("."))) for table in named.split())
 
 
+# --- models and their sources ---
+
+
+def model_rows() -> list[list[str]]:
+    rows = table_rows(README)
+    start = [row[0].strip() for row in rows].index("what")
+    return rows[start + 2 :]
+
+
+@pytest.mark.parametrize("row", model_rows(), ids=lambda row: row[0].strip())
+def test_a_model_s_sources_stand_in_its_file_too(row):
+    """Numbers of standards, recommendations and papers, and the warning that a value was not read at its source."""
+    text = "".join((ROOT / name).read_text() for name in ticked(row[-1]))
+    cited = re.findall(
+        r"P\.\d+(?:-\d+)?|CCSDS [\d.]+-B|EN [\d ]+-\d|E1049-\d\d|AIAA [\d-]+|SSC[\w-]+|GMST|WGS \d+", row[1]
+    )
+    marked = [words for words in ("second-hand", "from memory") if words in row[1]]
+    assert [source for source in cited + marked if source not in text] == []
+
+
 # --- paths and options that the documents name ---
 
 
