@@ -14,7 +14,7 @@ from uuid import UUID, uuid5
 import pandas as pd
 
 from planner.errors import InputError
-from planner.export.contacts import file_name
+from planner.export.contacts import as_written, azimuth_text, file_name, plain_number
 from planner.mission.models import Mission
 
 PRODUCT = "-//downlink-planner//contacts//EN"
@@ -78,7 +78,8 @@ def contact_calendar(
     ------
     InputError : `previous` is not a calendar
     """
-    wanted = contacts if station is None else contacts[contacts["station"] == station]
+    shown = as_written(contacts)
+    wanted = shown if station is None else shown[shown["station"] == station]
     before = _issued(previous, station)
     entries: dict[str, Entry] = {}
     for row in wanted.itertuples():
@@ -88,7 +89,10 @@ def contact_calendar(
         if uid not in entries and entry.end > span[0]:
             stands = entry.start >= span[1] or entry.status == CANCELLED
             entries[uid] = entry if stands else _cancelled(entry, stamp)
-    return _calendar(entries.values() or [_nothing_planned(span, stamp, station)], station)
+    nothing = _nothing_planned(span, stamp, station)
+    if previous is not None and entries and not before:
+        entries[nothing.uid] = _cancelled(nothing, stamp)  # what the issue before said
+    return _calendar(entries.values() or [nothing], station)
 
 
 def _uid(row, taken) -> str:
@@ -118,12 +122,13 @@ def _entry(row, uid: str, stamp: datetime, alarm_before_aos_s: float) -> Entry:
 def _description(row) -> str:
     lines = [
         f"Contact {row.contact_id} (pass {row.pass_id})",
-        f"AOS {row.aos_utc}, azimuth {row.aos_azimuth_deg:.1f} deg",
+        f"AOS {row.aos_utc}, azimuth {azimuth_text(row.aos_azimuth_deg, 1)} deg",
         f"Transmitter on {row.tx_on_utc}, off {row.tx_off_utc}",
-        f"LOS {row.los_utc}, azimuth {row.los_azimuth_deg:.1f} deg",
+        f"LOS {row.los_utc}, azimuth {azimuth_text(row.los_azimuth_deg, 1)} deg",
         f"Highest elevation {row.max_elevation_deg:.1f} deg",
-        f"{row.mode}: {row.frequency_mhz:g} MHz, {row.symbol_rate_mbaud:g} Mbaud, {row.polarisation}",
-        f"Lowest margin {row.min_margin_db:.1f} dB, {row.volume_mbit:.0f} Mbit",
+        f"{row.mode}: {plain_number(row.frequency_mhz)} MHz, {plain_number(row.symbol_rate_mbaud)} Mbaud,"
+        f" {row.polarisation}",
+        f"Lowest margin {row.min_margin_db:.2f} dB, {row.volume_mbit:.0f} Mbit",
     ]
     cautions = "" if pd.isna(row.cautions) else str(row.cautions)
     return "\n".join([*lines, *([f"Cautions: {cautions}"] if cautions else [])])
@@ -155,12 +160,13 @@ def _nothing_planned(span, stamp: datetime, station: str | None) -> Entry:
 
 
 def _calendar(entries, station: str | None) -> bytes:
-    from icalendar import Calendar
+    from icalendar import Calendar, vText
 
     calendar = Calendar()
     calendar.add("PRODID", PRODUCT)
     calendar.add("VERSION", "2.0")
-    calendar.add("NAME", f"Downlink contacts, {station or 'all stations'}")  # RFC 7986
+    # RFC 7986; its text is escaped like any other, which the library does for names that it knows
+    calendar.add("NAME", vText(f"Downlink contacts, {station or 'all stations'}"))
     for entry in sorted(entries, key=lambda entry: (entry.start, entry.uid)):
         calendar.add_component(_component(entry))
     return calendar.to_ical()

@@ -65,7 +65,10 @@ class Comparison:
         rows = [(flight.tx_on, _row("gained", flight, f"{flight.volume_mbit:+.0f}")) for flight in self.gained]
         rows += [(flight.tx_on, _row("lost", flight, f"{-flight.volume_mbit:+.0f}")) for flight in self.lost]
         for before, after in self.moved:
-            on_air = f"{before.on_air} → {after.on_air} ({(after.tx_on - before.tx_on).total_seconds():+.0f} s)"
+            shifts = (after.tx_on - before.tx_on, after.tx_off - before.tx_off)
+            on_s, off_s = (f"{shift.total_seconds():+.0f} s" for shift in shifts)
+            by = f"both {on_s}" if on_s == off_s else f"on {on_s}, off {off_s}"
+            on_air = f"{before.on_air} → {after.on_air} ({by})"
             row = _row("moved", after, f"{after.volume_mbit - before.volume_mbit:+.0f}", on_air)
             rows.append((after.tx_on, row))
         return [row for _, row in sorted(rows)]

@@ -6,7 +6,10 @@ for a formula gets a leading apostrophe, which the reader of contacts takes off 
 """
 
 import csv
+import hashlib
 import io
+from collections import Counter
+from collections.abc import Iterable
 
 import numpy as np
 import pandas as pd
@@ -36,6 +39,9 @@ DECIMALS = {
     "v": 4, "a": 4, "w": 3, "c": 2, "fraction": 4,
     "km_s": 6,
 }  # fmt: skip
+
+LONGEST_NAME_BYTES = 90  # of one part of a file name; file systems hold 255 bytes
+DIGEST_LETTERS = 8
 
 
 def contacts_csv(contacts: pd.DataFrame) -> bytes:
@@ -86,9 +92,66 @@ def utc_text(moments) -> np.ndarray:
     return np.where(np.isnat(milliseconds), "", np.char.add(np.datetime_as_string(milliseconds), "Z"))
 
 
+def as_written(contacts: pd.DataFrame) -> pd.DataFrame:
+    """The table with its numbers as contacts.csv holds them, so that what is shown of it agrees to the last digit."""
+    numeric = {
+        str(name): np.array([float(text or "nan") for text in _cells(str(name), column)])
+        for name, column in contacts.items()
+        if pd.api.types.is_numeric_dtype(column) and not pd.api.types.is_bool_dtype(column)
+    }
+    return contacts.assign(**numeric)
+
+
+def schedule_issue(contacts: pd.DataFrame) -> str:
+    """Which schedule this is: the first digits of the SHA-256 of its contacts.csv, as summary.json holds it."""
+    return file_issue(contacts_csv(contacts))
+
+
+def file_issue(contacts_file: bytes) -> str:
+    """The same from the bytes of a contacts.csv."""
+    return hashlib.sha256(contacts_file).hexdigest()[:DIGEST_LETTERS]
+
+
+def plain_number(value: float) -> str:
+    """A carrier or rate with all its digits, to the millionth, and no trailing zeros: 2245.0125, 26250, 0.25."""
+    return f"{value:.6f}".rstrip("0").rstrip(".")
+
+
+def azimuth_text(azimuth_deg: float, decimals: int) -> str:
+    """Rounded on the circle: 359.97 with one decimal is 0.0."""
+    return f"{round(azimuth_deg, decimals) % 360:.{decimals}f}"
+
+
+def clock_text(moment) -> str:
+    """HH:MM:SS of UTC for a datetime or an ISO text, to the nearest second."""
+    stamp = pd.Timestamp(moment).tz_convert("UTC").round("s")
+    return f"{stamp:%H:%M:%S}"
+
+
 def file_name(*names: str) -> str:
-    """A harmless file name, without its ending, for names out of a mission; as they stand in ids."""
-    return "_".join(slug(name)[:60] for name in names)
+    """A harmless file name, without its ending, for names out of a mission; as they stand in ids.
+
+    A name too long for a file system is cut and told apart by a few digits of its SHA-256.
+    """
+    return "_".join(_brief(slug(name)) for name in names)
+
+
+def distinct(names: Iterable[str]) -> list[str]:
+    """The names, `_2`, `_3` … behind those that came before: two sessions of one mode on one pass."""
+    seen: Counter[str] = Counter()
+    told = []
+    for name in names:
+        seen[name] += 1
+        told.append(name if seen[name] == 1 else f"{name}_{seen[name]}")
+    return told
+
+
+def _brief(name: str) -> str:
+    octets = name.encode()
+    if len(octets) <= LONGEST_NAME_BYTES:
+        return name
+    digest = hashlib.sha256(octets).hexdigest()[:DIGEST_LETTERS]
+    return f"{octets[: LONGEST_NAME_BYTES - DIGEST_LETTERS - 1].decode(errors='ignore')}-{digest}"
 
 
 def _cells(name: str, column: pd.Series) -> list[str]:
@@ -97,7 +160,8 @@ def _cells(name: str, column: pd.Series) -> list[str]:
     if pd.api.types.is_bool_dtype(column):
         return np.where(column, "yes", "no").tolist()
     if pd.api.types.is_numeric_dtype(column):
-        return _numbers(column.to_numpy(dtype=float), _decimals(name, column))
+        values = column.to_numpy(dtype=float)
+        return _numbers(values, _decimals(name, column), full_circle=name.endswith("azimuth_deg"))
     return ["" if pd.isna(value) else neutral(" ".join(str(value).splitlines())) for value in column]
 
 
@@ -108,9 +172,10 @@ def _decimals(name: str, column: pd.Series) -> int:
     return DECIMALS.get("_".join(parts[-2:]), DECIMALS.get(parts[-1], unknown))
 
 
-def _numbers(values: np.ndarray, decimals: int) -> list[str]:
-    """Fixed decimals, no negative zero, '' for NaN."""
+def _numbers(values: np.ndarray, decimals: int, full_circle: bool = False) -> list[str]:
+    """Fixed decimals, no negative zero, '' for NaN; on a full circle 360 is 0."""
     rounded = np.round(values, decimals) + 0.0
+    rounded = rounded % 360.0 if full_circle else rounded
     return ["" if value != value else f"{value:.{decimals}f}" for value in rounded.tolist()]
 
 

@@ -63,7 +63,7 @@ def oem_keywords(satellite: Satellite, sky: Sky, step_s: float = STATE_STEP_S) -
     dates = [text.removesuffix("Z") for text in sky.clock.iso(time_s)]
     metadata = {
         "OBJECT_NAME": satellite.name,
-        "OBJECT_ID": satellite.elements.international_designator or "UNKNOWN",
+        "OBJECT_ID": _object_id(satellite.elements.international_designator),
         "CENTER_NAME": "EARTH",
         "REF_FRAME": "ITRF2000",
         "TIME_SYSTEM": "UTC",

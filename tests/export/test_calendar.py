@@ -117,6 +117,31 @@ def test_names_cannot_break_out_of_their_line():
     assert str(event["LOCATION"]) == "A;B,C:\\D 🛰"
 
 
+# RFC 5545, 3.3.11: commas, semicolons and backslashes in text are escaped; RFC 7986, 5.1: NAME is text (from memory).
+def test_the_calendars_name_is_escaped_text():
+    nasty = contact(1, station="Dry, Pan; \\ 🛰")
+    data = contact_calendar(pd.DataFrame([nasty]), station=nasty["station"], **OPTIONS)
+    assert "NAME:Downlink contacts\\, Dry\\, Pan\\; \\\\ 🛰\r\n" in data.decode()
+
+
+def test_figures_are_those_of_the_contacts_file():
+    """3.1504 dB stands there as 3.15, 31.8496 deg as 31.850: who rounds those must see no other figure here."""
+    row = contact(1, min_margin_db=3.1504, max_elevation_deg=31.8496, los_azimuth_deg=359.97, frequency_mhz=2245.0125)
+    text = str(only_event(contact_calendar(pd.DataFrame([row]), **OPTIONS))["DESCRIPTION"])
+    assert "Lowest margin 3.15 dB" in text
+    assert f"Highest elevation {31.850:.1f} deg" in text
+    assert "azimuth 0.0 deg" in text
+    assert "2245.0125 MHz" in text
+
+
+def test_news_of_an_empty_week_is_taken_back_once_there_are_contacts():
+    empty = contact_calendar(contacts()[:0], **OPTIONS)
+    filled = events(contact_calendar(contacts(1), previous=empty, **OPTIONS))
+    stati = {str(event["UID"]): str(event["STATUS"]) for event in filled.values()}
+    assert stati.pop(str(only_event(empty)["UID"])) == "CANCELLED"
+    assert list(stati.values()) == ["CONFIRMED"]
+
+
 @pytest.mark.parametrize(
     "broken", [b"", b"not a calendar", b"BEGIN:VCALENDAR\r\nBEGIN:VEVENT\r\nEND:VCALENDAR\r\n", b"\xff\xfe"]
 )

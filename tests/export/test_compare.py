@@ -31,7 +31,7 @@ def test_contacts_gained_lost_and_moved_are_told_with_their_figures(changed):
     rows = difference.rows()
     assert all(len(row) == len(HEADINGS) for row in rows)
     assert [(row[0], row[5]) for row in rows] == [("lost", "-14000"), ("moved", "-1000"), ("gained", "+14000")]
-    assert rows[1][4] == "07 Dec 03:00:00–03:05:00Z → 07 Dec 03:00:30–03:05:00Z (+30 s)"
+    assert rows[1][4] == "07 Dec 03:00:00–03:05:00Z → 07 Dec 03:00:30–03:05:00Z (on +30 s, off +0 s)"
 
 
 def test_folders_give_what_memory_gives(changed, tmp_path):

@@ -1,6 +1,7 @@
 """CSV that opens in a spreadsheet, reads back as it was, and gives the same bytes each time."""
 
 import csv
+import hashlib
 import io
 from datetime import UTC, datetime, timedelta
 
@@ -15,12 +16,19 @@ from planner.export.contacts import (
     CONTACTS,
     PASSES,
     RECORDER,
+    as_written,
+    azimuth_text,
     battery_csv,
+    clock_text,
     contacts_csv,
+    distinct,
+    file_issue,
     file_name,
     neutral,
     passes_csv,
+    plain_number,
     recorder_csv,
+    schedule_issue,
     table_csv,
     utc_text,
 )
@@ -115,3 +123,47 @@ def test_file_names_out_of_any_text():
     assert file_name("Corrie Head", "K high rate") == "corrie-head_k-high-rate"
     assert file_name("../../etc/passwd\n") == "etc-passwd"
     assert file_name("🛰") == "x"
+
+
+# ext4 and APFS (255 bytes, 255 UTF-8 code units a name, from memory).
+LONGEST_FILE_NAME_BYTES = 255
+
+
+@given(st.text(st.characters(categories=("L", "N")), min_size=1, max_size=160), st.integers(0, 99))
+def test_long_names_give_names_that_a_file_system_holds_and_that_differ(name, number):
+    first, second = (file_name("pointing", f"{name}.20261207-{k:02d}", name) for k in (number, number + 1))
+    assert len(f"{first}.csv".encode()) <= LONGEST_FILE_NAME_BYTES
+    assert first != second
+
+
+def test_a_second_session_of_one_mode_on_one_pass_gets_its_own_file():
+    assert distinct(["a", "b", "a", "a"]) == ["a", "b", "a_2", "a_3"]
+
+
+def test_an_azimuth_that_rounds_to_the_full_circle_is_north():
+    made = pd.DataFrame({"aos_azimuth_deg": [359.9996, 359.9994, 0.0]})
+    assert [row for [row] in rows(table_csv(made))[1:]] == ["0.000", "359.999", "0.000"]
+    assert [azimuth_text(359.96, 1), azimuth_text(359.94, 1), azimuth_text(359.6, 0)] == ["0.0", "359.9", "0"]
+
+
+@given(st.floats(0, 100), st.floats(0, 360))
+def test_what_is_shown_of_a_number_is_what_a_reader_of_the_file_would_show(margin_db, azimuth_deg):
+    made = pd.DataFrame({"min_margin_db": [margin_db], "aos_azimuth_deg": [azimuth_deg], "station": ["A"]})
+    read = pd.read_csv(io.BytesIO(table_csv(made)))
+    assert as_written(made).equals(read)
+
+
+def test_a_schedules_issue_is_what_sha256sum_prints_first():
+    made = frame(CONTACTS)
+    assert schedule_issue(made) == file_issue(contacts_csv(made)) == hashlib.sha256(contacts_csv(made)).hexdigest()[:8]
+
+
+def test_carriers_keep_all_their_digits():
+    assert [plain_number(value) for value in (26250.0, 2245.0125, 0.25, 100.0, 8212.345678)] == [
+        "26250", "2245.0125", "0.25", "100", "8212.345678",
+    ]  # fmt: skip
+
+
+def test_clocks_go_to_the_nearest_second_of_utc():
+    assert clock_text("2026-12-07T12:00:00.500+02:00") == "10:00:00"  # half to even
+    assert clock_text("2026-12-07T23:59:59.501Z") == "00:00:00"

@@ -52,6 +52,7 @@ def test_obligatory_keywords_are_there(mission, sky):
         "TIME_SYSTEM", "MEAN_ELEMENT_THEORY", "EPOCH", "MEAN_MOTION", "ECCENTRICITY", "INCLINATION", "RA_OF_ASC_NODE",
         "ARG_OF_PERICENTER", "MEAN_ANOMALY",
     ]  # fmt: skip
+    assert "OBJECT_ID = 2026-901A" in oem_keywords(satellite, sky, 600.0).decode().splitlines()
     oem = [line.partition(" = ")[0] for line in oem_keywords(satellite, sky, 600.0).decode().splitlines()[:14]]
     assert oem == [
         "CCSDS_OEM_VERS", "CREATION_DATE", "ORIGINATOR", "META_START", "OBJECT_NAME", "OBJECT_ID", "CENTER_NAME",
