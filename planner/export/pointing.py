@@ -1,5 +1,6 @@
 """Pointing tables: where the dish looks and what frequency arrives, moment by moment, for one contact each."""
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 
@@ -7,7 +8,7 @@ import numpy as np
 import pandas as pd
 
 from planner.errors import InputError
-from planner.export.contacts import file_name, neutral, table_csv, utc_text
+from planner.export.contacts import distinct, file_name, neutral, plain_number, table_csv, utc_text
 from planner.export.refraction import refraction_deg
 from planner.link.antenna import ground_dish, half_power_beam_deg
 from planner.mission.contacts import Session
@@ -18,6 +19,7 @@ from planner.sky.sites import look, station_position_km
 
 NARROW_BEAM_MHZ = 18_000.0  # from K band up (IEEE Std 521, from memory) old elements put the satellite outside the beam
 MOST_TOLD = 20
+MOST_LOOKS = 20_000  # in search of north, about one a second
 FARTHEST = datetime(2100, 1, 1, tzinfo=UTC)
 CAUTIONS = (
     "planning aid: the station's safety rules and licensed practice come first",
@@ -37,10 +39,24 @@ class Aim:
         return self.useful_until is not None and sky.clock.datetime(self.session.tx_off_s) > self.useful_until
 
 
-def pointing_files(
-    mission: Mission, sky: Sky, sessions, *, step_s: float = 1.0, refracted: bool = True, force: bool = False
-) -> dict[str, bytes]:
-    """A pointing table (CSV under a header of `#` lines) for every session, by file name.
+def pointing_files(mission: Mission, sky: Sky, sessions, **options) -> dict[str, bytes]:
+    """All of `pointing_tables`, by file name; its options."""
+    return dict(pointing_tables(mission, sky, sessions, **options))
+
+
+def pointing_tables(
+    mission: Mission,
+    sky: Sky,
+    sessions,
+    *,
+    step_s: float = 1.0,
+    refracted: bool = True,
+    force: bool = False,
+    issue: str = "",
+) -> Iterator[tuple[str, bytes]]:
+    """(file name, content) of a pointing table (CSV under a header of `#` lines) for every session.
+
+    Faults are told at the call; the tables are made as they are asked for.
 
     Parameters
     ----------
@@ -48,6 +64,7 @@ def pointing_files(
     step_s : [s] between rows; rows stand on whole steps of UTC, and at AOS and LOS
     refracted : elevations lifted by the troposphere (ITU-R P.834), else geometric
     force : write tables although the elements are too old for the beam
+    issue : of the schedule that the sessions are from, for the header; see `schedule_issue`
 
     Raises
     ------
@@ -61,12 +78,12 @@ def pointing_files(
     if stale and not force:
         more = [f"and {len(stale) - MOST_TOLD} more contacts"] if len(stale) > MOST_TOLD else []
         raise InputError(*stale[:MOST_TOLD], *more)
-    return {
-        f"{file_name('pointing', aim.session.pass_id, aim.session.mode)}.csv": _table(
-            mission, sky, aim, step_s=step_s, refracted=refracted
-        )
-        for aim in aims
-    }
+    names = distinct(file_name("pointing", aim.session.pass_id, aim.session.mode) for aim in aims)
+    header = [f"schedule issue: {issue}"] if issue else []
+    return (
+        (f"{name}.csv", _table(mission, sky, aim, header, step_s=step_s, refracted=refracted))
+        for name, aim in zip(names, aims, strict=True)
+    )
 
 
 def useful_until(mission: Mission, sky: Sky, session: Session) -> datetime | None:
@@ -109,7 +126,7 @@ def _staleness(mission: Mission, sky: Sky, aim: Aim) -> str | None:
     )
 
 
-def _table(mission: Mission, sky: Sky, aim: Aim, *, step_s: float, refracted: bool) -> bytes:
+def _table(mission: Mission, sky: Sky, aim: Aim, header: list[str], *, step_s: float, refracted: bool) -> bytes:
     session = aim.session
     station, satellite = mission.station(session.station), mission.satellite(session.satellite)
     time_s = _moments(sky, aim.row, step_s)
@@ -125,10 +142,14 @@ def _table(mission: Mission, sky: Sky, aim: Aim, *, step_s: float, refracted: bo
         "range_km": view.range_km,
         "range_rate_km_s": view.range_rate_km_s,
         **{
-            f"doppler_at_{mhz:g}_mhz_hz": doppler_hz(view.range_rate_km_s, mhz) for mhz in frequencies_mhz
+            f"doppler_at_{plain_number(mhz)}_mhz_hz": doppler_hz(view.range_rate_km_s, mhz) for mhz in frequencies_mhz
         },
     }  # fmt: skip
-    header = _header(mission, sky, aim, step_s=step_s, refracted=refracted)
+    header = [
+        *_header(mission, sky, aim, step_s=step_s, refracted=refracted),
+        *_north(mission, sky, aim),
+        *header,
+    ]
     return "".join(f"# {line}\n" for line in header).encode() + table_csv(pd.DataFrame(columns))
 
 
@@ -137,6 +158,19 @@ def _moments(sky: Sky, row: int, step_s: float) -> np.ndarray:
     aos_s, los_s, offset_s = sky.passes.aos_s[row], sky.passes.los_s[row], sky.clock.seconds_of_first_day
     first, last = np.ceil((aos_s + offset_s) / step_s), np.floor((los_s + offset_s) / step_s)
     return np.unique(np.concatenate([[aos_s], np.arange(first, last + 1) * step_s - offset_s, [los_s]]))
+
+
+def _north(mission: Mission, sky: Sky, aim: Aim) -> list[str]:
+    """When the azimuth passes from 360 to 0 or back, for mounts whose cables do not turn without end."""
+    aos_s, los_s = sky.passes.aos_s[aim.row], sky.passes.los_s[aim.row]
+    time_s = np.linspace(aos_s, los_s, int(np.clip(los_s - aos_s, 2, MOST_LOOKS)))
+    state = sky.track(aim.session.satellite).at(time_s)
+    azimuth_deg = look(*state, mission.station(aim.session.station)).azimuth_deg
+    return [
+        f"azimuth crosses north {'over east, 360 to 0' if azimuth_deg[k] > 180.0 else 'over west, 0 to 360'}, at"
+        f" {sky.clock.iso(time_s[k])[:19]}Z"
+        for k in np.flatnonzero(np.abs(np.diff(azimuth_deg)) > 180.0)
+    ]
 
 
 def _header(mission: Mission, sky: Sky, aim: Aim, *, step_s: float, refracted: bool) -> list[str]:
@@ -151,7 +185,7 @@ def _header(mission: Mission, sky: Sky, aim: Aim, *, step_s: float, refracted: b
     stale = ["ELEMENTS TOO OLD for this beam, written all the same since it was asked for"] if aim.is_stale(sky) else []
     lines = [
         f"pointing of {neutral(session.station)} at {neutral(session.satellite)}, pass {session.pass_id}",
-        f"mode: {session.mode}, {mode.frequency_mhz:g} MHz, {mode.polarisation}",
+        f"mode: {session.mode}, {plain_number(mode.frequency_mhz)} MHz, {mode.polarisation}",
         f"transmitter on: {sky.clock.iso(session.tx_on_s)}, off: {sky.clock.iso(session.tx_off_s)}",
         f"element epoch: {_iso(satellite.elements.epoch)}, useful until: {until}",
         *stale,

@@ -13,7 +13,7 @@ from astropy.time import Time
 from astropy.utils import iers
 
 from planner.errors import InputError
-from planner.export.pointing import pointing_files, useful_until
+from planner.export.pointing import pointing_files, pointing_tables, useful_until
 
 # Azimuth, elevation and range come from the same Earth-fixed position, so only the printed digits may differ.
 PRINTED_DEG, PRINTED_KM = 0.0006, 0.0006
@@ -145,3 +145,48 @@ def test_unknown_pass_and_silly_step_are_told(mission, sky, session):
         pointing_files(mission, sky, [replace(session, pass_id="nowhere")])
     with pytest.raises(InputError, match=r"step_s must be from 0\.01 s to 600 s, got 0"):
         pointing_files(mission, sky, [session], step_s=0.0)
+
+
+def test_tables_are_made_as_they_are_asked_for_and_faults_told_before(mission, sky, session):
+    asked = pointing_tables(mission, sky, [session, session], step_s=60.0, force=True, issue="0a1b2c3d")
+    (first, data), (second, again) = asked
+    assert second == f"{first.removesuffix('.csv')}_2.csv"
+    assert data == again
+    assert b"# schedule issue: 0a1b2c3d\n" in data
+    with pytest.raises(InputError, match="step_s"):
+        pointing_tables(mission, sky, [session], step_s=0.0)
+
+
+def test_a_carriers_digits_all_stand_in_the_columns_name(mission, sky, session):
+    satellite = mission.satellites[0]
+    craft = satellite.spacecraft
+    near = tuple(
+        mode.model_copy(update={"frequency_mhz": mhz})
+        for mode, mhz in zip(craft.transmitter, (26250.0125, 26250.0), strict=True)
+    )
+    satellite = satellite.model_copy(update={"spacecraft": craft.model_copy(update={"transmitter": near})})
+    [data] = pointing_files(
+        mission.model_copy(update={"satellites": (satellite,)}), sky, [session], step_s=60.0, force=True
+    ).values()
+    header, columns = table(data)
+    assert {"doppler_at_26250_mhz_hz", "doppler_at_26250.0125_mhz_hz"} <= set(columns)
+    assert any("26250.0125 MHz" in line for line in header)
+
+
+def test_the_header_tells_when_the_azimuth_crosses_north(mission, sky, session):
+    told = {}
+    for pass_id, station in zip(sky.passes.pass_id[:40], sky.passes.station[:40], strict=True):
+        here = replace(session, pass_id=str(pass_id), station=str(station))
+        [data] = pointing_files(mission, sky, [here], step_s=1.0, force=True).values()
+        header, columns = table(data)
+        azimuth_deg = numbers(columns, "azimuth_deg")
+        [*jumps] = np.flatnonzero(np.abs(np.diff(azimuth_deg)) > 180)
+        lines = [line for line in header if "crosses north" in line]
+        assert len(lines) == len(jumps)
+        for k, line in zip(jumps, lines, strict=True):
+            over = "east, 360 to 0" if azimuth_deg[k] > 180 else "west, 0 to 360"
+            assert line.startswith(f"azimuth crosses north over {over}, at ")
+            crossed = datetime.fromisoformat(line.rpartition(" at ")[2])
+            assert abs(crossed - datetime.fromisoformat(columns["time_utc"][k])) <= timedelta(seconds=2)
+        told[str(pass_id)] = len(lines)
+    assert set(told.values()) == {0, 1}
