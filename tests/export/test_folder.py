@@ -177,10 +177,13 @@ for round in range(1_000_000):
 """
 
 
-def test_kill_9_at_fifty_random_moments_never_leaves_a_mixture(tmp_path):
+def test_kill_9_at_random_moments_never_leaves_a_mixture(tmp_path):
+    """On a busy machine many writers die before their first set is in place: as many are killed as it takes."""
     rng = random.Random(2026)
-    rounds = []
-    for _ in range(50):
+    rounds, kills = [], 0
+    while len(rounds) < 26:
+        kills += 1
+        assert kills < 500
         writer = subprocess.Popen([sys.executable, "-c", WRITER, str(tmp_path)], stdout=subprocess.PIPE)
         assert writer.stdout.readline() == b"ready\n"
         time.sleep(rng.uniform(0.0, 0.03))
@@ -194,7 +197,6 @@ def test_kill_9_at_fifty_random_moments_never_leaves_a_mixture(tmp_path):
         round_now = json.loads((tmp_path / "summary.json").read_bytes())["round"]
         assert {(tmp_path / f"{name}.csv").read_bytes() for name in "abcd"} == {b"%d" % round_now * 2000}
         rounds.append(round_now)
-    assert len(rounds) > 25
 
 
 # --- what the machine refuses ---------------------------------------------------------------------------------------
