@@ -18,7 +18,13 @@ SQUARE_IN = (6.4, 6.9)
 
 
 def skytrack_figure(
-    mission: Mission, sky: Sky, pass_id: str, *, session: Session | None = None, time_zone: tzinfo = UTC
+    mission: Mission,
+    sky: Sky,
+    pass_id: str,
+    *,
+    session: Session | None = None,
+    time_zone: tzinfo = UTC,
+    size_in=SQUARE_IN,
 ) -> Figure:
     """Azimuth and elevation of a pass on the sky dome, north up and east to the right as on a map.
 
@@ -33,8 +39,8 @@ def skytrack_figure(
     KeyError : no such pass in the span
     """
     with style.on_paper():
-        figure = style.new_figure(SQUARE_IN, title=finding(mission, sky, pass_id))
-        figure.set_layout_engine("none")
+        figure = style.new_figure(size_in, title=finding(mission, sky, pass_id))
+        figure.set_layout_engine(None)
         axes = figure.add_axes((0.09, 0.12, 0.82, 0.76), projection="polar")
         draw_skytrack(axes, mission, sky, pass_id, session, time_zone)
         figure.legend(loc="lower center", ncols=3)
@@ -122,7 +128,11 @@ def _write_times(axes, sky: Sky, row: int, time_zone: tzinfo) -> None:
         )
         zone = "Z" if time_zone is UTC else ""
         when = sky.clock.datetime(moment_s + 0.5).astimezone(time_zone)  # to the nearest second
+        # inward, where no direction of the dome is written
+        across = -np.sign(np.sin(azimuth)) or 1.0
+        up = -13.0 * np.cos(azimuth) if zenith > 45 else 0.0
         axes.annotate(
-            f"{name} {when:%H:%M:%S}{zone}", (azimuth, zenith), xytext=(7, 7), textcoords="offset points", zorder=7,
-            bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none", "alpha": 0.55},
+            f"{name} {when:%H:%M:%S}{zone}", (azimuth, zenith), xytext=(8 * across, up), textcoords="offset points",
+            ha="left" if across > 0 else "right", va="center", zorder=7,
+            bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none", "alpha": 0.75},
         )  # fmt: skip

@@ -10,7 +10,8 @@ from matplotlib.layout_engine import ConstrainedLayoutEngine
 # Okabe and Ito, "Color Universal Design", 2008 (values from memory)
 BLACK, ORANGE, SKY_BLUE, GREEN = "#000000", "#E69F00", "#56B4E9", "#009E73"
 YELLOW, BLUE, VERMILLION, PURPLE = "#F0E442", "#0072B2", "#D55E00", "#CC79A7"
-INK, FAINT, PALE = "#333333", "#8C8C8C", "#D9D9D9"  # text, secondary lines, areas
+INK, FAINT, PALE = "#222222", "#8C8C8C", "#D9D9D9"  # text, secondary lines, areas
+LABEL = "#555555"  # lesser text, still 7 to 1 against white (WCAG 2.2, 1.4.6 asks for that, from memory)
 
 # A mode is told by colour and by marker, in the order in which the mission names its modes.
 MODE_MARKS = ((BLUE, "^"), (ORANGE, "o"), (GREEN, "s"), (PURPLE, "D"), (BLACK, "v"))

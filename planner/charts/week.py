@@ -9,6 +9,7 @@ from matplotlib.artist import Artist
 from matplotlib.collections import PolyCollection
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
+from matplotlib.markers import CARETRIGHT
 from matplotlib.patches import Patch, Rectangle
 
 from planner.charts import style
@@ -77,7 +78,7 @@ def week_page(
     begin, end = window or (mission.start, mission.end)
     with style.on_paper():
         figure = style.new_figure(size_in, title=" ", onto=onto)
-        figure.set_layout_engine("none")  # a layout that measures every label costs a third of a redraw
+        figure.set_layout_engine(None)  # a layout that measures every label costs a third of a redraw
         stations = lanes_of(mission, plan)
         heights = [min(0.5 * len(stations) + 0.4, 6.0), 2.2, 1.5]
         width_in, height_in = size_in
@@ -269,7 +270,7 @@ def _draw_charge(axes, mission: Mission, plan, satellite: str) -> list[Artist]:
             floor, color=style.VERMILLION, linestyle="--", linewidth=1.2, label=f"floor {floor:g} %", zorder=3
         ),
         *axes.plot(
-            [mdates.date2num(mission.end)], [end], marker="<", ms=8, color=style.VERMILLION, linestyle="",
+            [mdates.date2num(mission.end)], [end], marker=CARETRIGHT, ms=8, color=style.VERMILLION, linestyle="",
             label=f"at least {end:g} % at the end", zorder=5,
         ),
     ]  # fmt: skip

@@ -12,7 +12,16 @@ import pandas as pd
 from planner.charts.skytrack import skytrack_figure
 from planner.errors import InputError
 from planner.export.card_page import card_figure
-from planner.export.contacts import file_name, utc_text
+from planner.export.contacts import (
+    as_written,
+    azimuth_text,
+    clock_text,
+    distinct,
+    file_name,
+    plain_number,
+    schedule_issue,
+    utc_text,
+)
 from planner.export.html import card_html
 from planner.export.pointing import useful_until
 from planner.export.render import pdf_bytes, png_bytes
@@ -28,16 +37,23 @@ CAUTIONS = (
     "The antenna moves by remote control: nobody at or in front of it; keep to the station's exposure limits.",
 )
 NO_BREAK = "\u00a0"
+PICTURE_IN, PICTURE_DPI = (4.3, 5.0), 150  # of the sky on the page for a browser
 Rows = tuple[tuple[str, str], ...]
+Moments = tuple[tuple[str, str, str, str], ...]
 
 
 @dataclass(frozen=True)
 class Card:
-    """What a card says, in words; `times` and `radio` are (label, text) rows, `steps` and `cautions` lines."""
+    """What a card says, in words.
+
+    `times` are (moment, time, azimuth, elevation), `radio` (label, text) rows, `steps` and `cautions` lines;
+    `reference` says which pass it is and in which issue of the schedule.
+    """
 
     title: str
     subtitle: str
-    times: Rows
+    reference: str
+    times: Moments
     radio: Rows
     search_after: str
     steps: tuple[str, ...]
@@ -47,7 +63,7 @@ class Card:
 
 
 def card_files(mission: Mission, sky: Sky, contacts: pd.DataFrame) -> Iterator[tuple[str, bytes]]:
-    """(file name, content) of a PDF and an HTML card for every contact, one by one.
+    """(file name, content) of a PDF and an HTML card for every contact, made as they are asked for.
 
     Parameters
     ----------
@@ -57,32 +73,36 @@ def card_files(mission: Mission, sky: Sky, contacts: pd.DataFrame) -> Iterator[t
     ------
     InputError : a contact on no pass of `sky`
     """
+    issue, shown = schedule_issue(contacts), as_written(contacts)
+    names = distinct(file_name("card", *key) for key in zip(shown["pass_id"], shown["mode"], strict=True))
     row: Any  # its columns are attributes
-    for row in contacts.itertuples():
-        card = make_card(mission, sky, row)
-        name = file_name("card", row.pass_id, row.mode)
+    for name, row in zip(names, shown.itertuples(), strict=True):
+        card = make_card(mission, sky, row, issue)
         yield f"{name}.pdf", pdf_bytes([card_figure(card, mission, sky)], f"{card.title}, {card.subtitle}")
-        picture = png_bytes(skytrack_figure(mission, sky, row.pass_id, session=card.session), dpi=90)
-        yield f"{name}.html", card_html(card, base64.b64encode(picture).decode()).encode()
+        sky_dome = skytrack_figure(mission, sky, row.pass_id, session=card.session, size_in=PICTURE_IN)
+        picture = base64.b64encode(png_bytes(sky_dome, dpi=PICTURE_DPI)).decode()
+        yield f"{name}.html", card_html(card, picture).encode()
 
 
-def make_card(mission: Mission, sky: Sky, row) -> Card:
-    """The words of one card; `row` is a row of the contacts' table as a named tuple."""
+def make_card(mission: Mission, sky: Sky, row, issue: str = "") -> Card:
+    """The words of one card; `row` is a row of the contacts' table as a named tuple, `issue` names the schedule."""
     session = _session(mission, sky, row)
     on = mission.start + timedelta(seconds=session.tx_on_s)
     epoch = mission.satellite(session.satellite).elements.epoch
     until = useful_until(mission, sky, session)
-    serve = "the dish follows the signal" if until is None else f"these point this dish until {_iso(until)}"
     wait_s, late_s = _patience_s(mission, sky, session)
+    search = clock_text(on + timedelta(seconds=wait_s))
     return Card(
         title=f"{session.satellite} over {session.station}",
-        subtitle=f"{on:%A %d %B %Y}, {session.mode}, pass {session.pass_id}",
+        subtitle=f"{on:%A %d %B %Y}, {session.mode}",
+        reference=f"Pass {session.pass_id}" + (f", schedule issue {issue}" if issue else ""),
         times=_times(sky, row, session),
-        radio=_radio(mission, sky, row, session),
-        search_after=f"No lock {wait_s:.0f} s after the transmitter comes on, at {_clock(on, wait_s)}?",
+        radio=(*_radio(mission, sky, row, session), *_preparation(row, epoch, until)),
+        search_after=f"No lock {wait_s:.0f} s after the transmitter comes on, at {search}?",
         steps=_steps(mission, sky, session, wait_s, late_s),
         cautions=(*_own_cautions(sky, row, session, until), *CAUTIONS),
-        footer=f"Made from elements of epoch {_iso(epoch)}; {serve}. Elevations are geometric. All times UTC.",
+        footer="All times UTC, to the nearest second. Azimuths from true north over east; elevations geometric, without"
+        " refraction. Margin, data and battery as planned.",
         session=session,
     )
 
@@ -105,7 +125,7 @@ def _session(mission: Mission, sky: Sky, row) -> Session:
     return Session(on_s, off_s, row.satellite, row.station, row.mode, row.pass_id)
 
 
-def _times(sky: Sky, row, session: Session) -> Rows:
+def _times(sky: Sky, row, session: Session) -> Moments:
     """What happens when, with the direction the dish looks in."""
     passes = sky.passes
     k = int(np.flatnonzero(passes.pass_id == row.pass_id)[0])
@@ -114,44 +134,59 @@ def _times(sky: Sky, row, session: Session) -> Rows:
         ("Transmitter warms up", sky.clock.seconds(warm)),
         ("AOS, rises", passes.aos_s[k]),
         ("Transmitter on", session.tx_on_s),
-        ("Highest", passes.tca_s[k]),
+        ("TCA, highest", passes.tca_s[k]),
         ("Transmitter off", session.tx_off_s),
         ("LOS, sets", passes.los_s[k]),
     ]
     return tuple(
-        (label, f"{_clock(sky.clock.datetime(time_s))}   {_direction(sky, k, time_s)}".rstrip())
+        (label, clock_text(sky.clock.datetime(time_s)), *_direction(sky, k, time_s))
         for label, time_s in sorted(moments, key=lambda moment: moment[1])
     )
 
 
-def _direction(sky: Sky, row: int, time_s: float) -> str:
+def _direction(sky: Sky, row: int, time_s: float) -> tuple[str, str]:
     """Azimuth and elevation; nothing while the satellite is down."""
     own = sky.samples.of(row)
     if not sky.passes.aos_s[row] <= time_s <= sky.passes.los_s[row]:
-        return ""
+        return "", ""
     azimuth = np.interp(time_s, sky.samples.time_s[own], np.unwrap(sky.samples.azimuth_deg[own], period=360.0)) % 360
-    return f"az {azimuth:5.1f}°  el {np.interp(time_s, sky.samples.time_s[own], sky.samples.elevation_deg[own]):4.1f}°"
+    elevation = np.interp(time_s, sky.samples.time_s[own], sky.samples.elevation_deg[own])
+    return f"{azimuth_text(float(azimuth), 1)}°", f"{elevation:.1f}°"
 
 
 def _radio(mission: Mission, sky: Sky, row, session: Session) -> Rows:
-    coding = "  ".join(_coding(segment) for segment in str(row.modcods).split())
+    coding = ",  ".join(_coding(segment) for segment in str(row.modcods).split())
     return (
-        ("Frequency", f"{row.frequency_mhz:g} MHz sent, Doppler {_doppler_text(mission, sky, session)}"),
-        ("Polarisation, rate", f"{row.polarisation}, {row.symbol_rate_mbaud:g} Mbaud"),
+        ("Frequency sent", f"{plain_number(row.frequency_mhz)} MHz"),
+        ("Doppler", _doppler_text(mission, sky, session)),
+        ("Polarisation, rate", f"{row.polarisation}, {plain_number(row.symbol_rate_mbaud)} Mbaud"),
         ("MODCOD from", coding),
         (
             "Expected margin",
-            f"{row.min_margin_db:.1f} dB or more at {mission.policy.availability_pct:g} % availability",
+            f"{row.min_margin_db:.2f} dB or more at {mission.policy.availability_pct:g} % availability",
         ),
         ("Data", f"{row.volume_mbit:,.0f} Mbit at that availability, {row.expected_volume_mbit:,.0f} Mbit on average"),
         ("Battery", f"{row.soc_start_pct:.1f} % before, {row.soc_end_pct:.1f} % after, at the worst"),
     )
 
 
+def _preparation(row, epoch: datetime, until: datetime | None) -> Rows:
+    """What must be done before: elements, and the contact that carries the commands up."""
+    serve = "the dish follows the signal" if until is None else f"they point this dish until {_iso(until)}"
+    carrier = getattr(row, "commands_from", None)
+    commands = () if carrier is None else (("Commands", f"go up in contact {carrier}" if carrier else "aboard before"),)
+    return (("Element epoch", f"{_iso(epoch)}; {serve}"), *commands)
+
+
 def _coding(segment: str) -> str:
     """`8PSK_3/4@2026-…T01:01:40.000Z` as `8PSK 3/4 01:01:40`, held together by no-break spaces."""
     name, _, since = segment.rpartition("@")
-    return f"{name.replace('_', NO_BREAK)}{NO_BREAK}{since[11:19]}".strip() if name else segment
+    if not name:
+        return segment
+    try:
+        return f"{name.replace('_', NO_BREAK)}{NO_BREAK}{clock_text(since)}"
+    except (ValueError, TypeError):
+        return segment
 
 
 def _doppler_khz(mission: Mission, sky: Sky, session: Session, time_s: float) -> float:
@@ -163,7 +198,7 @@ def _doppler_khz(mission: Mission, sky: Sky, session: Session, time_s: float) ->
 
 def _doppler_text(mission: Mission, sky: Sky, session: Session) -> str:
     on, off = (_doppler_khz(mission, sky, session, time_s) for time_s in (session.tx_on_s, session.tx_off_s))
-    return f"{on:+.1f} to {off:+.1f} kHz"
+    return f"{on:+.1f} to {off:+.1f} kHz while on air, received less sent"
 
 
 def _patience_s(mission: Mission, sky: Sky, session: Session) -> tuple[float, float]:
@@ -179,21 +214,17 @@ def _steps(mission: Mission, sky: Sky, session: Session, wait_s: float, late_s: 
     khz = _doppler_khz(mission, sky, session, session.tx_on_s + wait_s)
     mode = mission.satellite(session.satellite).spacecraft.mode(session.mode)
     age_days = mission.policy.elements_refresh_days
-    off = sky.clock.datetime(session.tx_off_s)
+    off = clock_text(sky.clock.datetime(session.tx_off_s))
     return (
         f"Receiver: {mode.frequency_mhz * 1000 + khz:,.1f} kHz now ({khz:+.1f} kHz Doppler), {mode.polarisation},"
-        f" {mode.symbol_rate_mbaud:g} Mbaud, first MODCOD as above.",
+        f" {plain_number(mode.symbol_rate_mbaud)} Mbaud, first MODCOD as above.",
         "Antenna: compare azimuth and elevation with the pointing table; refraction on or off as the table says.",
         f"Time: with elements {age_days:g} d old the satellite may be {late_s:.1f} s early or late; search along the"
         f" track, {late_s:.1f} s either way.",
-        "Elements: take the newest set and make the pointing table anew if the epoch below is older than that.",
-        f"Still nothing: keep on the track until {_clock(off)}, when the satellite switches off by itself; then tell"
+        "Elements: take the newest set and make the pointing table anew if the epoch above is older than that.",
+        f"Still nothing: keep on the track until {off}, when the satellite switches off by itself; then tell"
         " the flight team, so that this contact's data are planned again.",
     )
-
-
-def _clock(moment: datetime, later_s: float = 0.0) -> str:
-    return f"{moment.astimezone(UTC) + timedelta(seconds=later_s + 0.5):%H:%M:%S}"
 
 
 def _iso(moment: datetime) -> str:

@@ -3,26 +3,38 @@
 from html import escape
 from string import Template
 
+MOMENT = ("moment", "time", "azimuth", "elevation")
+HELD_LETTERS = 20  # shorter texts of a table stay on one line
 PAGE = Template("""<!DOCTYPE html>
 <html lang="en">
 <head>
 <meta charset="utf-8">
 <title>$title</title>
 <style>
-@page { size: $size; margin: 14mm; }
+@page { size: $size; margin: 12mm; }
 body { font: 10pt/1.4 "DejaVu Sans", Verdana, sans-serif; color: #222;
   max-width: $width; margin: 1em auto; padding: 0 1em; }
 h1 { font-size: 17pt; margin: 0; } h2 { font-size: 11.5pt; margin: 1.1em 0 .3em; }
 p.under { margin: .2em 0 1em; }
-.side { display: flex; gap: 1.5em; align-items: flex-start; flex-wrap: wrap; }
+.side { display: flex; gap: 1em; align-items: flex-start; justify-content: space-between; flex-wrap: wrap; }
 table { border-collapse: collapse; }
-th { text-align: left; font-weight: normal; color: #555; padding: .15em 1em .15em 0; }
-td { padding: .15em 1em .15em 0; font-variant-numeric: tabular-nums; }
+th { text-align: left; vertical-align: top; white-space: nowrap; font-weight: normal; color: #444;
+  padding: .15em 1em .15em 0; }
+td { vertical-align: top; padding: .15em 1em .15em 0; font-variant-numeric: tabular-nums; }
 table.list { width: 100%; font-size: 8.5pt; } table.list th { border-bottom: 1px solid #888; vertical-align: bottom; }
+td.held { white-space: nowrap; }
+table.list tr { break-inside: avoid; }
 table.list td { border-bottom: 1px solid #ddd; vertical-align: top; padding-right: .6em; }
+table.moments { font-size: 11pt; }
+table.moments td + td { font-weight: bold; }
 .caution { border: 2px solid #D55E00; padding: .2em 1em; }
-.foot { color: #555; font-size: 8pt; border-top: 1px solid #888; }
+.foot { font-size: 8.5pt; border-top: 1px solid #888; padding-top: .3em; }
 img { max-width: 100%; }
+h2 { break-after: avoid; } li, .caution { break-inside: avoid; }
+@media print {
+  body { margin: 0; padding: 0; max-width: none; } .side { flex-wrap: nowrap; }
+  img.week { display: block; max-height: 150mm; margin: 0 auto; } h2.list { break-before: page; }
+}
 </style>
 </head>
 <body>
@@ -42,12 +54,12 @@ def card_html(card, picture_base64: str) -> str:
     """A pass card; `picture_base64` is a PNG."""
     body = [
         f"<h1>{escape(card.title)}</h1>",
-        f'<p class="under">{escape(card.subtitle)}</p>',
-        f'<div class="side"><div><h2>Times (UTC)</h2>{rows_html(card.times)}</div>',
-        f'<img src="data:image/png;base64,{picture_base64}" alt="track over the sky" width="380"></div>',
+        f'<p class="under">{escape(card.subtitle)}<br>{escape(card.reference)}</p>',
+        f'<div class="side"><div><h2>Times (UTC)</h2>{table_html(MOMENT, card.times, "moments")}</div>',
+        f'<img src="data:image/png;base64,{picture_base64}" alt="track over the sky" width="330"></div>',
         f"<h2>Radio and data</h2>{rows_html(card.radio)}",
-        f"<h2>{escape(card.search_after)}</h2><ol>{items_html(card.steps)}</ol>",
         f'<div class="caution"><h2>Cautions</h2><ul>{items_html(card.cautions)}</ul></div>',
+        f"<h2>{escape(card.search_after)}</h2><ol>{items_html(card.steps)}</ol>",
         f'<p class="foot">{escape(card.footer)}</p>',
     ]
     return page(f"{card.title}, {card.subtitle}", "\n".join(body))
@@ -63,8 +75,13 @@ def items_html(lines) -> str:
     return "".join(f"<li>{escape(line)}</li>" for line in lines)
 
 
-def table_html(headings, rows) -> str:
-    """Rows of texts under headings."""
+def table_html(headings, rows, kind: str = "list") -> str:
+    """Rows of texts under headings; `kind` is the table's class."""
     head = "".join(f"<th>{escape(text)}</th>" for text in headings)
-    body = "".join("<tr>" + "".join(f"<td>{escape(text)}</td>" for text in row) + "</tr>\n" for row in rows)
-    return f'<table class="list"><thead><tr>{head}</tr></thead>\n<tbody>\n{body}</tbody></table>'
+    body = "".join("<tr>" + "".join(map(_cell, row)) + "</tr>\n" for row in rows)
+    return f'<table class="{kind}"><thead><tr>{head}</tr></thead>\n<tbody>\n{body}</tbody></table>'
+
+
+def _cell(text: str) -> str:
+    held = ' class="held"' if len(text) <= HELD_LETTERS else ""
+    return f"<td{held}>{escape(text)}</td>"

@@ -1,27 +1,29 @@
 """The week sheet: the week's picture and the list of its contacts, as PDF and as HTML."""
 
 import base64
-import textwrap
 from collections.abc import Iterator
-from datetime import datetime
+from datetime import UTC
 
 import pandas as pd
 from matplotlib.figure import Figure
 
 from planner.charts import style
 from planner.charts.week import finding, week_figure
-from planner.export.contacts import utc_text
+from planner.export.contacts import as_written, azimuth_text, clock_text, schedule_issue, utc_text
+from planner.export.fold import fold, shortened
 from planner.export.html import escape, items_html, page, table_html
 from planner.export.render import pdf_bytes, png_bytes
 from planner.mission.models import Mission
 
 COLUMNS = {  # heading: (place across the table, letters that fit)
-    "day": (0.0, 12), "AOS": (0.072, 9), "on": (0.128, 9), "off": (0.184, 9), "LOS": (0.24, 9), "az. up": (0.298, 9),
-    "az. down": (0.345, 9), "max el.": (0.402, 9), "station": (0.45, 20), "mode": (0.575, 16), "margin": (0.677, 9),
-    "Mbit": (0.765, 9), "cautions": (0.785, 42),
+    "day": (0.0, 11), "AOS": (0.084, 9), "on": (0.145, 9), "off": (0.206, 9), "LOS": (0.267, 9),
+    "az. AOS": (0.379, 7), "az. LOS": (0.435, 7), "max el.": (0.488, 7), "satellite": (0.504, 15),
+    "station": (0.616, 18), "mode": (0.747, 15), "margin": (0.915, 9), "Mbit": (0.988, 9),
 }  # fmt: skip
-HEADINGS = tuple(COLUMNS)
-ROWS_A_PAGE = 36
+TO_THE_RIGHT = ("az. AOS", "az. LOS", "max el.", "margin", "Mbit")
+HEADINGS = (*COLUMNS, "cautions")
+TEXT_PT = 9.0
+LINES_A_PAGE, NOTE_LETTERS = 34, 120
 CAUTIONS = (
     "Planning aid: the flight rules, the licences of transmitter and stations, and licensed practice come first.",
     "Check power flux-density against the current Radio Regulations and your licence.",
@@ -40,10 +42,10 @@ def sheet_files(mission: Mission, plan) -> dict[str, bytes]:
 def sheet_pages(mission: Mission, plan) -> Iterator[Figure]:
     """A4 landscape: the week's picture, then as many pages of contacts as it takes."""
     yield week_figure(mission, plan)
-    rows = sheet_rows(plan.contacts)
-    count = max(1, -(-len(rows) // ROWS_A_PAGE))
-    for number in range(count):
-        yield _list_page(mission, rows[number * ROWS_A_PAGE : (number + 1) * ROWS_A_PAGE], number + 1, count)
+    pages = _paginated(sheet_rows(plan.contacts))
+    under = _provenance(mission, plan.contacts)
+    for number, rows in enumerate(pages, 1):
+        yield _list_page(mission, rows, under, f"{number} of {len(pages)}")
 
 
 def sheet_html(mission: Mission, plan) -> str:
@@ -51,9 +53,9 @@ def sheet_html(mission: Mission, plan) -> str:
     picture = base64.b64encode(png_bytes(week_figure(mission, plan), dpi=110)).decode()
     body = [
         f"<h1>{escape(mission.name)}</h1>",
-        f'<p class="under">{escape(finding(plan))}. All times UTC.</p>',
-        f'<img src="data:image/png;base64,{picture}" alt="{escape(finding(plan))}">',
-        "<h2>Contacts</h2>" + table_html(HEADINGS, sheet_rows(plan.contacts)),
+        f'<p class="under">{escape(finding(plan))}. {escape(_provenance(mission, plan.contacts))}</p>',
+        f'<img class="week" src="data:image/png;base64,{picture}" alt="{escape(finding(plan))}">',
+        '<h2 class="list">Contacts</h2>' + table_html(HEADINGS, sheet_rows(plan.contacts)),
         f'<div class="caution"><h2>Cautions</h2><ul>{items_html(CAUTIONS)}</ul></div>',
     ]
     return page(mission.name, "\n".join(body), landscape=True)
@@ -61,46 +63,78 @@ def sheet_html(mission: Mission, plan) -> str:
 
 def sheet_rows(contacts: pd.DataFrame) -> list[tuple[str, ...]]:
     """A row of texts under `HEADINGS` for every contact, in the table's order."""
-    return [_row(contact) for contact in contacts.itertuples()]
+    return [_row(contact) for contact in as_written(contacts).itertuples()]
 
 
 def _row(contact) -> tuple[str, ...]:
-    events = [getattr(contact, f"{event}_utc") for event in ("aos", "tx_on", "tx_off", "los")]
-    aos, on, off, los = (datetime.fromisoformat(text) for text in utc_text(events).tolist())
-    clock = [f"{moment:%H:%M:%S}" for moment in (aos, on, off, los)]
-    angles = (contact.aos_azimuth_deg, contact.los_azimuth_deg, contact.max_elevation_deg)
+    events = utc_text([getattr(contact, f"{event}_utc") for event in ("aos", "tx_on", "tx_off", "los")]).tolist()
+    azimuths = (contact.aos_azimuth_deg, contact.los_azimuth_deg)
     return (
-        f"{on:%a %d %b}", *clock, *(f"{angle:.0f}°" for angle in angles), contact.station, contact.mode,
-        f"{contact.min_margin_db:.1f} dB", f"{contact.volume_mbit:,.0f}",
-        "" if pd.isna(contact.cautions) else str(contact.cautions),
+        f"{pd.Timestamp(events[1]).round('s'):%a %d %b}", *map(clock_text, events),
+        *(f"{azimuth_text(azimuth, 0)}°" for azimuth in azimuths), f"{contact.max_elevation_deg:.0f}°",
+        contact.satellite, contact.station, contact.mode, f"{contact.min_margin_db:.2f} dB",
+        f"{contact.volume_mbit:,.0f}", "" if pd.isna(contact.cautions) else str(contact.cautions),
     )  # fmt: skip
 
 
-def _list_page(mission: Mission, rows: list[tuple[str, ...]], number: int, count: int) -> Figure:
+def _provenance(mission: Mission, contacts: pd.DataFrame) -> str:
+    """Which schedule the sheet shows, and the elements under it."""
+    epochs = sorted({satellite.elements.epoch.astimezone(UTC) for satellite in mission.satellites})
+    span = " to ".join(f"{epoch:%Y-%m-%d %H:%M:%S}" for epoch in dict.fromkeys((epochs[0], epochs[-1])))
+    return f"Schedule issue {schedule_issue(contacts)}. Element epoch {span}. All times UTC."
+
+
+def _lines(row: tuple[str, ...]) -> list[list[str]]:
+    """The lines that a row takes on paper: a text for each column, and cautions as lines of one text."""
+    cells = [fold(text, letters) for text, (_, letters) in zip(row, COLUMNS.values(), strict=False)]
+    count = max(map(len, cells))
+    table = [[cell[n] if n < len(cell) else "" for cell in cells] for n in range(count)]
+    cautions = row[len(COLUMNS)]
+    return table + [[line] for line in (fold(f"! {cautions}", NOTE_LETTERS, "   ") if cautions else [])]
+
+
+def _paginated(rows: list[tuple[str, ...]]) -> list[list[list[list[str]]]]:
+    """Rows, as their lines, page by page; a row stays whole where a page holds it."""
+    pages: list[list[list[list[str]]]] = [[]]
+    for row in rows:
+        lines = _lines(row)[:LINES_A_PAGE]
+        if pages[-1] and sum(map(len, pages[-1])) + len(lines) > LINES_A_PAGE:
+            pages.append([])
+        pages[-1].append(lines)
+    return pages
+
+
+def _list_page(mission: Mission, rows: list[list[list[str]]], under: str, number: str) -> Figure:
     with style.on_paper():
         figure = style.new_figure(style.A4_LANDSCAPE_IN)
-        figure.set_layout_engine("none")
-        axes = figure.add_axes((0.03, 0.11, 0.94, 0.80))
+        figure.set_layout_engine(None)
+        axes = figure.add_axes((0.03, 0.105, 0.94, 0.795))
         axes.set_axis_off()
         axes.set_xlim(0, 1)
-        axes.set_ylim(ROWS_A_PAGE + 1, 0)
-        title = textwrap.shorten(f"{mission.name}: contacts, all times UTC", 100, placeholder=" …")
-        figure.text(0.03, 0.94, title, fontsize=12.5, fontweight="bold")
-        figure.text(0.97, 0.94, f"{number} of {count}", ha="right")
-        _write_row(axes, 0.5, HEADINGS, fontweight="bold")
-        for k, row in enumerate(rows):
+        axes.set_ylim(LINES_A_PAGE + 1, 0)
+        figure.text(0.03, 0.95, shortened(f"{mission.name}: contacts", 90), fontsize=13, fontweight="bold")
+        figure.text(0.97, 0.95, number, ha="right", fontsize=TEXT_PT)
+        figure.text(0.03, 0.918, shortened(under, 150), fontsize=TEXT_PT)
+        _write_line(axes, 0.5, list(COLUMNS), fontweight="bold")
+        y = 1.0
+        for k, lines in enumerate(rows):
             if k % 2 == 0:
-                axes.axhspan(k + 1, k + 2, color="#F2F2F2", linewidth=0)
-            _write_row(axes, k + 1.5, row)
+                axes.axhspan(y, y + len(lines), color="#EEEEEE", linewidth=0)
+            for n, line in enumerate(lines):
+                _write_line(axes, y + n + 0.5, line)
+            y += len(lines)
         if not rows:
             axes.text(0.5, 5, "No contact planned", ha="center", fontsize=12)
         for n, caution in enumerate(CAUTIONS):
-            figure.text(0.03, 0.075 - 0.02 * n, caution, fontsize=8)
+            figure.text(0.03, 0.075 - 0.022 * n, caution, fontsize=TEXT_PT)
     return figure
 
 
-def _write_row(axes, y: float, texts, **options) -> None:
-    for (heading, (x, letters)), text in zip(COLUMNS.items(), texts, strict=True):
-        shown = text if len(text) <= letters else text[: letters - 1] + "…"
-        side = "right" if heading == "Mbit" else "left"
-        axes.text(x, y, shown, va="center", ha=side, fontsize=7.2, **options)
+def _write_line(axes, y: float, texts: list[str], **options) -> None:
+    """A text for each column, or one across from the second."""
+    if len(texts) == 1:
+        axes.text(COLUMNS["AOS"][0], y, texts[0], va="center", fontsize=TEXT_PT, **options)
+        return
+    for (heading, (x, _)), text in zip(COLUMNS.items(), texts, strict=True):
+        side = "right" if heading in TO_THE_RIGHT else "left"
+        axes.text(x, y, text, va="center", ha=side, fontsize=TEXT_PT, **options)

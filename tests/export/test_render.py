@@ -4,6 +4,7 @@ import os
 import subprocess
 import sys
 import warnings
+import zlib
 
 from planner.charts import style
 from planner.export.render import pdf_bytes, png_bytes
@@ -64,3 +65,20 @@ def test_the_fonts_of_a_pdf_are_truetype_ones_that_every_viewer_draws():
     content = pdf_bytes([style.new_figure(title="charge")], "title")
     assert b"/Subtype /Type3" not in content
     assert b"/CIDFontType2" in content or b"/TrueType" in content
+
+
+# ISO 32000-1, 9.9 (from memory): an embedded TrueType font needs none of the tables by which letters are set.
+def test_embedded_fonts_hold_no_layout_tables_and_the_librarys_settings_are_as_before():
+    from fontTools.subset import Options
+
+    before = list(Options().drop_tables)
+    content = pdf_bytes([figure()], "title")
+    assert Options().drop_tables == before
+    inflated = [
+        zlib.decompress(part.partition(b"endstream")[0].strip(b"\r\n"))
+        for part in content.split(b"stream\n")[1::2]
+        if part.startswith(b"x")
+    ]
+    fonts = [stream for stream in inflated if stream.startswith(b"\0\1\0\0")]  # as TrueType files begin
+    assert fonts
+    assert not any(table in font[:400] for font in fonts for table in (b"GSUB", b"GPOS", b"GDEF"))
