@@ -14,7 +14,7 @@ from planner.sky import Sky
 
 LEFT, RIGHT, FOOT = 0.07, 0.93, 0.055  # of the page
 LINE = 0.0158  # of the page's height, for text of 9.5 points
-LETTERS, FIGURES_BESIDE = 104, 74  # of 9.5 points that fit across the page, and beside a label
+LETTERS, FIGURES_BESIDE = 100, 72  # of 9.5 points that fit across the page, and beside a label
 BELOW_THE_SKY = 0.58
 DIRECTION_ENDS = (0.37, 0.515)  # of the page, where azimuth and elevation end
 SCALES = (

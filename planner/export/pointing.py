@@ -1,5 +1,6 @@
 """Pointing tables: where the dish looks and what frequency arrives, moment by moment, for one contact each."""
 
+import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
@@ -18,6 +19,7 @@ from planner.sky.samples import doppler_hz
 from planner.sky.sites import look, station_position_km
 
 NARROW_BEAM_MHZ = 18_000.0  # from K band up (IEEE Std 521, from memory) old elements put the satellite outside the beam
+AFTER_A_SEPARATOR = re.compile(r"([,;]\s*|\t)(?=[=+\-@])")  # what a spreadsheet would run, in the middle of a line
 MOST_TOLD = 20
 MOST_LOOKS = 20_000  # in search of north, about one a second
 FARTHEST = datetime(2100, 1, 1, tzinfo=UTC)
@@ -74,7 +76,7 @@ def pointing_tables(
     if not 0.01 <= step_s <= 600:
         raise InputError(f"step_s must be from 0.01 s to 600 s, got {step_s:g}")
     aims = [_aim(mission, sky, session) for session in sessions]
-    stale = [fault for aim in aims if (fault := _staleness(mission, sky, aim))]
+    stale = list(too_old(mission, sky, sessions).values())
     if stale and not force:
         more = [f"and {len(stale) - MOST_TOLD} more contacts"] if len(stale) > MOST_TOLD else []
         raise InputError(*stale[:MOST_TOLD], *more)
@@ -84,6 +86,12 @@ def pointing_tables(
         (f"{name}.csv", _table(mission, sky, aim, header, step_s=step_s, refracted=refracted))
         for name, aim in zip(names, aims, strict=True)
     )
+
+
+def too_old(mission: Mission, sky: Sky, sessions) -> dict[Session, str]:
+    """The sessions whose elements are too old to point a K-band (or higher) dish by, and why."""
+    found = ((session, _staleness(mission, sky, _aim(mission, sky, session))) for session in sessions)
+    return {session: fault for session, fault in found if fault}
 
 
 def useful_until(mission: Mission, sky: Sky, session: Session) -> datetime | None:
@@ -194,7 +202,12 @@ def _header(mission: Mission, sky: Sky, aim: Aim, *, step_s: float, refracted: b
         f"step: {step_s:g} s",
         *(f"caution: {caution}" for caution in CAUTIONS),
     ]
-    return [" ".join(line.splitlines()) for line in lines]
+    return [_harmless(" ".join(line.splitlines())) for line in lines]
+
+
+def _harmless(line: str) -> str:
+    """A header line that no spreadsheet runs: it is no CSV, so a name's own commas would begin a cell."""
+    return AFTER_A_SEPARATOR.sub(r"\1'", line)
 
 
 def _iso(moment: datetime) -> str:

@@ -135,7 +135,7 @@ def test_a_dish_that_follows_the_signal_has_no_limit(aged, sky, session):
 
 def test_every_stale_contact_is_told_up_to_twenty(aged, sky, session):
     with pytest.raises(InputError) as told:
-        pointing_files(aged, sky, [session] * 30)
+        pointing_files(aged, sky, [replace(session, tx_off_s=session.tx_off_s - k) for k in range(30)])
     assert len(told.value.faults) == 21
     assert told.value.faults[-1] == "and 10 more contacts"
 
@@ -190,3 +190,17 @@ def test_the_header_tells_when_the_azimuth_crosses_north(mission, sky, session):
             assert abs(crossed - datetime.fromisoformat(columns["time_utc"][k])) <= timedelta(seconds=2)
         told[str(pass_id)] = len(lines)
     assert set(told.values()) == {0, 1}
+
+
+# OWASP, "CSV Injection" (from memory): a cell that begins with = + - @ is run; commas and semicolons begin cells.
+@pytest.mark.parametrize("name", ["A,=1+1", "A, @SUM(1)", "A;-2", "=1,+2"])
+def test_names_in_the_header_begin_no_formula(mission, sky, session, name):
+    stations = tuple(
+        station.model_copy(update={"name": name}) if station.name == session.station else station
+        for station in mission.stations
+    )
+    renamed = mission.model_copy(update={"stations": stations})
+    [data] = pointing_files(renamed, sky, [replace(session, station=name)], step_s=60.0, force=True).values()
+    header = [line for line in data.decode().splitlines() if line.startswith("#")]
+    cells = [cell for line in header for comma in line.split(",") for cell in comma.split(";")]
+    assert not [cell for cell in cells if cell.lstrip().startswith(("=", "+", "-", "@"))]
