@@ -4,8 +4,9 @@
     python benchmarks/spoil.py --seed 1 --files 500 --kind mission --strain --deep 5
 
 Every file goes through `check`; what is accepted goes through `passes` and `link`, and with --deep every N-th of it
-through `week`, `audit`, `pointing` and `cards`. Prints JSON. A failure names the kind and the number that repeat it:
---kind KIND --number NUMBER. Nothing but exit 0, 1 or 2, a silent standard error on 0 and finite figures is no failure.
+through `week`, `audit`, `pointing` and `cards`. Prints JSON, failures also on standard error as they come. A failure
+names the kind and the number that repeat it: --kind KIND --number NUMBER. Whatever is not exit 0, 1 or 2, finite
+figures and silence on standard error at exit 0 is a failure.
 """
 
 import argparse
@@ -199,6 +200,8 @@ def tended(context, example: str, strain: bool, jobs, reports: list) -> None:
                 os.killpg(worker.pid, signal.SIGKILL)  # a solver that outlived it
             reports.append((job[1], [], [f"the worker ended: {worker.exitcode}"], 0.0, 0.0))
             worker = None
+        for failure in reports[-1][2]:
+            print(*job[:2], failure, file=sys.stderr)
     if worker is not None:
         pipe.close()
         worker.join()
