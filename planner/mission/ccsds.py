@@ -17,15 +17,17 @@ def date(text: str) -> datetime:
     month, day, day_of_year = match[2], match[3], match[4]
     year, hour, minute, second = (int(part) for part in match.group(1, 5, 6, 7))
     fraction = timedelta(microseconds=round(float(match[8] or 0) * 1e6))
+    if second == 60:
+        raise ValueError("must not be a leap second; write the second before it or after")
     try:
         if day_of_year is None:
             return datetime(year, int(month), int(day), hour, minute, second, tzinfo=UTC) + fraction
         moment = datetime(year, 1, 1, hour, minute, second, tzinfo=UTC) + timedelta(days=int(day_of_year) - 1)
-    except ValueError as error:
+        if moment.year != year:
+            raise ValueError("day of year must be from 001 to 365 or 366")
+        return moment + fraction
+    except (ValueError, OverflowError) as error:
         raise ValueError(f"must be a date that exists ({error})") from None
-    if moment.year != year:
-        raise ValueError("must have a day of year from 001 to 365 or 366")
-    return moment + fraction
 
 
 def keyword_lines(text: str):

@@ -74,7 +74,8 @@ def _parser(text: str):
 def _newest_before(sets: list, at: datetime):
     by_epoch = sorted(sets, key=lambda one: one.epoch)
     usable = [one for one in by_epoch if one.epoch <= at] or by_epoch[:1]
-    return usable[-1].model_copy(update={"sets_in_file": len(sets)})
+    newer = None if usable[-1] is by_epoch[-1] else by_epoch[-1].epoch
+    return usable[-1].model_copy(update={"sets_in_file": len(sets), "newer_epoch": newer})
 
 
 def _name_faults(by_name: dict[str, list], path) -> list[str]:

@@ -231,6 +231,16 @@ class Mission(Described):
     policy: Policy
     inputs: tuple[tuple[str, str], ...] = Field(default=(), description="(file, SHA-256) of every file read")
 
+    def __repr__(self) -> str:
+        """In a line: the whole of it fills pages."""
+        names = ", ".join(satellite.name for satellite in self.satellites)
+        return (
+            f"<Mission {self.name!r}: {self.days:g} days from {self.start.isoformat()}, {names},"
+            f" {len(self.stations)} stations>"
+        )
+
+    __str__ = __repr__
+
     @property
     def end(self) -> datetime:
         return self.start + timedelta(days=self.days)

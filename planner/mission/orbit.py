@@ -35,6 +35,7 @@ class ElementSet(Described):
     rev_at_epoch: int = 0
     source: Literal["TLE", "OMM"] = "TLE"
     sets_in_file: int = Field(default=1, description="this one was chosen among so many of its satellite")
+    newer_epoch: AwareDatetime | None = Field(default=None, description="of the newest that was passed over")
 
     def sgp4_model(self):
         """The `sgp4` package's model of this set, with the WGS 72 constants such sets are made with.
@@ -97,6 +98,7 @@ class Ephemeris(Described):
     segment: Annotated[tuple[Segment, ...], Field(min_length=1)]
     source: Literal["OEM"] = "OEM"
     sets_in_file: int = 1
+    newer_epoch: AwareDatetime | None = None
 
     @cached_property
     def shape(self) -> tuple[float, float, float]:

@@ -38,7 +38,9 @@ def read_bytes(path: Path) -> bytes:
     except (OSError, ValueError) as error:
         raise InputError(f"{path}: cannot be read: {getattr(error, 'strerror', None) or error}") from None
     if not stat.S_ISREG(status.st_mode):
-        raise InputError(f"{path}: must be a regular file, got {_kind(status.st_mode)}")
+        inside = path / "contacts.csv"
+        mend = f"; did you mean {inside}?" if inside.is_file() else ""
+        raise InputError(f"{path}: must be a regular file, got {_kind(status.st_mode)}{mend}")
     raise InputError(f"{path}: must be at most 50 MB, got {status.st_size / 1e6:.1f} MB")
 
 

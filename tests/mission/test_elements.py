@@ -399,3 +399,23 @@ def test_decimal_commas_are_recognised(tmp_path, sample, old, new, told):
     assert old in text
     (fault,) = faults_of(tmp_path, text.replace(old, new, 1))
     assert fault.endswith(told)
+
+
+@pytest.mark.parametrize(
+    ("text", "rule"),
+    [
+        (
+            "9999-12-31T23:59:59.9999999",
+            "must be a date that exists (date value out of range)",
+        ),  # rounds into year 10000
+        ("9999-366T00:00:00", "must be a date that exists (date value out of range)"),
+        ("0001-000T00:00:00", "must be a date that exists (date value out of range)"),
+        ("2026-366T00:00:00", "must be a date that exists (day of year must be from 001 to 365 or 366)"),
+        ("2016-12-31T23:59:60.5", "must not be a leap second; write the second before it or after"),
+    ],
+)
+def test_dates_at_the_ends_of_time_are_told(tmp_path, text, rule):
+    rows = json.loads((SAMPLES / "marshlight.omm.json").read_text())
+    rows[0]["EPOCH"] = text
+    (fault,) = faults_of(tmp_path, json.dumps(rows))
+    assert fault.endswith(f"message 1: EPOCH {rule}, got {text!r}")
