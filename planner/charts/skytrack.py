@@ -15,6 +15,8 @@ from planner.sky.sun import sun_position_km
 POINTS = ("N", "NE", "E", "SE", "S", "SW", "W", "NW")
 ALL_ROUND_DEG = np.linspace(0.0, 360.0, 361)
 SQUARE_IN = (6.4, 6.9)
+ASIDE_PT, LABEL_PT = 8.0, (68.0, 12.0)  # of a time beside its mark: distance, width and height
+COVERED_PT = 300.0  # how far a label may jut out of the dome rather than cover all of the track
 
 
 def skytrack_figure(
@@ -119,20 +121,38 @@ def _draw_track(axes, sky: Sky, row: int, session: Session | None) -> None:
 def _write_times(axes, sky: Sky, row: int, time_zone: tzinfo) -> None:
     samples, passes = sky.samples.of(row), sky.passes
     time_s = sky.samples.time_s[samples]
+    azimuth, zenith = np.radians(sky.samples.azimuth_deg[samples]), 90 - sky.samples.elevation_deg[samples]
+    track_pt = (zenith / 90 * _dome_radius_pt(axes))[:, None] * np.stack([np.sin(azimuth), np.cos(azimuth)], axis=-1)
     marks = {"AOS": passes.aos_s[row], "TCA": passes.tca_s[row], "LOS": passes.los_s[row]}
     for name, moment_s in marks.items():
         k = int(np.argmin(np.abs(time_s - moment_s)))
-        azimuth, zenith = np.radians(sky.samples.azimuth_deg[samples][k]), 90 - sky.samples.elevation_deg[samples][k]
-        axes.plot(
-            [azimuth], [zenith], marker={"AOS": "^", "TCA": "s", "LOS": "v"}[name], ms=7, color=style.INK, zorder=6
-        )
+        mark = {"AOS": "^", "TCA": "s", "LOS": "v"}[name]
+        axes.plot([azimuth[k]], [zenith[k]], marker=mark, ms=7, color=style.INK, zorder=6)
         zone = "Z" if time_zone is UTC else ""
         when = sky.clock.datetime(moment_s + 0.5).astimezone(time_zone)  # to the nearest second
-        # inward, where no direction of the dome is written
-        across = -np.sign(np.sin(azimuth)) or 1.0
-        up = -13.0 * np.cos(azimuth) if zenith > 45 else 0.0
+        across, up = _free_side(track_pt, k, _dome_radius_pt(axes))
         axes.annotate(
-            f"{name} {when:%H:%M:%S}{zone}", (azimuth, zenith), xytext=(8 * across, up), textcoords="offset points",
-            ha="left" if across > 0 else "right", va="center", zorder=7,
+            f"{name} {when:%H:%M:%S}{zone}", (azimuth[k], zenith[k]), xytext=(ASIDE_PT * across, up),
+            textcoords="offset points", ha="left" if across > 0 else "right", va="center", zorder=7,
             bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none", "alpha": 0.75},
         )  # fmt: skip
+
+
+def _dome_radius_pt(axes) -> float:
+    width_in, height_in = axes.get_position().size * axes.figure.get_size_inches()
+    return 36.0 * float(min(width_in, height_in))
+
+
+def _free_side(track_pt: np.ndarray, k: int, radius_pt: float) -> tuple[int, float]:
+    """Where the label of point `k` covers least of the track (n, 2) and juts least out of the dome: side, points up."""
+
+    def cost(side: tuple[int, float]) -> float:
+        across, up = side
+        near, far = sorted((ASIDE_PT * across, (ASIDE_PT + LABEL_PT[0]) * across))
+        away = track_pt - track_pt[k]
+        inside = (near <= away[:, 0]) & (away[:, 0] <= far) & (np.abs(away[:, 1] - up) <= LABEL_PT[1] / 2)
+        corners = track_pt[k] + [[x, up + y] for x in (near, far) for y in (-LABEL_PT[1] / 2, LABEL_PT[1] / 2)]
+        beyond_pt = np.maximum(np.linalg.norm(corners, axis=1) - radius_pt, 0.0).max()
+        return float(np.mean(inside) * COVERED_PT + beyond_pt)
+
+    return min(((across, up) for up in (0.0, -12.0, 12.0, -22.0, 22.0) for across in (-1, 1)), key=cost)

@@ -143,3 +143,17 @@ def test_the_sun_is_drawn_only_when_it_is_up(mission, sky):
         for pass_id in sky.passes.pass_id[:30]
     }
     assert shown == {True, False}
+
+
+def test_times_along_the_track_cover_neither_the_track_nor_the_directions(sky, mission):
+    for pass_id in sky.passes.pass_id[::9]:
+        figure = skytrack_figure(mission, sky, str(pass_id))
+        figure.draw_without_rendering()
+        [axes] = figure.axes
+        [track] = [line for line in axes.lines if line.get_label() == "pass"]
+        points = axes.transData.transform(np.column_stack([track.get_xdata(), track.get_ydata()]))
+        for text in axes.texts:
+            box = text.get_window_extent()
+            covered = sum(box.contains(*point) for point in points)
+            assert covered <= 0.05 * len(points), text.get_text()  # a twentieth, at the mark itself
+            assert not any(box.overlaps(label.get_window_extent()) for label in axes.get_xticklabels())
