@@ -16,23 +16,26 @@ body { font: 10pt/1.4 "DejaVu Sans", Verdana, sans-serif; color: #222;
   max-width: $width; margin: 1em auto; padding: 0 1em; }
 h1 { font-size: 17pt; margin: 0; } h2 { font-size: 11.5pt; margin: 1.1em 0 .3em; }
 p.under { margin: .2em 0 1em; }
-.side { display: flex; gap: 1em; align-items: flex-start; justify-content: space-between; flex-wrap: wrap; }
+.side { display: flex; gap: 1em; align-items: flex-start; justify-content: space-between; }
+.side img { flex: 0 1 330px; min-width: 200px; } @media screen and (max-width: 600px) { .side { flex-wrap: wrap; } }
 table { border-collapse: collapse; }
 th { text-align: left; vertical-align: top; white-space: nowrap; font-weight: normal; color: #444;
   padding: .15em 1em .15em 0; }
 td { vertical-align: top; padding: .15em 1em .15em 0; font-variant-numeric: tabular-nums; }
 table.list { width: 100%; font-size: 8.5pt; } table.list th { border-bottom: 1px solid #888; vertical-align: bottom; }
 td.held { white-space: nowrap; }
+table.list :is(td, th):nth-last-child(2) { text-align: right; }
 table.list tr { break-inside: avoid; }
 table.list td { border-bottom: 1px solid #ddd; vertical-align: top; padding-right: .6em; }
 table.moments { font-size: 11pt; }
 table.moments td + td { font-weight: bold; }
-.caution { border: 2px solid #D55E00; padding: .2em 1em; }
+.caution { border: 2px solid #D55E00; padding: 0 1em; margin: .8em 0; } .caution h2 { margin-top: .5em; }
+ul, ol { margin: .4em 0; }
 .foot { font-size: 8.5pt; border-top: 1px solid #888; padding-top: .3em; }
 img { max-width: 100%; }
 h2 { break-after: avoid; } li, .caution { break-inside: avoid; }
 @media print {
-  body { margin: 0; padding: 0; max-width: none; } .side { flex-wrap: nowrap; }
+  body { margin: 0; padding: 0; max-width: none; line-height: 1.3; }
   img.week { display: block; max-height: 150mm; margin: 0 auto; } h2.list { break-before: page; }
 }
 </style>
@@ -46,7 +49,7 @@ $body
 
 def page(title: str, body: str, *, landscape: bool = False) -> str:
     """A whole page; `body` is HTML already, `title` plain text."""
-    size, width = ("A4 landscape", "270mm") if landscape else ("A4", "182mm")
+    size, width = ("A4 landscape", "270mm") if landscape else ("A4", "200mm")
     return PAGE.substitute(title=escape(title), size=size, width=width, body=body)
 
 
