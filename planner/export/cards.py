@@ -62,18 +62,21 @@ class Card:
     session: Session
 
 
-def card_files(mission: Mission, sky: Sky, contacts: pd.DataFrame) -> Iterator[tuple[str, bytes]]:
+def card_files(
+    mission: Mission, sky: Sky, contacts: pd.DataFrame, issue: str | None = None
+) -> Iterator[tuple[str, bytes]]:
     """(file name, content) of a PDF and an HTML card for every contact, made as they are asked for.
 
     Parameters
     ----------
     contacts : DataFrame with the columns of contacts.csv
+    issue : which schedule they are, the table's own `schedule_issue` when None
 
     Raises
     ------
     InputError : a contact on no pass of `sky`
     """
-    issue, shown = schedule_issue(contacts), as_written(contacts)
+    issue, shown = issue or schedule_issue(contacts), as_written(contacts)
     names = distinct(file_name("card", *key) for key in zip(shown["pass_id"], shown["mode"], strict=True))
     row: Any  # its columns are attributes
     for name, row in zip(names, shown.itertuples(), strict=True):

@@ -31,29 +31,33 @@ CAUTIONS = (
 )
 
 
-def sheet_files(mission: Mission, plan) -> dict[str, bytes]:
-    """`week_sheet.pdf` and `week_sheet.html` of a plan (its four tables and its summary)."""
+def sheet_files(mission: Mission, plan, issue: str | None = None) -> dict[str, bytes]:
+    """`week_sheet.pdf` and `week_sheet.html` of a plan (its four tables and its summary).
+
+    `issue` says which schedule it is, the contacts' own `schedule_issue` when None.
+    """
     return {
-        "week_sheet.pdf": pdf_bytes(sheet_pages(mission, plan), mission.name),
-        "week_sheet.html": sheet_html(mission, plan).encode(),
+        "week_sheet.pdf": pdf_bytes(sheet_pages(mission, plan, issue), mission.name),
+        "week_sheet.html": sheet_html(mission, plan, issue).encode(),
     }
 
 
-def sheet_pages(mission: Mission, plan) -> Iterator[Figure]:
+def sheet_pages(mission: Mission, plan, issue: str | None = None) -> Iterator[Figure]:
     """A4 landscape: the week's picture, then as many pages of contacts as it takes."""
     yield week_figure(mission, plan)
     pages = _paginated(sheet_rows(plan.contacts))
-    under = _provenance(mission, plan.contacts)
+    under = _provenance(mission, issue or schedule_issue(plan.contacts))
     for number, rows in enumerate(pages, 1):
         yield _list_page(mission, rows, under, f"{number} of {len(pages)}")
 
 
-def sheet_html(mission: Mission, plan) -> str:
+def sheet_html(mission: Mission, plan, issue: str | None = None) -> str:
     """The same as one page for a browser."""
     picture = base64.b64encode(png_bytes(week_figure(mission, plan), dpi=110)).decode()
+    under = _provenance(mission, issue or schedule_issue(plan.contacts))
     body = [
         f"<h1>{escape(mission.name)}</h1>",
-        f'<p class="under">{escape(finding(plan))}. {escape(_provenance(mission, plan.contacts))}</p>',
+        f'<p class="under">{escape(finding(plan))}. {escape(under)}</p>',
         f'<img class="week" src="data:image/png;base64,{picture}" alt="{escape(finding(plan))}">',
         '<h2 class="list">Contacts</h2>' + table_html(HEADINGS, sheet_rows(plan.contacts)),
         f'<div class="caution"><h2>Cautions</h2><ul>{items_html(CAUTIONS)}</ul></div>',
@@ -77,11 +81,11 @@ def _row(contact) -> tuple[str, ...]:
     )  # fmt: skip
 
 
-def _provenance(mission: Mission, contacts: pd.DataFrame) -> str:
+def _provenance(mission: Mission, issue: str) -> str:
     """Which schedule the sheet shows, and the elements under it."""
     epochs = sorted({satellite.elements.epoch.astimezone(UTC) for satellite in mission.satellites})
     span = " to ".join(f"{epoch:%Y-%m-%d %H:%M:%S}" for epoch in dict.fromkeys((epochs[0], epochs[-1])))
-    return f"Schedule issue {schedule_issue(contacts)}. Element epoch {span}. All times UTC."
+    return f"Schedule issue {issue}. Element epoch {span}. All times UTC."
 
 
 def _lines(row: tuple[str, ...]) -> list[list[str]]:

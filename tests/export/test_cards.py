@@ -1,7 +1,9 @@
 """Cards: the figures on them against the contact and the sky, one A4 page each, hostile names escaped."""
 
 import re
-from datetime import timedelta
+import shutil
+import subprocess
+from datetime import datetime, timedelta
 
 import numpy as np
 import pandas as pd
@@ -11,6 +13,7 @@ from made_up_contacts import contact
 from planner.errors import InputError
 from planner.export.card_page import FOOT, card_figure
 from planner.export.cards import card_files, make_card
+from planner.export.contacts import schedule_issue
 
 # MediaBox of ISO 216 A4 in points: 210 x 297 mm.
 A4_POINTS = (595, 842)
@@ -71,6 +74,40 @@ def test_files_are_one_a4_page_and_the_same_bytes_each_time(mission, sky, row):
     [box] = re.findall(rb"/MediaBox \[ 0 0 ([\d.]+) ([\d.]+) \]", pdf)
     assert tuple(round(float(points)) for points in box) == pytest.approx(A4_POINTS, abs=1)
     assert "size: A4;" in html.decode()
+
+
+@pytest.mark.skipif(not shutil.which("chromium"), reason="chromium prints the page")
+def test_a_card_with_many_modcods_and_cautions_prints_from_a_browser_on_one_a4_page(mission, sky, row, tmp_path):
+    on = datetime.fromisoformat(row["tx_on_utc"])
+    coding = " ".join(f"16APSK_8/9@{(on + timedelta(seconds=20 * k)).isoformat()}" for k in range(9))
+    frame = pd.DataFrame(
+        [row | {"modcods": coding, "cautions": "; ".join(["flux 2.3 dB above the RR 21-4 limit"] * 3)}]
+    )
+    page, printed = tmp_path / "card.html", tmp_path / "card.pdf"
+    page.write_bytes(dict(card_files(mission, sky, frame)).popitem()[1])
+    browser = ["chromium", "--headless", "--no-sandbox", "--disable-gpu", "--no-pdf-header-footer"]
+    subprocess.run([*browser, f"--print-to-pdf={printed}", page.as_uri()], check=True, capture_output=True)
+    assert len(re.findall(rb"/Type\s*/Page\b", printed.read_bytes())) == 1
+    boxes = re.findall(rb"/MediaBox\s*\[0 0 ([\d.]+) ([\d.]+)\]", printed.read_bytes())
+    assert tuple(round(float(points)) for points in boxes[0]) == pytest.approx(A4_POINTS, abs=1)
+
+
+def test_which_schedule_a_card_is_from_stands_on_it(mission, sky, row):
+    frame = pd.DataFrame([row])
+    for issue, shown in ((None, schedule_issue(frame)), ("0a1b2c3d", "0a1b2c3d")):
+        html = dict(card_files(mission, sky, frame, issue)).popitem()[1].decode()
+        assert f"Pass {row['pass_id']}, schedule issue {shown}" in html
+
+
+def test_clocks_of_modcods_are_rounded_like_all_others(mission, sky, row):
+    card = card_of(mission, sky, row, modcods="8PSK_3/4@2026-12-07T05:41:35.977Z")
+    assert dict(card.radio)["MODCOD from"].replace("\u00a0", " ") == "8PSK 3/4 05:41:36"
+
+
+def test_a_card_says_where_its_commands_go_up(mission, sky, row):
+    carriers = [dict(card_of(mission, sky, row, commands_from=text).radio)["Commands"] for text in ("a.b.s", "")]
+    assert carriers == ["go up in contact a.b.s", "aboard before"]
+    assert "Commands" not in dict(card_of(mission, sky, row).radio)
 
 
 def test_html_escapes_every_text(mission, sky, row):
