@@ -1,4 +1,4 @@
-"""What each command does once its words are understood: call, then print."""
+"""The commands about passes, plans and the battery, once their words are understood: call, then print."""
 
 import json
 import os
@@ -8,60 +8,12 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from planner import printing
-from planner.errors import InputError
-from planner.mission.models import Mission, Satellite
+from planner.mission.contacts import Session
+from planner.mission.models import Mission
 from planner.printing import Tell
 
 DONE, NO = 0, 1
 MOST_STALE_SHOWN = 12
-
-
-def check(mission: Mission) -> int:
-    """Print what was understood."""
-    printing.say(f"{mission.name}: {mission.days:g} days from {mission.start.astimezone(UTC):%Y-%m-%dT%H:%M:%SZ}")
-    printing.say("")
-    printing.table(
-        [("station", "left"), ("latitude", "right"), ("longitude", "right"), ("above", "right"), ("dish", "right"),
-         ("bands", "left"), ("open", "left")],
-        [(s.name, f"{s.latitude_deg:.2f} deg", f"{s.longitude_deg:.2f} deg", f"{s.min_elevation_deg:g} deg",
-          f"{s.antenna.diameter_m:g} m", " ".join(b for r in s.receiver for b in r.bands), _hours(s))
-         for s in mission.stations],
-    )  # fmt: skip
-    for satellite in mission.satellites:
-        _check_satellite(mission, satellite)
-    printing.say("")
-    printing.table([("policy", "left"), ("", "left")], [(k, str(v)) for k, v in mission.policy.model_dump().items()])
-    printing.say("")
-    printing.table([("file read, from the mission's folder", "left"), ("SHA-256", "left")],
-                   [(name, digest[:16] + "…") for name, digest in mission.inputs])  # fmt: skip
-    printing.say(f"{len(mission.inputs)} files read, no fault found.")
-    return DONE
-
-
-def _hours(station) -> str:
-    opened = ", ".join(f"{a:%H:%M}-{b:%H:%M}" for a, b in station.hours.open) or "always"
-    days = "" if len(station.hours.days) == 7 else " " + " ".join(station.hours.days)
-    return opened + days + (f", {len(station.hours.maintenance)} closures" if station.hours.maintenance else "")
-
-
-def _check_satellite(mission: Mission, satellite: Satellite) -> None:
-    craft, battery = satellite.spacecraft, satellite.spacecraft.battery
-    age_days = (mission.start - satellite.elements.epoch).total_seconds() / 86_400
-    printing.say("")
-    printing.say(
-        f"{satellite.name}: elements of {satellite.elements.epoch:%Y-%m-%dT%H:%M:%SZ} ({age_days:.2f} days before the"
-        f" start), {battery.cells_series}S{battery.cells_parallel}P {battery.chemistry}"
-        f" {battery.cells_parallel * battery.cell_capacity_ah:g} Ah, recorder {craft.recorder.usable_mbit:g} Mbit,"
-        f" {len(craft.panel)} panels, {len(craft.load)} loads, charge {satellite.start_state.soc_pct:g} %"
-        f" ± {satellite.start_state.soc_error_pct:g}"
-    )
-    printing.table(
-        [("mode", "left"), ("carrier", "right"), ("RF", "right"), ("DC", "right"), ("symbols", "right"),
-         ("MODCODs", "left"), ("antenna", "left"), ("commands up", "left")],
-        [(t.mode, f"{t.frequency_mhz:g} MHz", f"{t.rf_power_w:g} W", f"{t.dc_power_w:g} W",
-          f"{t.symbol_rate_mbaud:g} Mbaud", f"{len(t.modcods)}, {t.modcod_choice}", t.antenna.kind,
-          "yes" if t.uplink else "no") for t in craft.transmitter],
-    )  # fmt: skip
 
 
 def passes(mission: Mission, csv: str | None, tell: Tell) -> int:
@@ -93,15 +45,17 @@ def week(mission: Mission, arguments, freeze_until: datetime | None, tell: Tell)
     from planner.export.folder import claim_folder
     from planner.export.week import write_week
     from planner.schedule.result import plan_week
+    from planner.schedule.wishes import sessions_of
 
-    began = time.perf_counter()
+    began, given = time.perf_counter(), arguments.previous
+    previous = None if given is None else sessions_of(given, mission)
     with claim_folder(arguments.out) as folder:
         printing.fault(folder.mended)
         plan = plan_week(
             mission,
             keep=arguments.keep,
             drop=arguments.drop,
-            previous=arguments.previous,
+            previous=previous,
             freeze_until=freeze_until,
             time_limit_s=arguments.time_limit,
             progress=tell,
@@ -118,10 +72,10 @@ def week(mission: Mission, arguments, freeze_until: datetime | None, tell: Tell)
             "machine": platform.platform(),
             "processors": os.cpu_count(),
         }
-        write_week(folder, mission, plan, log)
+        write_week(folder, mission, plan, log, before=None if given is None else Path(given).parent)
     _say_week(plan, Path(arguments.out), arguments.quiet, time.perf_counter() - began)
-    if arguments.previous is not None:
-        _say_changes(mission, arguments.previous, plan)
+    if previous is not None:
+        _say_changes(given, previous, plan)
     return DONE
 
 
@@ -156,18 +110,15 @@ def _say_week(plan, folder: Path, quiet: bool, seconds: float) -> None:
     printing.say(f"written to {folder} in {seconds:.1f} s")
 
 
-def _say_changes(mission: Mission, previous: str, plan) -> None:
-    """What the re-plan changed against the contacts it was given."""
+def _say_changes(given: str, previous: list[Session], plan) -> None:
+    """What the re-plan changed against the contacts it was given, which its own may have replaced on disk by now."""
     from planner.export.compare import HEADINGS, compare_plans
     from planner.schedule.flown import Flown
     from planner.schedule.result import GivenWeek
-    from planner.schedule.wishes import sessions_of
 
-    known = [
-        s for s in sessions_of(previous, mission) if s.pass_id in plan.flown.week.row_of and plan.flown.week.reaches(s)
-    ]
+    known = [s for s in previous if s.pass_id in plan.flown.week.row_of and plan.flown.week.reaches(s)]
     found = compare_plans(GivenWeek(Flown(plan.flown.week, tuple(known))), plan)
-    printing.say(f"against {previous}: {found.headline()}")
+    printing.say(f"against {given}: {found.headline()}")
     if not found.is_same:
         printing.table([(heading, "left") for heading in HEADINGS], found.rows())
 
@@ -213,17 +164,29 @@ def show_affordability(
     if as_json:
         printing.say(json.dumps(answer.as_dict(), indent=2))
         return DONE if answer.affordable else NO
-    verdict = "YES, affordable" if answer.affordable else "NO, not affordable"
-    printing.say(f"{verdict}: {answer.mode} on {answer.pass_id} ({answer.satellite} over {answer.station})")
+    printing.say(
+        f"{_verdict(answer, mission.policy.min_session_s)}: {answer.mode} on {answer.pass_id}"
+        f" ({answer.satellite} over {answer.station})"
+    )
     printing.say(answer.reason)
     if answer.duration_s is not None:
         printing.table([("", "left"), ("", "left")], list(_answer_rows(answer)))
     return DONE if answer.affordable else NO
 
 
+def _verdict(answer, shortest_s: float) -> str:
+    if answer.affordable:
+        return "YES, affordable"
+    if answer.longest_s is None or answer.longest_s < shortest_s:
+        return "NO, not affordable"
+    return f"NO for the whole window of {answer.duration_s:.0f} s, YES for up to {answer.longest_s:.0f} s"
+
+
 def _answer_rows(answer):
+    if answer.replaces:
+        yield "in place of, already planned", f"{', '.join(answer.replaces)}, {answer.replaced_s:.0f} s on air"
     yield "whole usable window", f"{answer.tx_on_utc} to {answer.tx_off_utc}, {answer.duration_s:.0f} s"
-    yield "volume", f"{answer.volume_mbit:.0f} Mbit"
+    yield "volume", f"{answer.volume_mbit:.0f} Mbit; all contacts together {answer.gained_mbit:+.0f} Mbit"
     yield (
         "energy at the battery",
         f"{answer.energy_wh:.2f} Wh" + (f", {answer.joule_per_mbit:.3f} J/Mbit" if answer.joule_per_mbit else ""),
@@ -241,61 +204,3 @@ def _answer_rows(answer):
         yield "would have to give way", ", ".join(answer.give_way) or "giving up contacts does not help"
     for conflict in answer.conflicts:
         yield "also in conflict", conflict
-
-
-def show_comparison(old: str, new: str) -> int:
-    """Print what changed."""
-    from planner.export.compare import HEADINGS, compare_sets
-
-    found = compare_sets(old, new)
-    printing.say(found.headline())
-    if not found.is_same:
-        printing.table([(heading, "left") for heading in HEADINGS], found.rows())
-    for name in found.inputs:
-        printing.say(f"input changed: {name}")
-    return DONE
-
-
-def write_pointing(mission: Mission, arguments, tell: Tell) -> int:
-    """Pointing tables for every contact of a file."""
-    from planner.export.folder import write_set
-    from planner.export.pointing import pointing_files
-    from planner.schedule.result import prepared
-    from planner.schedule.wishes import sessions_of
-
-    sessions = sessions_of(Path(arguments.contacts), mission)
-    tell("passes, links and power")
-    sky = prepared(mission).sky
-    tell("pointing tables")
-    files = pointing_files(
-        mission, sky, sessions, step_s=arguments.step, refracted=arguments.refracted, force=arguments.force
-    )
-    printing.fault(
-        write_set(arguments.out, files, {"mission": mission.name, "tables": len(files)}, index="pointing.json")
-    )
-    printing.say(f"{len(files)} pointing tables written to {arguments.out}")
-    return DONE
-
-
-def write_cards(mission: Mission, contacts: Path, out: Path, tell: Tell) -> int:
-    """A card for every contact of a file, and the week sheet."""
-    from planner.export.cards import card_files
-    from planner.export.folder import write_set
-    from planner.export.sheet import sheet_files
-    from planner.schedule.audit import audit
-    from planner.schedule.result import GivenWeek
-
-    tell("checking the contacts")
-    verdict = audit(mission, contacts)
-    if not verdict.safe:
-        raise InputError(f"{contacts}: cards are made only of contacts that keep every limit", *verdict.texts())
-    given = GivenWeek(verdict.flown)
-    files: dict[str, bytes] = {}
-    for name, content in card_files(mission, verdict.flown.week.sky, given.contacts):
-        tell(f"card {len(files) // 2 + 1} of {len(given.contacts)}")
-        files[name] = content
-    tell("the week sheet")
-    files |= sheet_files(mission, given)
-    printing.fault(write_set(out, files, {"mission": mission.name, "cards": len(given.contacts)}, index="cards.json"))
-    printing.say(f"{len(given.contacts)} cards and the week sheet written to {out}")
-    return DONE

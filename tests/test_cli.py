@@ -2,6 +2,7 @@
 
 import json
 import re
+import shutil
 from pathlib import Path
 
 import pytest
@@ -14,6 +15,7 @@ from planner.export.folder import claim_folder, verify_set
 ROOT = Path(__file__).parents[1]
 K = "K high rate"
 COMMANDS = ("check", "passes", "link", "week", "audit", "afford", "compare", "pointing", "cards")
+KEYS = ("UID", "STATUS", "SEQUENCE")
 LINK_KEYS = (
     "satellite", "station", "mode", "modcod", "elevation_deg", "availability_pct", "slant_range_km", "eirp_dbw",
     "free_space_loss_db", "atmospheric_loss_db", "system_temperature_k", "gt_dbk", "cn0_dbhz", "ebn0_db", "esn0_db",
@@ -90,7 +92,9 @@ def test_a_link_exits_0_whatever_its_margin(here, capsys):
 def test_afford_as_words_and_as_json(here, week, capsys):
     words = ["afford", "--pass", pass_of(week), "--mode", K, "--contacts", "week/contacts.csv"]
     status = main(words)
-    assert capsys.readouterr().out.startswith(("YES, affordable", "NO, not affordable")[status])
+    said = capsys.readouterr().out
+    assert said.startswith(("YES, affordable: ", "NO")[status])
+    assert re.search(r"in place of, already planned +\S+, \d+ s on air", said)
     assert main([*words, "--json"]) == status
     assert json.loads(capsys.readouterr().out)["affordable"] == (status == 0)
 
@@ -103,6 +107,27 @@ def test_two_equal_weeks_compare_as_equal(here, week, capsys):
 def test_hand_over_writes_whole_sets(here, week, capsys):
     assert main(["pointing", "--contacts", "week/contacts.csv", "--out", "pointing", "--step", "30"]) == 0
     assert verify_set(here / "pointing", "pointing.json") == ()
+
+
+def rows(path) -> dict[str, str]:
+    """UID -> status and sequence of a calendar's events, as RFC 5545 writes them (lines of these are never folded)."""
+    events = re.findall(r"BEGIN:VEVENT.*?END:VEVENT", path.read_text(), re.DOTALL)
+    fields = ({key: re.search(rf"^{key}:(\S+)", event, re.MULTILINE)[1] for key in KEYS} for event in events)
+    return {event["UID"]: f"{event['STATUS']} {event['SEQUENCE']}" for event in fields}
+
+
+def test_a_replan_says_what_it_changed_and_its_calendar_follows_the_issue_before(here, week, capsys):
+    """Into the folder that it replaces, and into a new one."""
+    shutil.copytree(week, here / "replanned")
+    drop, before = pass_of(week), rows(week / "week.ics")
+    for out, given in (("replanned", "replanned/contacts.csv"), ("elsewhere", "week/contacts.csv")):
+        assert main(["week", "--out", out, "--from", given, "--drop", drop]) == 0
+        said = capsys.readouterr().out
+        assert f"against {given}: 0 gained, 1 lost, " in said
+        events = rows(here / out / "week.ics")
+        gone = {uid for uid, state in events.items() if state == "CANCELLED 1"}
+        assert len(gone) == 1
+        assert set(events) == set(before)
 
 
 # --- the answer is no ------------------------------------------------------------------------------------------------
@@ -150,8 +175,9 @@ def test_no_week_is_possible(here, capsys):
         (["link", "--station", "Vardholm", "--mode", K, "--elevation", "nan"],
          "elevation_deg must be 0 to 90, got nan"),
         (["week", "--out", "none", "--keep", "nothing:K high rate"],
-         "keep: must be the id of a pass in the span, got 'nothing'"),
-        (["week", "--out", "none", "--drop", "nothing"], "drop: must be the id of a pass in the span, got 'nothing'"),
+         "keep: must be the id of a pass in the span, as `passes` lists them, got 'nothing'"),
+        (["week", "--out", "none", "--drop", "nothing"],
+         "drop: must be the id of a pass in the span, as `passes` lists them, got 'nothing'"),
         (["week", "--out", "none", "--freeze-until", "noon"],
          "--freeze-until must be a time such as 2026-12-08T06:00:00Z, got 'noon'"),
         (["week", "--out", "none", "--freeze-until", "2026-12-08T06:00:00"],
@@ -161,7 +187,8 @@ def test_no_week_is_possible(here, capsys):
         (["week", "--out", "none", "--from", "gone.csv"], "gone.csv: no such file"),
         (["audit", "gone.csv"], "gone.csv: no such file"),
         (["audit", "a", "b", "c"], "audit takes a mission file and a contacts file, got 3 files"),
-        (["afford", "--pass", "nothing", "--mode", K], "pass must be in the span, got 'nothing'"),
+        (["afford", "--pass", "nothing", "--mode", K],
+         "pass must be in the span, as `passes` lists them, got 'nothing'"),
         (["pointing", "--contacts", "gone.csv", "--out", "none"], "gone.csv: no such file"),
         (["cards", "--contacts", "gone.csv", "--out", "none"], "gone.csv: no such file"),
         (["week", "--out", "missions/marshlight.toml"],
@@ -273,7 +300,7 @@ def test_piped_words_are_plain(quick_folder):
 
 def test_a_terminal_is_told_the_stage_and_how_long_it_has_taken(quick_folder, week):
     said = in_a_terminal(quick_folder, "cards", "--contacts", "week/contacts.csv", "--out", "cards")
-    assert re.search(r"card 1 of \d+ .*0:00:\d\d", said)
+    assert re.search(r"file of cards 1 of \d+ .*0:00:\d\d", said)
     assert said.splitlines()[-1].endswith("cards and the week sheet written to cards")
 
 

@@ -85,7 +85,12 @@ def compare_sets(old_folder, new_folder) -> Comparison:
     ------
     InputError : a folder holds no whole set (each fault told), or contacts that cannot be read
     """
-    faults = [fault for folder in (old_folder, new_folder) for fault in verify_set(folder)]
+    folders = old_folder, new_folder
+    faults = [
+        f"{folder}: no such folder; `week` replaces the issue in its folder, so copy that before planning anew"
+        for folder in folders
+        if not Path(folder).is_dir()
+    ] or [fault for folder in folders for fault in verify_set(folder)]
     if faults:
         raise InputError(*faults)
     (old, old_summary), (new, new_summary) = (_read_set(Path(folder)) for folder in (old_folder, new_folder))

@@ -12,20 +12,22 @@ from planner.mission.models import Mission
 CALENDAR = "week.ics"
 
 
-def write_week(folder: ClaimedFolder, mission: Mission, plan, run_log: dict) -> None:
-    """Replace the week in a claimed folder by this plan; the calendars cancel what only the old week had.
+def write_week(folder: ClaimedFolder, mission: Mission, plan, run_log: dict, *, before: Path | None = None) -> None:
+    """Replace the week in a claimed folder by this plan; the calendars cancel what only the issue before had.
 
     Parameters
     ----------
     folder : from `claim_folder`
     plan : has `.contacts`, `.passes`, `.battery`, `.recorder` (DataFrames) and `.summary` (dict)
     run_log : timings and machine, the only file that may differ between two runs
+    before : folder of the issue before, where the claimed one holds none
 
     Raises
     ------
     MachineError : the machine does not let us write; the week before is in place
     """
-    folder.write(week_files(mission, plan, issued_calendar(folder.path)), plan.summary, run_log=run_log)
+    issued = issued_calendar(folder.path) or (None if before is None else issued_calendar(before))
+    folder.write(week_files(mission, plan, issued), plan.summary, run_log=run_log)
 
 
 def week_files(mission: Mission, plan, previous_calendar: bytes | None = None) -> dict[str, bytes]:

@@ -47,7 +47,7 @@ def read_wishes(
     ------
     InputError : unknown pass or mode, a pass both kept and dropped, a freeze without a time zone or previous plan
     """
-    policy = week.mission.policy
+    policy, drop = week.mission.policy, list(drop)
     kept = [_pass_and_mode(week, entry) for entry in (*policy.keep, *keep)]
     dropped = [_known_pass(week, entry, "drop") for entry in (*policy.drop, *drop)]
     both = sorted({pass_id for pass_id, _ in kept} & set(dropped))
@@ -62,6 +62,7 @@ def read_wishes(
             raise InputError(f"freeze_until must carry a time zone (append Z for UTC), got {freeze_until.isoformat()}")
         freeze_s = (freeze_until - week.mission.start).total_seconds()
     frozen = tuple(session for session in sessions if _begins_s(week, session) < max(freeze_s, 0.0))
+    _refuse_frozen(frozen, drop)
     return Wishes(
         keep=frozenset(kept),
         drop=frozenset(dropped),
@@ -69,6 +70,16 @@ def read_wishes(
         frozen=tuple(session for session in frozen if session.pass_id in week.row_of),
         freeze_until_s=freeze_s,
     )
+
+
+def _refuse_frozen(frozen: tuple[Session, ...], drop: list[str]) -> None:
+    faults = [
+        f"drop: {pass_id} is frozen and stays: its contact begins before freeze_until (--freeze-until)"
+        for pass_id in drop
+        if pass_id in {session.pass_id for session in frozen}
+    ]
+    if faults:
+        raise InputError(*faults)
 
 
 def sessions_of(contacts, mission: Mission) -> list[Session]:
@@ -95,6 +106,7 @@ def _pass_and_mode(week: Week, entry: str) -> tuple[str, str]:
 def _known_pass(week: Week, pass_id: str, what: str) -> str:
     if pass_id not in week.row_of:
         raise InputError(
-            f"{what}: must be the id of a pass in the span, got {pass_id!r}{nearest(pass_id, week.row_of)}"
+            f"{what}: must be the id of a pass in the span, as `passes` lists them, got {pass_id!r}"
+            f"{nearest(pass_id, week.row_of)}"
         )
     return pass_id

@@ -62,11 +62,18 @@ def test_a_folder_without_a_whole_set_is_told(tmp_path):
     write_set(tmp_path / "old", {"contacts.csv": contacts_csv(contacts(1))}, {})
     (tmp_path / "old" / "contacts.csv").write_bytes(b"edited")
     with pytest.raises(InputError) as told:
-        compare_sets(tmp_path / "old", tmp_path / "missing")
+        compare_sets(tmp_path / "old", tmp_path / "old")
     assert [fault.split(": ", 1)[1] for fault in told.value.faults] == [
         "differs from the hash in the index",
-        "cannot be read: No such file or directory",
+        "differs from the hash in the index",
     ]
+
+
+def test_a_missing_folder_is_told_with_the_mend(tmp_path):
+    with pytest.raises(InputError) as told:
+        compare_sets(tmp_path / "week_old", tmp_path)
+    words = "no such folder; `week` replaces the issue in its folder, so copy that before planning anew"
+    assert str(told.value) == f"{tmp_path / 'week_old'}: {words}"
 
 
 def test_contacts_that_are_none_are_told(tmp_path):
