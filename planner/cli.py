@@ -143,6 +143,8 @@ def _mission(path: str) -> Mission:
     """The mission, its modes checked against what the link can compute; faults name the file."""
     from planner.link import check_modes
 
+    if path == str(DEFAULT_MISSION) and not DEFAULT_MISSION.exists():
+        raise InputError(f"{path}: no such file here; name your mission file after the command")
     mission = load_mission(path)
     try:
         check_modes(mission)
@@ -152,7 +154,7 @@ def _mission(path: str) -> Mission:
 
 
 def _check(arguments, tell: Tell) -> int:
-    from planner.commands import check
+    from planner.understood import check
 
     return check(_mission(arguments.mission))
 
@@ -218,19 +220,19 @@ def _afford(arguments, tell: Tell) -> int:
 
 
 def _compare(arguments, tell: Tell) -> int:
-    from planner.commands import show_comparison
+    from planner.hand_over import show_comparison
 
     return show_comparison(arguments.old, arguments.new)
 
 
 def _pointing(arguments, tell: Tell) -> int:
-    from planner.commands import write_pointing
+    from planner.hand_over import write_pointing
 
     return write_pointing(_mission(arguments.mission), arguments, tell)
 
 
 def _cards(arguments, tell: Tell) -> int:
-    from planner.commands import write_cards
+    from planner.hand_over import write_cards
 
     return write_cards(_mission(arguments.mission), Path(arguments.contacts), Path(arguments.out), tell)
 

@@ -8,6 +8,7 @@ import numpy as np
 
 from planner.errors import NoWeekError
 from planner.schedule.candidates import Refusal, pose
+from planner.schedule.cautions import input_cautions
 from planner.schedule.checks import breach_text
 from planner.schedule.flown import Flown
 from planner.schedule.optimise import bound_programme
@@ -96,7 +97,7 @@ def _check_idle(week: Week) -> None:
         for breach in idle.breaches(satellite)
     ]
     if lines:
-        raise NoWeekError("\n".join(lines[:10]))
+        raise NoWeekError("\n".join([*lines[:10], *input_cautions(week.mission)]))
 
 
 def _check_wishes(problem: Problem, refusals: list[Refusal], week: Week) -> None:

@@ -11,9 +11,11 @@ from importlib.metadata import version
 import numpy as np
 import pandas as pd
 
+from planner.errors import InputError
 from planner.link import check_modes
 from planner.mission.models import Mission, Satellite
 from planner.schedule import frames
+from planner.schedule.cautions import input_cautions
 from planner.schedule.flown import Flown
 from planner.schedule.plan import Plan, make_plan
 from planner.schedule.reasons import verdicts
@@ -33,11 +35,19 @@ CAUTIONS = (
 )
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class GivenWeek:
     """A set of sessions, whoever chose them, as public tables. Columns are those of the files of the same names."""
 
     flown: Flown
+
+    def __repr__(self) -> str:
+        """In a line: the whole of it fills pages."""
+        s = self.summary
+        return (
+            f"<{type(self).__name__} of {s['mission']!r}: {s['contacts']} contacts on {s['passes']} passes,"
+            f" {s['volume_mbit']:.0f} Mbit, lowest charge {s['soc_min_pct']:.1f} %>"
+        )
 
     @cached_property
     def contacts(self) -> pd.DataFrame:
@@ -100,10 +110,10 @@ class GivenWeek:
         over = int(self.contacts["cautions"].str.contains("flux").sum())
         if over:
             own.append(f"{over} contacts exceed that flux limit at some moment; see their cautions.")
-        return [*CAUTIONS, *own]
+        return [*CAUTIONS, *own, *input_cautions(self.flown.week.mission)]
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class WeekPlan(GivenWeek):
     """A plan that keeps every limit at the pessimistic corner, with the reason for every pass and the proof."""
 
@@ -197,6 +207,8 @@ def _rounded(value: float, digits: int) -> float | None:
 @lru_cache(maxsize=2)
 def prepared(mission: Mission) -> Week:
     """The mission's week, computed once for all questions about the same mission."""
+    if not isinstance(mission, Mission):
+        raise InputError(f"mission must be what load_mission(path) gives, got {mission!r}")
     check_modes(mission)
     return prepare(mission)
 

@@ -10,6 +10,7 @@ import numpy as np
 from planner.errors import NoWeekError
 from planner.mission.contacts import Session
 from planner.power.batch import share_of
+from planner.schedule.cautions import input_cautions
 from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import CHARGE_LIMITS, Flown
 from planner.schedule.optimise import WeekProgramme, plan_programme, staying_programme
@@ -85,7 +86,7 @@ class Search:
             week, full = self._solve(problem, RELATIVE_GAP, must=False)
             if full.values is None:
                 if full.status != "time limit":
-                    raise NoWeekError(no_solution(problem, full))
+                    raise NoWeekError(no_solution(self.week, problem, full))
                 at_hand = {i for i, c in enumerate(problem.candidates) if candidate_key(c) in few}
                 problem, whole = problem.only(at_hand), False
                 week, full = self._solve(problem, RELATIVE_GAP)
@@ -188,7 +189,7 @@ class Search:
         solution = solve(week.programme, relative_gap=gap, time_limit_s=limit_s, cancelled=self.cancelled)
         _log.info("%s: %s", f"solution {self.solutions}, {len(problem.candidates)} windows", solution)
         if must and solution.values is None:
-            raise NoWeekError(no_solution(problem, solution))
+            raise NoWeekError(no_solution(self.week, problem, solution))
         return week, solution
 
     def _flown(self, problem: Problem, chosen: Chosen) -> Flown:
@@ -302,7 +303,7 @@ def on_whole_seconds(candidate: Candidate, on_s: float, off_s: float) -> Session
     return candidate.session(start, stop)
 
 
-def no_solution(problem: Problem, solution: Solution) -> str:
+def no_solution(week: Week, problem: Problem, solution: Solution) -> str:
     """Why the programme has no solution, as far as that can be told."""
     if solution.status == "time limit":
         return "no plan was found within the time limit; allow more time"
@@ -317,4 +318,5 @@ def no_solution(problem: Problem, solution: Solution) -> str:
         "policy.upload_lead_h": policy.upload_lead_h,
     }
     stated = ", ".join(f"{key} = {value!r}" for key, value in asked.items() if value not in (None, ()))
-    return f"no week meets the policy's required contacts within its limits ({stated or solution.status})"
+    said = f"no week meets the policy's required contacts within its limits ({stated or solution.status})"
+    return "\n".join([said, *input_cautions(week.mission)])

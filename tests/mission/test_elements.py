@@ -101,6 +101,13 @@ def test_the_newest_set_at_or_before_the_start_is_taken_else_the_oldest(days_bef
     assert (chosen.epoch.day, chosen.sets_in_file) == (epoch_day, 2)
 
 
+def test_a_newer_set_that_is_passed_over_is_remembered():
+    early, late = (
+        read_elements(SAMPLES / "two_satellites.omm", AT - timedelta(days=d))["MARSHLIGHT-1"] for d in (1.5, 0)
+    )
+    assert (early.newer_epoch, late.newer_epoch) == (datetime(2026, 12, 6, 18, tzinfo=UTC), None)
+
+
 def test_which_set_is_told_in_words():
     chosen = read_elements(SAMPLES / "two_satellites.omm", AT)["MARSHLIGHT-1"]
     assert which_set(chosen, AT) == "element set of epoch 2026-12-06T18:00:00Z, 6.0 h old at the start; 2 in the file"

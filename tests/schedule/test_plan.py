@@ -232,11 +232,13 @@ def test_a_kept_pass_that_cannot_fly_is_refused_with_the_reason(day):
 @pytest.mark.parametrize(
     ("wishes", "message"),
     [
-        ({"keep": ["nothing:K high rate"]}, "keep: must be the id of a pass in the span, got 'nothing'"),
+        ({"keep": ["nothing:K high rate"]},
+         "keep: must be the id of a pass in the span, as `passes` lists them, got 'nothing'"),
         ({"keep": ["{id}"]}, "keep: must be PASS:MODE with a mode of ['K high rate', 'S low rate'], got '{id}'"),
         ({"keep": ["{id}:K hi rate"]}, "keep: must be PASS:MODE with a mode of ['K high rate', 'S low rate'],"
          " got '{id}:K hi rate'; did you mean \"K high rate\"?"),
-        ({"drop": ["{id}x"]}, "drop: must be the id of a pass in the span, got '{id}x'; did you mean \"{id}\"?"),
+        ({"drop": ["{id}x"]},
+         "drop: must be the id of a pass in the span, as `passes` lists them, got '{id}x'; did you mean \"{id}\"?"),
         ({"keep": ["{id}:K high rate"], "drop": ["{id}"]}, "pass {id} must not be both kept and dropped"),
     ],
 )  # fmt: skip
@@ -289,6 +291,30 @@ def test_a_freeze_needs_a_previous_plan_and_a_zone(day):
         planner.plan_week(mission, freeze_until=mission.start)
     with pytest.raises(InputError, match=r"freeze_until must carry a time zone \(append Z for UTC\)"):
         planner.plan_week(mission, previous=plan.contacts, freeze_until=mission.start.replace(tzinfo=None))
+
+
+def test_what_is_frozen_cannot_be_dropped(day):
+    mission, plan = day
+    first = plan.contacts.iloc[0].pass_id
+    until = mission.start + timedelta(hours=20)
+    with pytest.raises(InputError) as told:
+        planner.plan_week(mission, drop=[first], previous=plan.contacts, freeze_until=until)
+    assert str(told.value) == (
+        f"drop: {first} is frozen and stays: its contact begins before freeze_until (--freeze-until)"
+    )
+
+
+def test_missions_and_plans_say_in_a_line_what_they_are(day):
+    mission, plan = day
+    assert repr(mission).startswith("<Mission 'MARSHLIGHT-1 week 50': ")
+    assert repr(plan).startswith("<WeekPlan of 'MARSHLIGHT-1 week 50': ")
+    assert "\n" not in repr(mission) + repr(plan)
+
+
+def test_a_path_is_no_mission():
+    with pytest.raises(InputError) as told:
+        planner.plan_week("missions/marshlight.toml")
+    assert str(told.value) == "mission must be what load_mission(path) gives, got 'missions/marshlight.toml'"
 
 
 def test_a_time_limit_still_gives_a_safe_plan(day):

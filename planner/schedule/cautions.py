@@ -1,0 +1,52 @@
+"""What in a mission's files is allowed, and yet likely a slip or soon a surprise."""
+
+from collections.abc import Iterator
+from datetime import UTC
+
+from planner.link.polarisation import polarisation_loss_db
+from planner.mission.models import Mission, Satellite
+from planner.mission.transmitter import Transmitter
+from planner.power.battery import describe_cell
+
+
+def input_cautions(mission: Mission) -> list[str]:
+    """One sentence for each; satellites that share a spacecraft are warned of once."""
+    every = [caution for satellite in mission.satellites for caution in _cautions(mission, satellite)]
+    return list(dict.fromkeys(every))
+
+
+def _cautions(mission: Mission, satellite: Satellite) -> Iterator[str]:
+    elements, until = satellite.elements, satellite.start_state.commands_aboard_until
+    if elements.newer_epoch is not None:
+        yield (
+            f"{satellite.name}: elements of {_iso(elements.epoch)} are used; those of {_iso(elements.newer_epoch)} in"
+            " the same file are newer than the start: leave only them in the file to plan with them."
+        )
+    if mission.policy.upload_lead_h is not None and until is not None and until <= mission.start:
+        yield (
+            f"{satellite.name}: start_state.commands_aboard_until = {_iso(until)} is not after the start: no contact"
+            " can be commanded, not even the first that could carry commands (policy.upload_lead_h)."
+        )
+    for transmitter in satellite.spacecraft.transmitter:
+        if not any(_hears(station, transmitter) for station in mission.stations):
+            yield (
+                f"mode {transmitter.mode!r} is never used: no station hears {transmitter.band} band in a polarisation"
+                f" that goes with {transmitter.polarisation}."
+            )
+    battery = satellite.spacecraft.battery
+    full_pct = describe_cell(battery, health=battery.health).full_soc_pct
+    if full_pct < mission.policy.soc_end_pct:
+        yield (
+            f"battery.cell_max_v = {battery.cell_max_v:g} ends the charge of this {battery.chemistry} cell at"
+            f" {full_pct:.0f} %, below policy.soc_end_pct = {mission.policy.soc_end_pct:g}."
+        )
+
+
+def _hears(station, transmitter: Transmitter) -> bool:
+    sent, antenna = (transmitter.polarisation, transmitter.axial_ratio_db), station.antenna
+    loss_db = polarisation_loss_db(*sent, antenna.polarisations, antenna.axial_ratio_db)
+    return station.receiver_for(transmitter.band) is not None and loss_db is not None
+
+
+def _iso(moment) -> str:
+    return f"{moment.astimezone(UTC):%Y-%m-%dT%H:%M:%SZ}"
