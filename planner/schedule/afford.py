@@ -26,7 +26,11 @@ NEAREST = 14  # … among the contacts nearest before the session
 
 @dataclass(frozen=True)
 class Affordability:
-    """The go or no-go for one session at the pessimistic corner, and the figures behind it. None where not defined."""
+    """The go or no-go for one session at the pessimistic corner, and the figures behind it. None where not defined.
+
+    `replaces` names accepted contacts that the session takes the place of, `replaced_s` on air in all. `gained_mbit` is
+    what all contacts together then bring more: less than `volume_mbit` where others would have brought the same data.
+    """
 
     pass_id: str
     satellite: str
@@ -53,9 +57,12 @@ class Affordability:
     missing_unit: str | None = None
     give_way: tuple[str, ...] = ()
     conflicts: tuple[str, ...] = ()
+    replaces: tuple[str, ...] = ()
+    replaced_s: float | None = None
+    gained_mbit: float | None = None
 
     def as_dict(self) -> dict:
-        return asdict(self) | {"give_way": list(self.give_way), "conflicts": list(self.conflicts)}
+        return asdict(self) | {name: list(getattr(self, name)) for name in ("give_way", "conflicts", "replaces")}
 
 
 def afford(
@@ -75,7 +82,9 @@ def afford(
     tell("passes, links and power")
     week = prepared(mission)
     if pass_id not in week.row_of:
-        raise InputError(f"pass must be in the span, got {pass_id!r}{nearest(pass_id, week.row_of)}")
+        raise InputError(
+            f"pass must be in the span, as `passes` lists them, got {pass_id!r}{nearest(pass_id, week.row_of)}"
+        )
     row = week.row_of[pass_id]
     satellite, station = str(week.sky.passes.satellite[row]), str(week.sky.passes.station[row])
     modes = [transmitter.mode for transmitter in mission.satellite(satellite).spacecraft.transmitter]
@@ -93,13 +102,12 @@ def afford(
 def _answer(flown: Flown, candidate: Candidate) -> Affordability:
     week, iso = flown.week, flown.week.sky.clock.iso
     craft = week.mission.satellite(candidate.satellite).spacecraft
-    base = flown.without(
-        {
-            s
-            for s in flown.of(candidate.satellite)
-            if s.pass_id == candidate.pass_id and not craft.may_overlap(s.mode, candidate.mode)
-        }
-    )
+    replaced = [
+        s
+        for s in flown.of(candidate.satellite)
+        if s.pass_id == candidate.pass_id and not craft.may_overlap(s.mode, candidate.mode)
+    ]
+    base = flown.without(set(replaced))
     session = _placed(candidate, candidate.longest_s, _best_start_s(candidate, candidate.longest_s))
     trial = base.with_session(session)
     series = trial.worst[candidate.satellite]
@@ -138,6 +146,9 @@ def _answer(flown: Flown, candidate: Candidate) -> Affordability:
         missing_unit=binding.unit if binding else None,
         give_way=tuple(contact_id(s) for s in _give_way(base, session)) if breaches else (),
         conflicts=tuple(_conflicts(base, session)),
+        replaces=tuple(contact_id(s) for s in replaced),
+        replaced_s=sum(s.duration_s for s in replaced) if replaced else None,
+        gained_mbit=trial.total_mbit - flown.total_mbit,
     )
 
 
@@ -188,15 +199,21 @@ def _affordable_start(base: Flown, candidate: Candidate, duration_s: float) -> f
 def _give_way(base: Flown, session: Session) -> tuple[Session, ...]:
     """The smallest set of accepted contacts without which the session is affordable, least volume lost first.
 
+    None that a rule of the week needs (a daily contact, one that carries commands up) is given up.
+
     Sets of up to three among the nearest are tried; beyond that contacts are given up nearest first until it fits,
     and those that turn out not to matter are taken back. Empty when giving up contacts does not help.
     """
     own = base.of(session.satellite)
     nearest_first = sorted(own, key=lambda s: abs(s.tx_on_s - session.tx_on_s))[:NEAREST]
 
+    known = set(_conflicts(base, session)) | {fault.text for fault in find_faults(base)}
+
     def fits(gone) -> bool:
-        without = base.without(set(gone))
-        return not _new_breaches(base, without.with_session(session), session.satellite)
+        without = base.without(set(gone)).with_session(session)
+        return not _new_breaches(base, without, session.satellite) and not any(
+            fault.text not in known for fault in find_faults(without)
+        )
 
     for count in range(1, MOST_GIVEN_UP + 1):
         sets = sorted(

@@ -120,6 +120,38 @@ def test_no_smaller_set_gives_way(refused):
         assert breaches(mission, simulated(mission, staying, answer))
 
 
+def test_contacts_that_a_rule_of_the_week_needs_do_not_give_way(refused):
+    """A contact a day is kept by the others; with no longer gaps allowed than there are, few can go."""
+    mission, plan, answer = refused
+    daily = mission.with_changes(policy={"daily_contact_modes": (K,)})
+    assert planner.afford(daily, answer.pass_id, K, plan.contacts).give_way == answer.give_way
+    gap_h = max(_gaps_h(mission, plan, answer.pass_id))
+    strict = mission.with_changes(policy={"longest_gap_h": gap_h + 0.01})
+    kept = planner.afford(strict, answer.pass_id, K, plan.contacts).give_way
+    assert all(gap <= gap_h + 0.01 for gap in _gaps_h(mission, plan, answer.pass_id, gone=kept))
+
+
+def _gaps_h(mission, plan, pass_id, gone=()):
+    """Hours without contact between the plan's sessions less those gone, the span's ends included."""
+    own = [s for s in plan.flown.sessions if contact_id(s) not in gone]
+    ends, begins = [0.0, *(s.tx_off_s for s in own)], [*(s.tx_on_s for s in own), mission.span_s]
+    return [(begin - end) / 3600 for end, begin in zip(ends, begins, strict=True)]
+
+
+def test_a_planned_contact_is_named_as_the_one_replaced_and_what_the_week_gains(tight):
+    mission, plan = tight
+    row = plan.contacts.iloc[0]
+    answer = planner.afford(mission, row.pass_id, K, plan.contacts)
+    assert answer.replaces == (row.contact_id,)
+    assert answer.replaced_s == pytest.approx(row.duration_s)
+    rest = plan.contacts.iloc[1:]
+    again = planner.afford(mission, row.pass_id, K, rest)
+    assert (again.replaces, again.replaced_s) == ((), None)
+    without = planner.audit(mission, rest).flown.total_mbit
+    assert again.gained_mbit - answer.gained_mbit == pytest.approx(plan.flown.total_mbit - without)
+    assert again.gained_mbit <= again.volume_mbit + 1e-6
+
+
 def test_without_contacts_the_planned_week_is_meant(tight):
     mission, plan = tight
     pass_id = plan.contacts.iloc[0].pass_id
@@ -162,7 +194,9 @@ def test_unknown_passes_and_modes(two_day_mission, plan):
     pass_id = plan.passes.iloc[0].pass_id
     with pytest.raises(InputError) as caught:
         planner.afford(two_day_mission, pass_id[:-1], K, plan.contacts)
-    assert str(caught.value).startswith(f"pass must be in the span, got '{pass_id[:-1]}'; did you mean")
+    assert str(caught.value).startswith(
+        f"pass must be in the span, as `passes` lists them, got '{pass_id[:-1]}'; did you mean"
+    )
     with pytest.raises(InputError) as caught:
         planner.afford(two_day_mission, pass_id, "K high", plan.contacts)
     assert str(caught.value) == (
