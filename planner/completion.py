@@ -3,6 +3,7 @@
 import argparse
 import os
 from collections.abc import Iterator
+from typing import Any
 
 from planner.errors import InputError
 from planner.mission.files import DEFAULT_MISSION, load_mission
@@ -19,6 +20,7 @@ def offer(parser: argparse.ArgumentParser) -> None:
     import argcomplete
     from argcomplete.completers import DirectoriesCompleter, FilesCompleter
 
+    completer: Any
     for action in _actions(parser):
         if action.dest in FILES:
             completer = FilesCompleter(FILES[action.dest])

@@ -1,0 +1,91 @@
+"""The commands that make files for stations and operators from contacts, and the one that compares two issues."""
+
+from collections.abc import Iterable, Iterator
+from itertools import islice
+from pathlib import Path
+
+from planner import printing
+from planner.errors import InputError
+from planner.mission.models import Mission
+from planner.printing import Tell
+
+DONE, NO = 0, 1
+
+
+def show_comparison(old: str, new: str) -> int:
+    """Print what changed."""
+    from planner.export.compare import HEADINGS, compare_sets
+
+    found = compare_sets(old, new)
+    printing.say(found.headline())
+    if not found.is_same:
+        printing.table([(heading, "left") for heading in HEADINGS], found.rows())
+    for name in found.inputs:
+        printing.say(f"input changed: {name}")
+    return DONE
+
+
+def write_pointing(mission: Mission, arguments, tell: Tell) -> int:
+    """Pointing tables for the contacts of a file; those whose elements are too old get none and are told."""
+    from planner.export.contacts import file_issue
+    from planner.export.folder import claim_folder
+    from planner.export.pointing import pointing_tables, too_old
+    from planner.schedule.result import prepared
+    from planner.schedule.wishes import sessions_of
+
+    contacts = Path(arguments.contacts)
+    sessions = sessions_of(contacts, mission)
+    with claim_folder(arguments.out) as folder:
+        printing.fault(folder.mended)
+        tell("passes, links and power")
+        sky = prepared(mission).sky
+        refused = {} if arguments.force else too_old(mission, sky, sessions)
+        tables = pointing_tables(
+            mission,
+            sky,
+            [session for session in sessions if session not in refused],
+            step_s=arguments.step,
+            refracted=arguments.refracted,
+            force=arguments.force,
+            issue=file_issue(contacts.read_bytes()),
+        )
+        files = dict(_counted(tables, tell, "pointing table", len(sessions) - len(refused)))
+        folder.write(files, {"mission": mission.name, "tables": len(files)}, index="pointing.json")
+    printing.fault(refused.values())
+    printing.say(f"{len(files)} pointing tables written to {arguments.out}")
+    if refused:
+        printing.say(f"no table for {len(refused)} contacts: take newer elements, or --force")
+    return NO if refused else DONE
+
+
+def write_cards(mission: Mission, contacts: Path, out: Path, tell: Tell) -> int:
+    """A card for every contact of a file, and the week sheet."""
+    from planner.export.cards import card_files
+    from planner.export.folder import claim_folder
+    from planner.export.sheet import sheet_files
+    from planner.schedule.audit import audit
+    from planner.schedule.result import GivenWeek
+
+    with claim_folder(out) as folder:
+        printing.fault(folder.mended)
+        tell("checking the contacts")
+        verdict = audit(mission, contacts)
+        if not verdict.safe:
+            raise InputError(f"{contacts}: cards are made only of contacts that keep every limit", *verdict.texts())
+        given = GivenWeek(verdict.flown)
+        count = len(given.contacts)
+        cards = card_files(mission, verdict.flown.week.sky, given.contacts)
+        files = dict(_counted(cards, tell, "file of cards", 2 * count))
+        tell("the week sheet")
+        files |= sheet_files(mission, given)
+        folder.write(files, {"mission": mission.name, "cards": count}, index="cards.json")
+    printing.say(f"{count} cards and the week sheet written to {out}")
+    return DONE
+
+
+def _counted(files: Iterable[tuple[str, bytes]], tell: Tell, what: str, count: int) -> Iterator[tuple[str, bytes]]:
+    """The files, each told before it is made."""
+    made = iter(files)
+    for number in range(1, count + 1):
+        tell(f"{what} {number} of {count}")
+        yield from islice(made, 1)
