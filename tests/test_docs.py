@@ -3,7 +3,9 @@
 import json
 import re
 import shlex
+import shutil
 import textwrap
+import tomllib
 from fnmatch import fnmatch
 from hashlib import sha256
 from pathlib import Path
@@ -15,6 +17,8 @@ from planner import cli
 from planner.export.contacts import contacts_csv
 from planner.export.folder import claim_folder
 from planner.export.week import write_week
+from planner.mission.station import Station
+from planner.mission.transmitter import OwnModcod
 
 ROOT = Path(__file__).parents[1]
 README, DEVELOPERS = (ROOT / name for name in ("README.md", "DEVELOPERS.md"))
@@ -229,6 +233,23 @@ def test_a_command_of_the_readme_ends_as_told(desk, two_day_plan, monkeypatch, c
     assert said.out
 
 
+def test_the_middle_of_the_week_goes_as_told(desk, two_day_plan, monkeypatch, capsys):
+    """On the two days, of which the second is planned anew."""
+    monkeypatch.chdir(desk)
+    copy, *commands = block(README, "cp -r ")
+    folder, kept = copy.split()[2:]
+    shutil.copytree(folder, kept, dirs_exist_ok=True)
+    contacts = two_day_plan.contacts
+    dropped = contacts["pass_id"][contacts["tx_on_utc"] > "2026-12-08T10"].iloc[0]
+    replan, comparison = (words_of(line) for line in commands)
+    replan = [{"PASS": dropped, "2026-12-09T08:00:00Z": "2026-12-08T08:00:00Z"}.get(word, word) for word in replan]
+    assert cli.main(["week", "missions/two_days.toml", *replan[1:]]) == cli.DONE
+    assert cli.main(comparison) == cli.DONE
+    said = capsys.readouterr().out
+    assert re.search(r"^lost +.*", said, re.MULTILINE)
+    assert dropped in said
+
+
 def test_every_command_is_shown_in_the_readme(capsys):
     shown = {words_of(line)[0] for line in COMMAND_LINES}
     assert shown == set(commands_in(help_of(capsys)))
@@ -308,6 +329,17 @@ def test_every_path_named_is_there(document):
     ]
     assert paths
     assert missing == []
+
+
+def test_what_is_shown_for_adding_things_is_taken(marshlight):
+    station = tomllib.loads("\n".join(block(DEVELOPERS, 'name = "Saltmere"')))
+    assert Station.model_validate(station, strict=False).receiver_for("S")
+    table = tomllib.loads("\n".join(block(DEVELOPERS, "[[transmitter.own_modcods]]")))["transmitter"]
+    assert [OwnModcod.model_validate(row) for row in table["own_modcods"]]
+    battery = marshlight.satellites[0].spacecraft.battery
+    curve = tomllib.loads("\n".join(block(DEVELOPERS, "[battery]")))["battery"]["open_circuit"]
+    own = battery.model_dump() | {"open_circuit": tuple(map(tuple, curve))}
+    assert type(battery).model_validate(own).open_circuit[-1] == (100.0, 3.45)
 
 
 def test_every_file_named_for_a_room_is_there():
