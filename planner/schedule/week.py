@@ -19,7 +19,7 @@ from planner.sky import Sky, observe
 
 SAMPLE_STEP_S = 5.0
 REACH_S = 1800.0  # tracks go on for a revolution and more beyond the span; slews and cool-down need room too
-MOST_LINKS = 14_000  # passes x modes: their links, sampled, fill some 1 GB
+MOST_LINKS = 6_000  # passes x modes: their links, sampled, and the tables of 60 days fill some 1 GB
 Progress = Callable[[str], None]
 
 
