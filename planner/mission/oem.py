@@ -89,7 +89,8 @@ class _Reader:
         if math.hypot(*state[:3]) < LOWEST_KM:
             return False
         frame = "ITRF" if self.meta.get("REF_FRAME", (0, ""))[1].upper().startswith("ITRF") else ""
-        axis_km, eccentricity, _ = two_body(state, frame)
+        x, y, z, vx, vy, vz = state
+        axis_km, eccentricity, _ = two_body((x, y, z, vx, vy, vz), frame)
         return axis_km * (1 - eccentricity) > LOWEST_KM and 0 < axis_km < HIGHEST_KM
 
     def close_segment(self):
