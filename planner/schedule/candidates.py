@@ -56,7 +56,8 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
     """The optimiser's problem, costs of sessions and states of satellites filled in."""
     found, refused = find_candidates(week, wishes)
     _tell_choice(found, refused)
-    found = [replace(c, stays=True) if (c.pass_id, c.mode) in wishes.previous else c for c in found]
+    before = {(session.pass_id, session.mode) for session in wishes.previous}
+    found = [replace(c, stays=True) if (c.pass_id, c.mode) in before else c for c in found]
     states, priced = [], []
     for satellite in week.mission.satellites:
         own = [candidate for candidate in found if candidate.satellite == satellite.name]
@@ -84,6 +85,7 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
             orbit_s={track.satellite: track.period_s for track in week.sky.tracks},
             keep=wishes.keep | {(session.pass_id, session.mode) for session in wishes.frozen},
             frozen=wishes.frozen,
+            previous=wishes.previous,
         ),
         refused,
     )

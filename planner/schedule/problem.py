@@ -19,6 +19,7 @@ class Problem:
     """Everything that constrains the choice.
 
     keep : (pass_id, mode) that must fly;  frozen : sessions that must fly just as they are
+    previous : those of the plan before this one, which should change little
     midnight_s : the UTC midnights within the span [s]
     commands_until_s : sessions that end before need no upload in the span, by satellite
     overlapping : the modes that may be on air on the same pass as a satellite's mode;  orbit_s : revolutions [s]
@@ -35,6 +36,7 @@ class Problem:
     orbit_s: dict[str, float]
     keep: frozenset[tuple[str, str]] = frozenset()
     frozen: tuple[Session, ...] = ()
+    previous: tuple[Session, ...] = ()
 
     def only(self, chosen: set[int]) -> "Problem":
         """The same problem with no other candidates: small, for mending a plan."""

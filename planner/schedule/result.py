@@ -15,6 +15,7 @@ from planner.errors import InputError
 from planner.link import check_modes
 from planner.mission.models import Mission, Satellite
 from planner.schedule import frames
+from planner.schedule.account import data_classes
 from planner.schedule.cautions import input_cautions
 from planner.schedule.flown import Flown
 from planner.schedule.plan import Plan, make_plan
@@ -170,26 +171,11 @@ def _risk(flown: Flown, satellite: str) -> dict:
 
 
 def _data_classes(flown: Flown, satellite: Satellite) -> list[dict]:
-    """What became of each class: by Little's law, what was stored over time per Mbit sent is its mean age."""
-    classes, rows, before = satellite.spacecraft.recorder.classes, [], np.zeros(4)
-    for data_class, series in zip(classes, flown.heaviest(satellite), strict=True):
-        held_mbit_h = float(np.trapezoid(series.stored_mbit, series.time_s)) / 3600
-        sums = np.array([series.delivered_mbit[-1], series.lost_mbit[-1], series.stored_mbit[-1], held_mbit_h])
-        delivered, lost, stored, held = sums - before
-        before = sums
-        rows.append(
-            {
-                "satellite": satellite.name,
-                "name": data_class.name,
-                "weight": data_class.weight,
-                "delivered_mbit": _rounded(delivered, 3),
-                "lost_mbit": _rounded(lost, 3),
-                "stored_end_mbit": _rounded(stored, 3),
-                "mean_age_h": _rounded(held / delivered, 3) if delivered > 0 else None,
-                "worth": _rounded(data_class.weight * delivered - data_class.fading_per_h * held, 3),
-            }
-        )
-    return rows
+    """What became of each class of data, rounded."""
+    rows = data_classes(flown, satellite)
+    return [
+        {k: _rounded(v, 3) if isinstance(v, float) and k != "weight" else v for k, v in row.items()} for row in rows
+    ]
 
 
 def _oldest_age_days(flown) -> float:

@@ -10,12 +10,14 @@ import numpy as np
 from planner.errors import NoWeekError
 from planner.mission.contacts import Session
 from planner.power.batch import share_of
+from planner.schedule.account import worth_mbit
 from planner.schedule.cautions import input_cautions
 from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import CHARGE_LIMITS, Flown
 from planner.schedule.optimise import WeekProgramme, plan_programme, staying_programme
 from planner.schedule.problem import Problem
 from planner.schedule.programme import Solution, solve
+from planner.schedule.restore import put_back
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
 from planner.schedule.week import Progress, Week
@@ -108,7 +110,8 @@ class Search:
         return self._staying(*best) if any(c.stays for c in self.problem.candidates) else best
 
     def _staying(self, flown: Flown, solution: Solution) -> tuple[Flown, Solution]:
-        """Among this plan's contacts and the previous one's: those that change least for policy.replan_loss_pct."""
+        """Among this plan's contacts and the previous one's: those that change least for policy.replan_loss_pct, at the
+        times they had where that holds every limit too."""
         planned = {(session.pass_id, session.mode) for session in flown.sessions}
         few = {i for i, c in enumerate(self.problem.candidates) if c.stays or (c.pass_id, c.mode) in planned}
         problem = self.problem.only(few)
@@ -122,11 +125,19 @@ class Search:
             cancelled=self.cancelled,
         )
         found = None if stayed.values is None else self._mended(problem, week, stayed)
-        if found is None:
-            return flown, solution
-        worth = plan_programme(problem).programme.gain
-        objective = float(np.dot(worth, stayed.values[: len(worth)])) if found[1] is stayed else found[1].objective
-        return found[0], replace(solution, objective=objective)
+        objective = solution.objective
+        least_mbit = worth_mbit(flown) - (solution.objective - least)
+        if found is not None:
+            flown = found[0]
+            worth = plan_programme(problem).programme.gain
+            objective = float(np.dot(worth, stayed.values[: len(worth)])) if found[1] is stayed else found[1].objective
+        back = put_back(flown, problem.previous, lambda f: worth_mbit(f) >= least_mbit and not self._faults(problem, f))
+        _log.info(
+            "%d of %d contacts put back to the times they had",
+            len({*back.sessions} - {*flown.sessions}),
+            len(back.sessions),
+        )
+        return back, replace(solution, objective=objective + worth_mbit(back) - worth_mbit(flown))
 
     def _approach(self) -> tuple[set[tuple], float]:
         """Correct the problem by a coarse solution, and by what becomes of its sessions under the corrected problem.
@@ -153,8 +164,7 @@ class Search:
                 return None
             chosen = week.sessions(solution.values)
             flown = self._flown(week.problem, chosen)
-            # frozen sessions stay as they are, whatever newer elements say of them
-            faults = [fault for fault in find_faults(flown) if fault.session not in problem.frozen]
+            faults = self._faults(problem, flown)
             if not faults:
                 _log.info("%d sessions keep every limit in the full physics", len(flown.sessions))
                 return flown, solution, {candidate_key(week.problem.candidates[i]): tuple(t) for i, *t in chosen}
@@ -167,6 +177,10 @@ class Search:
             tighter = self._tightened(self._giving_up(small, faults), flown, faults)
             week, solution = self._solve(tighter, RELATIVE_GAP / 10, must=False)
         return None
+
+    def _faults(self, problem: Problem, flown: Flown) -> list[Fault]:
+        """Broken limits; frozen sessions stay as they are, whatever newer elements say of them."""
+        return [fault for fault in find_faults(flown) if fault.session not in problem.frozen]
 
     def _giving_up(self, problem: Problem, faults: list[Fault]) -> Problem:
         """What breaks a limit of its own is given up; a rule of the week that breaks is told."""

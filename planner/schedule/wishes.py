@@ -26,7 +26,7 @@ class Wishes:
 
     keep: frozenset[tuple[str, str]] = frozenset()
     drop: frozenset[str] = frozenset()
-    previous: frozenset[tuple[str, str]] = frozenset()
+    previous: tuple[Session, ...] = ()
     frozen: tuple[Session, ...] = ()
     freeze_until_s: float = -np.inf
 
@@ -66,7 +66,7 @@ def read_wishes(
     return Wishes(
         keep=frozenset(kept),
         drop=frozenset(dropped),
-        previous=frozenset((s.pass_id, s.mode) for s in sessions),
+        previous=tuple(sessions),
         frozen=tuple(session for session in frozen if session.pass_id in week.row_of),
         freeze_until_s=freeze_s,
     )
