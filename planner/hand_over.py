@@ -61,6 +61,7 @@ def write_pointing(mission: Mission, arguments, tell: Tell) -> int:
 def write_cards(mission: Mission, contacts: Path, out: Path, tell: Tell) -> int:
     """A card for every contact of a file, and the week sheet."""
     from planner.export.cards import card_files
+    from planner.export.contacts import file_issue
     from planner.export.folder import claim_folder
     from planner.export.sheet import sheet_files
     from planner.schedule.audit import audit
@@ -74,10 +75,11 @@ def write_cards(mission: Mission, contacts: Path, out: Path, tell: Tell) -> int:
             raise InputError(f"{contacts}: cards are made only of contacts that keep every limit", *verdict.texts())
         given = GivenWeek(verdict.flown)
         count = len(given.contacts)
-        cards = card_files(mission, verdict.flown.week.sky, given.contacts)
+        issue = file_issue(contacts.read_bytes())
+        cards = card_files(mission, verdict.flown.week.sky, given.contacts, issue)
         files = dict(_counted(cards, tell, "file of cards", 2 * count))
         tell("the week sheet")
-        files |= sheet_files(mission, given)
+        files |= sheet_files(mission, given, issue)
         folder.write(files, {"mission": mission.name, "cards": count}, index="cards.json")
     printing.say(f"{count} cards and the week sheet written to {out}")
     return DONE
