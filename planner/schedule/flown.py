@@ -138,6 +138,15 @@ class Flown:
         edges_s, rate_mbps = self._offer(session)
         return np.interp(time_s, edges_s, np.concatenate([[0.0], np.cumsum(rate_mbps * np.diff(edges_s))]))
 
+    @cached_property
+    def mbit_per_wh(self) -> dict[str, list[float]]:
+        """What each session delivers for the energy that it adds to the satellite's own, by satellite."""
+        draws = {name: power.session_draws(list(self.of(name))) for name, power in self.week.powers.items()}
+        return {
+            name: [self.volume_mbit[s] / max(d.added_wh, 1e-9) for s, d in zip(self.of(name), own, strict=True)]
+            for name, own in draws.items()
+        }
+
     @property
     def total_mbit(self) -> float:
         return float(sum(self.volume_mbit.values()))

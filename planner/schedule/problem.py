@@ -2,6 +2,7 @@
 
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from functools import cached_property
 from itertools import groupby
 
 import numpy as np
@@ -123,6 +124,11 @@ class Problem:
             (c.tail_s for c in self.candidates), default=0.0
         )
         return max(self.policy.turnaround_s + warmup_s, rest_s + warmup_s, busy_s)
+
+    @cached_property
+    def candidate_of(self) -> dict[tuple[str, str], Candidate]:
+        """The first candidate of each (pass_id, mode)."""
+        return {(c.pass_id, c.mode): c for c in reversed(self.candidates)}
 
     def of_pass_and_mode(self) -> list[list[int]]:
         """Candidates that are ways of flying the same pass and mode: at most one of each is flown."""

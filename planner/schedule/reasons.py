@@ -61,7 +61,7 @@ def _busy(flown: Flown, problem: Problem, candidate: Candidate) -> str:
     for session in flown.sessions:
         if session.satellite != candidate.satellite and session.station != candidate.station:
             continue
-        other = _candidate_of(problem, session)
+        other = problem.candidate_of[session.pass_id, session.mode]
         before_s = session.tx_on_s - problem.apart_s(candidate, other)
         after_s = session.tx_off_s + problem.apart_s(other, candidate)
         if before_s < candidate.closes_s and after_s > candidate.opens_s:
@@ -75,10 +75,6 @@ def _busy(flown: Flown, problem: Problem, candidate: Candidate) -> str:
     who = taken[0][2]
     what = "satellite" if who.satellite == candidate.satellite else "antenna"
     return f"{what} busy with {contact_id(who)}, {max(free_s, 0.0):.0f} s left of {candidate.window_s:.0f} s"
-
-
-def _candidate_of(problem: Problem, session: Session) -> Candidate:
-    return next(c for c in problem.candidates if (c.pass_id, c.mode) == (session.pass_id, session.mode))
 
 
 def _no_upload(flown: Flown, problem: Problem, candidate: Candidate) -> str:
@@ -165,12 +161,7 @@ def _not_worth_it(flown: Flown, problem: Problem, candidate: Candidate) -> str:
         return f"not worth it: at most {candidate.most_mbit:.0f} Mbit for a station cost of {price_mbit:.0f} Mbit"
     taken_wh = candidate.likely.fixed_wh + candidate.likely.on_air_wh(candidate.opens_s, candidate.closes_s)
     own = candidate.most_mbit / max(taken_wh, 1e-9)
-    rivals = [_yield_mbit_per_wh(flown, session) for session in flown.of(candidate.satellite)]
+    rivals = flown.mbit_per_wh[candidate.satellite]
     poorest = min((rival for rival in rivals if rival > own), default=None)
     beaten = "" if poorest is None else f"; planned sessions bring from {poorest:.0f} Mbit/Wh"
     return f"not worth it: {taken_wh:.2f} Wh for at most {candidate.most_mbit:.0f} Mbit ({own:.0f} Mbit/Wh{beaten})"
-
-
-def _yield_mbit_per_wh(flown: Flown, session: Session) -> float:
-    draw = flown.week.powers[session.satellite].session_draw(session)
-    return flown.volume_mbit[session] / max(draw.added_wh, 1e-9)
