@@ -1,6 +1,7 @@
 """Orbit mean-elements messages (OMM, CCSDS 502.0-B-3) as keyword lines, XML, JSON and CSV."""
 
 import csv
+import difflib
 import io
 import json
 from xml.etree import ElementTree
@@ -116,11 +117,21 @@ def _bare() -> tuple[str, ...]:
     return tuple(keyword for keyword in REQUIRED if keyword not in (*ONLY, "OBJECT_ID"))
 
 
+def _misspelt(keyword: str, values) -> str:
+    """What stands in place of a keyword: one like it that is none, or nothing."""
+    close = difflib.get_close_matches(keyword, [other for other in values if other not in REQUIRED], n=1, cutoff=0.8)
+    return repr(close[0]) if close else "none"
+
+
 def _gathered(messages, faults: list[str], required) -> Parsed:
     sets = []
     for where, values in messages:
         values = {keyword: value for keyword, value in values.items() if value != ""}
-        found = [f"{where}: {keyword} must be given, got none" for keyword in required if keyword not in values]
+        found = [
+            f"{where}: {keyword} must be given, got {_misspelt(keyword, values)}"
+            for keyword in required
+            if keyword not in values
+        ]
         element_set, more = _element_set(where, values) if not found else (None, [])
         sets += [element_set] if element_set else []
         faults = faults + found + more

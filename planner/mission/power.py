@@ -22,6 +22,9 @@ from planner.mission.base import (
 When = Literal["always", "sunlit", "eclipse", "windows"]
 Table = tuple[tuple[Real, Real], ...]
 # Cell voltages an operator commonly stays between, for cycle life and headroom (common practice, no source)
+# What a cell of a chemistry is ever discharged and charged to (from memory; the cell's data sheet comes first)
+FARTHEST_V = {"LiFePO4": (2.0, 3.65), "Li-ion": (2.5, 4.4)}
+ABOVE_REST_V = 0.2  # how far a charger may stand above the full resting cell of a table of one's own
 DERATED_V = {"LiFePO4": (2.8, 3.5), "Li-ion": (3.0, 4.1)}
 
 
@@ -160,6 +163,19 @@ class Battery(Described):
         if any(b > a for a, b in itertools.pairwise(cycles)):
             raise ValueError(f"cycles must not grow with depth, got {cycles}")
         return rows
+
+    @model_validator(mode="after")
+    def _voltages_of_the_chemistry(self):
+        low_v, high_v = FARTHEST_V[self.chemistry]
+        what = f"{self.chemistry} cells"
+        if self.open_circuit is not None:
+            low_v, high_v = 0.0, round(self.open_circuit[-1][1] + ABOVE_REST_V, 6)
+            what = f"the full cell of open_circuit and {ABOVE_REST_V:g} V"
+        if self.cell_min_v < low_v:
+            raise ValueError(f"cell_min_v must be at least {low_v:g} for {what}, got {self.cell_min_v:g}")
+        if self.cell_max_v > high_v:
+            raise ValueError(f"cell_max_v must be at most {high_v:g} for {what}, got {self.cell_max_v:g}")
+        return self
 
     @model_validator(mode="after")
     def _floors_below_ceilings(self):

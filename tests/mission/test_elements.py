@@ -220,6 +220,12 @@ def test_a_missing_keyword_and_a_wrong_frame_are_both_told(tmp_path):
     assert found[1].endswith("REF_FRAME must be TEME or TEME OF DATE or TEME OF EPOCH, got 'GCRF'")
 
 
+def test_a_misspelt_keyword_is_named_where_the_right_one_is_missing(tmp_path):
+    text = (SAMPLES / "two_satellites.omm").read_text().replace("INCLINATION", "INCLINATON")
+    faults = faults_of(tmp_path, text)
+    assert faults[0].endswith("message at line 1: INCLINATION must be given, got 'INCLINATON'")
+
+
 def test_bare_rows_may_leave_out_frame_and_time_system(tmp_path):
     (row,) = json.loads((SAMPLES / "marshlight.omm.json").read_text())
     kept = {key: value for key, value in row.items() if key not in ("CENTER_NAME", "REF_FRAME", "TIME_SYSTEM")}

@@ -32,7 +32,8 @@ SMALLEST_R_MOHM = 1e-9  # a resistance must be above 0: this one loses nothing t
 
 
 def battery(**changes) -> Battery:
-    """One LiFePO4 cell of 2.5 Ah unless told otherwise."""
+    """One LiFePO4 cell of 2.5 Ah unless told otherwise, charged to the top of its curve."""
+    curve = changes.get("open_circuit") or ((0.0, 2.0), (100.0, 3.6))
     plain = {
         "cells_series": 1,
         "cells_parallel": 1,
@@ -40,7 +41,8 @@ def battery(**changes) -> Battery:
         "cell_resistance_mohm": 14.0,
         "cell_max_discharge_a": 10.0,
         "cell_max_charge_a": 1.25,
-        "cell_max_v": 3.6,
+        "cell_max_v": curve[-1][1],
+        "cell_min_v": min(2.8, curve[0][1]),
     }
     return Battery.model_validate(plain | changes)
 

@@ -92,7 +92,7 @@ def test_the_upper_voltage_is_held_at_the_end_of_every_interval():
 
 
 def test_an_upper_voltage_above_the_curve_lets_the_cell_fill_to_the_brim():
-    own = cell(cell_max_v=3.9, **LEAKLESS)
+    own = cell(cell_max_v=3.65, **LEAKLESS)
     course_c = charge_course_c(own, float(own.charge_at_c(98.0)), drive(np.full(10, 8.0), limit_a=2.5))
     assert course_c[-1] == own.capacity_c
 
