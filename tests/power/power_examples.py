@@ -33,7 +33,7 @@ SMALLEST_R_MOHM = 1e-9  # a resistance must be above 0: this one loses nothing t
 
 def battery(**changes) -> Battery:
     """One LiFePO4 cell of 2.5 Ah unless told otherwise, charged to the top of its curve."""
-    curve = changes.get("open_circuit") or ((0.0, 2.0), (100.0, 3.6))
+    curve = changes.get("open_circuit") or ((0.0, 2.8), (100.0, 3.6))
     plain = {
         "cells_series": 1,
         "cells_parallel": 1,
