@@ -88,7 +88,7 @@ class _Adder:
         command = self._commands.add_parser(
             name,
             help=text,
-            description=text[0].upper() + text[1:] + ".",
+            description=text[0].upper() + text[1:] + ("" if text.endswith("?") else "."),
             epilog=f"Example: python -m planner {example}",
         )
         if contacts:
@@ -153,6 +153,17 @@ def _mission(path: str) -> Mission:
     return mission
 
 
+def _mission_apart(arguments) -> Mission:
+    """The mission of a command that fills a folder, which must not be one that the mission is read from."""
+    mission, folder = _mission(arguments.mission), Path(arguments.out).resolve()
+    read = [Path(arguments.mission).parent / name for name, _ in mission.inputs]
+    inside = next((path for path in read if path.resolve().parent == folder), None)
+    if inside is not None or folder.parent == folder:
+        why = "is the root of the disk" if inside is None else f"holds {inside}, which the mission is read from"
+        raise InputError(f"--out must be a folder of its own, got {arguments.out}, which {why}")
+    return mission
+
+
 def _check(arguments, tell: Tell) -> int:
     from planner.understood import check
 
@@ -189,7 +200,7 @@ def _week(arguments, tell: Tell) -> int:
     freeze = None if arguments.freeze_until is None else _moment(arguments.freeze_until)
     if arguments.time_limit is not None and not 0 < arguments.time_limit < 1e6:
         raise InputError(f"--time-limit must be above 0 s and below 1e6 s, got {arguments.time_limit:g}")
-    return week(_mission(arguments.mission), arguments, freeze, tell)
+    return week(_mission_apart(arguments), arguments, freeze, tell)
 
 
 def _moment(text: str) -> datetime:
@@ -208,6 +219,8 @@ def _audit(arguments, tell: Tell) -> int:
     if len(arguments.files) > 2:
         raise InputError(f"audit takes a mission file and a contacts file, got {len(arguments.files)} files")
     mission, contacts = [str(DEFAULT_MISSION), *arguments.files][-2:]
+    if contacts.endswith(".toml"):
+        raise InputError(f"audit takes the mission file first, then the contacts, got {contacts} last")
     return show_audit(_mission(mission), contacts, arguments.json, tell)
 
 
@@ -228,13 +241,13 @@ def _compare(arguments, tell: Tell) -> int:
 def _pointing(arguments, tell: Tell) -> int:
     from planner.hand_over import write_pointing
 
-    return write_pointing(_mission(arguments.mission), arguments, tell)
+    return write_pointing(_mission_apart(arguments), arguments, tell)
 
 
 def _cards(arguments, tell: Tell) -> int:
     from planner.hand_over import write_cards
 
-    return write_cards(_mission(arguments.mission), Path(arguments.contacts), Path(arguments.out), tell)
+    return write_cards(_mission_apart(arguments), Path(arguments.contacts), Path(arguments.out), tell)
 
 
 if __name__ == "__main__":

@@ -150,7 +150,7 @@ def show_audit(mission: Mission, contacts: str, as_json: bool, tell: Tell) -> in
             f"{count} contacts keep every limit" + (f"; {len(verdict.stale)} stale figures" if verdict.stale else "")
         )
         return DONE
-    printing.say(f"UNSAFE: {len(verdict.faults)} rules broken by {count} contacts")
+    printing.say(f"UNSAFE: {len(verdict.faults)} rules broken, {count} contacts")
     return NO
 
 

@@ -1,6 +1,7 @@
 """The command that tells what was understood of a mission, so that a slip of the pen shows before a week is planned."""
 
 from datetime import UTC
+from pathlib import Path
 
 import numpy as np
 
@@ -31,12 +32,17 @@ def check(mission: Mission) -> int:
     printing.say("")
     printing.table([("policy", "left"), ("", "left")], [(key, _plain(value)) for key, value in mission.policy])
     printing.say("")
-    printing.table([("file read, from the mission's folder", "left"), ("SHA-256", "left")],
-                   [(name, digest[:16] + "…") for name, digest in mission.inputs])  # fmt: skip
+    printing.table([("file read, from the mission's folder", "left"), ("SHA-256", "left"), ("", "left")],
+                   [(name, digest[:16] + "…", _whereabouts(name)) for name, digest in mission.inputs])  # fmt: skip
     for caution in input_cautions(mission):
         printing.say(f"caution: {caution}")
     printing.say(f"{len(mission.inputs)} files read, no fault found.")
     return DONE
+
+
+def _whereabouts(name: str) -> str:
+    """Told where a file lies outside the mission's folder, so that it is not forgotten when the folder is copied."""
+    return "outside that folder" if Path(name).is_absolute() or ".." in Path(name).parts else ""
 
 
 def _hours(hours: Hours) -> str:

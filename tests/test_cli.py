@@ -68,7 +68,12 @@ def test_what_week_wrote_is_whole_and_passes_the_audit(here, week, capsys):
 
 def test_check_and_passes_and_quiet_words(here, capsys):
     assert main(["check"]) == 0
-    assert capsys.readouterr().out.endswith("3 files read, no fault found.\n")
+    said = capsys.readouterr().out
+    assert said.endswith("3 files read, no fault found.\n")
+    assert re.search(r"^../stations/vardholm.toml +[0-9a-f]{16}… +outside that folder", said, re.MULTILINE)
+    assert re.search(
+        r"^battery +4S2P LiFePO4 3 Ah, 13\.\d V half full, 3\d\.\d Wh at health 0\.97;", said, re.MULTILINE
+    )
     assert main(["passes", "missions/marshlight.toml"]) == 0
     listed = capsys.readouterr().out.splitlines()
     assert listed[-1] == f"{len(listed) - 2} passes"
@@ -186,11 +191,18 @@ def test_no_week_is_possible(here, capsys):
          "--time-limit must be above 0 s and below 1e6 s, got nan"),
         (["week", "--out", "none", "--from", "gone.csv"], "gone.csv: no such file"),
         (["audit", "gone.csv"], "gone.csv: no such file"),
+        (["audit", "week/contacts.csv", "missions/marshlight.toml"],
+         "audit takes the mission file first, then the contacts, got missions/marshlight.toml last"),
         (["audit", "a", "b", "c"], "audit takes a mission file and a contacts file, got 3 files"),
         (["afford", "--pass", "nothing", "--mode", K],
          "pass must be in the span, as `passes` lists them, got 'nothing'"),
         (["pointing", "--contacts", "gone.csv", "--out", "none"], "gone.csv: no such file"),
         (["cards", "--contacts", "gone.csv", "--out", "none"], "gone.csv: no such file"),
+        (["week", "--out", "missions"],
+         "--out must be a folder of its own, got missions, which holds missions/marshlight.toml, which the mission is"
+         " read from"),
+        (["cards", "--contacts", "week/contacts.csv", "--out", "/"],
+         "--out must be a folder of its own, got /, which is the root of the disk"),
         (["week", "--out", "missions/marshlight.toml"],
          "missions/marshlight.toml: must be a folder of its own (links are not followed for output)"),
     ],
