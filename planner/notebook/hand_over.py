@@ -90,7 +90,7 @@ class HandOver:
             if found.safe:
                 text = line_html(f"{count} contacts keep every limit", "good")
             else:
-                text = line_html(f"UNSAFE: {len(found.faults)} rules broken by {count} contacts", "bad")
+                text = line_html(f"UNSAFE: {len(found.faults)} rules broken, {count} contacts", "bad")
                 text += lines_html(found.texts(), "bad")
             stale = [f"stale: {figure.text}" for figure in found.stale]
             self.verdict.value = text + lines_html(stale, most=6)
