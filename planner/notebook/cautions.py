@@ -7,13 +7,14 @@ import ipywidgets as widgets
 from planner.charts import style
 from planner.mission.models import Mission
 from planner.notebook.pieces import FULL
+from planner.schedule.cautions import input_cautions
 from planner.schedule.result import CAUTIONS
 from planner.units import DAY_S
 
 
 def caution_box(mission: Mission) -> widgets.HTML:
     """Every caution, in a frame that stays on the page."""
-    first, *others = [*CAUTIONS, *_element_ages(mission)]
+    first, *others = [*CAUTIONS, *_element_ages(mission), *input_cautions(mission)]
     return widgets.HTML(
         f'<div style="border:1px solid {style.ORANGE};border-left-width:10px;box-sizing:border-box;'
         f'padding:3px 12px;line-height:1.35">'
