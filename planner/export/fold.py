@@ -30,7 +30,7 @@ def fold(text: str, letters: int, hanging: str = "") -> list[str]:
 
 
 def shortened(text: str, letters: int) -> str:
-    """The text, or as much of it as fits with an ellipsis."""
+    """The text, or as much of it as fits with an ellipsis into `letters`, 3 or more."""
     return text if width(text) <= letters else text[: _fitting(text, letters - 1)] + "…"
 
 

@@ -21,7 +21,7 @@ def test_no_letter_is_lost_and_no_line_too_wide(text, letters):
     assert all(width(line) <= letters for line in lines)
 
 
-@given(WORDS, st.integers(2, 30))
+@given(WORDS, st.integers(3, 30))
 def test_shortened_text_fits(text, letters):
     assert width(shortened(text, letters)) <= letters
     assert shortened(text, 200) == text
