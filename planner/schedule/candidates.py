@@ -8,7 +8,15 @@ import numpy as np
 
 from planner.mission.models import Satellite
 from planner.mission.transmitter import Transmitter
-from planner.schedule.energy import Conversion, energy_states, idle_changes_s, least, likely, session_cost
+from planner.schedule.energy import (
+    Conversion,
+    depth_floor_pct,
+    energy_states,
+    idle_changes_s,
+    least,
+    likely,
+    session_cost,
+)
 from planner.schedule.problem import Problem
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
@@ -167,9 +175,10 @@ def _states(week: Week, satellite: Satellite, own: list[Candidate], conversions)
         produced_mbit[own_class] += np.diff(np.interp(events_s, edges_s, sum_mbit))
     stored_mbit = np.zeros(len(classes))
     stored_mbit[-1] = satellite.start_state.stored_mbit
-    likely_states, least_states = (
-        energy_states(power, week.mission.policy, conversion, events_s) for conversion in conversions
-    )
+    likely_way, least_way = conversions
+    depth_pct = depth_floor_pct(power, likely_way.corner)
+    likely_states = energy_states(power, week.mission.policy, likely_way, events_s, depth_pct)
+    least_states = energy_states(power, week.mission.policy, least_way, events_s)
     return SatelliteStates(
         satellite=satellite.name,
         events_s=events_s,

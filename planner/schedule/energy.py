@@ -77,8 +77,20 @@ def idle_changes_s(power: SatellitePower, conversion: Conversion) -> np.ndarray:
     return edges_s[1:-1][np.diff(np.sign(rate_w)) != 0]
 
 
-def energy_states(power: SatellitePower, policy: Policy, conversion: Conversion, events_s: np.ndarray) -> EnergyStates:
-    """Stored energy without sessions between `events_s` (n + 1,)."""
+def depth_floor_pct(power: SatellitePower, corner: CornerName) -> float:
+    """A floor that keeps every cycle within the battery's `max_cycle_depth_pct`; 0 where it has no such limit.
+
+    Counted from the highest charge that the satellite reaches without sessions: a little stricter than the limit,
+    which counts from each cycle's own peak.
+    """
+    deepest_pct = power.satellite.spacecraft.battery.max_cycle_depth_pct
+    return 0.0 if deepest_pct is None else float(power.simulate((), corner).soc_pct.max()) - deepest_pct
+
+
+def energy_states(
+    power: SatellitePower, policy: Policy, conversion: Conversion, events_s: np.ndarray, lowest_pct: float = 0.0
+) -> EnergyStates:
+    """Stored energy without sessions between `events_s` (n + 1,); never below the policy's floors nor `lowest_pct`."""
     edges_s, rate_w = _idle_rate_w(power, conversion)
     sum_wh = np.concatenate([[0.0], np.cumsum(rate_w * np.diff(edges_s))]) / WH_J
     corner = conversion.corner
@@ -86,7 +98,12 @@ def energy_states(power: SatellitePower, policy: Policy, conversion: Conversion,
     start_pct = min(power.corner(corner).start_soc_pct, full_pct)
     start_wh, full_wh, floor_wh, end_wh = (
         float(power.stored_wh(soc_pct, corner))
-        for soc_pct in (start_pct, full_pct, policy.soc_floor_pct, policy.soc_end_pct)
+        for soc_pct in (
+            start_pct,
+            full_pct,
+            max(policy.soc_floor_pct, lowest_pct),
+            max(policy.soc_end_pct, lowest_pct),
+        )
     )
     floors_wh = np.full(len(events_s), floor_wh)
     floors_wh[-1] = end_wh

@@ -9,6 +9,7 @@ import numpy as np
 
 from planner.errors import NoWeekError
 from planner.mission.contacts import Session
+from planner.power.balance import SatellitePower
 from planner.power.batch import share_of
 from planner.schedule.account import worth_mbit
 from planner.schedule.cautions import input_cautions
@@ -172,7 +173,7 @@ class Search:
             for fault in faults:
                 _log.info("the full physics breaks a limit: %s", fault.text)
             deep = [fault for fault in faults if fault.rule == "depth of discharge"]
-            self.problem = self._tightened(self.problem, flown, deep)  # no row of the programme asks for depth
+            self.problem = self._tightened(self.problem, flown, deep)  # sessions that add Sun may lift a cycle's peak
             small = week.problem.only({i for i, *_ in chosen})
             tighter = self._tightened(self._giving_up(small, faults), flown, faults)
             week, solution = self._solve(tighter, RELATIVE_GAP / 10, must=False)
@@ -186,7 +187,7 @@ class Search:
         """What breaks a limit of its own is given up; a rule of the week that breaks is told."""
         gone = set()
         for fault in faults:
-            if fault.rule in (*CHARGE_LIMITS, "floor risk"):
+            if fault.rule in (*CHARGE_LIMITS, "floor risk") or _is_sag(fault):
                 continue
             if fault.session is None:
                 raise NoWeekError(f"no plan keeps this limit: {fault.text}")
@@ -262,12 +263,12 @@ class Search:
             for fault in (fault for fault in faults if fault.satellite == states.satellite):
                 if fault.rule == "floor risk":
                     floor_wh += max(self._risk_wh(flown, states.satellite), 0.0) + MARGIN_WH
-                elif fault.rule in CHARGE_LIMITS:
-                    missing_pct = abs(fault.value - fault.bound)
+                elif fault.rule in CHARGE_LIMITS or _is_sag(fault):
+                    missing_pct = _missing_pct(fault, series, power)
                     missing_wh = float(power.stored_wh(100.0) - power.stored_wh(100.0 - missing_pct)) + MARGIN_WH
                     event = int(np.searchsorted(states.events_s, _lowest_s(series, fault)))
                     for at in {max(event - 1, 1), min(max(event, 1), len(floor_wh) - 1)}:
-                        # a floor was believed to hold; a depth was not asked for: it counts from what there was
+                        # a floor was believed to hold; a depth counts from what there was
                         there_wh = float(np.interp(states.events_s[at], series.time_s, series.stored_wh))
                         held_wh = max(floor_wh[at], there_wh) if fault.rule == "depth of discharge" else floor_wh[at]
                         floor_wh[at] = min(held_wh + missing_wh, states.likely.full_wh)
@@ -285,8 +286,28 @@ def _preferred(new: Solution, old: Solution) -> bool:
     return new.objective > old.objective or (as_good and _is_proved(new) and not _is_proved(old))
 
 
+def _is_sag(fault: Fault) -> bool:
+    """The satellite's own loads pull an all but empty battery down: more charge there is the mend."""
+    return fault.rule == "cell voltage under load" and fault.session is None
+
+
+def _missing_pct(fault: Fault, series, power: SatellitePower) -> float:
+    """How much more charge is missing where a limit breaks; for a voltage, along the open-circuit curve."""
+    if not _is_sag(fault):
+        return abs(fault.value - fault.bound)
+    soc_pct = np.linspace(0.0, 100.0, 2001)
+    cells = power.satellite.spacecraft.battery.cells_series
+    rest_v = np.asarray(power.pack_open_circuit_v(soc_pct)) / cells
+    now_pct = float(series.soc_at_pct(_lowest_s(series, fault)))
+    wanted_v = np.interp(now_pct, soc_pct, rest_v) + fault.bound - fault.value
+    return max(float(np.interp(wanted_v, rest_v, soc_pct)) - now_pct, 0.1)
+
+
 def _lowest_s(series, fault: Fault) -> float:
     """When a breach that begins at the fault's time is deepest."""
+    if _is_sag(fault):
+        later = np.flatnonzero(series.time_s[:-1] >= fault.time_s - 1e-3)
+        return float(series.time_s[later[np.argmin(np.abs(series.lowest_cell_v[later] - fault.value))]])
     if fault.rule == "depth of discharge":
         return series.lowest(fault.time_s, fault.time_s + DAY_S)[0]
     later = np.flatnonzero(series.time_s >= fault.time_s - 1e-3)

@@ -140,6 +140,26 @@ def test_no_start_and_stop_of_a_single_pass_is_better(marshlight):
     assert best <= plan.summary["upper_bound_mbit"]
 
 
+def test_a_floor_far_below_the_depth_of_discharge_costs_nothing(day):
+    """What is asked of the deepest cycle holds the charge up where the floor does not."""
+    mission, tight = day
+    loose = mission.with_changes(policy={"soc_floor_pct": 30.0, "soc_end_pct": 40.0})
+    plan = planner.plan_week(loose)
+    assert plan.summary["volume_mbit"] >= (1 - GAP) * tight.summary["volume_mbit"]
+    assert planner.audit(loose, plan.contacts).safe
+
+
+def test_an_almost_empty_battery_is_kept_from_sagging_under_the_satellite_s_own_loads(marshlight):
+    mission = with_craft(
+        smaller(marshlight, 1, "Vardholm", policy={"soc_floor_pct": 1.0, "soc_end_pct": 1.0}),
+        lambda craft: {"battery": craft.battery.model_copy(update={"max_cycle_depth_pct": None})},
+    )
+    weak = mission.with_changes(start_state={"soc_pct": 45.0, "stored_mbit": 390_000.0})
+    plan = planner.plan_week(weak)
+    assert plan.summary["contacts"] > 0
+    assert planner.audit(weak, plan.contacts).safe
+
+
 # --- infeasible ------------------------------------------------------------
 
 
