@@ -13,6 +13,7 @@ from planner.mission.models import Mission
 from planner.printing import Tell
 
 DONE, NO, WRONG_INPUT, MACHINE, INTERRUPTED = 0, 1, 2, 3, 130
+FLOWN_HELP = "contacts that power on before have flown: newer elements do not judge them"
 KEEP_HELP = "fly this pass in this mode, as PASS:MODE (may be repeated)"
 
 
@@ -64,6 +65,7 @@ def _parser() -> argparse.ArgumentParser:
     audit = add(
         "audit", _audit, "check any contacts file against every limit", "audit week/contacts.csv", contacts=True
     )
+    audit.add_argument("--freeze-until", metavar="UTC", help=FLOWN_HELP)
     audit.add_argument("--json", action="store_true", help="print the verdict as JSON")
     afford = add("afford", _afford, "can the battery pay for this one session?",
                  'afford --pass PASS_ID --mode "K high rate" --contacts week/contacts.csv')  # fmt: skip
@@ -134,6 +136,7 @@ def _hand_over_options(add: _Adder) -> None:
     for command in (pointing, cards):
         command.add_argument("--contacts", required=True, metavar="FILE")
         command.add_argument("--out", required=True, metavar="DIR")
+    cards.add_argument("--freeze-until", metavar="UTC", help=FLOWN_HELP)
     pointing.add_argument("--step", type=float, default=1.0, metavar="S", help="seconds between rows (default 1)")
     pointing.add_argument("--refracted", action="store_true", help="angles as seen through the air (ITU-R P.834)")
     pointing.add_argument("--force", action="store_true", help="also where elements are too old for the beam")
@@ -197,13 +200,16 @@ def _link(arguments, tell: Tell) -> int:
 def _week(arguments, tell: Tell) -> int:
     from planner.commands import week
 
-    freeze = None if arguments.freeze_until is None else _moment(arguments.freeze_until)
+    freeze = _freeze(arguments)
     if arguments.time_limit is not None and not 0 < arguments.time_limit < 1e6:
         raise InputError(f"--time-limit must be above 0 s and below 1e6 s, got {arguments.time_limit:g}")
     return week(_mission_apart(arguments), arguments, freeze, tell)
 
 
-def _moment(text: str) -> datetime:
+def _freeze(arguments) -> datetime | None:
+    text = arguments.freeze_until
+    if text is None:
+        return None
     try:
         moment = datetime.fromisoformat(text)
     except ValueError:
@@ -221,7 +227,7 @@ def _audit(arguments, tell: Tell) -> int:
     mission, contacts = [str(DEFAULT_MISSION), *arguments.files][-2:]
     if contacts.endswith(".toml"):
         raise InputError(f"audit takes the mission file first, then the contacts, got {contacts} last")
-    return show_audit(_mission(mission), contacts, arguments.json, tell)
+    return show_audit(_mission(mission), contacts, arguments.json, _freeze(arguments), tell)
 
 
 def _afford(arguments, tell: Tell) -> int:
@@ -247,7 +253,9 @@ def _pointing(arguments, tell: Tell) -> int:
 def _cards(arguments, tell: Tell) -> int:
     from planner.hand_over import write_cards
 
-    return write_cards(_mission_apart(arguments), Path(arguments.contacts), Path(arguments.out), tell)
+    return write_cards(
+        _mission_apart(arguments), Path(arguments.contacts), Path(arguments.out), _freeze(arguments), tell
+    )
 
 
 if __name__ == "__main__":

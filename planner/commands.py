@@ -118,7 +118,7 @@ def _say_changes(given: str, previous: list[Session], plan) -> None:
 
     known = [s for s in previous if s.pass_id in plan.flown.week.row_of and plan.flown.week.reaches(s)]
     found = compare_plans(GivenWeek(Flown(plan.flown.week, tuple(known))), plan)
-    printing.say(f"against {given}: {found.headline()}")
+    printing.say(f"against {given}, valued anew: {found.headline()}")
     if not found.is_same:
         printing.table([(heading, "left") for heading in HEADINGS], found.rows())
 
@@ -129,12 +129,12 @@ def _days(contacts):
                f"{group['soc_min_pct'].min():.1f} %")  # fmt: skip
 
 
-def show_audit(mission: Mission, contacts: str, as_json: bool, tell: Tell) -> int:
+def show_audit(mission: Mission, contacts: str, as_json: bool, freeze_until: datetime | None, tell: Tell) -> int:
     """Print every broken rule and stale figure; the exit status is the verdict."""
     from planner.schedule.audit import audit
 
     tell("passes, links and power")
-    verdict = audit(mission, contacts)
+    verdict = audit(mission, contacts, freeze_until=freeze_until)
     if as_json:
         printing.say(json.dumps(verdict.as_dict(), indent=2))
         return DONE if verdict.safe else NO
@@ -184,7 +184,8 @@ def _verdict(answer, shortest_s: float) -> str:
 
 def _answer_rows(answer):
     if answer.replaces:
-        yield "in place of, already planned", f"{', '.join(answer.replaces)}, {answer.replaced_s:.0f} s on air"
+        planned = f"{', '.join(answer.replaces)}, {answer.replaced_s:.0f} s on air"
+        yield "in place of, already planned", planned + ("" if answer.affordable else ", which stand as planned")
     yield "whole usable window", f"{answer.tx_on_utc} to {answer.tx_off_utc}, {answer.duration_s:.0f} s"
     yield "volume", f"{answer.volume_mbit:.0f} Mbit; all contacts together {answer.gained_mbit:+.0f} Mbit"
     yield (

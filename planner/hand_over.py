@@ -1,6 +1,7 @@
 """The commands that make files for stations and operators from contacts, and the one that compares two issues."""
 
 from collections.abc import Iterable, Iterator
+from datetime import datetime
 from itertools import islice
 from pathlib import Path
 
@@ -53,13 +54,14 @@ def write_pointing(mission: Mission, arguments, tell: Tell) -> int:
         folder.write(files, {"mission": mission.name, "tables": len(files)}, index="pointing.json")
     printing.fault(refused.values())
     printing.say(f"{len(files)} pointing tables written to {arguments.out}")
+    _say_cautions(mission)
     if refused:
         printing.say(f"no table for {len(refused)} contacts: take newer elements, or --force")
     return NO if refused else DONE
 
 
-def write_cards(mission: Mission, contacts: Path, out: Path, tell: Tell) -> int:
-    """A card for every contact of a file, and the week sheet."""
+def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datetime | None, tell: Tell) -> int:
+    """A card for every contact of a file, and the week sheet; contacts before the freeze are not judged."""
     from planner.export.cards import card_files
     from planner.export.contacts import file_issue
     from planner.export.folder import claim_folder
@@ -70,7 +72,7 @@ def write_cards(mission: Mission, contacts: Path, out: Path, tell: Tell) -> int:
     with claim_folder(out) as folder:
         printing.fault(folder.mended)
         tell("checking the contacts")
-        verdict = audit(mission, contacts)
+        verdict = audit(mission, contacts, freeze_until=freeze_until)
         if not verdict.safe:
             raise InputError(f"{contacts}: cards are made only of contacts that keep every limit", *verdict.texts())
         given = GivenWeek(verdict.flown)
@@ -82,7 +84,15 @@ def write_cards(mission: Mission, contacts: Path, out: Path, tell: Tell) -> int:
         files |= sheet_files(mission, given, issue)
         folder.write(files, {"mission": mission.name, "cards": count}, index="cards.json")
     printing.say(f"{count} cards and the week sheet written to {out}")
+    _say_cautions(mission)
     return DONE
+
+
+def _say_cautions(mission: Mission) -> None:
+    from planner.schedule.cautions import input_cautions
+
+    for caution in input_cautions(mission):
+        printing.say(f"caution: {caution}")
 
 
 def _counted(files: Iterable[tuple[str, bytes]], tell: Tell, what: str, count: int) -> Iterator[tuple[str, bytes]]:

@@ -8,7 +8,8 @@ import numpy as np
 from planner import printing
 from planner.mission.elements import which_set
 from planner.mission.models import Mission, Satellite
-from planner.mission.station import Hours
+from planner.mission.pointing import Law
+from planner.mission.station import Hours, Station
 from planner.units import EARTH_GM_KM3_S2, EARTH_RADIUS_KM, SOLAR_CONSTANT_W_M2
 
 DONE = 0
@@ -21,10 +22,10 @@ def check(mission: Mission) -> int:
     printing.say(f"{mission.name}: {mission.days:g} days from {mission.start.astimezone(UTC):%Y-%m-%dT%H:%M:%SZ}")
     printing.say("")
     printing.table(
-        [("station", "left"), ("latitude", "right"), ("longitude", "right"), ("above", "right"), ("dish", "right"),
-         ("bands", "left"), ("open (UTC)", "left")],
-        [(s.name, f"{s.latitude_deg:.2f} deg", f"{s.longitude_deg:.2f} deg", f"{s.min_elevation_deg:g} deg",
-          f"{s.antenna.diameter_m:g} m", " ".join(b for r in s.receiver for b in r.bands), _hours(s.hours))
+        [("station", "left"), ("latitude", "right"), ("longitude", "right"), ("altitude", "right"), ("above", "right"),
+         ("dish", "right"), ("hears", "left"), ("open (UTC)", "left")],
+        [(s.name, f"{s.latitude_deg:.2f} deg", f"{s.longitude_deg:.2f} deg", f"{s.altitude_m:g} m",
+          f"{s.min_elevation_deg:g} deg", f"{s.antenna.diameter_m:g} m", _hears(s), _hours(s.hours))
          for s in mission.stations],
     )  # fmt: skip
     for satellite in mission.satellites:
@@ -51,6 +52,20 @@ def _hours(hours: Hours) -> str:
     return opened + days + (f", closed {len(hours.maintenance)} times" if hours.maintenance else "")
 
 
+def _hears(station: Station) -> str:
+    """Bands, each receiver with its amplifier's noise or its stated G/T."""
+    noise = (
+        (r, f"{r.gt_dbk:g} dB/K" if r.gt_dbk is not None else f"{r.noise_temperature_k:g} K") for r in station.receiver
+    )
+    return ", ".join(f"{' '.join(receiver.bands)} {text}" for receiver, text in noise)
+
+
+def _law(law: Law) -> str:
+    if law.law == "tumbling":
+        return law.law
+    return f"{list(law.axis)} to {law.law}, {list(law.second_axis)} towards {law.second_target}"
+
+
 def _plain(value) -> str:
     """A policy's value in plain words."""
     if isinstance(value, Hours):
@@ -68,6 +83,8 @@ def _say_satellite(mission: Mission, satellite: Satellite) -> None:
     printing.say(f"{satellite.name}: {which_set(satellite.elements, mission.start)}")
     printing.table([("", "left"), ("", "left")], [
         ("orbit", _orbit(satellite)),
+        ("idle attitude", _law(satellite.spacecraft.pointing.idle)),
+        ("in session", _law(satellite.spacecraft.pointing.session)),
         ("battery", _battery(satellite)),
         ("panels", _panels(satellite)),
         ("loads", ", ".join(f"{load.name} {load.power_w:g} W" for load in satellite.spacecraft.load) or "none"),
@@ -105,7 +122,7 @@ def _battery(satellite: Satellite) -> str:
         f" {battery.cells_parallel * battery.cell_capacity_ah:g} Ah,"
         f" {battery.cells_series * float(cell.open_circuit_v(cell.capacity_c / 2)):.1f} V half full,"
         f" {cells * float(cell.stored_j[-1]) / 3600:.1f} Wh at health {battery.health:g};"
-        f" {battery.cell_min_v:g} to {battery.cell_max_v:g} V a cell"
+        f" {battery.cell_min_v:g} to {battery.cell_max_v:g} V and {battery.cell_resistance_mohm:g} mohm a cell"
     )
 
 

@@ -128,7 +128,7 @@ def test_a_replan_says_what_it_changed_and_its_calendar_follows_the_issue_before
     for out, given in (("replanned", "replanned/contacts.csv"), ("elsewhere", "week/contacts.csv")):
         assert main(["week", "--out", out, "--from", given, "--drop", drop]) == 0
         said = capsys.readouterr().out
-        assert f"against {given}: 0 gained, 1 lost, " in said
+        assert f"against {given}, valued anew: 0 gained, 1 lost, " in said
         events = rows(here / out / "week.ics")
         gone = {uid for uid, state in events.items() if state == "CANCELLED 1"}
         assert len(gone) == 1

@@ -236,7 +236,7 @@ def test_a_command_of_the_readme_ends_as_told(desk, two_day_plan, monkeypatch, c
 def test_the_middle_of_the_week_goes_as_told(desk, two_day_plan, monkeypatch, capsys):
     """On the two days, of which the second is planned anew."""
     monkeypatch.chdir(desk)
-    copy, *commands = block(README, "cp -r ")
+    copy, *commands, cards = block(README, "cp -r ")
     folder, kept = copy.split()[2:]
     shutil.copytree(folder, kept, dirs_exist_ok=True)
     contacts = two_day_plan.contacts
@@ -248,6 +248,7 @@ def test_the_middle_of_the_week_goes_as_told(desk, two_day_plan, monkeypatch, ca
     said = capsys.readouterr().out
     assert re.search(r"^lost +.*", said, re.MULTILINE)
     assert dropped in said
+    assert options_in(cards) <= options_in(help_of(capsys, words_of(cards)[0]))
 
 
 def test_every_command_is_shown_in_the_readme(capsys):

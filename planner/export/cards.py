@@ -177,7 +177,11 @@ def _preparation(row, epoch: datetime, until: datetime | None) -> Rows:
     """What must be done before: elements, and the contact that carries the commands up."""
     serve = "the dish follows the signal" if until is None else f"they point this dish until {_iso(until)}"
     carrier = getattr(row, "commands_from", None)
-    commands = () if carrier is None else (("Commands", f"go up in contact {carrier}" if carrier else "aboard before"),)
+    commands = (
+        ()
+        if carrier is None
+        else (("Its own commands", f"go up in contact {carrier}" if carrier else "aboard before"),)
+    )
     return (("Element epoch", f"{_iso(epoch)}; {serve}"), *commands)
 
 
@@ -205,12 +209,17 @@ def _doppler_text(mission: Mission, sky: Sky, session: Session) -> str:
 
 
 def _patience_s(mission: Mission, sky: Sky, session: Session) -> tuple[float, float]:
-    """How long to wait for lock, and how much the satellite may be early or late, both [s]."""
-    satellite = mission.satellite(session.satellite)
+    """How long to wait for lock, and how much the satellite may be early or late on fresh elements, both [s]."""
+    late_s = _late_s(mission, sky, session, mission.policy.elements_refresh_days)
+    mode = mission.satellite(session.satellite).spacecraft.mode(session.mode)
+    return float(np.ceil(mode.acquisition_s + late_s)), late_s
+
+
+def _late_s(mission: Mission, sky: Sky, session: Session, age_days: float) -> float:
+    """By how much the satellite may be early or late on elements of that age."""
     states = sky.track(session.satellite).at(np.array([session.tx_on_s]))
-    age_days = mission.policy.elements_refresh_days
-    late_s = SIGMAS * float(timing_error_s(satellite.spacecraft.aging, age_days, *states)[0])
-    return float(np.ceil(satellite.spacecraft.mode(session.mode).acquisition_s + late_s)), late_s
+    aging = mission.satellite(session.satellite).spacecraft.aging
+    return SIGMAS * float(timing_error_s(aging, age_days, *states)[0])
 
 
 def _steps(mission: Mission, sky: Sky, session: Session, wait_s: float, late_s: float) -> tuple[str, ...]:
@@ -218,12 +227,15 @@ def _steps(mission: Mission, sky: Sky, session: Session, wait_s: float, late_s: 
     mode = mission.satellite(session.satellite).spacecraft.mode(session.mode)
     age_days = mission.policy.elements_refresh_days
     off = clock_text(sky.clock.datetime(session.tx_off_s))
+    epoch = mission.satellite(session.satellite).elements.epoch
+    own_days = abs((sky.clock.datetime(session.tx_on_s) - epoch) / timedelta(days=1))
+    own_late_s = _late_s(mission, sky, session, own_days)
     return (
         f"Receiver: {mode.frequency_mhz * 1000 + khz:,.1f} kHz now ({khz:+.1f} kHz Doppler), {mode.polarisation},"
         f" {plain_number(mode.symbol_rate_mbaud)} Mbaud, first MODCOD as above.",
         "Antenna: compare azimuth and elevation with the pointing table; refraction on or off as the table says.",
-        f"Time: with elements {age_days:g} d old the satellite may be {late_s:.1f} s early or late; search along the"
-        f" track, {late_s:.1f} s either way.",
+        f"Time: search along the track, {late_s:.1f} s either way with elements {age_days:g} d old, {own_late_s:.1f} s"
+        f" with those of the epoch above ({own_days:.1f} d).",
         "Elements: take the newest set and make the pointing table anew if the epoch above is older than that.",
         f"Still nothing: keep on the track until {off}, when the satellite switches off by itself; then tell"
         " the flight team, so that this contact's data are planned again.",

@@ -1,6 +1,7 @@
 """Any set of contacts, checked from its ids, modes and transmit times alone."""
 
 from dataclasses import dataclass
+from datetime import datetime
 
 from planner.mission.contacts import StatedContact, read_contacts
 from planner.mission.models import Mission
@@ -8,7 +9,7 @@ from planner.schedule import frames
 from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import Flown
 from planner.schedule.result import prepared
-from planner.schedule.wishes import read_wishes
+from planner.schedule.wishes import freeze_s, powers_on_s, read_wishes
 
 
 @dataclass(frozen=True)
@@ -69,22 +70,29 @@ class Audit:
         }
 
 
-def audit(mission: Mission, contacts) -> Audit:
+def audit(mission: Mission, contacts, *, freeze_until: datetime | None = None) -> Audit:
     """Recompute everything that a set of contacts claims.
 
     Parameters
     ----------
     contacts : path of a contacts CSV, or its table
+    freeze_until : contacts that power on before have flown or are being flown: newer elements may put them seconds
+        beside their pass, which is no fault of theirs; their energy and data count
 
     Raises
     ------
-    InputError : the file cannot be read as contacts of this mission
+    InputError : the file cannot be read as contacts of this mission, or a time without a zone
     """
+    frozen_s = freeze_s(mission, freeze_until)
     stated = read_contacts(contacts, mission)
     week = prepared(mission)
     lines = {contact.session: contact.line for contact in stated}
     flown = Flown(week, tuple(contact.session for contact in stated if week.reaches(contact.session)))
-    faults = [*_beyond(flown, lines), *find_faults(flown), *_wishes_broken(flown)]
+    faults = [
+        fault
+        for fault in (*_beyond(flown, lines), *find_faults(flown), *_wishes_broken(flown))
+        if fault.session is None or powers_on_s(mission, fault.session) >= frozen_s
+    ]
     return Audit(flown, tuple(faults), tuple(_stale(flown, stated)), lines)
 
 

@@ -27,6 +27,7 @@ def _cautions(mission: Mission, satellite: Satellite) -> Iterator[str]:
             f"{satellite.name}: start_state.commands_aboard_until = {_iso(until)} is not after the start: no contact"
             " can be commanded, not even the first that could carry commands (policy.upload_lead_h)."
         )
+    yield from _fractions(mission, satellite)
     for transmitter in satellite.spacecraft.transmitter:
         if not any(_hears(station, transmitter) for station in mission.stations):
             yield (
@@ -40,6 +41,18 @@ def _cautions(mission: Mission, satellite: Satellite) -> Iterator[str]:
             f"battery.cell_max_v = {battery.cell_max_v:g} ends the charge of this {battery.chemistry} cell at"
             f" {full_pct:.0f} %, below policy.soc_end_pct = {mission.policy.soc_end_pct:g}."
         )
+
+
+def _fractions(mission: Mission, satellite: Satellite) -> Iterator[str]:
+    """Per cents that look like shares: a floor of 0.65 % is none."""
+    stated = {
+        "policy.soc_floor_pct": mission.policy.soc_floor_pct,
+        "policy.soc_end_pct": mission.policy.soc_end_pct,
+        "start_state.soc_pct": satellite.start_state.soc_pct,
+    }
+    for key, value in stated.items():
+        if 0 < value <= 1:
+            yield f"{key} = {value:g} means {value:g} %: was {100 * value:g} meant?"
 
 
 def _hears(station, transmitter: Transmitter) -> bool:

@@ -1,5 +1,6 @@
 """What a set of sessions means, as the public tables: contacts, passes, battery, recorder."""
 
+from collections import Counter
 from collections.abc import Sequence
 
 import numpy as np
@@ -30,11 +31,15 @@ def contact_id(session: Session) -> str:
 
 def contacts_frame(flown: Flown, sessions: Sequence[Session] | None = None) -> pd.DataFrame:
     """One row a contact (of these sessions, or of all), in their order."""
-    rows = [_contact(flown, session) for session in (flown.sessions if sessions is None else sessions)]
+    carried = Counter(upload_contact(flown, session) for session in flown.sessions if needs_upload(flown, session))
+    rows = [
+        _contact(flown, session, carried[session]) for session in (flown.sessions if sessions is None else sessions)
+    ]
     return pd.DataFrame(rows, columns=list(CONTACT_COLUMNS))
 
 
-def _contact(flown: Flown, session: Session) -> dict:
+def _contact(flown: Flown, session: Session, carries: int) -> dict:
+    """One row; the session `carries` the commands of so many others up."""
     week, iso = flown.week, flown.week.sky.clock.iso
     passes, row = week.sky.passes, week.row_of[session.pass_id]
     transmitter = week.mission.satellite(session.satellite).spacecraft.mode(session.mode)
@@ -61,7 +66,9 @@ def _contact(flown: Flown, session: Session) -> dict:
         "volume_mbit": volume,
         **_energy(flown, session),
         "max_doppler_khz": float(np.max(np.abs(week.along(row, session.mode, "doppler_khz", *span)))),
-        "cautions": "; ".join(cautions(flown, session, row)),
+        "cautions": "; ".join(
+            [*cautions(flown, session, row), *([f"carries up the commands of {carries} contacts"] if carries else [])]
+        ),
         "power_on_utc": iso(session.tx_on_s - transmitter.warmup_s),
         "frequency_mhz": transmitter.frequency_mhz,
         "symbol_rate_mbaud": transmitter.symbol_rate_mbaud,

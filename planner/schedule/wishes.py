@@ -54,21 +54,17 @@ def read_wishes(
     if both:
         raise InputError(*(f"pass {pass_id} must not be both kept and dropped" for pass_id in both))
     sessions = sessions_of(previous, week.mission) if previous is not None else []
-    freeze_s = -np.inf
-    if freeze_until is not None:
-        if previous is None:
-            raise InputError("freeze_until needs the previous contacts that stay frozen (--from CONTACTS.csv)")
-        if freeze_until.tzinfo is None:
-            raise InputError(f"freeze_until must carry a time zone (append Z for UTC), got {freeze_until.isoformat()}")
-        freeze_s = (freeze_until - week.mission.start).total_seconds()
-    frozen = tuple(session for session in sessions if _begins_s(week, session) < max(freeze_s, 0.0))
+    if freeze_until is not None and previous is None:
+        raise InputError("freeze_until needs the previous contacts that stay frozen (--from CONTACTS.csv)")
+    frozen_s = freeze_s(week.mission, freeze_until)
+    frozen = tuple(session for session in sessions if powers_on_s(week.mission, session) < max(frozen_s, 0.0))
     _refuse_frozen(frozen, drop)
     return Wishes(
         keep=frozenset(kept),
         drop=frozenset(dropped),
         previous=tuple(sessions),
         frozen=tuple(session for session in frozen if session.pass_id in week.row_of),
-        freeze_until_s=freeze_s,
+        freeze_until_s=frozen_s,
     )
 
 
@@ -89,8 +85,18 @@ def sessions_of(contacts, mission: Mission) -> list[Session]:
     return sorted(contacts)
 
 
-def _begins_s(week: Week, session: Session) -> float:
-    return session.tx_on_s - week.mission.satellite(session.satellite).spacecraft.mode(session.mode).warmup_s
+def freeze_s(mission: Mission, freeze_until: datetime | None) -> float:
+    """Seconds after the mission's start; minus infinity where nothing is frozen. InputError without a time zone."""
+    if freeze_until is None:
+        return -np.inf
+    if freeze_until.tzinfo is None:
+        raise InputError(f"freeze_until must carry a time zone (append Z for UTC), got {freeze_until.isoformat()}")
+    return (freeze_until - mission.start).total_seconds()
+
+
+def powers_on_s(mission: Mission, session: Session) -> float:
+    """When a session's transmitter begins to warm up."""
+    return session.tx_on_s - mission.satellite(session.satellite).spacecraft.mode(session.mode).warmup_s
 
 
 def _pass_and_mode(week: Week, entry: str) -> tuple[str, str]:

@@ -105,9 +105,11 @@ def test_clocks_of_modcods_are_rounded_like_all_others(mission, sky, row):
 
 
 def test_a_card_says_where_its_commands_go_up(mission, sky, row):
-    carriers = [dict(card_of(mission, sky, row, commands_from=text).radio)["Commands"] for text in ("a.b.s", "")]
+    carriers = [
+        dict(card_of(mission, sky, row, commands_from=text).radio)["Its own commands"] for text in ("a.b.s", "")
+    ]
     assert carriers == ["go up in contact a.b.s", "aboard before"]
-    assert "Commands" not in dict(card_of(mission, sky, row).radio)
+    assert "Its own commands" not in dict(card_of(mission, sky, row).radio)
 
 
 def test_html_escapes_every_text(mission, sky, row):

@@ -74,6 +74,20 @@ def test_tx_on_before_aos_is_told_with_the_place_and_the_figure(two_day_mission,
     assert fault["value"] == pytest.approx(-12.0, abs=1e-3)
 
 
+def test_a_contact_that_has_flown_is_not_judged_by_newer_elements(two_day_mission, plan):
+    """Its times, once right, lie a second before the pass as it is known now; what it took still counts."""
+    early = plan.contacts.copy()
+    aos = moment(early.iloc[0]["aos_utc"])
+    early.loc[0, "tx_on_utc"] = f"{aos - timedelta(seconds=1):%Y-%m-%dT%H:%M:%S.%f}Z"
+    judged = planner.audit(two_day_mission, early)
+    flown = planner.audit(two_day_mission, early, freeze_until=aos + timedelta(minutes=1))
+    assert "inside the pass" in {fault.rule for fault in judged.faults}
+    assert flown.safe
+    assert len(flown.flown.sessions) == len(judged.flown.sessions)
+    with pytest.raises(InputError, match="freeze_until must carry a time zone"):
+        planner.audit(two_day_mission, early, freeze_until=aos.replace(tzinfo=None))
+
+
 def test_tx_off_after_los(two_day_mission, plan):
     at = a_contact(plan, mode=S)
     row = plan.contacts.iloc[at]

@@ -64,5 +64,13 @@ def test_a_charger_that_stops_early_is_told_where_the_week_fails(marshlight):
     assert str(told.value).splitlines()[-1] == caution
 
 
+def test_per_cents_that_look_like_shares(marshlight):
+    mission = marshlight.with_changes(policy={"soc_floor_pct": 0.65}, start_state={"soc_pct": 0.9})
+    assert input_cautions(mission) == [
+        "policy.soc_floor_pct = 0.65 means 0.65 %: was 65 meant?",
+        "start_state.soc_pct = 0.9 means 0.9 %: was 90 meant?",
+    ]
+
+
 def test_a_plan_carries_the_cautions(two_day_mission, two_day_plan):
     assert set(input_cautions(two_day_mission)) <= set(two_day_plan.summary["cautions"])

@@ -313,6 +313,14 @@ def test_a_freeze_needs_a_previous_plan_and_a_zone(day):
         planner.plan_week(mission, previous=plan.contacts, freeze_until=mission.start.replace(tzinfo=None))
 
 
+def test_a_contact_that_carries_commands_up_says_so(two_day_plan):
+    contacts = two_day_plan.contacts
+    counted = contacts["commands_from"][contacts["commands_from"] != ""].value_counts()
+    assert len(counted)
+    said = contacts.set_index("contact_id")["cautions"].str.extract(r"carries up the commands of (\d+) contacts")[0]
+    assert said.dropna().astype(int).to_dict() == counted.to_dict()
+
+
 def test_what_is_frozen_cannot_be_dropped(day):
     mission, plan = day
     first = plan.contacts.iloc[0].pass_id
