@@ -1,13 +1,13 @@
 """Cards: the figures on them against the contact and the sky, one A4 page each, hostile names escaped."""
 
 import re
-import shutil
 import subprocess
 from datetime import datetime, timedelta
 
 import numpy as np
 import pandas as pd
 import pytest
+from browser import require_chromium
 from made_up_contacts import contact
 
 from planner.errors import InputError
@@ -76,7 +76,6 @@ def test_files_are_one_a4_page_and_the_same_bytes_each_time(mission, sky, row):
     assert "size: A4;" in html.decode()
 
 
-@pytest.mark.skipif(not shutil.which("chromium"), reason="chromium prints the page")
 def test_a_card_with_many_modcods_and_cautions_prints_from_a_browser_on_one_a4_page(mission, sky, row, tmp_path):
     on = datetime.fromisoformat(row["tx_on_utc"])
     coding = " ".join(f"16APSK_8/9@{(on + timedelta(seconds=20 * k)).isoformat()}" for k in range(9))
@@ -85,7 +84,7 @@ def test_a_card_with_many_modcods_and_cautions_prints_from_a_browser_on_one_a4_p
     )
     page, printed = tmp_path / "card.html", tmp_path / "card.pdf"
     page.write_bytes(dict(card_files(mission, sky, frame)).popitem()[1])
-    browser = ["chromium", "--headless", "--no-sandbox", "--disable-gpu", "--no-pdf-header-footer"]
+    browser = [require_chromium(), "--headless", "--no-sandbox", "--disable-gpu", "--no-pdf-header-footer"]
     subprocess.run([*browser, f"--print-to-pdf={printed}", page.as_uri()], check=True, capture_output=True)
     assert len(re.findall(rb"/Type\s*/Page\b", printed.read_bytes())) == 1
     boxes = re.findall(rb"/MediaBox\s*\[0 0 ([\d.]+) ([\d.]+)\]", printed.read_bytes())

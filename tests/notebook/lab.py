@@ -10,19 +10,9 @@ import urllib.request
 from contextlib import contextmanager
 from pathlib import Path
 
-import pytest
 from bench_examples import ROOT
 
-CHROMIUM = shutil.which("chromium") or shutil.which("chromium-browser")
 STARTS_WITHIN_S = 60
-HOW_TO_GET_IT = "no chromium to look with: apt-get install chromium"
-
-
-def require_chromium() -> str:
-    """Path of the browser. Without one the test is skipped, or fails where CI=true says that it must run."""
-    if CHROMIUM is None:
-        (pytest.fail if os.environ.get("CI") == "true" else pytest.skip)(HOW_TO_GET_IT)
-    return CHROMIUM
 
 
 def artefacts(tmp_path: Path) -> Path:

@@ -1,7 +1,8 @@
 """The three jobs in a real browser: look at the week, decide a pass, hand the week over."""
 
 import pytest
-from lab import artefacts, copy_project, require_chromium, server
+from browser import require_chromium
+from lab import artefacts, copy_project, server
 from playwright.sync_api import Page, expect, sync_playwright
 
 import planner
