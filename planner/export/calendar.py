@@ -6,6 +6,7 @@ already flown is left out, and one beyond the planned span stays as it was. No c
 element epoch, the state of knowledge that the times were computed from, so the same inputs give the same bytes.
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from datetime import UTC, datetime, timedelta
 from functools import partial
@@ -41,7 +42,7 @@ class Entry:
     alarm: tuple[timedelta, str] | None = None
 
 
-def calendar_files(mission: Mission, contacts: pd.DataFrame, previous: bytes | None = None) -> dict[str, bytes]:
+def calendar_files(mission: Mission, contacts: pd.DataFrame, previous: Sequence[bytes] = ()) -> dict[str, bytes]:
     """`week.ics`, and `station_<name>.ics` for every station of the mission; see `contact_calendar`."""
     stamp, span = newest_epoch(mission), (mission.start, mission.end)
     issue = partial(contact_calendar, contacts, stamp=stamp, span=span, previous=previous)
@@ -59,7 +60,7 @@ def contact_calendar(
     *,
     stamp: datetime,
     span: tuple[datetime, datetime],
-    previous: bytes | None = None,
+    previous: Sequence[bytes] = (),
     station: str | None = None,
     alarm_before_aos_s: float = ALARM_BEFORE_AOS_S,
 ) -> bytes:
@@ -70,13 +71,13 @@ def contact_calendar(
     contacts : DataFrame with the columns of contacts.csv
     stamp : DTSTAMP of what is issued now
     span : (begin, end) that the plan covers; only contacts in it can be cancelled
-    previous : the calendar issued before, of all stations or of this one
+    previous : the calendars issued before, of all stations or of this one; of an event in several the highest SEQUENCE
     station : only its contacts; all when None
     alarm_before_aos_s : [s] how long before AOS to remind
 
     Raises
     ------
-    InputError : `previous` is not a calendar
+    InputError : one of `previous` is not a calendar
     """
     shown = as_written(contacts)
     wanted = shown if station is None else shown[shown["station"] == station]
@@ -90,7 +91,7 @@ def contact_calendar(
             stands = entry.start >= span[1] or entry.status == CANCELLED
             entries[uid] = entry if stands else _cancelled(entry, stamp)
     nothing = _nothing_planned(span, stamp, station)
-    if previous is not None and entries and not before:
+    if previous and entries and not before:
         entries[nothing.uid] = _cancelled(nothing, stamp)  # what the issue before said
     return _calendar(entries.values() or [nothing], station)
 
@@ -194,15 +195,13 @@ def _component(entry: Entry):
     return event
 
 
-def _issued(previous: bytes | None, station: str | None) -> dict[str, Entry]:
-    """Contacts of an earlier calendar by UID, of one station when asked for."""
+def _issued(previous: Sequence[bytes], station: str | None) -> dict[str, Entry]:
+    """Contacts of earlier calendars by UID, of one station when asked for."""
     from icalendar import Calendar
 
-    if previous is None:
-        return {}
     try:
-        events = [event for event in Calendar.from_ical(previous).walk("VEVENT") if "LOCATION" in event]
-        entries = [_read_back(event) for event in events]
+        events = [event for one in previous for event in Calendar.from_ical(one).walk("VEVENT") if "LOCATION" in event]
+        entries = sorted((_read_back(event) for event in events), key=lambda entry: entry.sequence)
     except (ValueError, KeyError, IndexError, TypeError, AttributeError, OverflowError) as fault:
         raise InputError(
             f"the previous calendar must be iCalendar as this tool writes it (RFC 5545): {fault}"

@@ -1,5 +1,6 @@
 """What `week` leaves in its folder: tables, calendars and the picture, all from one plan."""
 
+from collections.abc import Sequence
 from pathlib import Path
 
 from planner.charts.week import week_figure
@@ -20,17 +21,18 @@ def write_week(folder: ClaimedFolder, mission: Mission, plan, run_log: dict, *, 
     folder : from `claim_folder`
     plan : has `.contacts`, `.passes`, `.battery`, `.recorder` (DataFrames) and `.summary` (dict)
     run_log : timings and machine, the only file that may differ between two runs
-    before : folder of the issue before, where the claimed one holds none
+    before : folder of the issue before; where the claimed one holds an issue too, the later of each event counts
 
     Raises
     ------
     MachineError : the machine does not let us write; the week before is in place
     """
-    issued = issued_calendar(folder.path) or (None if before is None else issued_calendar(before))
+    folders = {folder.path, folder.path if before is None else before}
+    issued = [calendar for one in sorted(folders) if (calendar := issued_calendar(one)) is not None]
     folder.write(week_files(mission, plan, issued), plan.summary, run_log=run_log)
 
 
-def week_files(mission: Mission, plan, previous_calendar: bytes | None = None) -> dict[str, bytes]:
+def week_files(mission: Mission, plan, issued: Sequence[bytes] = ()) -> dict[str, bytes]:
     """Every file of the week but its index, by name."""
     prices = getattr(plan, "prices", None)
     return {
@@ -38,7 +40,7 @@ def week_files(mission: Mission, plan, previous_calendar: bytes | None = None) -
         "passes.csv": passes_csv(plan.passes),
         "battery.csv": battery_csv(plan.battery),
         "recorder.csv": recorder_csv(plan.recorder),
-        **calendar_files(mission, plan.contacts, previous_calendar),
+        **calendar_files(mission, plan.contacts, issued),
         **({} if prices is None else {"prices.csv": table_csv(prices)}),
         "week.png": png_bytes(week_figure(mission, plan)),
     }

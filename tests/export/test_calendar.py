@@ -68,23 +68,23 @@ def test_a_moved_contact_keeps_its_uid_and_raises_its_sequence():
     issued = contact_calendar(contacts(1, 2), **OPTIONS)
     moved = contacts(1, 2)
     moved.loc[0, "tx_on_utc"] = "2026-12-07T01:00:30.000Z"
-    again = contact_calendar(moved, previous=issued, **OPTIONS)
+    again = contact_calendar(moved, previous=(issued,), **OPTIONS)
     uids = [{str(event["UID"]): int(event["SEQUENCE"]) for event in events(data).values()} for data in (issued, again)]
     assert uids[0].keys() == uids[1].keys()
     assert sorted(uids[1].values()) == [0, 1]
-    unmoved_again = contact_calendar(moved, previous=again, **OPTIONS)
+    unmoved_again = contact_calendar(moved, previous=(again,), **OPTIONS)
     assert unmoved_again == again
 
 
 def test_a_contact_no_longer_planned_is_sent_as_cancelled_and_can_come_back():
     issued = contact_calendar(contacts(1, 2), **OPTIONS)
-    without = contact_calendar(contacts(2), previous=issued, **OPTIONS)
+    without = contact_calendar(contacts(2), previous=(issued,), **OPTIONS)
     [gone] = [event for event in events(without).values() if event["STATUS"] == "CANCELLED"]
     assert gone.start == START + timedelta(hours=1)
     assert int(gone["SEQUENCE"]) == 1
     assert not gone.walk("VALARM")
-    assert contact_calendar(contacts(2), previous=without, **OPTIONS) == without
-    back = contact_calendar(contacts(1, 2), previous=without, **OPTIONS)
+    assert contact_calendar(contacts(2), previous=(without,), **OPTIONS) == without
+    back = contact_calendar(contacts(1, 2), previous=(without,), **OPTIONS)
     assert sorted((int(event["SEQUENCE"]), str(event["STATUS"])) for event in events(back).values()) == [
         (0, "CONFIRMED"), (2, "CONFIRMED"),
     ]  # fmt: skip
@@ -93,7 +93,7 @@ def test_a_contact_no_longer_planned_is_sent_as_cancelled_and_can_come_back():
 def test_only_what_the_new_plan_covers_can_be_cancelled():
     issued = contact_calendar(contacts(1, 30, 100), **OPTIONS)
     later = (START + timedelta(hours=24), START + timedelta(hours=48))
-    again = contact_calendar(contacts()[:0], stamp=EPOCH, span=later, previous=issued)
+    again = contact_calendar(contacts()[:0], stamp=EPOCH, span=later, previous=(issued,))
     stati = {event.start - START: str(event["STATUS"]) for event in events(again).values()}
     assert stati == {timedelta(hours=30): "CANCELLED", timedelta(hours=100): "CONFIRMED"}  # the first is flown
 
@@ -101,7 +101,7 @@ def test_only_what_the_new_plan_covers_can_be_cancelled():
 def test_a_station_gets_its_own_contacts_and_cancellations_only():
     both = pd.DataFrame([contact(1), contact(2, station="Dry Pan")])
     issued = contact_calendar(both, **OPTIONS)
-    dry = contact_calendar(both[:0], station="Dry Pan", previous=issued, **OPTIONS)
+    dry = contact_calendar(both[:0], station="Dry Pan", previous=(issued,), **OPTIONS)
     event = only_event(dry)
     assert (str(event["LOCATION"]), str(event["STATUS"])) == ("Dry Pan", "CANCELLED")
 
@@ -136,10 +136,19 @@ def test_figures_are_those_of_the_contacts_file():
 
 def test_news_of_an_empty_week_is_taken_back_once_there_are_contacts():
     empty = contact_calendar(contacts()[:0], **OPTIONS)
-    filled = events(contact_calendar(contacts(1), previous=empty, **OPTIONS))
+    filled = events(contact_calendar(contacts(1), previous=(empty,), **OPTIONS))
     stati = {str(event["UID"]): str(event["STATUS"]) for event in filled.values()}
     assert stati.pop(str(only_event(empty)["UID"])) == "CANCELLED"
     assert list(stati.values()) == ["CONFIRMED"]
+
+
+def test_of_two_calendars_issued_before_the_later_state_of_an_event_counts():
+    """RFC 5546, 2.1.4 (from memory): a client ignores an event whose SEQUENCE is below the one it has."""
+    first = contact_calendar(contacts(1), **OPTIONS)
+    cancelled = contact_calendar(contacts(2), previous=(first,), **OPTIONS)
+    for issued in ((first, cancelled), (cancelled, first)):
+        again = contact_calendar(contacts(1), previous=issued, **OPTIONS)
+        assert again == contact_calendar(contacts(1), previous=(cancelled,), **OPTIONS)
 
 
 @pytest.mark.parametrize(
@@ -149,7 +158,7 @@ def test_a_previous_calendar_that_is_none_is_told(broken):
     with pytest.raises(
         InputError, match=r"the previous calendar must be iCalendar as this tool writes it \(RFC 5545\)"
     ):
-        contact_calendar(contacts(1), previous=broken, **OPTIONS)
+        contact_calendar(contacts(1), previous=(broken,), **OPTIONS)
 
 
 @pytest.mark.parametrize(
@@ -166,7 +175,7 @@ def test_events_that_are_not_ours_are_told(found, instead):
     issued = contact_calendar(contacts(1), **OPTIONS)
     assert found in issued
     with pytest.raises(InputError, match="the previous calendar must be iCalendar as this tool writes it"):
-        contact_calendar(contacts(1), previous=issued.replace(found, instead), **OPTIONS)
+        contact_calendar(contacts(1), previous=(issued.replace(found, instead),), **OPTIONS)
 
 
 def test_two_sessions_of_one_mode_on_one_pass_have_two_uids():
@@ -180,4 +189,4 @@ def test_a_mutated_calendar_is_read_or_told(at, cut, put):
     issued = contact_calendar(contacts(1, 2), **OPTIONS)
     mutated = issued[:at] + put + issued[at + cut :]
     with contextlib.suppress(InputError):
-        assert Calendar.from_ical(contact_calendar(contacts(1), previous=mutated, **OPTIONS))
+        assert Calendar.from_ical(contact_calendar(contacts(1), previous=(mutated,), **OPTIONS))
