@@ -232,7 +232,7 @@ def _battery(flown: Flown) -> Iterator[Fault]:
         for breach in flown.breaches(satellite):
             yield Fault(
                 breach.limit,
-                session_at(flown, satellite, breach.time_s),
+                None if breach.limit == "floor risk" else session_at(flown, satellite, breach.time_s),
                 breach.time_s,
                 breach.value,
                 breach.bound,

@@ -1,6 +1,6 @@
 """A re-plan's contacts put back to the times they had, where that breaks nothing: a station's calendar then stays."""
 
-from collections.abc import Callable
+from collections.abc import Callable, Collection, Iterable
 
 from planner.mission.contacts import Session
 from planner.schedule.flown import Flown
@@ -9,15 +9,17 @@ Move = tuple[Session, Session]  # as planned anew, as it was
 SAME_S = 1e-3  # files state times to the millisecond
 
 
-def put_back(flown: Flown, previous: tuple[Session, ...], is_good: Callable[[Flown], bool]) -> Flown:
-    """The same contacts, those that moved put back to their previous times as far as `is_good` of the whole.
+def put_back(
+    flown: Flown, previous: Iterable[Session], is_good: Callable[[Flown], bool], fixed: Collection[Session] = ()
+) -> Flown:
+    """The same contacts, those that moved put back to previous times as far as `is_good` of the whole; not the `fixed`.
 
     All at once where that is good, else half by half, so that a few that must move do not cost the others; those that
     lose the least time on air come first.
     """
     old = {(session.pass_id, session.mode): session for session in previous}
     pairs = [(session, old.get((session.pass_id, session.mode), session)) for session in flown.sessions]
-    moves = [pair for pair in pairs if _has_moved(*pair)]
+    moves = [pair for pair in pairs if _has_moved(*pair) and pair[0] not in fixed]
     return _put_back(flown, sorted(moves, key=lambda pair: pair[0].duration_s - pair[1].duration_s), is_good)
 
 

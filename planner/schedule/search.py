@@ -132,13 +132,32 @@ class Search:
             flown = found[0]
             worth = plan_programme(problem).programme.gain
             objective = float(np.dot(worth, stayed.values[: len(worth)])) if found[1] is stayed else found[1].objective
-        back = put_back(flown, problem.previous, lambda f: worth_mbit(f) >= least_mbit and not self._faults(problem, f))
+        back = put_back(flown, self._still_open(), lambda f: self._may_stay(f, least_mbit), self.problem.frozen)
         _log.info(
             "%d of %d contacts put back to the times they had",
             len({*back.sessions} - {*flown.sessions}),
             len(back.sessions),
         )
         return back, replace(solution, objective=objective + worth_mbit(back) - worth_mbit(flown))
+
+    def _still_open(self) -> list[Session]:
+        """Previous sessions that lie within a window of today: inside the guards at AOS and LOS, hours and all."""
+        windows: dict[tuple[str, str], list[Candidate]] = {}
+        for c in self.problem.candidates:
+            windows.setdefault((c.pass_id, c.mode), []).append(c)
+        return [
+            s
+            for s in self.problem.previous
+            if any(c.opens_s <= s.tx_on_s and s.tx_off_s <= c.closes_s for c in windows.get((s.pass_id, s.mode), ()))
+        ]
+
+    def _may_stay(self, flown: Flown, least_mbit: float) -> bool:
+        """Whether a week with contacts put back is worth enough and keeps every limit; no more once time is up."""
+        if self.cancelled():
+            raise KeyboardInterrupt
+        return (
+            not self.stopwatch.is_over() and worth_mbit(flown) >= least_mbit and not self._faults(self.problem, flown)
+        )
 
     def _approach(self) -> tuple[set[tuple], float]:
         """Correct the problem by a coarse solution, and by what becomes of its sessions under the corrected problem.
@@ -353,5 +372,7 @@ def no_solution(week: Week, problem: Problem, solution: Solution) -> str:
         "policy.upload_lead_h": policy.upload_lead_h,
     }
     stated = ", ".join(f"{key} = {value!r}" for key, value in asked.items() if value not in (None, ()))
-    said = f"no week meets the policy's required contacts within its limits ({stated or solution.status})"
+    if not stated:
+        return "no week was found: the solver finds no choice, not even an empty one, that keeps every limit"
+    said = f"no week meets the policy's required contacts within its limits ({stated})"
     return "\n".join([said, *input_cautions(week.mission)])

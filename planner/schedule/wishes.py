@@ -1,5 +1,6 @@
 """What the operator says by hand: keep, drop, a previous plan, a freeze."""
 
+from collections import Counter
 from collections.abc import Iterable
 from dataclasses import dataclass
 from datetime import datetime
@@ -47,7 +48,7 @@ def read_wishes(
     ------
     InputError : unknown pass or mode, a pass both kept and dropped, a freeze without a time zone or previous plan
     """
-    policy, drop = week.mission.policy, list(drop)
+    policy = week.mission.policy
     kept = [_pass_and_mode(week, entry) for entry in (*policy.keep, *keep)]
     dropped = [_known_pass(week, entry, "drop") for entry in (*policy.drop, *drop)]
     both = sorted({pass_id for pass_id, _ in kept} & set(dropped))
@@ -58,7 +59,7 @@ def read_wishes(
         raise InputError("freeze_until needs the previous contacts that stay frozen (--from CONTACTS.csv)")
     frozen_s = freeze_s(week.mission, freeze_until)
     frozen = tuple(session for session in sessions if powers_on_s(week.mission, session) < max(frozen_s, 0.0))
-    _refuse_frozen(frozen, drop)
+    _refuse_frozen(frozen, dropped)
     return Wishes(
         keep=frozenset(kept),
         drop=frozenset(dropped),
@@ -70,9 +71,15 @@ def read_wishes(
 
 def _refuse_frozen(frozen: tuple[Session, ...], drop: list[str]) -> None:
     faults = [
-        f"drop: {pass_id} is frozen and stays: its contact begins before freeze_until (--freeze-until)"
-        for pass_id in drop
+        f"drop: {pass_id} is frozen and stays: its contact begins before freeze_until (--freeze-until) or the start"
+        for pass_id in dict.fromkeys(drop)
         if pass_id in {session.pass_id for session in frozen}
+    ]
+    twice = Counter((session.pass_id, session.mode) for session in frozen)
+    faults += [
+        f"{pass_id}: two frozen contacts in {mode!r} on one pass cannot be planned around; drop one from the file"
+        for (pass_id, mode), count in twice.items()
+        if count > 1
     ]
     if faults:
         raise InputError(*faults)

@@ -328,7 +328,7 @@ def test_what_is_frozen_cannot_be_dropped(day):
     with pytest.raises(InputError) as told:
         planner.plan_week(mission, drop=[first], previous=plan.contacts, freeze_until=until)
     assert str(told.value) == (
-        f"drop: {first} is frozen and stays: its contact begins before freeze_until (--freeze-until)"
+        f"drop: {first} is frozen and stays: its contact begins before freeze_until (--freeze-until) or the start"
     )
 
 

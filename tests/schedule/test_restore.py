@@ -4,6 +4,7 @@ from dataclasses import replace
 
 from hypothesis import given
 from hypothesis import strategies as st
+from referee import moment
 
 import planner
 from planner.mission.contacts import Session
@@ -51,3 +52,17 @@ def test_a_replan_with_fresh_telemetry_leaves_most_contacts_at_their_times(two_d
     assert unmoved(again) >= 0.8 * len(two_day_plan.contacts)
     assert planner.audit(weaker, again.contacts).safe
     assert again.summary["objective"] <= again.summary["objective_bound"]
+
+
+def test_a_time_before_today_s_guard_is_not_gone_back_to(two_day_mission, two_day_plan):
+    """With a wider guard at AOS and LOS the old times lie outside the windows, though inside the pass."""
+    careful = two_day_mission.with_changes(policy={"clock_guard_s": 20.0})
+    again = planner.plan_week(careful, previous=two_day_plan.contacts)
+    times = again.contacts[["aos_utc", "tx_on_utc", "tx_off_utc", "los_utc"]].map(moment)
+    assert min((times["tx_on_utc"] - times["aos_utc"]).dt.total_seconds()) >= 20.0
+    assert min((times["los_utc"] - times["tx_off_utc"]).dt.total_seconds()) >= 20.0
+
+
+def test_what_is_fixed_is_not_put_back():
+    before, after = made_up(2), made_up(2, later_s=7.0)
+    assert put_back(Flown(None, after), before, lambda flown: True, fixed=after[:1]).sessions == (after[0], before[1])
