@@ -11,7 +11,7 @@ from planner.mission.models import Mission
 from planner.mission.text import nearest
 from planner.power.limits import Breach
 from planner.schedule.candidates import find_candidates
-from planner.schedule.checks import breach_text, find_faults
+from planner.schedule.checks import Fault, breach_text, find_faults
 from planner.schedule.flown import Flown
 from planner.schedule.frames import contact_id
 from planner.schedule.result import plan_week, prepared
@@ -172,7 +172,7 @@ def _new_breaches(base: Flown, trial: Flown, satellite: str) -> list[Breach]:
 
 def _longest(base: Flown, candidate: Candidate) -> tuple[float, float | None]:
     """The longest transmission that breaks nothing, to the second, and its best start; 0 s and None if none does."""
-    shortest, longest = 1, int(candidate.longest_s)
+    shortest, longest = 1, int(candidate.longest_s) + 1  # the first that does, and one that does not
     if _affordable_start(base, candidate, shortest) is None:
         return 0.0, None
     while longest - shortest > 1:
@@ -207,13 +207,13 @@ def _give_way(base: Flown, session: Session) -> tuple[Session, ...]:
     own = base.of(session.satellite)
     nearest_first = sorted(own, key=lambda s: abs(s.tx_on_s - session.tx_on_s))[:NEAREST]
 
-    known = set(_conflicts(base, session)) | {fault.text for fault in find_faults(base)}
+    known = {_rule_of(fault) for fault in (*find_faults(base), *find_faults(base.with_session(session)))}
 
     def fits(gone) -> bool:
         without = base.without(set(gone)).with_session(session)
-        return not _new_breaches(base, without, session.satellite) and not any(
-            fault.text not in known for fault in find_faults(without)
-        )
+        if _new_breaches(base, without, session.satellite):
+            return False
+        return all(fault.satellite or _rule_of(fault) in known for fault in find_faults(without))
 
     for count in range(1, MOST_GIVEN_UP + 1):
         sets = sorted(
@@ -233,6 +233,11 @@ def _give_way(base: Flown, session: Session) -> tuple[Session, ...]:
         if fits([s for s in given_up if s is not other]):
             given_up.remove(other)
     return tuple(sorted(given_up))
+
+
+def _rule_of(fault: Fault) -> tuple:
+    """What tells a broken rule from another of its kind, whatever its figures; a battery's have their satellite."""
+    return fault.rule, fault.session, round(fault.time_s)
 
 
 def _conflicts(base: Flown, session: Session) -> list[str]:
