@@ -62,7 +62,7 @@ def _parser(text: str):
         return omm.parse_xml
     if begin.startswith(("{", "[")):
         return omm.parse_json
-    if re.search(r"MEAN_MOTION\s*[,;\t]|[,;\t]\s*MEAN_MOTION", first_line):
+    if re.search(r'MEAN_MOTION"?\s*[,;\t]|[,;\t]\s*"?MEAN_MOTION', first_line):
         return omm.parse_csv
     if begin.startswith("CCSDS_OEM_VERS"):
         return oem.parse_oem

@@ -21,10 +21,10 @@ from planner.mission.base import (
 
 When = Literal["always", "sunlit", "eclipse", "windows"]
 Table = tuple[tuple[Real, Real], ...]
-# Cell voltages an operator commonly stays between, for cycle life and headroom (common practice, no source)
 # What a cell of a chemistry is ever discharged and charged to (from memory; the cell's data sheet comes first)
-FARTHEST_V = {"LiFePO4": (2.0, 3.65), "Li-ion": (2.5, 4.4)}
+FARTHEST_V = {"LiFePO4": (2.0, 3.65), "Li-ion": (2.0, 4.5)}
 ABOVE_REST_V = 0.2  # how far a charger may stand above the full resting cell of a table of one's own
+# Cell voltages an operator commonly stays between, for cycle life and headroom (common practice, no source)
 DERATED_V = {"LiFePO4": (2.8, 3.5), "Li-ion": (3.0, 4.1)}
 
 
@@ -166,11 +166,10 @@ class Battery(Described):
 
     @model_validator(mode="after")
     def _voltages_of_the_chemistry(self):
-        low_v, high_v = FARTHEST_V[self.chemistry]
-        what = f"{self.chemistry} cells"
+        (low_v, high_v), what = FARTHEST_V[self.chemistry], f"{self.chemistry} cells"
         if self.open_circuit is not None:
-            low_v, high_v = 0.0, round(self.open_circuit[-1][1] + ABOVE_REST_V, 6)
-            what = f"the full cell of open_circuit and {ABOVE_REST_V:g} V"
+            low_v, high_v = 0.0, max(high_v, round(self.open_circuit[-1][1] + ABOVE_REST_V, 6))
+            what = f"{what} and a full cell of open_circuit"
         if self.cell_min_v < low_v:
             raise ValueError(f"cell_min_v must be at least {low_v:g} for {what}, got {self.cell_min_v:g}")
         if self.cell_max_v > high_v:

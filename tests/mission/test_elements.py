@@ -207,6 +207,12 @@ def test_keyword_lines_drop_units_and_comments(tmp_path):
     assert read_elements(written(tmp_path, text), AT) == read_elements(SAMPLES / "two_satellites.omm", AT)
 
 
+def test_a_csv_with_every_cell_quoted(tmp_path):
+    rows = [line.split(",") for line in (SAMPLES / "marshlight.omm.csv").read_text().splitlines()]
+    quoted = "\n".join(",".join(f'"{cell}"' for cell in row) for row in rows)
+    assert read_elements(written(tmp_path, quoted), AT) == read_elements(SAMPLES / "marshlight.omm.csv", AT)
+
+
 def test_a_date_by_day_of_year(tmp_path):
     text = (SAMPLES / "two_satellites.omm").read_text().replace("2026-12-06T18:00:00.000000", "2026-340T18:00:00Z")
     assert read_elements(written(tmp_path, text), AT)["SANDPIPER-2"].epoch == datetime(2026, 12, 6, 18, tzinfo=UTC)

@@ -25,10 +25,10 @@ from planner.mission.power import Battery, Load, Panel
         ({"cell_min_v": 3.6, "cell_max_v": 2.8}, "cell_min_v must be below cell_max_v, got 3.6 and 2.8"),
         ({"cell_max_v": 4.2}, "cell_max_v must be at most 3.65 for LiFePO4 cells, got 4.2"),
         ({"cell_min_v": 1.0}, "cell_min_v must be at least 2 for LiFePO4 cells, got 1"),
-        ({"chemistry": "Li-ion", "cell_max_v": 5.2}, "cell_max_v must be at most 4.4 for Li-ion cells, got 5.2"),
+        ({"chemistry": "Li-ion", "cell_max_v": 5.2}, "cell_max_v must be at most 4.5 for Li-ion cells, got 5.2"),
         (
-            {"open_circuit": ((0.0, 1.5), (100.0, 2.7)), "cell_max_v": 3.5},
-            "cell_max_v must be at most 2.9 for the full cell of open_circuit and 0.2 V, got 3.5",
+            {"open_circuit": ((0.0, 3.0), (100.0, 3.9)), "cell_max_v": 4.2},
+            "cell_max_v must be at most 4.1 for LiFePO4 cells and a full cell of open_circuit, got 4.2",
         ),
         ({"charge_min_c": 50.0}, "charge_min_c must be below charge_max_c, got 50.0 and 45.0"),
         ({"health": 1.2}, "less than or equal to 1"),
