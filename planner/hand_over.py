@@ -2,7 +2,6 @@
 
 from collections.abc import Iterable, Iterator
 from datetime import datetime
-from itertools import islice
 from pathlib import Path
 
 from planner import printing
@@ -11,6 +10,7 @@ from planner.mission.models import Mission
 from planner.printing import Tell
 
 DONE, NO = 0, 1
+MOST_TOLD = 20
 
 
 def show_comparison(old: str, new: str) -> int:
@@ -41,6 +41,8 @@ def write_pointing(mission: Mission, arguments, tell: Tell) -> int:
         tell("passes, links and power")
         sky = prepared(mission).sky
         refused = {} if arguments.force else too_old(mission, sky, sessions)
+        if refused and len(refused) == len(sessions):
+            raise InputError(*list(refused.values())[:MOST_TOLD], "no table is written; those there stay")
         tables = pointing_tables(
             mission,
             sky,
@@ -97,7 +99,7 @@ def _say_cautions(mission: Mission) -> None:
 
 def _counted(files: Iterable[tuple[str, bytes]], tell: Tell, what: str, count: int) -> Iterator[tuple[str, bytes]]:
     """The files, each told before it is made."""
-    made = iter(files)
-    for number in range(1, count + 1):
-        tell(f"{what} {number} of {count}")
-        yield from islice(made, 1)
+    tell(f"{what} 1 of {count}")
+    for number, file in enumerate(files, 2):
+        yield file
+        tell(f"{what} {min(number, count)} of {count}")

@@ -29,10 +29,9 @@ def screen(stderr: bool = False) -> Console:
     """A console that follows NO_COLOR and is plain when piped."""
     _stop_moving()
     stream = sys.stderr if stderr else sys.stdout
-    width = None if stream.isatty() else PLAIN_WIDTH
-    return _Screen(
-        stderr=stderr, width=width, highlight=False, soft_wrap=not stream.isatty(), emoji=False, markup=False
-    )
+    plain = stream is None or not stream.isatty()  # None: the stream was closed before we began
+    width = PLAIN_WIDTH if plain else None
+    return _Screen(stderr=stderr, width=width, highlight=False, soft_wrap=plain, emoji=False, markup=False)
 
 
 def say(text: str) -> None:
@@ -68,8 +67,8 @@ def stages(quiet: bool, verbose: bool) -> Iterator[Tell]:
 
         def tell(stage: str) -> None:
             progress.update(line, description=stage)
-            progress.start()
             _moving.append(progress)
+            progress.start()
 
         tell("reading")
         try:

@@ -6,11 +6,12 @@ from pathlib import Path
 import numpy as np
 
 from planner import printing
+from planner.export.contacts import plain_number
 from planner.mission.elements import which_set
 from planner.mission.models import Mission, Satellite
 from planner.mission.pointing import Law
 from planner.mission.station import Hours, Station
-from planner.units import EARTH_GM_KM3_S2, EARTH_RADIUS_KM, SOLAR_CONSTANT_W_M2
+from planner.units import DAY_S, EARTH_GM_KM3_S2, EARTH_RADIUS_KM, HOUR_S, SOLAR_CONSTANT_W_M2
 
 DONE = 0
 
@@ -74,11 +75,11 @@ def _plain(value) -> str:
         return "yes" if value else "no"
     if isinstance(value, tuple):
         return ", ".join(value) or "none"
-    return "none" if value is None else f"{value:g}"
+    return "none" if value is None else plain_number(value)
 
 
 def _say_satellite(mission: Mission, satellite: Satellite) -> None:
-    start = satellite.start_state
+    start, stored = satellite.start_state, plain_number(satellite.start_state.stored_mbit)
     printing.say("")
     printing.say(f"{satellite.name}: {which_set(satellite.elements, mission.start)}")
     printing.table([("", "left"), ("", "left")], [
@@ -89,13 +90,13 @@ def _say_satellite(mission: Mission, satellite: Satellite) -> None:
         ("panels", _panels(satellite)),
         ("loads", ", ".join(f"{load.name} {load.power_w:g} W" for load in satellite.spacecraft.load) or "none"),
         ("recorder", _recorder(satellite)),
-        ("at the start", f"charge {start.soc_pct:g} % ± {start.soc_error_pct:g}, {start.stored_mbit:g} Mbit stored"),
+        ("at the start", f"charge {start.soc_pct:g} % ± {start.soc_error_pct:g}, {stored} Mbit stored"),
     ])  # fmt: skip
     printing.table(
         [("mode", "left"), ("carrier", "right"), ("band", "left"), ("RF", "right"), ("DC", "right"),
          ("symbols", "right"), ("MODCODs", "left"), ("antenna", "left"), ("commands up", "left")],
-        [(t.mode, f"{t.frequency_mhz:g} MHz", t.band, f"{t.rf_power_w:g} W", f"{t.dc_power_w:g} W",
-          f"{t.symbol_rate_mbaud:g} Mbaud", f"{len(t.modcods)}, {t.modcod_choice}", t.antenna.kind,
+        [(t.mode, f"{plain_number(t.frequency_mhz)} MHz", t.band, f"{t.rf_power_w:g} W", f"{t.dc_power_w:g} W",
+          f"{plain_number(t.symbol_rate_mbaud)} Mbaud", f"{len(t.modcods)}, {t.modcod_choice}", t.antenna.kind,
           "yes" if t.uplink else "no") for t in satellite.spacecraft.transmitter],
     )  # fmt: skip
 
@@ -103,12 +104,12 @@ def _say_satellite(mission: Mission, satellite: Satellite) -> None:
 def _orbit(satellite: Satellite) -> str:
     """Heights of Kepler's ellipse with that mean motion, over the equator's radius."""
     elements = satellite.elements
-    rate_rad_s = elements.mean_motion_rev_day * 2 * np.pi / 86_400
+    rate_rad_s = elements.mean_motion_rev_day * 2 * np.pi / DAY_S
     axis_km = (EARTH_GM_KM3_S2 / rate_rad_s**2) ** (1 / 3)
     low_km, high_km = (axis_km * (1 + sign * elements.eccentricity) - EARTH_RADIUS_KM for sign in (-1, 1))
     return (
         f"{low_km:.0f} to {high_km:.0f} km high, inclination {elements.inclination_deg:.2f} deg, a revolution in"
-        f" {1440 / elements.mean_motion_rev_day:.2f} min"
+        f" {DAY_S / 60 / elements.mean_motion_rev_day:.2f} min"
     )
 
 
@@ -121,7 +122,7 @@ def _battery(satellite: Satellite) -> str:
         f"{battery.cells_series}S{battery.cells_parallel}P {battery.chemistry}"
         f" {battery.cells_parallel * battery.cell_capacity_ah:g} Ah,"
         f" {battery.cells_series * float(cell.open_circuit_v(cell.capacity_c / 2)):.1f} V half full,"
-        f" {cells * float(cell.stored_j[-1]) / 3600:.1f} Wh at health {battery.health:g};"
+        f" {cells * float(cell.stored_j[-1]) / HOUR_S:.1f} Wh at health {battery.health:g};"
         f" {battery.cell_min_v:g} to {battery.cell_max_v:g} V and {battery.cell_resistance_mohm:g} mohm a cell"
     )
 
@@ -143,4 +144,5 @@ def _panels(satellite: Satellite) -> str:
 def _recorder(satellite: Satellite) -> str:
     recorder = satellite.spacecraft.recorder
     sources = ", ".join(f"{source.name} {source.rate_mbps:g} Mbit/s" for source in recorder.source) or "nothing"
-    return f"{recorder.capacity_mbit:g} Mbit, {recorder.reserve_mbit:g} of them held back; filled by {sources}"
+    capacity, reserve = plain_number(recorder.capacity_mbit), plain_number(recorder.reserve_mbit)
+    return f"{capacity} Mbit, {reserve} of them held back; filled by {sources}"

@@ -31,8 +31,8 @@ def _cautions(mission: Mission, satellite: Satellite) -> Iterator[str]:
     for transmitter in satellite.spacecraft.transmitter:
         if not any(_hears(station, transmitter) for station in mission.stations):
             yield (
-                f"mode {transmitter.mode!r} is never used: no station hears {transmitter.band} band in a polarisation"
-                f" that goes with {transmitter.polarisation}."
+                f"{satellite.name}: mode {transmitter.mode!r} is never used: no station hears {transmitter.band} band"
+                f" in a polarisation that goes with {transmitter.polarisation}."
             )
     battery = satellite.spacecraft.battery
     full_pct = describe_cell(battery, health=battery.health).full_soc_pct

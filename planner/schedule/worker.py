@@ -6,6 +6,7 @@ Run by path, so that it loads numpy and scipy and nothing else.
 import fcntl
 import os
 import pickle
+import select
 import signal
 import sys
 from contextlib import contextmanager
@@ -41,9 +42,14 @@ def _ends_with_reader(pipe: int):
 
     Linux tells the writer of a pipe by SIGIO, which ends a process that does not handle it. Elsewhere nothing happens.
     """
+    signal.signal(signal.SIGIO, signal.SIG_DFL)  # a parent may have had it ignored
     flags = fcntl.fcntl(pipe, fcntl.F_GETFL)
     fcntl.fcntl(pipe, fcntl.F_SETOWN, os.getpid())
     fcntl.fcntl(pipe, fcntl.F_SETFL, flags | os.O_ASYNC)
+    look = select.poll()
+    look.register(pipe, 0)
+    if look.poll(0):  # the reader went before it could be told of
+        sys.exit()
     yield
     fcntl.fcntl(pipe, fcntl.F_SETFL, flags)
 

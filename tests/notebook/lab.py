@@ -10,6 +10,7 @@ import urllib.request
 from contextlib import contextmanager
 from pathlib import Path
 
+import pytest
 from bench_examples import ROOT
 
 STARTS_WITHIN_S = 60

@@ -51,7 +51,7 @@ def test_a_mode_that_no_station_hears(marshlight, changes):
         lambda craft: {"transmitter": (craft.transmitter[0].model_copy(update=changes), *craft.transmitter[1:])},
     )
     [caution] = input_cautions(mission)
-    assert caution.startswith("mode 'K high rate' is never used: no station hears ")
+    assert caution.startswith("MARSHLIGHT-1: mode 'K high rate' is never used: no station hears ")
 
 
 def test_a_charger_that_stops_early_is_told_where_the_week_fails(marshlight):
