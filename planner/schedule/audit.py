@@ -77,7 +77,7 @@ def audit(mission: Mission, contacts, *, freeze_until: datetime | None = None) -
     ----------
     contacts : path of a contacts CSV, or its table
     freeze_until : contacts that power on before have flown or are being flown: newer elements may put them seconds
-        beside their pass, which is no fault of theirs; their energy and data count
+        beside their pass, which is no fault of theirs; what they take from the battery is judged like all else
 
     Raises
     ------
@@ -91,7 +91,7 @@ def audit(mission: Mission, contacts, *, freeze_until: datetime | None = None) -
     faults = [
         fault
         for fault in (*_beyond(flown, lines), *find_faults(flown), *_wishes_broken(flown))
-        if fault.session is None or powers_on_s(mission, fault.session) >= frozen_s
+        if fault.satellite or fault.session is None or powers_on_s(mission, fault.session) >= frozen_s
     ]
     return Audit(flown, tuple(faults), tuple(_stale(flown, stated)), lines)
 

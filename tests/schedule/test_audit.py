@@ -88,6 +88,14 @@ def test_a_contact_that_has_flown_is_not_judged_by_newer_elements(two_day_missio
         planner.audit(two_day_mission, early, freeze_until=aos.replace(tzinfo=None))
 
 
+def test_a_floor_is_judged_whatever_has_flown(two_day_mission, plan):
+    high = two_day_mission.with_changes(policy={"soc_floor_pct": 80.0, "soc_end_pct": 80.0})
+    judged, flown = (planner.audit(high, plan.contacts, freeze_until=until) for until in (None, high.end))
+    floors = [[fault.text for fault in found.faults if fault.rule == "SoC floor"] for found in (judged, flown)]
+    assert floors[0]
+    assert floors[0] == floors[1]
+
+
 def test_tx_off_after_los(two_day_mission, plan):
     at = a_contact(plan, mode=S)
     row = plan.contacts.iloc[at]
