@@ -23,6 +23,7 @@ NAMES_CONTACTS = UUID("5f2f2a0e-7a55-4d0b-9a43-6d2c3f1b8e11")  # drawn once; mak
 ALARM_BEFORE_AOS_S = 600.0
 SIGNIFICANT = ("start", "end", "location", "summary", "status")  # a change in these raises SEQUENCE
 CONFIRMED, CANCELLED = "CONFIRMED", "CANCELLED"
+CALLED_OFF = "cancelled: "  # before the title, for readers that show a cancelled event like any other
 HIGHEST_SEQUENCE = 1_000_000
 
 
@@ -179,8 +180,8 @@ def _component(entry: Entry):
     event = Event()
     for key, value in (
         ("UID", entry.uid), ("DTSTAMP", _whole_second(entry.stamp)), ("DTSTART", entry.start), ("DTEND", entry.end),
-        ("SUMMARY", entry.summary), ("LOCATION", entry.location), ("DESCRIPTION", entry.description),
-        ("STATUS", entry.status), ("SEQUENCE", entry.sequence),
+        ("SUMMARY", CALLED_OFF * (entry.status == CANCELLED) + entry.summary), ("LOCATION", entry.location),
+        ("DESCRIPTION", entry.description), ("STATUS", entry.status), ("SEQUENCE", entry.sequence),
         ("TRANSP", "OPAQUE" if entry.location else "TRANSPARENT"),
     ):  # fmt: skip
         if value != "":
@@ -220,6 +221,7 @@ def _read_back(event) -> Entry:
     alarms = [(-alarm["TRIGGER"].dt, str(alarm["DESCRIPTION"])) for alarm in event.walk("VALARM")]
     alarm = alarms[0] if alarms and isinstance(alarms[0][0], timedelta) else None
     summary, location, description = (str(event.get(key, "")) for key in ("SUMMARY", "LOCATION", "DESCRIPTION"))
+    summary = summary.removeprefix(CALLED_OFF)
     return Entry(str(event["UID"]), stamp, start, end, summary, location, description, status, sequence, alarm)
 
 

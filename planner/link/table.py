@@ -47,7 +47,8 @@ class LinkTable:
     """Arrays (n,) over the samples of one satellite's passes; `sample_index` points into `sky.samples`.
 
     `pass_rows` (m,) points into `sky.passes`; pass k owns offsets[k]:offsets[k + 1]. `reasons` (m,) says why a pass
-    cannot be used in this mode, empty where it can. Columns are nan where the station cannot hear the mode.
+    cannot be used in this mode, empty where it can. `trackable` (n,) bool: the mount can follow. Columns are nan where
+    the station cannot hear the mode.
     """
 
     satellite: str
@@ -67,6 +68,7 @@ class LinkTable:
     doppler_khz: np.ndarray
     flux_dbw_m2: np.ndarray
     flux_limit_dbw_m2: np.ndarray
+    trackable: np.ndarray
     flux_bandwidth_hz: float
     options: tuple[LinkOption, ...]
     reasons: tuple[str, ...]
@@ -118,6 +120,7 @@ def link_table(mission: Mission, sky: Sky, satellite_name: str, mode: str) -> Li
         pass_rows=pass_rows,
         offsets=offsets,
         time_s=time_s,
+        trackable=trackable,
         flux_bandwidth_hz=flux_limit(transmitter.frequency_mhz).bandwidth_hz,
         options=options,
         reasons=tuple(reasons),

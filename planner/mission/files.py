@@ -50,6 +50,9 @@ class MissionTables(Described):
     satellite: tuple[SatelliteTable, ...] = ()
 
 
+KINDS: dict[type[Described], str] = {MissionTables: "mission", Station: "station", Spacecraft: "spacecraft"}
+
+
 class _MissionFile(MissionTables, Spacecraft):
     """All keys a mission file may hold, for "did you mean"."""
 
@@ -94,7 +97,7 @@ def load_mission(path: str | Path = DEFAULT_MISSION) -> Mission:
     """
     path = Path(path)
     reader = _Reader(path.parent)
-    raw = reader.attempt(read_toml, reader.path(path.name))
+    raw = reader.attempt(_read_kind, reader.path(path.name), MissionTables)
     reader.stop_on_faults()
     own = {key: value for key, value in raw.items() if key not in Spacecraft.model_fields}
     shared = {key: value for key, value in raw.items() if key in Spacecraft.model_fields}
@@ -149,8 +152,17 @@ def _check_size(reader: _Reader, tables: MissionTables, satellites: int, path: P
 
 def _station(reader: _Reader, name: str) -> Station | None:
     path = reader.path(name)
-    raw = reader.attempt(read_toml, path)
+    raw = reader.attempt(_read_kind, path, Station)
     return None if raw is None else reader.model(Station, raw, path)
+
+
+def _read_kind(path: Path, wanted: type[Described]) -> dict[str, Any]:
+    """The file's tables; InputError where they have keys of one other kind of file and none of the wanted one's."""
+    raw = read_toml(path)
+    has = [kind for kind in KINDS if raw.keys() & (kind.model_fields.keys() - {"name"})]
+    if len(has) == 1 and has[0] is not wanted:
+        raise InputError(f"{path}: must be a {KINDS[wanted]} file, got a {KINDS[has[0]]} file")
+    return raw
 
 
 def _spacecraft(reader: _Reader, raw: dict[str, Any], path: Path) -> Spacecraft | None:
@@ -163,7 +175,7 @@ def _spacecraft(reader: _Reader, raw: dict[str, Any], path: Path) -> Spacecraft 
 
 def _own_spacecraft(reader: _Reader, name: str) -> Spacecraft | None:
     path = reader.path(name)
-    raw = reader.attempt(read_toml, path)
+    raw = reader.attempt(_read_kind, path, Spacecraft)
     return None if raw is None else _spacecraft(reader, raw, path)
 
 

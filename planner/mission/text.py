@@ -25,6 +25,13 @@ TOML_MENDS = (
     (re.compile(r"\d:\d\d:60"), "a leap second cannot be written, take the second before it or after"),
     (re.compile(r"[“”„]"), "write straight quotes"),
 )
+# What a file that is no TOML often is instead
+OTHER_KINDS = (
+    (re.compile(r"^1 [\w ]{5}[A-Z ] ", re.MULTILINE), "a two-line element set"),
+    (re.compile(r"\A\s*<"), "XML"),
+    (re.compile(r"\A\s*(\{|\[\s*\{)"), "JSON"),
+    (re.compile(r"\A[^=\n]+,[^=\n]+,"), "a CSV table"),
+)
 
 
 def read_bytes(path: Path) -> bytes:
@@ -89,7 +96,8 @@ def _toml_line(text: str, error: str) -> str:
     """The line that an error tells the number of, as ", got 'soc_pct = 92,0'; write decimals with a point"."""
     told = re.search(r"at line (\d+)", error)
     line = text.split("\n")[int(told[1]) - 1].strip() if told else ""
-    mends = [f"; {mend}" for pattern, mend in TOML_MENDS if pattern.search(line)]
+    mends = [f"; it looks like {kind}" for pattern, kind in OTHER_KINDS if pattern.search(text)]
+    mends += [f"; {mend}" for pattern, mend in TOML_MENDS if pattern.search(line)]
     return (f", got {shown(line)}" if line else "") + "".join(mends[:1])
 
 

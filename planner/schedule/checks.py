@@ -75,10 +75,7 @@ def _on_air(flown: Flown, session: Session, asks_margin: bool) -> Iterator[Fault
     profile = flown.coding[session]
     if asks_margin and not _covered(profile.windows_s(), session):
         lowest_db = profile.lowest_margin_db(session.tx_on_s, session.tx_off_s)
-        text = (
-            f"the link is not usable all through the transmission: lowest margin {lowest_db:.2f} dB, the policy asks"
-            f" {policy.link_margin_db:g} dB (or the mount is too slow, or flux above its enforced limit)"
-        )
+        text = f"the link is not usable all through the transmission: {_unusable(flown, session, lowest_db)}"
         yield Fault("link margin", session, session.tx_on_s, lowest_db, policy.link_margin_db, "dB", text)
     if not _covered(flown.week.open_s[session.station], session):
         text = f"{session.station} is closed during the transmission"
@@ -91,6 +88,24 @@ def _on_air(flown: Flown, session: Session, asks_margin: bool) -> Iterator[Fault
         text = "it turns the satellite while the payload keeps the idle attitude (pointing.no_slew_windows)"
         yield Fault("no slew", session, session.tx_on_s, np.nan, np.nan, "", text)
     yield from _commands(flown, session)
+
+
+def _unusable(flown: Flown, session: Session, lowest_db: float) -> str:
+    """Why nothing can be sent at some moment of a session inside its pass."""
+
+    def along(column: str) -> np.ndarray:
+        row = flown.week.row_of[session.pass_id]
+        return flown.week.along(row, session.mode, column, session.tx_on_s, session.tx_off_s)
+
+    policy, found = flown.week.mission.policy, []
+    if not along("trackable").all():
+        found.append(f"the mount of {session.station} is too slow")
+    excess_db = np.max(along("flux_dbw_m2") - along("flux_limit_dbw_m2"))
+    if policy.enforce_flux_limit and excess_db > 0:
+        found.append(f"power flux-density is above its enforced limit by up to {excess_db:.2f} dB")
+    if lowest_db < policy.link_margin_db or not found:
+        found.append(f"lowest margin {lowest_db:.2f} dB, the policy asks {policy.link_margin_db:g} dB")
+    return "; ".join(found)
 
 
 def _covered(windows: list[tuple[float, float]], session: Session) -> bool:

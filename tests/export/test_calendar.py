@@ -83,6 +83,7 @@ def test_a_contact_no_longer_planned_is_sent_as_cancelled_and_can_come_back():
     assert gone.start == START + timedelta(hours=1)
     assert int(gone["SEQUENCE"]) == 1
     assert not gone.walk("VALARM")
+    assert str(gone["SUMMARY"]) == f"cancelled: {only_event(contact_calendar(contacts(1), **OPTIONS))['SUMMARY']}"
     assert contact_calendar(contacts(2), previous=(without,), **OPTIONS) == without
     back = contact_calendar(contacts(1, 2), previous=(without,), **OPTIONS)
     assert sorted((int(event["SEQUENCE"]), str(event["STATUS"])) for event in events(back).values()) == [

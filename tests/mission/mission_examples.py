@@ -20,8 +20,8 @@ def changed(folder: Path, old: str, new: str, file: str = MISSION) -> None:
     path.write_text(text.replace(old, new, 1))
 
 
-def faults(folder: Path) -> list[str]:
-    """What is said of the folder's mission, file names without the folder."""
+def faults(folder: Path, mission: str = MISSION) -> list[str]:
+    """What is said of a mission of the folder, file names without the folder."""
     with pytest.raises(InputError) as caught:
-        load_mission(folder / MISSION)
+        load_mission(folder / mission)
     return [fault.replace(f"{folder}/", "") for fault in caught.value.faults]

@@ -315,6 +315,28 @@ def test_what_a_line_often_gets_wrong_is_told_with_its_mend(mission_folder, old,
     assert fault.endswith(told)
 
 
+@pytest.mark.parametrize(
+    ("other", "kind"),
+    [
+        ("tle_samples/marshlight.tle", "a two-line element set"),
+        ("tle_samples/marshlight.omm.csv", "a CSV table"),
+        ("tle_samples/marshlight.omm.json", "JSON"),
+        ("tle_samples/marshlight.omm.xml", "XML"),
+    ],
+)
+def test_a_file_of_another_form_given_as_a_mission(mission_folder, other, kind):
+    (fault,) = faults(mission_folder, other)
+    assert fault.startswith(f"{other}: must be TOML: ")
+    assert fault.endswith(f"; it looks like {kind}")
+
+
+def test_a_file_of_another_kind_is_told_as_what_it_is(mission_folder):
+    assert faults(mission_folder, VARDHOLM) == [f"{VARDHOLM}: must be a mission file, got a station file"]
+    changed(mission_folder, '"../stations/vardholm.toml"', '"craft.toml"')
+    (mission_folder / "missions" / "craft.toml").write_text("recorder = 1\n")
+    assert "missions/craft.toml: must be a station file, got a spacecraft file" in faults(mission_folder)
+
+
 def test_an_empty_file_lacks_every_key(mission_folder):
     (mission_folder / MISSION).write_text("")
     required = (

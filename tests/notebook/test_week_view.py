@@ -1,18 +1,11 @@
 """The picture takes clicks, zooms to a day, and is redrawn over its page just as it would be drawn anew."""
 
-import statistics
-import time
-
 import numpy as np
 import pytest
 from bench_examples import without_markup
 from matplotlib.backend_bases import MouseEvent
 
 from planner.charts.week import days
-
-# The issue asks for 300 ms from click to redrawn chart. The demo week takes about 200 on two shared processors;
-# this one-day week takes a third of it, and a test must not fail because the machine is busy.
-REDRAW_S = 0.3
 
 
 def pixels(canvas):
@@ -65,23 +58,6 @@ def test_the_charge_figure_follows(on_bench):
         assert "floor 65 %" in without_markup(bench.week.figures.value)
         bench.desk.alter(bench.desk.changes.with_value("policy", "soc_floor_pct", 40.0))
         assert "floor 40 %" in without_markup(bench.week.figures.value)
-
-    on_bench(act)
-
-
-def test_keep_drop_and_floor_redraw_in_time(on_bench, plan, free_pass):
-    def act(bench):
-        desk = bench.desk
-        desk._watchers[:] = [lambda what: bench.week.redraw()]
-        acts = [lambda s=s: desk.drop_pass(s.pass_id) for s in plan.flown.sessions[:3]]
-        acts += [lambda f=f: desk.alter(desk.changes.with_value("policy", "soc_floor_pct", f)) for f in (60.0, 50.0)]
-        acts += [lambda: desk.keep_pass(free_pass, "K high rate")]
-        taken_s = []
-        for each in acts:
-            began = time.perf_counter()
-            each()
-            taken_s.append(time.perf_counter() - began)
-        assert statistics.median(taken_s) < REDRAW_S
 
     on_bench(act)
 

@@ -1,5 +1,6 @@
 """An audit finds each broken rule, says where, when and by how much, and which figures are stale."""
 
+import re
 from datetime import timedelta
 
 import pandas as pd
@@ -117,7 +118,22 @@ def test_a_link_below_its_margin(two_day_mission, plan):
     asked = two_day_mission.with_changes(policy={"link_margin_db": 25.0})
     (text,) = [t for t in texts(asked, plan.contacts) if plan.contacts.iloc[at].contact_id in t and "margin" in t]
     assert "the link is not usable all through the transmission: lowest margin" in text
-    assert "the policy asks 25 dB" in text
+    assert text.endswith("the policy asks 25 dB")
+
+
+def test_a_link_says_which_of_mount_and_flux_is_in_the_way(two_day_mission, plan):
+    row = plan.contacts.iloc[a_contact(plan, mode=K)]
+    slow = {"max_azimuth_rate_deg_s": 0.01, "max_elevation_rate_deg_s": 0.01}
+    antenna = two_day_mission.station(row.station).antenna.model_copy(update=slow)
+    slow = with_station(two_day_mission, row.station, antenna=antenna)
+    (text,) = [text for text in texts(slow, plan.contacts) if row.contact_id in text and "usable" in text]
+    assert text.endswith(f"transmission: the mount of {row.station} is too slow")
+    loud = with_craft(
+        two_day_mission.with_changes(policy={"enforce_flux_limit": True}),
+        lambda craft: {"transmitter": tuple(mode.model_copy(update={"rf_power_w": 1e5}) for mode in craft.transmitter)},
+    )
+    (text,) = [text for text in texts(loud, plan.contacts) if row.contact_id in text and "usable" in text]
+    assert re.search(r"transmission: power flux-density is above its enforced limit by up to \d+\.\d\d dB$", text)
 
 
 def test_a_closed_station(two_day_mission, plan):
