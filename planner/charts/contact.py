@@ -13,7 +13,7 @@ from planner.mission.models import Mission
 from planner.sky import Sky
 from planner.units import DAY_S
 
-LABEL_GAP_DB = 0.55  # thresholds closer than this share a label's place: only the lower is named
+LABEL_SHARE = 0.03  # of the axes' height; of thresholds closer than this only the lower is named
 
 
 def contact_figure(
@@ -93,10 +93,12 @@ def _draw_level(axes, table: LinkTable, option: LinkOption, own: slice, time, lo
     level = table.esn0_db[own] - loss_db
     active = option.modcod[own]
     threshold = np.where(active >= 0, needed[active], np.nan)
+    shown = np.concatenate([needed, level[level > -100]])
+    lowest, highest = shown.min() - 1.5, shown.max() + 1.5
     labelled = -np.inf
     for name, required in sorted(zip(table.names, needed, strict=True), key=lambda pair: pair[1]):
         axes.axhline(required, color=style.PALE, linewidth=0.8, zorder=1)
-        if required - labelled >= LABEL_GAP_DB:
+        if required - labelled >= LABEL_SHARE * (highest - lowest):
             axes.annotate(
                 f"{name}  {required:.1f}", (1.0, required), xycoords=("axes fraction", "data"), xytext=(4, 0),
                 textcoords="offset points", va="center", fontsize=7,
@@ -111,9 +113,7 @@ def _draw_level(axes, table: LinkTable, option: LinkOption, own: slice, time, lo
     axes.step(
         time, threshold, where="post", color=style.VERMILLION, linewidth=2.0, label="active MODCOD needs", zorder=3
     )
-    heard = level[level > -100]
-    shown = np.concatenate([needed, heard])
-    axes.set_ylim(shown.min() - 1.5, shown.max() + 1.5)
+    axes.set_ylim(lowest, highest)
     axes.set_ylabel("Es/N0, dB")
 
 

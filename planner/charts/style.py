@@ -1,6 +1,7 @@
 """One look for every picture: colours that the colour-blind tell apart, marks beside colours, type legible at A4."""
 
 from datetime import UTC, tzinfo
+from io import BytesIO
 
 import matplotlib
 import matplotlib.dates as mdates
@@ -18,6 +19,7 @@ MODE_MARKS = ((BLUE, "^"), (ORANGE, "o"), (GREEN, "s"), (PURPLE, "D"), (BLACK, "
 
 A4_LANDSCAPE_IN = (11.69, 8.27)
 A4_PORTRAIT_IN = (8.27, 11.69)
+SCREEN_DPI = 96
 
 ON_PAPER = {
     "font.family": ["DejaVu Sans"],  # ships with matplotlib, so every machine draws the same letters
@@ -55,10 +57,20 @@ def on_paper():
     return matplotlib.rc_context(ON_PAPER)
 
 
+class Picture(Figure):
+    """A figure that a notebook shows by itself, although no plotting window was ever asked for."""
+
+    def _repr_png_(self) -> bytes:
+        png = BytesIO()
+        with on_paper():
+            self.savefig(png, format="png", dpi=SCREEN_DPI)
+        return png.getvalue()
+
+
 def new_figure(size_in=A4_LANDSCAPE_IN, title: str = "", *, onto: Figure | None = None) -> Figure:
     """An empty figure that belongs to no window, or the figure `onto` emptied. `title` says the finding."""
     if onto is None:
-        figure = Figure(figsize=size_in)
+        figure = Picture(figsize=size_in)
     else:
         figure = onto
         figure.clear()
