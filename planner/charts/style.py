@@ -69,10 +69,8 @@ class Picture(Figure):
 
 def new_figure(size_in=A4_LANDSCAPE_IN, title: str = "", *, onto: Figure | None = None) -> Figure:
     """An empty figure that belongs to no window, or the figure `onto` emptied. `title` says the finding."""
-    if onto is None:
-        figure = Picture(figsize=size_in)
-    else:
-        figure = onto
+    figure = onto if onto is not None else Picture(figsize=size_in)
+    if onto is not None:
         figure.clear()
         figure.set_size_inches(*size_in)
     figure.set_layout_engine(ConstrainedLayoutEngine(w_pad=0.1, h_pad=0.05))

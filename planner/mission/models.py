@@ -74,8 +74,8 @@ class Policy(Described):
     upload_reach_h: Positive = 48.0
 
     @property
-    def charge_corner(self) -> Literal["nominal", "pessimistic"]:
-        """The corner whose charge the optimiser steers by."""
+    def bound_corner(self) -> Literal["nominal", "pessimistic"]:
+        """The corner that a bound on every allowed week may count on: a policy of risk lets half the weeks be worse."""
         return "pessimistic" if self.floor_risk_pct is None else "nominal"
 
     @model_validator(mode="after")

@@ -61,6 +61,12 @@ def share_of(count: int, samples: int, sigma: float = CONFIDENCE_SIGMA) -> Share
     return Share(share, max(0.0, middle - half), min(1.0, middle + half))
 
 
+def most_broken(samples: int, allowed_pct: float) -> int:
+    """The most of `samples` weeks that may break a limit for `share_of` to end at `allowed_pct`; 0 if not even one."""
+    counts = (count for count in range(samples) if 100 * share_of(count, samples).high <= allowed_pct)
+    return max(counts, default=0)
+
+
 def perturb(satellite: Satellite, corner: Corner) -> Perturbation:
     """Random factors around a corner: normal with the stated spreads, cut at four sigma, from the stated seed.
 

@@ -150,11 +150,11 @@ def _priced(week: Week, own: list[Candidate], conversions: tuple[Conversion, Con
     if not own:
         return []
     power = week.powers[own[0].satellite]
-    draws = power.session_draws([c.session(c.opens_s, c.closes_s) for c in own], week.mission.policy.charge_corner)
+    whole = [c.session(c.opens_s, c.closes_s) for c in own]
     priced = []
-    for candidate, draw in zip(own, draws, strict=True):
-        before_s, after_s = candidate.opens_s - draw.edges_s[0], draw.edges_s[-1] - candidate.closes_s
-        likely_cost, least_cost = (session_cost(power, draw, conversion) for conversion in conversions)
+    for candidate, *draws in zip(own, *(power.session_draws(whole, way.corner) for way in conversions), strict=True):
+        before_s, after_s = candidate.opens_s - draws[0].edges_s[0], draws[0].edges_s[-1] - candidate.closes_s
+        likely_cost, least_cost = (session_cost(power, *one) for one in zip(draws, conversions, strict=True))
         priced.append(
             replace(candidate, lead_s=float(before_s), tail_s=float(after_s), likely=likely_cost, least=least_cost)
         )

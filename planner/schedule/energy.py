@@ -56,8 +56,8 @@ def full_soc_pct(power: SatellitePower, corner: CornerName) -> float:
 
 
 def likely(power: SatellitePower, policy: Policy) -> Conversion:
-    """At the charge halfway between floor and full."""
-    corner = policy.charge_corner
+    """At the charge halfway between floor and full, of the pessimistic corner: the optimiser steers by it."""
+    corner: CornerName = "pessimistic"
     soc_pct = (policy.soc_floor_pct + full_soc_pct(power, corner)) / 2
     open_circuit_v = float(power.pack_open_circuit_v(soc_pct, corner))
     return Conversion(open_circuit_v, float(power.pack_resistance_ohm(soc_pct, 25.0, corner)), power, corner)
@@ -65,7 +65,7 @@ def likely(power: SatellitePower, policy: Policy) -> Conversion:
 
 def least(power: SatellitePower, policy: Policy) -> Conversion:
     """At the highest voltage and the lowest resistance; the charger's own voltage headroom is not held against it."""
-    corner = policy.charge_corner
+    corner = policy.bound_corner
     lowest_ohm = float(power.pack_resistance_ohm(np.linspace(0.0, 100.0, 201), 25.0, corner).min())
     top_v = float(power.pack_open_circuit_v(full_soc_pct(power, corner), corner))
     return Conversion(top_v, lowest_ohm, power, corner, optimistic=True)

@@ -14,7 +14,8 @@ from planner.power.limits import Breach
 from planner.power.series import BatterySeries
 from planner.schedule.week import Week
 
-CHARGE_LIMITS = ("SoC floor", "end-of-span SoC", "depth of discharge")
+RISKED_LIMITS = ("SoC floor", "end-of-span SoC")  # what policy.floor_risk_pct speaks of
+CHARGE_LIMITS = (*RISKED_LIMITS, "depth of discharge")
 
 
 @dataclass(frozen=True, eq=False)
@@ -37,9 +38,9 @@ class Flown:
         return {name: power.simulate(self.of(name), "nominal") for name, power in self.week.powers.items()}
 
     @property
-    def held(self) -> dict[str, BatterySeries]:
-        """Battery at the corner whose charge the optimiser steers by."""
-        return self.worst if self.week.mission.policy.charge_corner == "pessimistic" else self.nominal
+    def judged(self) -> dict[str, BatterySeries]:
+        """Battery at the corner that limits are held to; nominal where the policy asks for a probability of charge."""
+        return self.worst if self.week.mission.policy.floor_risk_pct is None else self.nominal
 
     @cached_property
     def spread(self) -> dict[str, Batch]:
@@ -60,10 +61,10 @@ class Flown:
         """Limits of battery and bus that break at the pessimistic corner; where the policy asks for a probability
         instead, charge by that probability and the rest at nominal."""
         policy = self.week.mission.policy
-        found = list(self.held[satellite].breaches(policy))
+        found = list(self.judged[satellite].breaches(policy))
         if policy.floor_risk_pct is None:
             return found
-        kept = [breach for breach in found if breach.limit not in CHARGE_LIMITS]
+        kept = [breach for breach in found if breach.limit not in RISKED_LIMITS]
         high_pct = 100 * self.risk(satellite).high
         if high_pct > policy.floor_risk_pct:
             kept.append(Breach("floor risk", 0.0, high_pct, policy.floor_risk_pct, "%"))

@@ -180,11 +180,11 @@ def _likely_energy(week: WeekProgramme, states: SatelliteStates) -> None:
 def _energy_chain(programme: Programme, energy: EnergyStates, terms: dict[int, list], active: dict[int, list]) -> None:
     """stored[i + 1] + costs of interval i + spill = stored[i] + gain, spill anything from 0; floors held at events,
     less what is `active` there."""
-    before = programme.variable(energy.start_wh, energy.start_wh)
+    before, asked_wh = programme.variable(energy.start_wh, energy.start_wh), energy.asked_wh
     for interval, gain_wh in enumerate(energy.gain_wh.tolist()):
         after = programme.variable(-np.inf, energy.full_wh)
         programme.row([(after, 1.0), (before, -1.0), *terms[interval]], highest=gain_wh)
-        programme.row([(after, 1.0), *active[interval + 1]], lowest=energy.floor_wh[interval + 1])
+        programme.row([(after, 1.0), *active[interval + 1]], lowest=asked_wh[interval + 1])
         before = after
 
 

@@ -9,32 +9,28 @@ import numpy as np
 
 from planner.errors import NoWeekError
 from planner.mission.contacts import Session
-from planner.power.balance import SatellitePower
-from planner.power.batch import share_of
 from planner.schedule.account import worth_mbit
 from planner.schedule.cautions import input_cautions
 from planner.schedule.checks import Fault, find_faults
+from planner.schedule.corrections import Chosen, followed, is_sag, tightened
 from planner.schedule.flown import CHARGE_LIMITS, Flown
 from planner.schedule.optimise import WeekProgramme, plan_programme, staying_programme
 from planner.schedule.problem import Problem
 from planner.schedule.programme import Solution, solve
 from planner.schedule.restore import put_back
 from planner.schedule.sessions import Candidate
-from planner.schedule.states import SatelliteStates
 from planner.schedule.week import Progress, Week
-from planner.units import DAY_S
 
 SOLVER_GAP = 1e-3  # a plan is held to 0.1 % of its programme's optimum …
 RELATIVE_GAP = 8.5e-4  # … of which rounding and mending may take a little
 COARSE_GAP = 2.5e-2  # coarse enough to end with the first good heuristic
 APPROACHES = 1  # more hardly move the corrections
 MOST_FULL_SOLVES, MOST_MENDS = 4, 8
+OVERDONE = 1.5  # by this much more with each mend of an allowed risk
+MOST_SETTLING, SETTLED_WH = 8, 0.2  # of the floors that stand for an allowed risk, before the search
 SHORTEST_SOLVE_S = 3.0  # even when the limit is used up: a mending must come to an end
-MARGIN_WH = 0.004  # asked for beyond a floor that broke, so that rounding to whole seconds does not break it again
 
 _log = logging.getLogger(__name__)
-
-Chosen = list[tuple[int, float, float]]  # (candidate, tx_on_s, tx_off_s)
 
 
 class Stopwatch:
@@ -82,6 +78,8 @@ class Search:
 
         When time ran out before a full solution, that bound is the coarse programme's, and the status says so.
         """
+        if self.week.mission.policy.floor_risk_pct is not None:
+            self._settle_risk()
         few, coarse_bound = self._approach()
         best = None
         for _ in range(MOST_FULL_SOLVES):
@@ -177,25 +175,42 @@ class Search:
         self.problem = self._corrected(self.problem, chosen)
         return {candidate_key(self.problem.candidates[i]) for i, *_ in chosen}, coarse.bound
 
+    def _settle_risk(self) -> None:
+        """Correct the problem until the floors that stand for the allowed risk move no more: the deeper weeks go, the
+        more they differ."""
+        self.problem = self._corrected(self.problem, [])
+        for _ in range(MOST_SETTLING):
+            before = self.problem
+            week, coarse = self._solve(before, COARSE_GAP)
+            assert coarse.values is not None  # without a solution `_solve` raises
+            self.problem = self._corrected(before, week.sessions(coarse.values))
+            pairs = zip(before.states, self.problem.states, strict=True)
+            if all(abs((now.likely.risk_wh or 0.0) - (was.likely.risk_wh or 0.0)) < SETTLED_WH for was, now in pairs):
+                return
+
     def _mended(self, problem: Problem, week: WeekProgramme, solution: Solution):
-        """(flown, solution, what is chosen by candidate key) once no limit breaks; None if that is not reached."""
-        for _ in range(MOST_MENDS):
+        """(flown, solution, what is chosen by candidate key) once no limit breaks; None if that is not reached, and the
+        problem is corrected by what was."""
+        by_key: dict[tuple, tuple[float, float]] = {}
+        for mend in range(MOST_MENDS):
             if solution.values is None:
-                return None
+                break
             chosen = week.sessions(solution.values)
             flown = self._flown(week.problem, chosen)
             faults = self._faults(problem, flown)
+            by_key = {candidate_key(week.problem.candidates[i]): (on_s, off_s) for i, on_s, off_s in chosen}
             if not faults:
                 _log.info("%d sessions keep every limit in the full physics", len(flown.sessions))
-                return flown, solution, {candidate_key(week.problem.candidates[i]): tuple(t) for i, *t in chosen}
+                return flown, solution, by_key
             self.broke = faults[0].text
             for fault in faults:
                 _log.info("the full physics breaks a limit: %s", fault.text)
             deep = [fault for fault in faults if fault.rule == "depth of discharge"]
-            self.problem = self._tightened(self.problem, flown, deep)  # sessions that add Sun may lift a cycle's peak
+            self.problem = tightened(self.problem, flown, deep)  # sessions that add Sun may lift a cycle's peak
             small = week.problem.only({i for i, *_ in chosen})
-            tighter = self._tightened(self._giving_up(small, faults), flown, faults)
+            tighter = tightened(self._giving_up(small, faults), flown, faults, OVERDONE ** (mend + 1))
             week, solution = self._solve(tighter, RELATIVE_GAP / 10, must=False)
+        self.problem = self._corrected(self.problem, _in_problem(self.problem, by_key))
         return None
 
     def _faults(self, problem: Problem, flown: Flown) -> list[Fault]:
@@ -206,7 +221,7 @@ class Search:
         """What breaks a limit of its own is given up; a rule of the week that breaks is told."""
         gone = set()
         for fault in faults:
-            if fault.rule in (*CHARGE_LIMITS, "floor risk") or _is_sag(fault):
+            if fault.rule in (*CHARGE_LIMITS, "floor risk") or is_sag(fault):
                 continue
             if fault.session is None:
                 raise NoWeekError(f"no plan keeps this limit: {fault.text}")
@@ -237,62 +252,8 @@ class Search:
         for i, on_s, off_s in chosen:
             candidates[i] = replace(candidates[i], near_s=(on_s, off_s))
         nearer = replace(problem, candidates=tuple(candidates))
-        states = [self._followed(nearer, states, chosen, flown) for states in problem.states]
+        states = [followed(nearer, states, chosen, flown) for states in problem.states]
         return replace(nearer, states=tuple(states))
-
-    def _followed(self, problem: Problem, states: SatelliteStates, chosen: Chosen, flown: Flown) -> SatelliteStates:
-        """Each interval's gain as the simulation showed it, these sessions' modelled cost given back."""
-        cost_wh = np.zeros(len(states.events_s) - 1)
-        for index, on_s, off_s in chosen:
-            candidate = problem.candidates[index]
-            if candidate.satellite == states.satellite:
-                flown_wh, start_wh, length_wh = candidate.cost_wh
-                price_wh = flown_wh + start_wh * (on_s - candidate.opens_s) + length_wh * (off_s - on_s)
-                for interval, share in states.shares(candidate.opens_s, candidate.closes_s):
-                    cost_wh[interval] += share * price_wh
-        series = flown.held[states.satellite]
-        stored_wh = np.interp(states.events_s, series.time_s, series.stored_wh)
-        modelled_wh = np.minimum(stored_wh[:-1] + states.likely.gain_wh - cost_wh, states.likely.full_wh)
-        gain_wh = states.likely.gain_wh + stored_wh[1:] - modelled_wh
-        off_wh = np.abs(gain_wh - states.likely.gain_wh).max(initial=0.0)
-        _log.info("%s: the programme follows the simulated battery, by up to %.3f Wh", states.satellite, off_wh)
-        floor_wh = states.likely.floor_wh + self._risk_wh(flown, states.satellite)
-        return replace(states, likely=replace(states.likely, gain_wh=gain_wh, floor_wh=floor_wh))
-
-    def _risk_wh(self, flown: Flown, satellite: str) -> float:
-        """How much higher the floors must be for the risk to be as allowed; negative where they may be lower.
-
-        0 where the policy holds the charge to its corner instead of a risk.
-        """
-        risk_pct = self.week.mission.policy.floor_risk_pct
-        if risk_pct is None:
-            return 0.0
-        short_pct = np.sort(flown.short_pct(satellite))[::-1]
-        allowed = 1e-2 * risk_pct
-        broken = max((k for k in range(len(short_pct)) if share_of(k, len(short_pct)).high <= allowed), default=0)
-        power, corner = self.week.powers[satellite], self.week.mission.policy.charge_corner
-        return float(power.stored_wh(100.0, corner) - power.stored_wh(100.0 - short_pct[broken], corner))
-
-    def _tightened(self, problem: Problem, flown: Flown, faults: list[Fault]) -> Problem:
-        """More energy asked for around each breach: what was missing, and a margin."""
-        tighter = []
-        for states in problem.states:
-            floor_wh = states.likely.floor_wh.copy()
-            series, power = flown.worst[states.satellite], self.week.powers[states.satellite]
-            for fault in (fault for fault in faults if fault.satellite == states.satellite):
-                if fault.rule == "floor risk":
-                    floor_wh += max(self._risk_wh(flown, states.satellite), 0.0) + MARGIN_WH
-                elif fault.rule in CHARGE_LIMITS or _is_sag(fault):
-                    missing_pct = _missing_pct(fault, series, power)
-                    missing_wh = float(power.stored_wh(100.0) - power.stored_wh(100.0 - missing_pct)) + MARGIN_WH
-                    event = int(np.searchsorted(states.events_s, _lowest_s(series, fault)))
-                    for at in {max(event - 1, 1), min(max(event, 1), len(floor_wh) - 1)}:
-                        # a floor was believed to hold; a depth counts from what there was
-                        there_wh = float(np.interp(states.events_s[at], series.time_s, series.stored_wh))
-                        held_wh = max(floor_wh[at], there_wh) if fault.rule == "depth of discharge" else floor_wh[at]
-                        floor_wh[at] = min(held_wh + missing_wh, states.likely.full_wh)
-            tighter.append(replace(states, likely=replace(states.likely, floor_wh=floor_wh)))
-        return replace(problem, states=tuple(tighter))
 
 
 def _is_proved(solution: Solution) -> bool:
@@ -303,34 +264,6 @@ def _preferred(new: Solution, old: Solution) -> bool:
     """Whether a plan is better, or as good within the gap and proved where the other is not."""
     as_good = new.objective >= old.objective - SOLVER_GAP * abs(old.objective)
     return new.objective > old.objective or (as_good and _is_proved(new) and not _is_proved(old))
-
-
-def _is_sag(fault: Fault) -> bool:
-    """The satellite's own loads pull an all but empty battery down: more charge there is the mend."""
-    return fault.rule == "cell voltage under load" and fault.session is None
-
-
-def _missing_pct(fault: Fault, series, power: SatellitePower) -> float:
-    """How much more charge is missing where a limit breaks; for a voltage, along the open-circuit curve."""
-    if not _is_sag(fault):
-        return abs(fault.value - fault.bound)
-    soc_pct = np.linspace(0.0, 100.0, 2001)
-    cells = power.satellite.spacecraft.battery.cells_series
-    rest_v = np.asarray(power.pack_open_circuit_v(soc_pct)) / cells
-    now_pct = float(series.soc_at_pct(_lowest_s(series, fault)))
-    wanted_v = np.interp(now_pct, soc_pct, rest_v) + fault.bound - fault.value
-    return max(float(np.interp(wanted_v, rest_v, soc_pct)) - now_pct, 0.1)
-
-
-def _lowest_s(series, fault: Fault) -> float:
-    """When a breach that begins at the fault's time is deepest."""
-    if _is_sag(fault):
-        later = np.flatnonzero(series.time_s[:-1] >= fault.time_s - 1e-3)
-        return float(series.time_s[later[np.argmin(np.abs(series.lowest_cell_v[later] - fault.value))]])
-    if fault.rule == "depth of discharge":
-        return series.lowest(fault.time_s, fault.time_s + DAY_S)[0]
-    later = np.flatnonzero(series.time_s >= fault.time_s - 1e-3)
-    return float(series.time_s[later[np.argmin(np.abs(series.soc_pct[later] - fault.value))]])
 
 
 def _in_problem(problem: Problem, chosen: dict[tuple, tuple[float, float]]) -> Chosen:

@@ -1,6 +1,7 @@
 """What the programme knows about one satellite: stored energy and stored data without sessions, event by event."""
 
 from dataclasses import dataclass
+from itertools import accumulate
 
 import numpy as np
 
@@ -11,12 +12,23 @@ class EnergyStates:
 
     floor_wh (n + 1,) : the least asked at each event, at the last one for the end of the span
     gain_wh (n,) : what each interval between events adds without sessions, losses taken off, nothing spilled
+    risk_wh : where the policy asks for a probability, how much above (or below) the floors this week is to stay
     """
 
     start_wh: float
     full_wh: float
     floor_wh: np.ndarray
     gain_wh: np.ndarray
+    risk_wh: float | None = None
+
+    @property
+    def asked_wh(self) -> np.ndarray:
+        """The floors (n + 1,) with the risk in them, but never above what there is without sessions."""
+        if self.risk_wh is None:
+            return self.floor_wh
+        idle_wh = list(accumulate(self.gain_wh, lambda stored, gain: min(stored + gain, self.full_wh),
+                                  initial=self.start_wh))  # fmt: skip
+        return np.clip(self.floor_wh + self.risk_wh, 0.0, np.maximum(idle_wh, 0.0))
 
 
 @dataclass(frozen=True)

@@ -13,6 +13,7 @@ from planner.link.table import LinkTable, link_table
 from planner.mission.contacts import Session
 from planner.mission.models import Mission, Satellite
 from planner.power.balance import SatellitePower
+from planner.power.batch import share_of
 from planner.schedule.hours import Windows, open_hours_s, open_windows_s
 from planner.schedule.programme import start_worker
 from planner.sky import Sky, observe
@@ -102,6 +103,7 @@ class Week:
 
 def prepare(mission: Mission, *, progress: Progress = lambda stage: None) -> Week:
     """Compute passes, links and power of a mission; `progress` hears the name of each stage as it begins."""
+    _check_risk(mission)
     start_worker()
     progress("passes")
     sky = observe(mission, sample_step_s=SAMPLE_STEP_S)
@@ -114,6 +116,18 @@ def prepare(mission: Mission, *, progress: Progress = lambda stage: None) -> Wee
         progress(f"power of {satellite.name}")
         powers[satellite.name] = SatellitePower(mission, sky, satellite.name)
     return Week(mission, sky, links, powers)
+
+
+def _check_risk(mission: Mission) -> None:
+    """InputError for a risk so small that the spread weeks cannot show it."""
+    allowed_pct = mission.policy.floor_risk_pct
+    samples = min(satellite.spacecraft.spread.samples for satellite in mission.satellites)
+    least_pct = 100 * share_of(0, samples).high
+    if allowed_pct is not None and allowed_pct < least_pct:
+        raise InputError(
+            f"{mission.name}: policy.floor_risk_pct must be at least {least_pct:.3f} with spread.samples = {samples}:"
+            f" so much may still be when not one of them breaks; got {allowed_pct:g}, ask for more samples or more risk"
+        )
 
 
 def _check_size(mission: Mission, sky: Sky) -> None:

@@ -8,7 +8,7 @@ from power_examples import battery, craft, run, satellite, week
 from scipy.stats import binomtest
 
 from planner.mission.power import Spread
-from planner.power.batch import Perturbation, perturb, run_batch, share_of
+from planner.power.batch import Perturbation, most_broken, perturb, run_batch, share_of
 from planner.power.corners import corner_of
 
 BENDS_PCT = 0.02  # of charge: bends of the curve inside an interval are neglected in a batch
@@ -101,4 +101,7 @@ def test_the_interval_is_wilsons(counts):
 
 def test_no_broken_week_in_a_thousand_is_not_certainty():
     assert share_of(0, 1000).low == 0.0
+    count = most_broken(1000, 5.0)
+    assert share_of(count, 1000).high <= 0.05 < share_of(count + 1, 1000).high
+    assert most_broken(1000, 0.1) == 0
     assert 0.003 < share_of(0, 1000).high < 0.005

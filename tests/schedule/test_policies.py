@@ -1,9 +1,11 @@
 """Rules beyond the battery's: data classes, payload windows, time on air per orbit, risk, guards."""
 
 from datetime import time, timedelta
+from itertools import pairwise
 
 import numpy as np
 import pytest
+from small_missions import smaller
 
 import planner
 from planner.mission.models import DataClass, Recorder
@@ -145,6 +147,29 @@ def test_a_policy_of_risk_holds_the_probability_and_brings_no_less(two_day_missi
     assert planner.audit(mission, plan.contacts).safe
     allowed_loss = 1 - two_day_plan.summary["gap_pct"] / 100
     assert plan.summary["volume_mbit"] >= allowed_loss * two_day_plan.summary["volume_mbit"]
+
+
+def test_the_more_risk_is_allowed_the_more_is_flown(marshlight):
+    """The search may miss some per cent where each week breaks differently; it may not end without a week."""
+    day = smaller(marshlight, 1.0, "Vardholm", "Cape Tern")
+    volumes_mbit = []
+    for allowed_pct in (None, 1.0, 5.0, 20.0):
+        plan = planner.plan_week(day.with_changes(policy={"floor_risk_pct": allowed_pct}))
+        (risk,) = plan.summary["floor_risk_pct"].values()
+        assert risk["high"] <= (allowed_pct or 100.0)
+        volumes_mbit.append(plan.summary["volume_mbit"])
+    for less_mbit, more_mbit in pairwise(volumes_mbit):
+        assert more_mbit >= 0.98 * less_mbit
+    assert volumes_mbit[-1] > 1.01 * volumes_mbit[0]
+
+
+def test_a_risk_that_the_spread_weeks_cannot_show_is_refused(two_day_mission):
+    with pytest.raises(planner.InputError) as told:
+        planner.plan_week(two_day_mission.with_changes(policy={"floor_risk_pct": 0.2}))
+    assert str(told.value) == (
+        "MARSHLIGHT-1 week 50: policy.floor_risk_pct must be at least 0.383 with spread.samples = 1000: so much may"
+        " still be when not one of them breaks; got 0.2, ask for more samples or more risk"
+    )
 
 
 def test_a_day_without_a_pass_for_its_required_contact_is_named(two_day_mission):
