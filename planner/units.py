@@ -14,6 +14,7 @@ SUN_RADIUS_KM = 695_700.0  # IAU 2015 B3, nominal
 SOLAR_CONSTANT_W_M2 = 1361.0  # IAU 2015 B3, nominal, at 1 au
 KELVIN_AT_0_C = 273.15
 DAY_S, HOUR_S = 86_400.0, 3600.0
+JOULE_PER_WH = 3600.0
 
 
 def decibel_of_power(ratio):

@@ -8,6 +8,7 @@ from planner.errors import InputError
 from planner.mission import oem, omm, tle
 from planner.mission.orbit import ElementSet, Ephemeris
 from planner.mission.text import read_text
+from planner.units import HOUR_S
 
 MOST_NESTED = 5_000_000  # a tree takes many times the memory of its text
 __all__ = ["ElementSet", "Ephemeris", "read_elements", "which_set"]
@@ -46,7 +47,7 @@ def read_elements(path, at: datetime) -> dict[str, ElementSet | Ephemeris]:
 
 def which_set(elements: ElementSet | Ephemeris, at: datetime) -> str:
     """Which set is used, as "element set of epoch 2026-12-06T18:00:00Z, 6.0 h old at the start; 3 in the file"."""
-    hours = (at - elements.epoch).total_seconds() / 3600
+    hours = (at - elements.epoch).total_seconds() / HOUR_S
     age = f"{abs(hours):.1f} h" if abs(hours) < 48 else f"{abs(hours) / 24:.1f} days"
     kind = "ephemeris" if elements.source == "OEM" else "element set"
     when = elements.epoch.astimezone(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")

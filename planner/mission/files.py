@@ -15,6 +15,7 @@ from planner.mission.names import alike
 from planner.mission.pattern import read_pattern
 from planner.mission.station import Station
 from planner.mission.text import faults_of, nearest, read_toml, sha256
+from planner.units import DAY_S
 
 DEFAULT_MISSION = Path("missions/marshlight.toml")
 FIRST_YEAR, LAST_YEAR = 1957, 2049  # what two-digit years of element sets and the Sun's ephemeris both cover
@@ -219,7 +220,7 @@ def _satellites(
 
 
 def _check_age(reader: _Reader, name: str, elements: Any, tables: MissionTables, path: Path) -> None:
-    age_days = (tables.start - elements.epoch).total_seconds() / 86_400
+    age_days = (tables.start - elements.epoch).total_seconds() / DAY_S
     limit_days = tables.policy.elements_max_age_days
     if abs(age_days) > limit_days:
         age, mend = ("old", "newer") if age_days > 0 else ("after it", "older")

@@ -24,6 +24,7 @@ from planner.mission.power import (
 from planner.mission.station import Hours, Station
 from planner.mission.text import faults_of
 from planner.mission.transmitter import Transmitter
+from planner.units import DAY_S
 
 
 class StartState(Described):
@@ -247,7 +248,7 @@ class Mission(Described):
 
     @property
     def span_s(self) -> float:
-        return self.days * 86_400.0
+        return self.days * DAY_S
 
     def station(self, name: str) -> Station:
         """The station of that name; KeyError otherwise."""

@@ -14,6 +14,7 @@ from planner.power.loads import session_draw
 from planner.power.profile import find_sunshine, idle_weeks, panels_w
 from planner.power.series import BatterySeries, run_battery
 from planner.power.session import SessionCourse, SessionDraw, trace_sessions
+from planner.units import JOULE_PER_WH
 
 CORNERS: tuple[CornerName, ...] = ("nominal", "pessimistic")
 MOST_COURSES_KEPT = 5000
@@ -50,7 +51,7 @@ class SatellitePower:
         cell = self.corner(corner).cell
         battery = self.satellite.spacecraft.battery
         stored_j = cell.stored_energy_j(cell.charge_at_c(soc_pct))
-        return stored_j * battery.cells_series * battery.cells_parallel / 3600.0
+        return stored_j * battery.cells_series * battery.cells_parallel / JOULE_PER_WH
 
     def pack_open_circuit_v(self, soc_pct, corner: CornerName = "pessimistic"):
         """Open-circuit voltage of the pack at a state of charge, scalar or array."""

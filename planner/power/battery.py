@@ -11,9 +11,9 @@ import numpy as np
 
 from planner.mission.power import Battery
 from planner.power import chemistry
+from planner.units import DAY_S, HOUR_S
 
-HOUR_S = 3600.0
-MONTH_S = 30.4375 * 86_400.0  # a twelfth of a Julian year
+MONTH_S = 30.4375 * DAY_S  # a twelfth of a Julian year
 
 
 @dataclass(frozen=True)

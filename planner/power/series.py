@@ -11,8 +11,8 @@ from planner.power.corners import Corner
 from planner.power.intervals import Intervals
 from planner.power.limits import Breach, find_breaches
 from planner.power.recurrence import CellIntervals, charge_course_c
+from planner.units import JOULE_PER_WH
 
-JOULE_PER_WH = 3600.0
 # What the array or the load wants and the battery does not take or give counts as spill or brown-out above this;
 # below it, it is the solver's error and stays visible in the energy books
 RESOLUTION_W = 1e-8

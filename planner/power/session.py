@@ -11,6 +11,7 @@ from planner.power.intervals import merged_edges_s
 from planner.power.profile import Sunshine, panels_w
 from planner.sky import attitude
 from planner.sky.sites import station_position_km
+from planner.units import JOULE_PER_WH
 
 LONGEST_SESSION_INTERVAL_S = 20.0  # the satellite turns up to a degree a second as it follows a station
 
@@ -63,12 +64,12 @@ class SessionDraw:
     @property
     def own_wh(self) -> float:
         """Energy the session's own loads draw at the battery terminals [Wh]."""
-        return float(self.own_w @ np.diff(self.edges_s) / 3600.0)
+        return float(self.own_w @ np.diff(self.edges_s) / JOULE_PER_WH)
 
     @property
     def added_wh(self) -> float:
         """Energy the session costs at the terminals, panel power lost (or won) by pointing included [Wh]."""
-        return float((self.terminal_w - self.idle_terminal_w) @ np.diff(self.edges_s) / 3600.0)
+        return float((self.terminal_w - self.idle_terminal_w) @ np.diff(self.edges_s) / JOULE_PER_WH)
 
 
 def trace_sessions(

@@ -18,6 +18,7 @@ from planner.schedule.result import plan_week, prepared
 from planner.schedule.sessions import Candidate
 from planner.schedule.week import Progress
 from planner.schedule.wishes import Wishes, sessions_of
+from planner.units import JOULE_PER_WH
 
 STARTS = 9  # places in the window at which a transmission of a given length is tried
 MOST_GIVEN_UP = 3  # sets of up to so many contacts are tried as ones to give way
@@ -132,7 +133,7 @@ def _answer(flown: Flown, candidate: Candidate) -> Affordability:
         duration_s=session.duration_s,
         volume_mbit=volume_mbit,
         energy_wh=draw.own_wh,
-        joule_per_mbit=draw.own_wh * 3600 / volume_mbit if volume_mbit > 0 else None,
+        joule_per_mbit=draw.own_wh * JOULE_PER_WH / volume_mbit if volume_mbit > 0 else None,
         soc_before_pct=before_pct,
         soc_lowest_pct=lowest_pct,
         soc_lowest_utc=iso(lowest_s),

@@ -16,8 +16,7 @@ from planner.power.corners import CornerName
 from planner.power.session import SessionDraw
 from planner.schedule.sessions import EnergyCost
 from planner.schedule.states import EnergyStates
-
-WH_J = 3600.0
+from planner.units import JOULE_PER_WH
 
 
 @dataclass(frozen=True)
@@ -92,7 +91,7 @@ def energy_states(
 ) -> EnergyStates:
     """Stored energy without sessions between `events_s` (n + 1,); never below the policy's floors nor `lowest_pct`."""
     edges_s, rate_w = _idle_rate_w(power, conversion)
-    sum_wh = np.concatenate([[0.0], np.cumsum(rate_w * np.diff(edges_s))]) / WH_J
+    sum_wh = np.concatenate([[0.0], np.cumsum(rate_w * np.diff(edges_s))]) / JOULE_PER_WH
     corner = conversion.corner
     full_pct = full_soc_pct(power, corner)
     start_pct = min(power.corner(corner).start_soc_pct, full_pct)
@@ -120,9 +119,9 @@ def session_cost(power: SatellitePower, draw: SessionDraw, conversion: Conversio
     taken_w = conversion.stored_w(draw.idle_terminal_w, battery_c) - conversion.stored_w(draw.terminal_w, battery_c)
     on_air = draw.phase == "transmission"
     return EnergyCost(
-        fixed_wh=float(taken_w[~on_air] @ step_s[~on_air] / WH_J),
+        fixed_wh=float(taken_w[~on_air] @ step_s[~on_air] / JOULE_PER_WH),
         edges_s=np.append(draw.edges_s[:-1][on_air], draw.edges_s[1:][on_air][-1]),
-        per_s_wh=taken_w[on_air] / WH_J,
+        per_s_wh=taken_w[on_air] / JOULE_PER_WH,
     )
 
 

@@ -6,6 +6,7 @@ import numpy as np
 
 from planner.mission.models import Mission
 from planner.mission.station import Hours, Station
+from planner.units import DAY_S, HOUR_S
 
 WEEKDAYS = ("mon", "tue", "wed", "thu", "fri", "sat", "sun")
 Windows = list[tuple[float, float]]
@@ -35,12 +36,12 @@ def _daily_windows_s(mission: Mission, hours: Hours) -> Windows:
             continue
         for opens, closes in hours.open or ((time(), time()),):
             open_s, close_s = (_seconds(t) for t in (opens, closes))
-            windows.append((begin_s + open_s, begin_s + close_s + (86_400 if close_s <= open_s else 0)))
+            windows.append((begin_s + open_s, begin_s + close_s + (DAY_S if close_s <= open_s else 0)))
     return windows
 
 
 def _seconds(moment: time) -> float:
-    return moment.hour * 3600 + moment.minute * 60 + moment.second + moment.microsecond * 1e-6
+    return moment.hour * HOUR_S + moment.minute * 60 + moment.second + moment.microsecond * 1e-6
 
 
 def merge(windows: Windows) -> Windows:

@@ -11,10 +11,10 @@ from planner.mission.models import Mission, Spacecraft
 from planner.mission.station import Hours
 from planner.schedule.hours import open_windows_s
 from planner.schedule.result import WeekPlan, plan_week, prepared
+from planner.units import HOUR_S
 
 COLUMNS = ("item", "change", "amount", "unit", "volume_mbit", "worth_mbit_per_unit", "uncertain_mbit_per_unit")
 LARGER = 1.15  # capacities and areas are tried this much larger: enough to stand out of the gaps
-HOUR_S = 3600.0
 
 
 @dataclass(frozen=True)
