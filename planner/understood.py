@@ -50,7 +50,8 @@ def _whereabouts(name: str) -> str:
 def _hours(hours: Hours) -> str:
     opened = ", ".join(f"{a:%H:%M}-{b:%H:%M}" for a, b in hours.open) or "always"
     days = "" if len(hours.days) == 7 else " " + " ".join(hours.days)
-    return opened + days + (f", closed {len(hours.maintenance)} times" if hours.maintenance else "")
+    closed = len(hours.maintenance)
+    return opened + days + (f", closed {'once' if closed == 1 else f'{closed} times'}" if closed else "")
 
 
 def _hears(station: Station) -> str:
