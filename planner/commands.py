@@ -80,7 +80,7 @@ def week(mission: Mission, arguments, freeze_until: datetime | None, tell: Tell)
 
 
 def _say_week(plan, folder: Path, quiet: bool, seconds: float) -> None:
-    s = plan.summary
+    s, policy = plan.summary, plan.flown.week.mission.policy
     verdicts = plan.passes["verdict"].value_counts()
     if not quiet:
         printing.table(
@@ -95,11 +95,11 @@ def _say_week(plan, folder: Path, quiet: bool, seconds: float) -> None:
         f" {verdicts.get('dropped', 0)} dropped)"
     )
     printing.say(
-        f"{s['volume_mbit']:.0f} Mbit at {s['policy']['availability_pct']:g} % availability; nothing better than"
+        f"{s['volume_mbit']:.0f} Mbit at {policy.availability_pct:g} % availability; nothing better than"
         f" {s['upper_bound_mbit']:.0f} Mbit exists (gap {s['gap_pct']:.2f} %, solver gap {s['solver_gap_pct']:.3f} %)"
     )
     printing.say(
-        f"lowest charge {s['soc_min_pct']:.1f} % against the floor {s['soc_floor_pct']:g} %, at the end"
+        f"lowest charge {s['soc_min_pct']:.1f} % against the {policy.floor_words}, at the end"
         f" {s['soc_end_pct']:.1f} % (pessimistic corner); {s['lost_mbit']:.0f} Mbit lost to a full recorder"
     )
     if s["status"] != "optimal":

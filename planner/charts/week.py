@@ -111,7 +111,7 @@ def draw_plan(
     for artist in replacing:
         if artist not in lasting:
             artist.remove()
-    title.set_text(finding(plan))
+    title.set_text(finding(mission, plan))
     with style.on_paper():
         drawn = [
             *_draw_lanes(lanes, mission, lanes_of(mission, plan), plan, selected),
@@ -121,7 +121,7 @@ def draw_plan(
     return [title, *sorted(drawn, key=lambda artist: artist.get_zorder())]
 
 
-def finding(plan) -> str:
+def finding(mission: Mission, plan) -> str:
     """What the week comes to, in one line."""
     summary = plan.summary
     flown = plan.contacts["pass_id"].nunique() if len(plan.contacts) else 0
@@ -129,7 +129,7 @@ def finding(plan) -> str:
         return "No pass in the span: no station sees a satellite"
     return (
         f"{flown} of {len(plan.passes)} passes flown, {_data_amount(summary['volume_mbit'])},"
-        f" lowest charge {summary['soc_min_pct']:.1f} % (floor {summary['soc_floor_pct']:g} %)"
+        f" lowest charge {summary['soc_min_pct']:.1f} % ({mission.policy.floor_words})"
     )
 
 

@@ -57,8 +57,8 @@ def sheet_html(mission: Mission, plan, issue: str | None = None) -> str:
     under = _provenance(mission, issue or schedule_issue(plan.contacts))
     body = [
         f"<h1>{escape(mission.name)}</h1>",
-        f'<p class="under">{escape(finding(plan))}. {escape(under)}</p>',
-        f'<img class="week" src="data:image/png;base64,{picture}" alt="{escape(finding(plan))}">',
+        f'<p class="under">{escape(finding(mission, plan))}. {escape(under)}</p>',
+        f'<img class="week" src="data:image/png;base64,{picture}" alt="{escape(finding(mission, plan))}">',
         '<h2 class="list">Contacts</h2>' + table_html(HEADINGS, sheet_rows(plan.contacts)),
         f'<div class="caution"><h2>Cautions</h2><ul>{items_html(CAUTIONS)}</ul></div>',
     ]

@@ -75,6 +75,12 @@ class Policy(Described):
     upload_reach_h: Positive = 48.0
 
     @property
+    def floor_words(self) -> str:
+        """The floor as it is to be told beside a charge of the pessimistic week."""
+        risk = "" if self.floor_risk_pct is None else f" but for {self.floor_risk_pct:g} % of weeks"
+        return f"floor {self.soc_floor_pct:g} %{risk}"
+
+    @property
     def bound_corner(self) -> Literal["nominal", "pessimistic"]:
         """The corner that a bound on every allowed week may count on: a policy of risk lets half the weeks be worse."""
         return "pessimistic" if self.floor_risk_pct is None else "nominal"

@@ -167,7 +167,7 @@ class WeekView:
         contacts, passes = len(self.desk.sketch.contacts), len(self.desk.week.passes)
         self.figures.value = figures_html(
             [
-                ("lowest charge", f"{summary['soc_min_pct']:.1f} %", f"floor {policy.soc_floor_pct:g} %, pessimistic"),
+                ("lowest charge", f"{summary['soc_min_pct']:.1f} %", f"{policy.floor_words}, pessimistic"),
                 ("charge at the end", f"{summary['soc_end_pct']:.1f} %", f"at least {policy.soc_end_pct:g} % asked"),
                 ("contacts", f"{contacts}", f"on {passes} passes"),
                 (

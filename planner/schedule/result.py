@@ -13,7 +13,7 @@ import pandas as pd
 
 from planner.errors import InputError
 from planner.link import check_modes
-from planner.mission.models import Mission, Satellite
+from planner.mission.models import Mission, Policy, Satellite
 from planner.schedule import frames
 from planner.schedule.account import data_classes
 from planner.schedule.cautions import input_cautions
@@ -108,10 +108,20 @@ class GivenWeek:
             f"Planned on elements renewed every {policy.elements_refresh_days:g} days; each contact says with which"
             " epoch its dish still points (elements_newer_than_utc)."
         ]
+        if policy.floor_risk_pct is not None:
+            own += [self._risk_caution(name, policy) for name in self.flown.week.powers]
         over = int(self.contacts["cautions"].str.contains("flux").sum())
         if over:
             own.append(f"{over} contacts exceed that flux limit at some moment; see their cautions.")
         return [*CAUTIONS, *own, *input_cautions(self.flown.week.mission)]
+
+    def _risk_caution(self, satellite: str, policy: Policy) -> str:
+        lowest_pct, risk_pct = self.flown.worst[satellite].soc_pct.min(), 100 * self.flown.risk(satellite).high
+        return (
+            f"{satellite}: charge is held to a probability: up to {risk_pct:.2f} % of weeks spread about nominal fall"
+            f" below floor or end charge, {policy.floor_risk_pct:g} % allowed; the pessimistic week falls to"
+            f" {lowest_pct:.1f} %."
+        )
 
 
 @dataclass(frozen=True, eq=False, repr=False)

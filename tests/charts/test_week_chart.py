@@ -33,17 +33,19 @@ def legend_texts(figure):
     return {text.get_text() for box in boxes for text in box.get_texts()}
 
 
-def test_the_title_says_the_finding(plan):
+def test_the_title_says_the_finding(mission, plan):
     figures = plan.summary | {"volume_mbit": 214_300.0, "soc_min_pct": 61.23}
     plan = type(plan)(**vars(plan) | {"summary": figures})
     flown = plan.contacts["pass_id"].nunique()
     told = f"{flown} of {len(plan.passes)} passes flown, 214 Gbit, lowest charge 61.2 %"
-    assert finding(plan) == f"{told} (floor {plan.summary['soc_floor_pct']:g} %)"
+    assert finding(mission, plan) == f"{told} (floor {plan.summary['soc_floor_pct']:g} %)"
+    risked = mission.with_changes(policy={"floor_risk_pct": 2.0})
+    assert finding(risked, plan).endswith(f"(floor {plan.summary['soc_floor_pct']:g} % but for 2 % of weeks)")
 
 
-def test_small_volumes_are_told_in_megabits(plan):
+def test_small_volumes_are_told_in_megabits(mission, plan):
     plan = type(plan)(**vars(plan) | {"summary": plan.summary | {"volume_mbit": 312.4}})
-    assert " 312 Mbit, " in finding(plan)
+    assert " 312 Mbit, " in finding(mission, plan)
 
 
 def test_every_axis_has_a_label_with_its_unit(mission, plan):

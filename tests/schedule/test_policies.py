@@ -145,6 +145,7 @@ def test_a_policy_of_risk_holds_the_probability_and_brings_no_less(two_day_missi
     (risk,) = plan.summary["floor_risk_pct"].values()
     assert risk["high"] <= 2.0
     assert planner.audit(mission, plan.contacts).safe
+    assert any("charge is held to a probability" in caution for caution in plan.summary["cautions"])
     allowed_loss = 1 - two_day_plan.summary["gap_pct"] / 100
     assert plan.summary["volume_mbit"] >= allowed_loss * two_day_plan.summary["volume_mbit"]
 
