@@ -8,6 +8,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from planner import printing
+from planner.hand_over import say_boxes
 from planner.mission.contacts import Session
 from planner.mission.models import Mission
 from planner.printing import Tell
@@ -74,6 +75,8 @@ def week(mission: Mission, arguments, freeze_until: datetime | None, tell: Tell)
         }
         write_week(folder, mission, plan, log, before=None if given is None else Path(given).parent)
     _say_week(plan, Path(arguments.out), arguments.quiet, time.perf_counter() - began)
+    if not arguments.quiet:
+        say_boxes(mission)
     if previous is not None:
         _say_changes(given, previous, plan)
     return DONE

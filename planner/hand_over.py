@@ -87,6 +87,7 @@ def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datet
         folder.write(files, {"mission": mission.name, "cards": count}, index="cards.json")
     printing.say(f"{count} cards and the week sheet written to {out}")
     _say_cautions(mission)
+    say_boxes(mission)
     return DONE
 
 
@@ -95,6 +96,17 @@ def _say_cautions(mission: Mission) -> None:
 
     for caution in input_cautions(mission):
         printing.say(f"caution: {caution}")
+
+
+def say_boxes(mission: Mission) -> None:
+    """Names that the one font which ships with the tool cannot draw whole."""
+    from planner.charts.style import boxed
+
+    modes = [mode.mode for satellite in mission.satellites for mode in satellite.spacecraft.transmitter]
+    satellites, stations = ([thing.name for thing in things] for things in (mission.satellites, mission.stations))
+    if missing := boxed([mission.name, *satellites, *stations, *modes]):
+        names = ", ".join(missing)
+        printing.say(f"caution: PDF and pictures show boxes for letters of {names}; HTML, CSV and calendars have them")
 
 
 def _counted(files: Iterable[tuple[str, bytes]], tell: Tell, what: str, count: int) -> Iterator[tuple[str, bytes]]:

@@ -1,11 +1,13 @@
 """One look for every picture: colours that the colour-blind tell apart, marks beside colours, type legible at A4."""
 
+from collections.abc import Iterable
 from datetime import UTC, tzinfo
 from io import BytesIO
 
 import matplotlib
 import matplotlib.dates as mdates
 from matplotlib.figure import Figure
+from matplotlib.font_manager import findfont, get_font
 from matplotlib.layout_engine import ConstrainedLayoutEngine
 
 # Okabe and Ito, "Color Universal Design", 2008 (values from memory)
@@ -21,8 +23,9 @@ A4_LANDSCAPE_IN = (11.69, 8.27)
 A4_PORTRAIT_IN = (8.27, 11.69)
 SCREEN_DPI = 96
 
+FONT = "DejaVu Sans"  # ships with matplotlib, so every machine draws the same letters
 ON_PAPER = {
-    "font.family": ["DejaVu Sans"],  # ships with matplotlib, so every machine draws the same letters
+    "font.family": [FONT],
     "font.size": 8.5,
     "axes.titlesize": 9.5,
     "axes.titlelocation": "left",
@@ -65,6 +68,12 @@ class Picture(Figure):
         with on_paper():
             self.savefig(png, format="png", dpi=SCREEN_DPI)
         return png.getvalue()
+
+
+def boxed(names: Iterable[str]) -> list[str]:
+    """Those of the names with a letter that the font lacks: pictures and PDF show a box for it."""
+    drawn = get_font(findfont(FONT)).get_charmap()
+    return [name for name in dict.fromkeys(names) if any(ord(c) not in drawn for c in name if not c.isspace())]
 
 
 def new_figure(size_in=A4_LANDSCAPE_IN, title: str = "", *, onto: Figure | None = None) -> Figure:

@@ -21,6 +21,10 @@ def test_the_palette_is_the_published_one(name, rgb):
     assert tuple(np.round(np.array(matplotlib.colors.to_rgb(getattr(style, name))) * 255)) == rgb
 
 
+def test_names_that_the_font_cannot_draw_are_known():
+    assert style.boxed(["Vardholm", "Мыс", "Dry Pan", "東京", "Tern 🛰"]) == ["東京", "Tern 🛰"]
+
+
 def test_modes_differ_in_colour_and_in_marker():
     marks = style.mode_marks([f"mode {n}" for n in range(5)])
     assert len({colour for colour, _ in marks.values()}) == len({marker for _, marker in marks.values()}) == 5
