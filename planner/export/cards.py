@@ -30,6 +30,7 @@ from planner.mission.models import Mission
 from planner.sky import Sky
 from planner.sky.aging import timing_error_s
 from planner.sky.samples import doppler_hz
+from planner.sky.sites import Look, look
 
 SIGMAS = 2.0  # of timing error that a station waits for before it searches
 CAUTIONS = (
@@ -99,10 +100,10 @@ def make_card(mission: Mission, sky: Sky, row, issue: str = "") -> Card:
         title=f"{session.satellite} over {session.station}",
         subtitle=f"{on:%A %d %B %Y}, {session.mode}",
         reference=f"Pass {session.pass_id}" + (f", schedule issue {issue}" if issue else ""),
-        times=_times(sky, row, session),
+        times=_times(mission, sky, row, session),
         radio=(*_radio(mission, sky, row, session), *_preparation(row, epoch, until)),
         search_after=f"No lock {wait_s:.0f} s after the transmitter comes on, at {search}?",
-        steps=_steps(mission, sky, session, wait_s, late_s),
+        steps=_steps(mission, sky, row, session, wait_s, late_s),
         cautions=(*_own_cautions(sky, row, session, until), *CAUTIONS),
         footer="All times UTC, to the nearest second. Azimuths from true north over east; elevations geometric, without"
         " refraction. Margin, data and battery as planned.",
@@ -128,11 +129,16 @@ def _session(mission: Mission, sky: Sky, row) -> Session:
     return Session(on_s, off_s, row.satellite, row.station, row.mode, row.pass_id)
 
 
-def _times(sky: Sky, row, session: Session) -> Moments:
+def _times(mission: Mission, sky: Sky, row, session: Session) -> Moments:
     """What happens when, with the direction the dish looks in."""
     passes = sky.passes
     k = int(np.flatnonzero(passes.pass_id == row.pass_id)[0])
     warm = datetime.fromisoformat(str(utc_text([row.power_on_utc])[0]))
+    stated = {  # digits of the contacts' table, so that whatever is made from it tells the same
+        "AOS, rises": {"azimuth_deg": row.aos_azimuth_deg},
+        "TCA, highest": {"elevation_deg": row.max_elevation_deg},
+        "LOS, sets": {"azimuth_deg": row.los_azimuth_deg},
+    }
     moments = [
         ("Transmitter warms up", sky.clock.seconds(warm)),
         ("AOS, rises", passes.aos_s[k]),
@@ -141,20 +147,24 @@ def _times(sky: Sky, row, session: Session) -> Moments:
         ("Transmitter off", session.tx_off_s),
         ("LOS, sets", passes.los_s[k]),
     ]
+
+    def direction(label: str, time_s: float) -> tuple[str, str]:
+        """Azimuth and elevation; nothing while the satellite is down."""
+        if not passes.aos_s[k] <= time_s <= passes.los_s[k]:
+            return "", ""
+        seen = _look(mission, sky, session, time_s)
+        told = {"azimuth_deg": seen.azimuth_deg[0], "elevation_deg": seen.elevation_deg[0]} | stated.get(label, {})
+        return f"{azimuth_text(float(told['azimuth_deg']), 1)}°", f"{told['elevation_deg']:.1f}°"
+
     return tuple(
-        (label, clock_text(sky.clock.datetime(time_s)), *_direction(sky, k, time_s))
+        (label, clock_text(sky.clock.datetime(time_s)), *direction(label, time_s))
         for label, time_s in sorted(moments, key=lambda moment: moment[1])
     )
 
 
-def _direction(sky: Sky, row: int, time_s: float) -> tuple[str, str]:
-    """Azimuth and elevation; nothing while the satellite is down."""
-    own = sky.samples.of(row)
-    if not sky.passes.aos_s[row] <= time_s <= sky.passes.los_s[row]:
-        return "", ""
-    azimuth = np.interp(time_s, sky.samples.time_s[own], np.unwrap(sky.samples.azimuth_deg[own], period=360.0)) % 360
-    elevation = np.interp(time_s, sky.samples.time_s[own], sky.samples.elevation_deg[own])
-    return f"{azimuth_text(float(azimuth), 1)}°", f"{elevation:.1f}°"
+def _look(mission: Mission, sky: Sky, session: Session, time_s: float) -> Look:
+    """What the dish of a session sees at a moment; arrays (1,)."""
+    return look(*sky.track(session.satellite).at(np.array([time_s])), mission.station(session.station))
 
 
 def _radio(mission: Mission, sky: Sky, row, session: Session) -> Rows:
@@ -196,11 +206,17 @@ def _coding(segment: str) -> str:
         return segment
 
 
+def _modcod_at(row, moment: datetime) -> str:
+    """The one on air at a moment, of the segments `NAME@SINCE` in their order."""
+    segments = [segment.rpartition("@") for segment in str(row.modcods).split()]
+    begun = [name for name, _, since in segments if name and datetime.fromisoformat(since) <= moment]
+    return begun[-1].replace("_", NO_BREAK) if begun else "MODCOD as above"
+
+
 def _doppler_khz(mission: Mission, sky: Sky, session: Session, time_s: float) -> float:
-    own = sky.samples.of(int(np.flatnonzero(sky.passes.pass_id == session.pass_id)[0]))
-    rate_km_s = np.interp(time_s, sky.samples.time_s[own], sky.samples.range_rate_km_s[own])
+    seen = _look(mission, sky, session, time_s)
     mode = mission.satellite(session.satellite).spacecraft.mode(session.mode)
-    return float(doppler_hz(rate_km_s, mode.frequency_mhz)) / 1000
+    return float(doppler_hz(seen.range_rate_km_s[0], mode.frequency_mhz)) / 1000
 
 
 def _doppler_text(mission: Mission, sky: Sky, session: Session) -> str:
@@ -222,7 +238,7 @@ def _late_s(mission: Mission, sky: Sky, session: Session, age_days: float) -> fl
     return SIGMAS * float(timing_error_s(aging, age_days, *states)[0])
 
 
-def _steps(mission: Mission, sky: Sky, session: Session, wait_s: float, late_s: float) -> tuple[str, ...]:
+def _steps(mission: Mission, sky: Sky, row, session: Session, wait_s: float, late_s: float) -> tuple[str, ...]:
     khz = _doppler_khz(mission, sky, session, session.tx_on_s + wait_s)
     mode = mission.satellite(session.satellite).spacecraft.mode(session.mode)
     age_days = mission.policy.elements_refresh_days
@@ -230,9 +246,10 @@ def _steps(mission: Mission, sky: Sky, session: Session, wait_s: float, late_s: 
     epoch = mission.satellite(session.satellite).elements.epoch
     own_days = abs((sky.clock.datetime(session.tx_on_s) - epoch) / timedelta(days=1))
     own_late_s = _late_s(mission, sky, session, own_days)
+    modcod = _modcod_at(row, sky.clock.datetime(session.tx_on_s + wait_s))
     return (
         f"Receiver: {mode.frequency_mhz * 1000 + khz:,.1f} kHz now ({khz:+.1f} kHz Doppler), {mode.polarisation},"
-        f" {plain_number(mode.symbol_rate_mbaud)} Mbaud, first MODCOD as above.",
+        f" {plain_number(mode.symbol_rate_mbaud)} Mbaud, {modcod}.",
         "Antenna: compare azimuth and elevation with the pointing table; refraction on or off as the table says.",
         f"Time: search along the track, {late_s:.1f} s either way with elements {age_days:g} d old, {own_late_s:.1f} s"
         f" with those of the epoch above ({own_days:.1f} d).",

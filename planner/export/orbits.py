@@ -74,7 +74,10 @@ def oem_keywords(satellite: Satellite, sky: Sky, step_s: float = STATE_STEP_S) -
     }
     lines = [f"CCSDS_OEM_VERS = {VERSION}", f"CREATION_DATE = {_date(satellite.elements.epoch)}"]
     lines += [f"ORIGINATOR = {ORIGINATOR}", "META_START", *(f"{key} = {value}" for key, value in metadata.items())]
-    lines += ["META_STOP", "COMMENT kilometres and kilometres a second; polar motion is neglected (under 10 m)"]
+    lines += [
+        "META_STOP",
+        "COMMENT kilometres and kilometres a second; polar motion (10 m) and UT1's drift (0.2 s, 100 m) are neglected",
+    ]
     for date, place, velocity in zip(dates, position_km.tolist(), velocity_km_s.tolist(), strict=True):
         lines.append(f"{date} " + " ".join([f"{x:.6f}" for x in place] + [f"{v:.9f}" for v in velocity]))
     return "\n".join([*lines, ""]).encode()

@@ -63,7 +63,9 @@ def _stated(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission)
         if found:
             faults.extend(f"{place}: line {line}: {fault}" for fault in found)
         else:
-            on_s, off_s = ((_utc(row[key]) - mission.start).total_seconds() for key in ("tx_on_utc", "tx_off_utc"))
+            on_s, off_s = (
+                (utc_moment(row[key]) - mission.start).total_seconds() for key in ("tx_on_utc", "tx_off_utc")
+            )
             session = Session(on_s, off_s, row["satellite"], row["station"], row["mode"], row["pass_id"])
             contacts.append(StatedContact(session, line, row))
     if faults:
@@ -83,7 +85,7 @@ def _row_faults(row: dict[str, str], mission: Mission) -> list[str]:
     times = []
     for key in ("tx_on_utc", "tx_off_utc"):
         try:
-            times.append(_utc(row[key]))
+            times.append(utc_moment(row[key]))
         except ValueError as error:
             faults.append(f"{key}: {error}, got {shown(row[key])}")
     if len(times) == 2 and times[1] <= times[0]:
@@ -99,7 +101,8 @@ def _unknown(key: str, value: str, known) -> str:
     )
 
 
-def _utc(text: str) -> datetime:
+def utc_moment(text: str) -> datetime:
+    """A moment of a contacts file; ValueError where it is none or has no time zone."""
     try:
         moment = datetime.fromisoformat(text)
     except ValueError:

@@ -1,9 +1,9 @@
 """Any set of contacts, checked from its ids, modes and transmit times alone."""
 
 from dataclasses import dataclass
-from datetime import datetime
+from datetime import datetime, timedelta
 
-from planner.mission.contacts import StatedContact, read_contacts
+from planner.mission.contacts import StatedContact, read_contacts, utc_moment
 from planner.mission.models import Mission
 from planner.schedule import frames
 from planner.schedule.checks import Fault, find_faults
@@ -124,10 +124,19 @@ def _stale(flown: Flown, stated: list[StatedContact]) -> list[Stale]:
     found = []
     for contact, row in zip(known, now.to_dict("records"), strict=True):
         for column in frames.CONTACT_COLUMNS:
-            if column in contact.stated and not _agrees(contact.stated[column], row[column]):
+            agree = _same_moment if column.endswith("_utc") else _agrees
+            if column in contact.stated and not agree(contact.stated[column], row[column]):
                 name = frames.contact_id(contact.session)
                 found.append(Stale(contact.line, name, column, contact.stated[column], _shown(row[column])))
     return found
+
+
+def _same_moment(stated: str, now: str) -> bool:
+    """However the moment is written, to the millisecond that the files have."""
+    try:
+        return abs(utc_moment(stated.strip()) - utc_moment(now)) < timedelta(milliseconds=1)
+    except ValueError:
+        return stated.strip() == now
 
 
 def _agrees(stated: str, now) -> bool:

@@ -12,7 +12,8 @@ from planner.mission.names import slug
 from planner.schedule.checks import needs_upload, upload_contact
 from planner.schedule.flown import Flown
 from planner.sky import aging
-from planner.sky.sites import station_position_km
+from planner.sky.samples import doppler_hz
+from planner.sky.sites import look, station_position_km
 from planner.units import DAY_S
 
 CONTACT_COLUMNS = (
@@ -65,9 +66,12 @@ def _contact(flown: Flown, session: Session, carries: int) -> dict:
         "min_margin_db": profile.lowest_margin_db(*span),
         "volume_mbit": volume,
         **_energy(flown, session),
-        "max_doppler_khz": float(np.max(np.abs(week.along(row, session.mode, "doppler_khz", *span)))),
+        "max_doppler_khz": _max_doppler_khz(flown, session, row),
         "cautions": "; ".join(
-            [*cautions(flown, session, row), *([f"carries up the commands of {carries} contacts"] if carries else [])]
+            [
+                *cautions(flown, session, row),
+                *([f"carries up the commands of {carries} contact{'s' * (carries > 1)}"] if carries else []),
+            ]
         ),
         "power_on_utc": iso(session.tx_on_s - transmitter.warmup_s),
         "frequency_mhz": transmitter.frequency_mhz,
@@ -78,6 +82,15 @@ def _contact(flown: Flown, session: Session, carries: int) -> dict:
         "elements_newer_than_utc": _oldest_epoch(flown, session, row),
         "commands_from": _commands_from(flown, session),
     }
+
+
+def _max_doppler_khz(flown: Flown, session: Session, row: int) -> float:
+    """Largest Doppler while on air, exact at both ends, where a straight line between samples lies below it."""
+    week, span = flown.week, (session.tx_on_s, session.tx_off_s)
+    transmitter = week.mission.satellite(session.satellite).spacecraft.mode(session.mode)
+    ends = look(*week.sky.track(session.satellite).at(np.array(span)), week.mission.station(session.station))
+    ends_khz = doppler_hz(ends.range_rate_km_s, transmitter.frequency_mhz) / 1e3
+    return float(np.max(np.abs([*ends_khz, *week.along(row, session.mode, "doppler_khz", *span)])))
 
 
 def _energy(flown: Flown, session: Session) -> dict:

@@ -45,8 +45,8 @@ def test_a_card_tells_times_directions_and_radio(mission, sky, session, row):
     assert card.title == f"MARSHLIGHT-1 over {session.station}"
     assert times["Transmitter on"][0] == sky.clock.iso(session.tx_on_s)[11:19]
     assert [time for _, time, *_ in card.times] == sorted(time for _, time, *_ in card.times)
-    azimuth = sky.passes.aos_azimuth_deg[sky.passes.pass_id == session.pass_id][0]
-    assert times["AOS, rises"][1] == f"{azimuth:.1f}°"
+    assert times["AOS, rises"][1] == f"{row['aos_azimuth_deg']:.1f}°"  # as the contact states it
+    assert times["TCA, highest"][2] == f"{row['max_elevation_deg']:.1f}°"
     assert radio["Expected margin"] == "3.21 dB or more at 99 % availability"
     assert radio["Frequency sent"] == "26250 MHz"
     assert re.fullmatch(r"\+\d+\.\d to -\d+\.\d kHz while on air, received less sent", radio["Doppler"])
@@ -63,6 +63,14 @@ def test_a_card_says_what_to_do_without_lock_and_warns(mission, sky, session, ro
     assert any("licence" in caution for caution in card.cautions)
     assert any("nobody at or in front of it" in caution for caution in card.cautions)
     assert dict(card.radio)["Element epoch"].startswith("2026-12-06 18:00:00; they point this dish until ")
+
+
+def test_without_lock_the_modcod_is_the_one_on_air_by_then(mission, sky, session, row):
+    on = datetime.fromisoformat(row["tx_on_utc"])
+    for change_s, expected in ((2.0, "8PSK 3/4"), (60.0, "QPSK 3/4")):
+        later = (on + timedelta(seconds=change_s)).isoformat()
+        card = card_of(mission, sky, row, modcods=f"QPSK_3/4@{on.isoformat()} 8PSK_3/4@{later}")
+        assert card.steps[0].replace("\u00a0", " ").endswith(f" Mbaud, {expected}.")
 
 
 def test_files_are_one_a4_page_and_the_same_bytes_each_time(mission, sky, row):

@@ -53,6 +53,13 @@ def test_what_was_planned_passes_as_table_and_as_file(two_day_mission, plan, wri
         assert verdict.as_dict() == {"safe": True, "contacts": len(plan.contacts), "faults": [], "stale": []}
 
 
+def test_a_moment_written_another_way_is_the_same_moment(two_day_mission, plan):
+    other = plan.contacts.copy()
+    for column in (name for name in other.columns if name.endswith("_utc")):
+        other[column] = pd.to_datetime(other[column]).astype(str)  # 2026-12-07 05:41:28.500000+00:00
+    assert planner.audit(two_day_mission, other).stale == ()
+
+
 def test_no_contacts_break_only_what_asks_for_some(two_day_mission, plan):
     assert texts(two_day_mission, plan.contacts.iloc[:0]) == [
         f"MARSHLIGHT-1: no contact in S low rate on 2026-12-0{day}, the policy asks one a day" for day in (7, 8)
