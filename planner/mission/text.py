@@ -24,13 +24,15 @@ TOML_MENDS = (
     (re.compile(r"=\s*[-+]?\d+,\d"), "write decimals with a point"),
     (re.compile(r"\d:\d\d:60"), "a leap second cannot be written, take the second before it or after"),
     (re.compile(r"[“”„]"), "write straight quotes"),
+    # before any text or comment, and no offset from UTC
+    (re.compile(r"""^[^"'#]*?(?<![\d:+-])\d{1,2}:\d\d(?![\d:])"""), "times of day need seconds, such as 06:00:00"),
 )
 # What a file that is no TOML often is instead
 OTHER_KINDS = (
     (re.compile(r"^1 [\w ]{5}[A-Z ] ", re.MULTILINE), "a two-line element set"),
     (re.compile(r"\A\s*<"), "XML"),
     (re.compile(r"\A\s*(\{|\[\s*\{)"), "JSON"),
-    (re.compile(r"\A[^=\n]+,[^=\n]+,"), "a CSV table"),
+    (re.compile(r"\A[^#=\n][^=\n]*,[^=\n]+,"), "a CSV table"),
 )
 
 
@@ -147,8 +149,15 @@ def _fault(path: Path | str, entry: Mapping[str, Any], raw: Any, model: type | N
         return f"{place}: unknown key{nearest(key.rsplit('.', 1)[-1], _siblings(entry['loc'], model, holder))}"
     if kind == "value_error":
         return f"{place}: {context['error']}" + ("" if "got " in str(context["error"]) else f", got {shown(value)}")
-    mend = decimals(value) if kind == "float_type" and isinstance(value, str) else ""
-    return f"{place}: {_rule(kind, context, entry['msg'])}, got {shown(value)}{mend}"
+    return f"{place}: {_rule(kind, context, entry['msg'])}, got {shown(value)}{_mend(kind, context, value)}"
+
+
+def _mend(kind: str, context: Mapping[str, Any], value: Any) -> str:
+    """What the value was likely meant to be, to stand behind the fault, or nothing."""
+    if not isinstance(value, str):
+        return ""
+    choices = context.get("expected_tags") or context.get("expected") or ""  # as "'patch', 'array'"
+    return decimals(value) if kind == "float_type" else nearest(value, re.findall(r"'([^']+)'", choices))
 
 
 def _rule(kind: str, context: Mapping[str, Any], message: str) -> str:
@@ -170,7 +179,7 @@ def _rule(kind: str, context: Mapping[str, Any], message: str) -> str:
         "timezone_aware": "must carry a time zone (append Z for UTC)",
         "datetime_type": "must be a date and time without quotes, such as 2026-12-07T00:00:00Z",
         "time_type": "must be a time of day without quotes, such as 06:30:00",
-        "too_short": "must have at least {min_length} entries",
+        "too_short": "must have {min_length} or more entries",
         "too_long": "must have at most {max_length} entries",
         "missing_argument": "is required",
     }

@@ -86,7 +86,21 @@ FAULTY_KEYS = {
     "unknown antenna": (
         ('kind = "patch"', 'kind = "pach"'),
         "transmitter[2] \"S low rate\".antenna: kind must be one of 'isotropic', 'gain only', 'parabola', 'patch',"
-        " 'array', 'flat reflecting array', 'measured pattern', got 'pach'",
+        " 'array', 'flat reflecting array', 'measured pattern', got 'pach'; did you mean \"patch\"?",
+    ),
+    "an antenna like no known one": (
+        ('kind = "patch"', 'kind = "whip"'),
+        "transmitter[2] \"S low rate\".antenna: kind must be one of 'isotropic', 'gain only', 'parabola', 'patch',"
+        " 'array', 'flat reflecting array', 'measured pattern', got 'whip'",
+    ),
+    "a word that a choice has otherwise": (
+        ('when = "eclipse"', 'when = "eclipsed"'),
+        "load[3] \"battery heater\".when: must be one of 'always', 'sunlit', 'eclipse' or 'windows', got 'eclipsed';"
+        ' did you mean "eclipse"?',
+    ),
+    "no mode at all in the codes": (
+        ('modcods = ["convolutional 1/2 + RS(255,223)"]', "modcods = []"),
+        'transmitter[2] "S low rate".modcods: must have 1 or more entries, got ()',
     ),
     "unknown mode of a daily contact": (
         ('daily_contact_modes = ["S low rate"]', 'daily_contact_modes = ["S lo rate"]'),
@@ -239,7 +253,7 @@ def test_a_day_that_does_not_exist_is_told_once(mission_folder):
     changed(mission_folder, "uplink = true", 'uplink = true\nhours = { days = ["monday"] }', VARDHOLM)
     assert faults(mission_folder) == [
         f"missions/../{VARDHOLM}: hours.days[1]: must be one of 'mon', 'tue', 'wed', 'thu', 'fri', 'sat' or 'sun',"
-        " got 'monday'"
+        " got 'monday'; did you mean \"mon\"?"
     ]
 
 
@@ -307,12 +321,36 @@ def test_what_is_not_toml(mission_folder, content, message):
         ('mode = "K high rate"', "mode = “K high rate”", "got 'mode = “K high rate”'; write straight quotes"),
         ("soc_pct = 92.0", 'soc_pct = "92,0"',
          "start_state.soc_pct: must be a number, got '92,0'; write decimals with a point"),
+        ("turnaround_s = 120.0", "shifts.open = [[06:00, 22:00]]",
+         "got 'shifts.open = [[06:00, 22:00]]'; times of day need seconds, such as 06:00:00"),
+        ("turnaround_s = 120.0", "shifts.open = [\n  [6:00, 22:00],\n]",
+         "got '[6:00, 22:00],'; times of day need seconds, such as 06:00:00"),
+        ("start = 2026-12-07T00:00:00Z", "start = 2026-12-07T00:00Z",
+         "got 'start = 2026-12-07T00:00Z'; times of day need seconds, such as 06:00:00"),
     ],
 )  # fmt: skip
 def test_what_a_line_often_gets_wrong_is_told_with_its_mend(mission_folder, old, new, told):
     changed(mission_folder, old, new)
     (fault,) = faults(mission_folder)
     assert fault.endswith(told)
+
+
+@pytest.mark.parametrize(
+    "line",
+    [
+        "open = [[06:00:00, 22:00:00.5]]",
+        "start = 2026-12-07T00:00:00+01:00",
+        'name = "passes from 06:00 to 22:00"',
+        "days = 7.0  # from 06:00 on",
+    ],
+)
+def test_right_times_and_times_in_words_want_no_seconds(mission_folder, line):
+    """On a line that another slip spoils: one bracket too many at its end."""
+    spoiled = line.replace("  #", "]  #") if "#" in line else line + "]"
+    (mission_folder / MISSION).write_text(f"# for one week, one satellite, two stations\n{spoiled}\n")
+    (fault,) = faults(mission_folder)
+    assert fault.startswith(f"{MISSION}: must be TOML: ")
+    assert fault.endswith(f", got {spoiled!r}")
 
 
 @pytest.mark.parametrize(
