@@ -9,9 +9,8 @@ from planner.errors import InputError
 from planner.mission.contacts import Session
 from planner.mission.models import Mission
 from planner.mission.text import nearest
-from planner.power.limits import Breach
 from planner.schedule.candidates import find_candidates
-from planner.schedule.checks import Fault, breach_text, find_faults
+from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import Flown
 from planner.schedule.frames import contact_id
 from planner.schedule.result import plan_week, prepared
@@ -22,6 +21,7 @@ from planner.units import JOULE_PER_WH
 
 STARTS = 9  # places in the window at which a transmission of a given length is tried
 MOST_GIVEN_UP = 3  # sets of up to so many contacts are tried as ones to give way
+ALREADY = "the contacts given break a limit already (see `audit`): "
 NEAREST = 14  # … among the contacts nearest before the session
 
 
@@ -29,6 +29,8 @@ NEAREST = 14  # … among the contacts nearest before the session
 class Affordability:
     """The go or no-go for one session at the pessimistic corner, and the figures behind it. None where not defined.
 
+    It is a no as well where the accepted contacts break a limit of the battery already, whatever the session adds, and
+    where a rule other than the battery's would break: those are the `conflicts`.
     `replaces` names accepted contacts that the session takes the place of, `replaced_s` on air in all. `gained_mbit` is
     what all contacts together then bring more: less than `volume_mbit` where others would have brought the same data.
     """
@@ -112,22 +114,25 @@ def _answer(flown: Flown, candidate: Candidate) -> Affordability:
     session = _placed(candidate, candidate.longest_s, _best_start_s(candidate, candidate.longest_s))
     trial = base.with_session(session)
     series = trial.worst[candidate.satellite]
-    breaches = _new_breaches(base, trial, candidate.satellite)
+    already, faults = _battery_faults(base, candidate.satellite), _new_faults(base, trial)
+    by_battery = [fault for fault in faults if fault.satellite]
     draw = week.powers[candidate.satellite].session_draw(session)
     lowest_s, lowest_pct = series.lowest(float(draw.edges_s[0]))
     before_pct = float(series.soc_at_pct(draw.edges_s[0]))
     recovered_s = series.recovered_s(float(draw.edges_s[-1]), before_pct)
     volume_mbit = trial.volume_mbit[session]
-    longest_s, start_s = (session.duration_s, session.tx_on_s) if not breaches else _longest(base, candidate)
+    longest_s, start_s = (0.0, None) if already else (session.duration_s, session.tx_on_s)
+    if faults and not already:
+        longest_s, start_s = _longest(base, candidate)
     inside = (series.time_s >= draw.edges_s[0]) & (series.time_s <= draw.edges_s[-1])
-    binding = breaches[0] if breaches else None
+    binding = (*already, *faults, None)[0]
     return Affordability(
         pass_id=candidate.pass_id,
         satellite=candidate.satellite,
         station=candidate.station,
         mode=candidate.mode,
-        affordable=not breaches,
-        reason=breach_text(trial, candidate.satellite, binding) if binding else "every limit holds",
+        affordable=binding is None,
+        reason=(ALREADY if already else "") + binding.text if binding else "every limit holds",
         tx_on_utc=iso(session.tx_on_s),
         tx_off_utc=iso(session.tx_off_s),
         duration_s=session.duration_s,
@@ -142,11 +147,11 @@ def _answer(flown: Flown, candidate: Candidate) -> Affordability:
         recovered_utc=None if np.isnan(recovered_s) else iso(recovered_s),
         longest_s=longest_s,
         longest_tx_on_utc=None if start_s is None else iso(start_s),
-        binding_limit=binding.limit if binding else None,
-        missing=abs(binding.value - binding.bound) if binding else None,
+        binding_limit=binding.rule if binding else None,
+        missing=abs(binding.value - binding.bound) if binding and np.isfinite(binding.value) else None,
         missing_unit=binding.unit if binding else None,
-        give_way=tuple(contact_id(s) for s in _give_way(base, session)) if breaches else (),
-        conflicts=tuple(_conflicts(base, session)),
+        give_way=tuple(contact_id(s) for s in _give_way(base, session)) if by_battery and not already else (),
+        conflicts=tuple(fault.text for fault in faults if not fault.satellite),
         replaces=tuple(contact_id(s) for s in replaced),
         replaced_s=sum(s.duration_s for s in replaced) if replaced else None,
         gained_mbit=trial.total_mbit - flown.total_mbit,
@@ -164,16 +169,25 @@ def _best_start_s(candidate: Candidate, duration_s: float) -> float:
     return float(starts_s[int(np.argmax(volume))])
 
 
-def _new_breaches(base: Flown, trial: Flown, satellite: str) -> list[Breach]:
-    """Limits that the trial breaks and the base did not; those on stored charge first."""
-    known = {(b.limit, round(b.time_s)) for b in base.breaches(satellite)}
-    new = [b for b in trial.breaches(satellite) if (b.limit, round(b.time_s)) not in known]
-    return sorted(new, key=lambda breach: (breach.limit != "SoC floor", breach.time_s))
+def _battery_faults(flown: Flown, satellite: str) -> list[Fault]:
+    """Limits of a battery that are broken, those on stored charge first."""
+    return sorted((f for f in find_faults(flown) if f.satellite == satellite), key=_charge_first)
+
+
+def _charge_first(fault: Fault) -> tuple:
+    return not fault.satellite, fault.rule != "SoC floor", fault.time_s
+
+
+def _new_faults(base: Flown, trial: Flown) -> list[Fault]:
+    """Rules that the trial breaks and the base did not: the battery's first, and of these those on stored charge."""
+    known = {_rule_of(fault) if fault.satellite else fault.text for fault in find_faults(base)}
+    new = [fault for fault in find_faults(trial) if (_rule_of(fault) if fault.satellite else fault.text) not in known]
+    return sorted(new, key=_charge_first)
 
 
 def _longest(base: Flown, candidate: Candidate) -> tuple[float, float | None]:
     """The longest transmission that breaks nothing, to the second, and its best start; 0 s and None if none does."""
-    shortest, longest = 1, int(candidate.longest_s) + 1  # the first that does, and one that does not
+    shortest, longest = int(np.ceil(candidate.shortest_s)), int(candidate.longest_s) + 1
     if _affordable_start(base, candidate, shortest) is None:
         return 0.0, None
     while longest - shortest > 1:
@@ -192,7 +206,7 @@ def _affordable_start(base: Flown, candidate: Candidate, duration_s: float) -> f
     volume = {s: candidate.profile.volume_mbit(s, s + duration_s) for s in starts_s}
     for start_s in sorted(starts_s, key=lambda s: (-volume[s], s)):
         trial = base.with_session(_placed(candidate, duration_s, start_s))
-        if not _new_breaches(base, trial, candidate.satellite):
+        if not _new_faults(base, trial):
             return float(start_s)
     return None
 
@@ -211,10 +225,8 @@ def _give_way(base: Flown, session: Session) -> tuple[Session, ...]:
     known = {_rule_of(fault) for fault in (*find_faults(base), *find_faults(base.with_session(session)))}
 
     def fits(gone) -> bool:
-        without = base.without(set(gone)).with_session(session)
-        if _new_breaches(base, without, session.satellite):
-            return False
-        return all(fault.satellite or _rule_of(fault) in known for fault in find_faults(without))
+        faults = find_faults(base.without(set(gone)).with_session(session))
+        return all(not fault.satellite and _rule_of(fault) in known for fault in faults)
 
     for count in range(1, MOST_GIVEN_UP + 1):
         sets = sorted(
@@ -237,13 +249,5 @@ def _give_way(base: Flown, session: Session) -> tuple[Session, ...]:
 
 
 def _rule_of(fault: Fault) -> tuple:
-    """What tells a broken rule from another of its kind, whatever its figures; a battery's have their satellite."""
-    return fault.rule, fault.session, round(fault.time_s)
-
-
-def _conflicts(base: Flown, session: Session) -> list[str]:
-    """Rules other than the battery's that the session would break beside the others."""
-    known = {fault.text for fault in find_faults(base)}
-    trial = base.with_session(session)
-    battery = {breach_text(trial, name, breach) for name in base.week.powers for breach in trial.breaches(name)}
-    return [fault.text for fault in find_faults(trial) if fault.text not in known | battery]
+    """What tells a broken rule from another of its kind, whatever its figures."""
+    return fault.rule, fault.satellite, None if fault.satellite else fault.session, round(fault.time_s)

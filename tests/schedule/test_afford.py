@@ -9,7 +9,8 @@ from small_missions import smaller
 
 import planner
 from planner.errors import InputError
-from planner.mission.contacts import Session
+from planner.mission.contacts import REQUIRED, Session
+from planner.schedule.checks import cost_of
 from planner.schedule.flown import Flown
 from planner.schedule.frames import contact_id
 from planner.schedule.result import prepared
@@ -166,6 +167,38 @@ def test_contacts_of_another_week_do_not_count(tight):
         shifted = [moment(text) + timedelta(days=30) for text in elsewhere[column]]
         elsewhere[column] = [f"{time:%Y-%m-%dT%H:%M:%S.%f}Z" for time in shifted]
     assert planner.afford(mission, pass_id, K, elsewhere) == planner.afford(mission, pass_id, K, plan.contacts.iloc[:0])
+
+
+@pytest.mark.parametrize(("soc_pct", "copies"), [(30.0, 0), (70.0, 1), (92.0, 1)])
+def test_nothing_is_affordable_beside_a_limit_that_is_broken_already(tight, soc_pct, copies):
+    mission, plan = tight
+    low = mission.with_changes(start_state={"soc_pct": soc_pct}, policy={"soc_floor_pct": 80.0})
+    given = pd.concat([plan.contacts.iloc[1:]] * copies or [plan.contacts.iloc[:0]])
+    assert not planner.audit(low, given).safe
+    answer = planner.afford(low, plan.contacts.iloc[0].pass_id, K, given)
+    assert not answer.affordable
+    assert answer.reason.startswith("the contacts given break a limit already (see `audit`): MARSHLIGHT-1: SoC floor: ")
+    assert (answer.longest_s, answer.give_way) == (0.0, ())
+
+
+def test_what_is_affordable_is_safe_in_an_audit_of_all(tight):
+    mission, plan = tight
+    for pass_id in plan.passes[plan.passes["verdict"] != "unusable"]["pass_id"]:
+        answer = planner.afford(mission, pass_id, K, plan.contacts.iloc[::2])
+        others = plan.contacts.iloc[::2]
+        both = pd.concat([others[others["pass_id"] != pass_id], pd.DataFrame([answer.as_dict()])])
+        assert answer.affordable == planner.audit(mission, both[list(REQUIRED)]).safe
+
+
+def test_a_session_that_the_station_budget_does_not_pay_for_is_a_no(two_day_mission, plan):
+    few = plan.contacts.iloc[:2]
+    spent = cost_of(planner.audit(two_day_mission, few).flown)
+    asked = plan.contacts[plan.contacts["mode"] == K].iloc[2].pass_id
+    poor = two_day_mission.with_changes(policy={"cost_budget": spent + 0.1})
+    answer = planner.afford(poor, asked, K, few)
+    assert not answer.affordable
+    assert (answer.binding_limit, answer.longest_s) == ("station budget", 0.0)
+    assert answer.conflicts == (answer.reason,)
 
 
 def test_other_rules_that_would_break_are_told_as_conflicts(two_day_mission, plan):
