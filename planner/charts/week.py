@@ -17,7 +17,8 @@ from planner.mission.models import Mission
 from planner.schedule.hours import open_windows_s
 from planner.units import DAY_S
 
-FOOT, FLOWN_TOP = 0.06, 0.66  # of a lane: where bars stand, how high a planned session reaches
+FOOT = 0.06  # of a lane: where bars stand
+SESSION_TOPS = (0.66, 0.36)  # how high a session reaches, by mode in turn: of two on one pass both are seen
 FIRST_MARKER, MARKER_STEP = 0.76, 0.15
 FILLS = {  # (face, edge) of a pass by its verdict
     "planned": (style.PALE, style.PALE),
@@ -26,7 +27,7 @@ FILLS = {  # (face, edge) of a pass by its verdict
     "dropped": ("white", "#B0B0B0"),
 }
 TWO_LINES = 12  # lanes, up to which a station's count stands under its name
-MOST_LANES = 24  # that stay legible; with more stations, those that fly most are drawn
+MOST_LANES = 24  # that stay legible; with more stations, those with most contacts are drawn
 LONGEST_NAME = 24  # letters of a station's name beside its lane
 NEAR = 0.004  # of the width in view: how far beside a pass a click may fall
 
@@ -124,19 +125,19 @@ def draw_plan(
 def finding(mission: Mission, plan) -> str:
     """What the week comes to, in one line."""
     summary = plan.summary
-    flown = plan.contacts["pass_id"].nunique() if len(plan.contacts) else 0
+    planned = plan.contacts["pass_id"].nunique() if len(plan.contacts) else 0
     if not len(plan.passes):
         return "No pass in the span: no station sees a satellite"
     return (
-        f"{flown} of {len(plan.passes)} passes flown, {_data_amount(summary['volume_mbit'])},"
+        f"{planned} of {len(plan.passes)} passes planned, {_data_amount(summary['volume_mbit'])},"
         f" lowest charge {summary['soc_min_pct']:.1f} % ({mission.policy.floor_words})"
     )
 
 
 def lanes_of(mission: Mission, plan) -> list:
     """The stations that have a lane, from the top down: all, or those with the most contacts and then passes."""
-    flown, seen = (plan.contacts["station"].value_counts(), plan.passes["station"].value_counts())
-    busy = sorted(mission.stations, key=lambda station: (-flown.get(station.name, 0), -seen.get(station.name, 0)))
+    planned, seen = (plan.contacts["station"].value_counts(), plan.passes["station"].value_counts())
+    busy = sorted(mission.stations, key=lambda station: (-planned.get(station.name, 0), -seen.get(station.name, 0)))
     chosen = {station.name for station in busy[:MOST_LANES]}
     return [station for station in mission.stations if station.name in chosen]
 
@@ -174,12 +175,12 @@ def _draw_lanes(axes, mission: Mission, stations: list, plan, selected: str | No
     drawn = [*_draw_passes(axes, passes), *_point_out(axes, passes[passes["pass_id"] == selected])]
     for index, (mode, mark) in enumerate(style.mode_marks(_modes(mission)).items()):
         own = contacts[contacts["mode"] == mode]
-        drawn += _draw_sessions(axes, own, mark, FIRST_MARKER + MARKER_STEP * (index % 2))
-    flown = plan.contacts.groupby("station")["pass_id"].nunique() if len(plan.contacts) else {}
+        drawn += _draw_sessions(axes, own, mark, SESSION_TOPS[index % 2], FIRST_MARKER + MARKER_STEP * (index % 2))
+    planned = plan.contacts.groupby("station")["pass_id"].nunique() if len(plan.contacts) else {}
     between = "\n" if count <= TWO_LINES else ", "
     seen = plan.passes["station"].value_counts()
     names = [
-        f"{_short(station.name)}{between}{flown.get(station.name, 0)} of {seen.get(station.name, 0)}"
+        f"{_short(station.name)}{between}{planned.get(station.name, 0)} of {seen.get(station.name, 0)}"
         for station in stations
     ]
     axes.set_yticks(count - 0.5 - np.arange(count), labels=names)
@@ -188,7 +189,7 @@ def _draw_lanes(axes, mission: Mission, stations: list, plan, selected: str | No
     axes.tick_params(axis="y", length=0, labelsize=float(np.clip(140 / count, 5, 8)))
     axes.set_ylim(0, count)
     more = "" if count == len(mission.stations) else f" (the busiest {count} of {len(mission.stations)})"
-    axes.set_ylabel(f"station, passes flown of all{more}")
+    axes.set_ylabel(f"station, passes planned of all{more}")
     return [*drawn, axes.yaxis]
 
 
@@ -217,7 +218,7 @@ def _draw_passes(axes, passes: pd.DataFrame) -> list[Artist]:
     """A bar as long as the pass and as high as it climbs; hollow where nothing can be sent."""
     begin, end, foot, verdict = (passes[name].to_numpy() for name in ("begin", "end", "foot", "verdict"))
     climbs = passes["max_elevation_deg"].to_numpy(dtype=float) / 90
-    bars = _bars(begin, end, foot + FOOT, foot + FOOT + 0.08 + (FLOWN_TOP - FOOT - 0.08) * climbs)
+    bars = _bars(begin, end, foot + FOOT, foot + FOOT + 0.08 + (SESSION_TOPS[0] - FOOT - 0.08) * climbs)
     drawn: list[Artist] = [
         axes.add_collection(
             PolyCollection(bars[verdict == name], facecolor=face, edgecolor=edge, linewidth=0.7, zorder=2),
@@ -230,11 +231,11 @@ def _draw_passes(axes, passes: pd.DataFrame) -> list[Artist]:
     return drawn + axes.plot(middle, height, "x", color=style.BLACK, ms=4, scalex=False, scaley=False)
 
 
-def _draw_sessions(axes, contacts: pd.DataFrame, mark, marker_height: float) -> list[Artist]:
+def _draw_sessions(axes, contacts: pd.DataFrame, mark, top: float, marker_height: float) -> list[Artist]:
     colour, marker = mark
     begin, end, foot = (contacts[name].to_numpy() for name in ("begin", "end", "foot"))
     bars = PolyCollection(
-        _bars(begin, end, foot + FOOT, foot + FLOWN_TOP), facecolor=colour, edgecolor=colour, linewidth=1.1, zorder=3
+        _bars(begin, end, foot + FOOT, foot + top), facecolor=colour, edgecolor=colour, linewidth=1.1, zorder=3
     )
     axes.add_collection(bars, autolim=False)
     marks = axes.plot(

@@ -5,6 +5,7 @@ from zoneinfo import ZoneInfo
 
 import matplotlib.dates as mdates
 import numpy as np
+import pandas as pd
 import pytest
 from made_up_week import empty, mission_and_plan
 
@@ -37,7 +38,7 @@ def test_the_title_says_the_finding(mission, plan):
     figures = plan.summary | {"volume_mbit": 214_300.0, "soc_min_pct": 61.23}
     plan = type(plan)(**vars(plan) | {"summary": figures})
     flown = plan.contacts["pass_id"].nunique()
-    told = f"{flown} of {len(plan.passes)} passes flown, 214 Gbit, lowest charge 61.2 %"
+    told = f"{flown} of {len(plan.passes)} passes planned, 214 Gbit, lowest charge 61.2 %"
     assert finding(mission, plan) == f"{told} (floor {plan.summary['soc_floor_pct']:g} %)"
     risked = mission.with_changes(policy={"floor_risk_pct": 2.0})
     assert finding(risked, plan).endswith(f"(floor {plan.summary['soc_floor_pct']:g} % but for 2 % of weeks)")
@@ -50,7 +51,7 @@ def test_small_volumes_are_told_in_megabits(mission, plan):
 
 def test_every_axis_has_a_label_with_its_unit(mission, plan):
     lanes, charge, data = drawn(week_figure(mission, plan)).axes
-    assert lanes.get_ylabel() == "station, passes flown of all"
+    assert lanes.get_ylabel() == "station, passes planned of all"
     assert charge.get_ylabel() == "state of charge, %"
     assert data.get_ylabel() == "data aboard, Gbit"
     assert data.get_xlabel() == "time, UTC, 2026"
@@ -72,6 +73,20 @@ def test_modes_are_told_by_marker_as_well_as_by_colour(mission, plan):
     assert len({marker for marker, _ in shown}) == 2
     marked = sum(len(line.get_xdata()) for line in lanes.lines if line.get_marker() in ("^", "o"))
     assert marked == len(plan.contacts)
+
+
+def test_of_two_modes_on_one_pass_both_are_seen(mission, plan):
+    """As much of each as two millimetres of paper: a bar of the second mode is drawn over one of the first."""
+    high, low = (transmitter.mode for transmitter in mission.satellites[0].spacecraft.transmitter)
+    first = plan.contacts.iloc[:1]
+    both = pd.concat([first.assign(mode=high), first.assign(mode=low)])
+    figure = drawn(week_figure(mission, type(plan)(**vars(plan) | {"contacts": both})))
+    lanes = figure.axes[0]
+    bars = [found for found in lanes.collections if found.get_zorder() == 3]
+    (tall, short), mm = ([found.get_paths()[0].get_extents(lanes.transData) for found in bars]), figure.dpi / 25.4
+    assert short.height > 2 * mm
+    assert tall.y1 - short.y1 > 2 * mm
+    assert (tall.x0, tall.x1, tall.y0) == (short.x0, short.x1, short.y0)
 
 
 def test_floor_end_and_lowest_charge_are_named(mission, plan):
@@ -148,7 +163,7 @@ def test_with_many_stations_the_busiest_get_a_lane(mission, plan):
     assert len(shown) == MOST_LANES
     assert shown[-len(mission.stations) :] == list(mission.stations)
     lanes = drawn(week_figure(crowded, plan)).axes[0]
-    assert lanes.get_ylabel() == "station, passes flown of all (the busiest 24 of 36)"
+    assert lanes.get_ylabel() == "station, passes planned of all (the busiest 24 of 36)"
     assert lanes.get_ylim() == (0, MOST_LANES)
 
 
