@@ -8,6 +8,7 @@ import numpy as np
 
 from planner.mission.models import Satellite
 from planner.mission.transmitter import Transmitter
+from planner.power.balance import SatellitePower
 from planner.schedule.energy import (
     Conversion,
     depth_floor_pct,
@@ -24,6 +25,9 @@ from planner.schedule.week import Week
 from planner.schedule.windows import usable_windows
 from planner.schedule.wishes import Wishes
 from planner.units import DAY_S
+
+PLACES = 7  # in a window, at which a session's turn and warm-up are priced
+AT_ONCE = 200  # windows, so that memory holds the courses of all their sessions
 
 _log = logging.getLogger(__name__)
 
@@ -151,14 +155,34 @@ def _priced(week: Week, own: list[Candidate], conversions: tuple[Conversion, Con
         return []
     power = week.powers[own[0].satellite]
     whole = [c.session(c.opens_s, c.closes_s) for c in own]
+    batches = [own[k : k + AT_ONCE] for k in range(0, len(own), AT_ONCE)]
+    fixed_wh = np.concatenate([_least_fixed_wh(power, batch, conversions[1]) for batch in batches])
     priced = []
-    for candidate, *draws in zip(own, *(power.session_draws(whole, way.corner) for way in conversions), strict=True):
-        before_s, after_s = candidate.opens_s - draws[0].edges_s[0], draws[0].edges_s[-1] - candidate.closes_s
+    for k, draws in enumerate(zip(*(power.session_draws(whole, way.corner) for way in conversions), strict=True)):
+        before_s, after_s = own[k].opens_s - draws[0].edges_s[0], draws[0].edges_s[-1] - own[k].closes_s
         likely_cost, least_cost = (session_cost(power, *one) for one in zip(draws, conversions, strict=True))
+        least_cost = replace(least_cost, fixed_wh=min(least_cost.fixed_wh, float(fixed_wh[k])))
         priced.append(
-            replace(candidate, lead_s=float(before_s), tail_s=float(after_s), likely=likely_cost, least=least_cost)
+            replace(own[k], lead_s=float(before_s), tail_s=float(after_s), likely=likely_cost, least=least_cost)
         )
     return priced
+
+
+def _least_fixed_wh(power: SatellitePower, own: list[Candidate], conversion: Conversion) -> np.ndarray:
+    """What turning, warm-up and cool-down cost at the least, (candidates,), wherever in its window a session lies.
+
+    They cost what they do before tx_on and after tx_off: each is looked for on its own at some places in the window,
+    and half of its largest step from place to place is taken off for what lies between them.
+    """
+    late_s = [np.linspace(c.opens_s, c.closes_s - c.shortest_s, PLACES) for c in own]
+    early_s = [np.linspace(c.opens_s + c.shortest_s, c.closes_s, PLACES) for c in own]
+    placed = [c.session(on_s, c.closes_s) for c, starts_s in zip(own, late_s, strict=True) for on_s in starts_s]
+    placed += [c.session(c.opens_s, off_s) for c, stops_s in zip(own, early_s, strict=True) for off_s in stops_s]
+    draws = power.session_draws(placed, conversion.corner)
+    fixed_wh = np.array([session_cost(power, draw, conversion).fixed_wh for draw in draws])
+    by_start, by_stop = fixed_wh.reshape(2, len(own), PLACES)
+    at_least_wh = [part.min(axis=1) - np.abs(np.diff(part)).max(axis=1) / 2 for part in (by_start, by_stop)]
+    return at_least_wh[0] + at_least_wh[1] - by_start[:, 0]  # the whole window's is in both
 
 
 def _states(week: Week, satellite: Satellite, own: list[Candidate], conversions) -> SatelliteStates:

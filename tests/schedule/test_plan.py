@@ -207,6 +207,16 @@ def test_the_same_mission_gives_the_same_tables(day):
     assert plan.summary == again.summary
 
 
+@pytest.mark.parametrize("floor_pct", [89.5, 90.3])
+def test_no_week_is_above_the_bound_where_turning_and_warm_up_are_most_of_the_price(marshlight, floor_pct):
+    """A short session turns at another moment than one over the whole window, and by less."""
+    policy = {"soc_floor_pct": floor_pct, "soc_end_pct": floor_pct}
+    mission = smaller(marshlight, 0.4, "Vardholm", policy=policy, start_state={"soc_pct": 100.0, "soc_error_pct": 0.0})
+    plan = planner.plan_week(mission)
+    assert plan.flown.sessions
+    assert plan.summary["upper_bound_mbit"] > plan.summary["volume_mbit"]
+
+
 def test_a_left_out_pass_that_is_kept_flies(marshlight):
     mission = smaller(marshlight, 0.5, "Vardholm", modes=(K,), policy={"max_sessions_per_day": 1})
     plan = planner.plan_week(mission)
