@@ -3,11 +3,17 @@
 from collections.abc import Iterable, Iterator
 from datetime import datetime
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from planner import printing
 from planner.errors import InputError
 from planner.mission.models import Mission
+from planner.mission.table import read_table
 from planner.printing import Tell
+
+if TYPE_CHECKING:
+    from planner.schedule.flown import Flown
+    from planner.schedule.trial import TrialWeek
 
 DONE, NO = 0, 1
 MOST_TOLD = 20
@@ -69,7 +75,6 @@ def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datet
     from planner.export.folder import claim_folder
     from planner.export.sheet import sheet_files
     from planner.schedule.audit import audit
-    from planner.schedule.result import GivenWeek
 
     with claim_folder(out) as folder:
         printing.fault(folder.mended)
@@ -77,7 +82,7 @@ def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datet
         verdict = audit(mission, contacts, freeze_until=freeze_until)
         if not verdict.safe:
             raise InputError(f"{contacts}: cards are made only of contacts that keep every limit", *verdict.texts())
-        given = GivenWeek(verdict.flown)
+        given = week_shown(verdict.flown, contacts, freeze_until)
         count = len(given.contacts)
         issue = file_issue(contacts.read_bytes())
         cards = card_files(mission, verdict.flown.week.sky, given.contacts, issue)
@@ -89,6 +94,37 @@ def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datet
     _say_cautions(mission)
     say_boxes(mission)
     return DONE
+
+
+def week_shown(flown: "Flown", contacts: Path, freeze_until: datetime | None = None) -> "TrialWeek":
+    """The week of a contacts file; its passes tell those that no mode can use and those dropped, as `week` tells them.
+
+    Dropped are the passes of the mission's own list, and those of the passes.csv beside the contacts.
+    """
+    import pandas as pd
+
+    from planner.schedule.candidates import find_candidates
+    from planner.schedule.trial import TrialWeek
+    from planner.schedule.wishes import Wishes, freeze_s, read_wishes
+
+    week = flown.week
+    dropped = read_wishes(week, (), (), None, None).drop | _dropped_beside(contacts)
+    wishes = Wishes(drop=dropped, freeze_until_s=freeze_s(week.mission, freeze_until))
+    found, refused = find_candidates(week, wishes)
+    why = {week.sky.passes.pass_id[one.row]: (one.verdict, one.reason) for one in refused}
+    for candidate in found:
+        why.pop(candidate.pass_id, None)
+    rows = [(pass_id, *verdict) for pass_id, verdict in why.items()]
+    return TrialWeek(flown, pd.DataFrame(rows, columns=["pass_id", "verdict", "reason"]), dropped)
+
+
+def _dropped_beside(contacts: Path) -> frozenset[str]:
+    """The passes dropped in the passes.csv of the same folder; none where there is no such table."""
+    try:
+        rows = read_table(contacts.parent / "passes.csv", ("pass_id", "verdict"))
+    except InputError:
+        return frozenset()
+    return frozenset(row["pass_id"] for _, row in rows if row["verdict"] == "dropped")
 
 
 def _say_cautions(mission: Mission) -> None:
