@@ -6,7 +6,7 @@
 
 The index (`summary.json`) holds the SHA-256 of every other file, so a mixture can never pass for a whole set.
 Whatever the instant at which a run dies, the next claim finds `.kept` and puts the old set back, or finds the new one
-complete.
+complete. By the same hashes a file is known as ours: one that somebody else made or changed is never replaced.
 Needs a POSIX file system: rename replaces atomically, a record lock ends with its process.
 """
 
@@ -14,11 +14,13 @@ import fcntl
 import hashlib
 import json
 import os
+import re
 import shutil
 import stat
-from collections.abc import Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager, suppress
-from errno import EACCES, EDQUOT, EFBIG, ENOSPC, EPERM, EROFS
+from errno import EACCES, EDQUOT, EFBIG, EINVAL, ENOSPC, EPERM, EROFS
+from io import BufferedReader
 from pathlib import Path
 
 from planner.errors import InputError, MachineError
@@ -27,6 +29,7 @@ INDEX = "summary.json"
 RUN_LOG = "run_log.json"
 LOCK, COMING, KEEPING, KEPT, DONE = ".lock", ".coming", ".keeping", ".kept", ".done"
 JOURNAL = ".journal"
+SHA256 = re.compile("[0-9a-f]{64}")
 REASONS = {
     ENOSPC: "the disk is full",
     EDQUOT: "the disk quota is used up",
@@ -47,23 +50,36 @@ def verify_set(folder, index: str = INDEX) -> tuple[str, ...]:
     """Why the set that `index` describes is not whole; empty when it is whole."""
     folder = Path(folder)
     try:
-        listed = json.loads(_read(folder / index))["files"]
-        sound = all(isinstance(digest, str) and _is_plain(name) for name, digest in listed.items())
+        listed = _listed(folder, index)
     except OSError as fault:
         return (f"{folder / index}: cannot be read: {fault.strerror}",)
-    except (ValueError, KeyError, TypeError, AttributeError, RecursionError):
-        sound = False
-    if not sound:
-        return (f"{folder / index}: files must be a table of file names and their SHA-256",)
+    except ValueError as fault:
+        return (f"{folder / index}: {fault}",)
     return tuple(f"{folder / name}: {why}" for name, digest in listed.items() if (why := _fault(folder / name, digest)))
+
+
+def check_ours(folder, index: str = INDEX, coming: Iterable[str] = ()) -> None:
+    """Refuse to replace what this tool did not write, or what was changed since: nobody's file is lost.
+
+    `coming` names the new files, as far as they are known. Says nothing while a run holds the folder or has left it
+    half-way: who claims it mends that first, and its writing asks anew.
+
+    Raises
+    ------
+    InputError : `index` is not one of ours, a file that it lists was changed, or one of `coming` is not of its set
+    """
+    folder = Path(folder)
+    faults = tuple(_not_ours(folder, index, coming))
+    if faults and not any(os.path.lexists(folder / name) for name in (LOCK, KEPT)):
+        raise InputError(*faults)
 
 
 @contextmanager
 def claim_folder(folder):
     """Hold `folder` for one run; whatever an earlier run left unfinished is mended first.
 
-    Yields a `ClaimedFolder`; its `mended` tells what was mended. The folder is made if it is missing, and removed again
-    if the run puts nothing into it.
+    Yields a `ClaimedFolder`; its `mended` tells what was mended. The folder and those above it are made if missing, and
+    removed again if the run puts nothing into them.
 
     Raises
     ------
@@ -71,21 +87,18 @@ def claim_folder(folder):
     InputError : the path, or something in it that would be replaced, is not what it has to be (a link, a folder)
     """
     folder = Path(folder)
-    with _machine_faults(folder, "nothing was written"):
-        if folder.is_symlink() or (folder.exists() and not folder.is_dir()):
-            raise InputError(f"{folder}: must be a folder of its own (links are not followed for output)")
-        made = not folder.exists()
-        folder.mkdir(parents=True, exist_ok=True)
-        lock = _lock(folder)
-    try:
-        with _machine_faults(folder, "an interrupted run could not be mended"):
-            mended = _mend(folder)
-        yield ClaimedFolder(folder, mended)
-    finally:
-        _unlock(folder, lock)
-        if made:
-            with suppress(OSError):  # not empty: a set was written
-                folder.rmdir()
+    with _tidied(folder):
+        with _machine_faults(folder, "nothing was written"):
+            if folder.is_symlink() or (folder.exists() and not folder.is_dir()):
+                raise InputError(f"{folder}: must be a folder of its own (links are not followed for output)")
+            folder.mkdir(parents=True, exist_ok=True)
+            lock = _lock(folder)
+        try:
+            with _machine_faults(folder, "an interrupted run could not be mended"):
+                mended = _mend(folder)
+            yield ClaimedFolder(folder, mended)
+        finally:
+            _unlock(folder, lock)
 
 
 def write_set(folder, files: Mapping[str, bytes], summary: Mapping, **options) -> tuple[str, ...]:
@@ -127,7 +140,8 @@ class ClaimedFolder:
         """Replace the set that `index` describes by `files`, in one step as seen from outside.
 
         `index` becomes `summary` with `files` added: the SHA-256 of each. `run_log` goes to run_log.json, outside the
-        hashes. Files that only the old set had are removed. Raises MachineError, and then the old set is in place.
+        hashes. Files that only the old set had are removed. Raises MachineError, and then the old set is in place;
+        InputError as `check_ours` does, before anything is replaced.
         """
         digests = {name: hashlib.sha256(content).hexdigest() for name, content in sorted(files.items())}
         log = {} if run_log is None else {RUN_LOG: json_bytes(run_log)}
@@ -136,6 +150,8 @@ class ClaimedFolder:
             raise ValueError(f"{index} and {RUN_LOG} are made here, got them among the files")
         for name in coming:
             _check_target(self.path, name)
+        if faults := tuple(_not_ours(self.path, index, coming)):
+            raise InputError(*faults)
         with _machine_faults(self.path, "the set that was there is kept"):
             try:
                 _replace(self.path, coming, index)
@@ -151,7 +167,8 @@ def _replace(folder: Path, coming: Mapping[str, bytes], index: str) -> None:
     (folder / COMING).mkdir()
     for name, content in coming.items():
         _write(folder / COMING / name, content)
-    old = [name for name in sorted({*coming, *_listed(folder, index)}) if os.path.lexists(folder / name)]
+    listed = _listed(folder, index) if os.path.lexists(folder / index) else {}
+    old = [name for name in sorted({*coming, *listed}) if os.path.lexists(folder / name)]
     _keep_aside(folder, old, coming, index)
     for name in coming:  # the index is the last of them
         os.replace(folder / COMING / name, folder / name)
@@ -230,11 +247,37 @@ def _remove_all(folder: Path, names) -> None:
         (folder / name).unlink(missing_ok=True)
 
 
-def _listed(folder: Path, index: str) -> list[str]:
-    """The files of the set that is there now, as far as its index can be believed."""
-    with suppress(OSError, ValueError, KeyError, TypeError):
-        return [name for name in json.loads(_read(folder / index))["files"] if _is_plain(name)]
-    return []
+def _listed(folder: Path, index: str) -> dict[str, str]:
+    """The SHA-256 of each file of the set that is there. ValueError with the rule where the index is none of ours."""
+    try:
+        content = json.loads(_read(folder / index))
+        listed = content["files"]
+        if (listed or "mission" in content) and all(_is_plain(n) and SHA256.fullmatch(d) for n, d in listed.items()):
+            return listed
+    except (ValueError, KeyError, TypeError, AttributeError, RecursionError):
+        pass
+    raise ValueError("files must be a table of file names and their SHA-256")
+
+
+def _not_ours(folder: Path, index: str, coming: Iterable[str]) -> Iterator[str]:
+    """Each file that may not be replaced or removed, with the reason and the mend."""
+    mend = "move it elsewhere, or choose another folder"
+    listed: dict[str, str] = {}
+    known = set()
+    if os.path.lexists(folder / index):
+        try:
+            listed = _listed(folder, index)
+            known = {*listed, index, RUN_LOG}
+        except (OSError, ValueError) as fault:
+            why = fault.strerror if isinstance(fault, OSError) else fault
+            yield f"{folder / index}: is not what this tool writes ({why}); {mend}"
+            return
+    for name, digest in listed.items():
+        if os.path.lexists(folder / name) and (why := _fault(folder / name, digest)):
+            yield f"{folder / name}: was not written by this tool or was changed since ({why}); {mend}"
+    for name in coming:
+        if name not in known and os.path.lexists(folder / name):
+            yield f"{folder / name}: is not of the set that {index} lists and would be overwritten; {mend}"
 
 
 def _is_plain(name) -> bool:
@@ -261,13 +304,22 @@ def _fault(path: Path, digest: str) -> str | None:
 
 
 def _digest(path: Path) -> str:
-    with open(os.open(path, os.O_RDONLY | os.O_NOFOLLOW), "rb") as file:
+    with _opened(path) as file:
         return hashlib.file_digest(file, "sha256").hexdigest()
 
 
 def _read(path: Path) -> bytes:
-    with open(os.open(path, os.O_RDONLY | os.O_NOFOLLOW), "rb") as file:
+    with _opened(path) as file:
         return file.read()
+
+
+def _opened(path: Path) -> BufferedReader:
+    """A plain file to read. OSError for a link, and for a pipe or device, which could keep us waiting for ever."""
+    handle = os.open(path, os.O_RDONLY | os.O_NOFOLLOW | os.O_NONBLOCK)
+    if stat.S_ISREG(os.fstat(handle).st_mode):
+        return open(handle, "rb")
+    os.close(handle)
+    raise OSError(EINVAL, "must be a plain file")
 
 
 def _write(path: Path, content: bytes) -> None:
@@ -291,7 +343,7 @@ def _lock(folder: Path) -> int:
     if identity in _claimed_here:  # asked before opening: closing any handle on the file would drop the lock
         raise _held(folder, os.getpid())
     while True:
-        handle = os.open(folder / LOCK, os.O_RDWR | os.O_CREAT | os.O_NOFOLLOW, 0o666)
+        handle = os.open(folder / LOCK, os.O_RDWR | os.O_CREAT | os.O_NOFOLLOW | os.O_NONBLOCK, 0o666)
         try:
             fcntl.lockf(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
         except (BlockingIOError, PermissionError):
@@ -303,8 +355,12 @@ def _lock(folder: Path) -> int:
                 break
         os.close(handle)  # its last holder removed the file between our opening and our locking it
     _claimed_here.add(identity)
-    os.ftruncate(handle, 0)
-    os.write(handle, f"{os.getpid()}\n".encode())
+    try:
+        os.ftruncate(handle, 0)
+        os.write(handle, f"{os.getpid()}\n".encode())
+    except BaseException:
+        _unlock(folder, handle)
+        raise
     return handle
 
 
@@ -320,6 +376,18 @@ def _unlock(folder: Path, handle: int) -> None:
     with suppress(OSError):
         (folder / LOCK).unlink()
     os.close(handle)
+
+
+@contextmanager
+def _tidied(folder: Path) -> Iterator[None]:
+    """Of the folder and those above it, the ones that were missing are removed at the end where they are empty."""
+    missing = [path for path in (folder, *folder.parents) if not os.path.lexists(path)]
+    try:
+        yield
+    finally:
+        for path in missing:
+            with suppress(OSError):  # not empty: a set was written
+                path.rmdir()
 
 
 @contextmanager

@@ -13,7 +13,7 @@ import pytest
 
 from planner.errors import InputError, MachineError
 from planner.export import folder as rooms
-from planner.export.folder import claim_folder, json_bytes, verify_set, write_file, write_set
+from planner.export.folder import check_ours, claim_folder, json_bytes, verify_set, write_file, write_set
 
 OLD = {"contacts.csv": b"old contacts\n", "passes.csv": b"the same\n", "gone.csv": b"only in the old set\n"}
 NEW = {"contacts.csv": b"new contacts\n", "passes.csv": b"the same\n", "added.csv": b"only in the new set\n"}
@@ -242,6 +242,17 @@ def test_a_folder_that_takes_no_file_is_told_at_once(whole, monkeypatch, fault):
     assert is_old(whole)
 
 
+@pytest.mark.parametrize("call", ["write", "ftruncate"])
+def test_a_lock_that_the_disk_has_no_room_for_is_let_go(whole, monkeypatch, call):
+    with monkeypatch.context() as at_first:
+        refuse(at_first, call, errno.ENOSPC, 0)
+        with pytest.raises(MachineError, match="the disk is full; nothing was written"), claim_folder(whole):
+            pass
+    assert is_old(whole)
+    assert not WORKING_NAMES & set(os.listdir(whole))
+    assert write_set(whole, NEW, {"volume_mbit": 2.0}) == ()
+
+
 def test_a_file_system_without_hard_links_keeps_copies(whole, monkeypatch):
     def no_links(*args, **options):
         raise OSError(errno.EPERM, "Operation not permitted")
@@ -333,19 +344,138 @@ def test_a_run_that_writes_nothing_leaves_no_folder(tmp_path):
     assert not (tmp_path / "week").exists()
 
 
+def test_folders_above_it_go_again_too_but_none_that_was_there_or_holds_something(tmp_path):
+    (tmp_path / "a").mkdir()
+    with claim_folder(tmp_path / "a" / "b" / "c" / "week"):
+        pass
+    assert list(tmp_path.rglob("*")) == [tmp_path / "a"]
+    with claim_folder(tmp_path / "a" / "b" / "c" / "week"):
+        (tmp_path / "a" / "b" / "notes.txt").write_text("mine")
+    assert sorted(tmp_path.rglob("*")) == [tmp_path / "a", tmp_path / "a" / "b", tmp_path / "a" / "b" / "notes.txt"]
+    with pytest.raises(MachineError, match="File name too long"):
+        write_set(tmp_path / "d" / ("x" * 300), NEW, {})
+    assert not (tmp_path / "d").exists()
+
+
 @pytest.mark.parametrize("name", ["../x.csv", "/x.csv", ".hidden", "a/b", "line\nbreak", ""])
 def test_names_that_are_not_plain_never_reach_the_disk(tmp_path, name):
     with pytest.raises(ValueError, match="a set holds plain visible file names"):
         write_set(tmp_path, {name: b""}, {})
 
 
-def test_an_index_that_names_files_outside_harms_nothing(whole):
-    outside = whole.parent / "outside.txt"
-    outside.write_text("stays")
-    (whole / "summary.json").write_text('{"files": {"../outside.txt": "00", "gone.csv": "00"}}')
+ELSEWHERE = "move it elsewhere, or choose another folder"
+NO_TABLE = f"is not what this tool writes (files must be a table of file names and their SHA-256); {ELSEWHERE}"
+SOME_DIGEST = "0" * 64
+
+
+def all_files(folder):
+    return {path.name: path.read_bytes() for path in folder.iterdir()}
+
+
+def refusal(folder, files=NEW, **options) -> str:
+    """What a run is told that may not write here, before it computes where that can be known; nothing is touched."""
+    before = all_files(folder)
+    with pytest.raises(InputError) as told:
+        write_set(folder, files, {"volume_mbit": 2.0}, **options)
+    assert all_files(folder) == before
+    with pytest.raises(InputError) as foretold:
+        check_ours(folder, options.get("index", "summary.json"), files)
+    assert str(foretold.value) == str(told.value)
+    return str(told.value)
+
+
+@pytest.mark.parametrize(
+    "content",
+    [
+        '{"files": ["thesis.txt"]}', '{"files": "thesis.txt"}', '{"files": {"thesis.txt": 1}}', '{"files": {}}', "[]",
+        '{"files": {"thesis.txt": "00"}}', json.dumps({"files": {"../x": SOME_DIGEST}}), '{"files": 5}',
+        '{"mission": "x"}', '"mission"', "my summary", "", "[" * 100_000, '{"files":' * 100_000, "9" * 5000, "\ud800",
+    ],
+    ids=lambda content: content[:25],
+)  # fmt: skip
+@pytest.mark.parametrize("index", ["summary.json", "pointing.json"])
+def test_an_index_that_another_tool_wrote_is_refused_and_its_files_stay(tmp_path, index, content):
+    (tmp_path / index).write_text(content, errors="surrogatepass")
+    (tmp_path / "thesis.txt").write_text("mine")
+    assert refusal(tmp_path, index=index) == f"{tmp_path / index}: {NO_TABLE}"
+
+
+@pytest.mark.parametrize("name", ["contacts.csv", "gone.csv"])
+def test_a_file_that_was_edited_since_is_neither_replaced_nor_removed(whole, name):
+    (whole / name).write_bytes(b"edited by hand")
+    assert refusal(whole) == (
+        f"{whole / name}: was not written by this tool or was changed since (differs from the hash in the index);"
+        f" {ELSEWHERE}"
+    )
+    (whole / name).rename(whole.parent / name)
     write_set(whole, NEW, {"volume_mbit": 2.0})
-    assert outside.read_text() == "stays"
     assert is_new(whole)
+
+
+@pytest.mark.parametrize("name", ["contacts.csv", "added.csv", "run_log.json"])
+def test_a_file_that_was_there_before_any_set_is_not_overwritten(tmp_path, name):
+    (tmp_path / name).write_text("mine")
+    told = f"{tmp_path / name}: is not of the set that summary.json lists and would be overwritten; {ELSEWHERE}"
+    with pytest.raises(InputError) as refused:
+        write_set(tmp_path, NEW, {}, run_log={})
+    assert str(refused.value) == told
+    assert all_files(tmp_path) == {name: b"mine"}
+
+
+def test_a_users_file_that_only_the_new_set_names_is_not_overwritten(whole):
+    (whole / "added.csv").write_text("mine")
+    assert "added.csv: is not of the set that summary.json lists" in refusal(whole)
+
+
+def test_a_file_that_is_missing_from_the_set_hinders_nobody(whole):
+    (whole / "contacts.csv").unlink()
+    check_ours(whole)
+    write_set(whole, NEW, {"volume_mbit": 2.0})
+    assert is_new(whole)
+
+
+def test_an_empty_set_is_ours_too(tmp_path):
+    for _ in range(2):
+        write_set(tmp_path, {}, {"mission": "Marshlight", "tables": 0}, index="pointing.json")
+
+
+def test_a_set_left_half_way_is_not_judged_before_it_is_mended(whole):
+    midway = 0
+    while dies_at_step(whole, NEW, 2.0, midway) and not verify_set(whole):
+        write_set(whole, OLD, {"volume_mbit": 1.0})
+        midway += 1
+    assert verify_set(whole)
+    check_ours(whole)
+    write_set(whole, NEW, {"volume_mbit": 2.0})
+    assert is_new(whole)
+
+
+def put_pipe(path):
+    path.unlink(missing_ok=True)
+    os.mkfifo(path)
+
+
+@pytest.mark.parametrize("name", ["summary.json", "contacts.csv"])
+def test_a_pipe_in_the_set_is_told_and_nobody_waits_for_it(whole, name):
+    put_pipe(whole / name)
+    assert f"{whole / name}: cannot be read: must be a plain file" in verify_set(whole)
+    with pytest.raises(InputError, match=rf"{name}: (is|was) not .*must be a plain file.*{ELSEWHERE}"):
+        check_ours(whole)
+    with pytest.raises(InputError, match=f"{name}: stands where a file is to be written and is not a plain file"):
+        write_set(whole, NEW, {})
+
+
+def test_a_pipe_as_the_journal_stops_the_run(whole):
+    (whole / ".kept").mkdir()
+    put_pipe(whole / ".kept" / ".journal")
+    with pytest.raises(MachineError, match="is not what this tool writes; save what you need"):
+        write_set(whole, NEW, {})
+
+
+def test_a_pipe_as_the_lock_keeps_nobody_waiting(whole):
+    put_pipe(whole / ".lock")
+    with pytest.raises(MachineError, match="nothing was written"):
+        write_set(whole, NEW, {})
 
 
 def test_a_journal_that_is_not_ours_stops_the_run(whole):
