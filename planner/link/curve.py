@@ -1,11 +1,12 @@
 """Attenuation against elevation, computed once and kept in memory and on disk.
 
 The disk copy spares the ITU-R library's slow start. It is never needed: a missing, broken or unwritable cache only
-costs the time to compute the curve again.
+costs the time to compute the curve again. A copy is believed while it holds the SHA-256 of its request and numbers.
 """
 
 import hashlib
 import os
+import stat
 import sys
 import tempfile
 from collections.abc import Iterable
@@ -21,7 +22,8 @@ from planner.link.atmosphere import Attenuation, Site
 from planner.link.polarisation import TILT_DEG
 from planner.mission.station import Station
 
-FORMAT = 1  # raised when atmosphere.py computes something else, so that older copies are not read
+FORMAT = 2  # raised when atmosphere.py computes something else or a copy is written otherwise, so that none is misread
+KEPT_AS = "<f8"
 LAYER_KM = 2.0  # attenuation at low elevation is nearly straight against the path through a layer of this thickness
 JUST_BELOW = 1 - 1e-9  # P.618 changes formula at 5 and 25 deg: a node on each side keeps a step a step
 FROM_ZENITH_DEG = (0.0, 0.01, 0.04, 0.1, 0.2, 0.4, 0.7, 1.0, 1.5, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0)
@@ -106,11 +108,14 @@ def attenuation_curves(request: CurveRequest) -> AttenuationCurves:
     ------
     InputError : frequency or unavailability outside the models' range
     """
-    path = cache_folder() / f"attenuation-{request.key}.npy"
-    parts_db = _read(path, (len(fields(Attenuation)), len(request.unavailability_pct), len(ELEVATIONS_DEG)))
+    folder, key = cache_folder(), request.key
+    if folder is None:
+        return AttenuationCurves(_compute(request))
+    path = folder / f"attenuation-{key}.f8"
+    parts_db = _read(path, key, (len(fields(Attenuation)), len(request.unavailability_pct), len(ELEVATIONS_DEG)))
     if parts_db is None:
         parts_db = _compute(request)
-        _write(path, parts_db)
+        _write(path, key, parts_db)
     return AttenuationCurves(parts_db)
 
 
@@ -119,15 +124,22 @@ def joined_curves(curves: Iterable[AttenuationCurves]) -> AttenuationCurves:
     return AttenuationCurves(np.concatenate([each.parts_db for each in curves], axis=1))
 
 
-def cache_folder() -> Path:
-    """Where the platform keeps what can be made again; under it a folder of our own."""
-    if sys.platform == "win32":
-        base = os.environ.get("LOCALAPPDATA") or Path.home() / "AppData" / "Local"
-    elif sys.platform == "darwin":
-        base = Path.home() / "Library" / "Caches"
-    else:
-        base = os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache"
-    return Path(base) / "downlink-planner"
+def cache_folder() -> Path | None:
+    """Where the platform keeps what can be made again, under it a folder of our own; None where there is no such place.
+
+    A relative path in the environment is not followed, as the XDG Base Directory Specification (0.8) asks.
+    """
+    variable, own = {
+        "win32": ("LOCALAPPDATA", "AppData/Local"),
+        "darwin": (None, "Library/Caches"),
+    }.get(sys.platform, ("XDG_CACHE_HOME", ".cache"))
+    base = Path(os.environ.get(variable, "") if variable else "")
+    if not base.is_absolute():
+        try:
+            base = Path.home() / own
+        except RuntimeError:  # neither HOME nor an entry for this user
+            return None
+    return base / "downlink-planner" if base.is_absolute() else None
 
 
 def _compute(request: CurveRequest) -> np.ndarray:
@@ -147,25 +159,36 @@ def _compute(request: CurveRequest) -> np.ndarray:
     return np.array([[getattr(curve, part.name) for curve in curves] for part in fields(Attenuation)])
 
 
-def _read(path: Path, shape: tuple[int, ...]) -> np.ndarray | None:
+def _digest(key: str, content: bytes) -> bytes:
+    return hashlib.sha256(key.encode() + content).digest()
+
+
+def _read(path: Path, key: str, shape: tuple[int, ...]) -> np.ndarray | None:
     """The array kept at `path`, or None where there is none that can be trusted."""
+    size = hashlib.sha256().digest_size + np.dtype(KEPT_AS).itemsize * int(np.prod(shape))
     try:
-        parts_db = np.load(path, allow_pickle=False)
-    except (OSError, ValueError, EOFError):
+        handle = os.open(path, os.O_RDONLY | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0))
+        status = os.fstat(handle)
+        if not stat.S_ISREG(status.st_mode) or status.st_size != size:  # a pipe would keep us waiting for ever
+            os.close(handle)
+            return None
+        with open(handle, "rb") as file:
+            digest, content = file.read(hashlib.sha256().digest_size), file.read()
+    except OSError:
         return None
-    trusted = parts_db.shape == shape and parts_db.dtype == np.float64 and np.isfinite(parts_db).all()
-    return parts_db if trusted else None
+    return np.frombuffer(content, KEPT_AS).reshape(shape) if digest == _digest(key, content) else None
 
 
-def _write(path: Path, parts_db: np.ndarray) -> None:
+def _write(path: Path, key: str, parts_db: np.ndarray) -> None:
     """Whole or not at all: written beside its place, then moved there. Failing is no error."""
+    content = parts_db.astype(KEPT_AS).tobytes()
     with suppress(OSError):
         path.parent.mkdir(parents=True, exist_ok=True)
         handle, draft = tempfile.mkstemp(dir=path.parent, suffix=".draft")
         try:
             with os.fdopen(handle, "wb") as file:
-                np.save(file, parts_db)
+                file.write(_digest(key, content) + content)
             os.replace(draft, path)
-        except OSError:
+        except BaseException:  # Ctrl-C too
             Path(draft).unlink(missing_ok=True)
             raise

@@ -1,7 +1,10 @@
+import hashlib
+import io
 import os
 import subprocess
 import sys
 from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -51,24 +54,68 @@ def test_a_curve_is_kept_on_disk_and_read_back(folder):
     assert kept.stat().st_mtime_ns == stamp
 
 
-@pytest.mark.parametrize("rubbish", [b"", b"not an array", "half"])
-def test_a_broken_copy_is_made_anew(folder, rubbish):
+def as_kept(parts_db, key=REQUEST.key, kind="<f8") -> bytes:
+    content = parts_db.astype(kind).tobytes()
+    return hashlib.sha256(key.encode() + content).digest() + content
+
+
+def a_zip(computed) -> bytes:
+    file = io.BytesIO()
+    np.savez(file, computed)
+    return file.getvalue()
+
+
+def an_array_file(computed) -> bytes:
+    file = io.BytesIO()
+    np.save(file, computed)
+    return file.getvalue()
+
+
+@pytest.mark.parametrize(
+    "spoil",
+    [
+        lambda computed: b"",
+        lambda computed: b"not an array",
+        lambda computed: as_kept(computed)[: computed.nbytes // 2],
+        lambda computed: as_kept(computed) + b"\0",
+        lambda computed: as_kept(computed)[:32] + (computed / 2).tobytes(),
+        lambda computed: as_kept(computed)[:32] + (-computed).tobytes(),
+        lambda computed: as_kept(computed)[:32] + np.full_like(computed, np.nan).tobytes(),
+        lambda computed: as_kept(computed[:, :1]),
+        lambda computed: as_kept(computed, kind="<f4"),
+        lambda computed: as_kept(computed, key=TROPICAL.key),
+        lambda computed: b"PK\x03\x04" + as_kept(computed)[4:],
+        lambda computed: b"PK\x05\x06" + bytes(18),
+        lambda computed: b"\x93NUMPY\x02\0" + b"\xff" * 4 + b"{" * 1000,
+        a_zip,
+        an_array_file,
+    ],
+)
+def test_a_copy_that_is_not_what_was_written_is_made_anew(folder, spoil):
     computed = attenuation_curves(REQUEST).parts_db
     (kept,) = folder.iterdir()
     whole = kept.read_bytes()
-    kept.write_bytes(whole[: len(whole) // 2] if rubbish == "half" else rubbish)
+    assert whole == as_kept(computed)
+    kept.write_bytes(spoil(computed))
     attenuation_curves.cache_clear()
     np.testing.assert_array_equal(attenuation_curves(REQUEST).parts_db, computed)
     assert kept.read_bytes() == whole
 
 
-def test_a_copy_with_missing_numbers_or_another_shape_is_not_trusted(folder):
+@pytest.mark.parametrize("put", [os.mkfifo, os.mkdir, lambda path: os.symlink(path, path)])
+def test_a_pipe_a_folder_or_a_link_in_place_of_the_copy_keeps_nobody_waiting(folder, put):
     computed = attenuation_curves(REQUEST).parts_db
     (kept,) = folder.iterdir()
-    for wrong in (np.full_like(computed, np.nan), computed[:, :1], computed.astype(np.float32)):
-        np.save(kept, wrong)
-        attenuation_curves.cache_clear()
-        np.testing.assert_array_equal(attenuation_curves(REQUEST).parts_db, computed)
+    kept.unlink()
+    put(kept)
+    attenuation_curves.cache_clear()
+    np.testing.assert_array_equal(attenuation_curves(REQUEST).parts_db, computed)
+
+
+def test_where_there_is_no_cache_folder_the_curve_is_computed(folder, monkeypatch):
+    monkeypatch.setattr(curve, "cache_folder", lambda: None)
+    assert np.isfinite(attenuation_curves(REQUEST).parts_db).all()
+    assert not folder.exists()
 
 
 def test_a_cache_that_cannot_be_written_is_no_error(tmp_path, monkeypatch):
@@ -140,6 +187,27 @@ def test_the_folder_is_the_platforms(platform, variable, expected, monkeypatch, 
     if variable:
         monkeypatch.setenv(variable, str(tmp_path / "x"))
     assert cache_folder() == tmp_path / expected / "downlink-planner"
+
+
+@pytest.mark.parametrize(("variable", "platform"), [("XDG_CACHE_HOME", "linux"), ("LOCALAPPDATA", "win32")])
+@pytest.mark.parametrize("relative", ["", "cache", "../cache"])
+def test_a_relative_path_in_the_environment_is_ignored(variable, platform, relative, monkeypatch, tmp_path):
+    """XDG Base Directory Specification 0.8, "Basics": all paths must be absolute, a relative one is to be ignored."""
+    monkeypatch.setattr(sys, "platform", platform)
+    monkeypatch.setenv(variable, relative)
+    for home, expected in ((tmp_path, True), (Path("here"), False)):
+        monkeypatch.setattr("pathlib.Path.home", lambda home=home: home)
+        found = cache_folder()
+        assert found.is_relative_to(tmp_path) if expected else found is None
+
+
+def test_a_user_without_a_home_has_no_cache(monkeypatch):
+    def nobody():
+        raise RuntimeError("Could not determine home directory.")
+
+    monkeypatch.delenv("XDG_CACHE_HOME", raising=False)
+    monkeypatch.setattr("pathlib.Path.home", nobody)
+    assert cache_folder() is None
 
 
 def test_importing_the_room_loads_no_slow_library():
