@@ -11,7 +11,7 @@ from planner import printing
 from planner.hand_over import say_boxes
 from planner.mission.contacts import Session
 from planner.mission.models import Mission
-from planner.printing import Tell
+from planner.printing import Tell, counted
 
 DONE, NO = 0, 1
 MOST_STALE_SHOWN = 12
@@ -28,7 +28,7 @@ def passes(mission: Mission, csv: str | None, tell: Tell) -> int:
         from planner.export.folder import write_file
 
         write_file(csv, passes_csv(found))
-        printing.say(f"{len(found)} passes written to {csv}")
+        printing.say(f"{counted(len(found), 'pass', 'passes')} written to {csv}")
         return DONE
     printing.table(
         [("pass_id", "left"), ("station", "left"), ("aos_utc", "left"), ("los_utc", "left"), ("duration", "right"),
@@ -37,7 +37,7 @@ def passes(mission: Mission, csv: str | None, tell: Tell) -> int:
           f"{p['max_elevation_deg']:.1f} deg", f"{p['tca_range_km']:.0f} km", f"{100 * p['sunlit_fraction']:.0f} %")
          for p in found.to_dict("records")],
     )  # fmt: skip
-    printing.say(f"{len(found)} passes")
+    printing.say(counted(len(found), "pass", "passes"))
     return DONE
 
 
@@ -92,8 +92,9 @@ def _say_week(plan, folder: Path, quiet: bool, seconds: float) -> None:
             _days(plan.contacts),
         )  # fmt: skip
         printing.say("")
+    planned, passes = verdicts.get("planned", 0), counted(s["passes"], "pass", "passes")
     printing.say(
-        f"{s['contacts']} contacts on {verdicts.get('planned', 0)} of {s['passes']} passes"
+        f"{counted(s['contacts'], 'contact')} on {planned} of {passes}"
         f" ({verdicts.get('left out', 0)} left out, {verdicts.get('unusable', 0)} unusable,"
         f" {verdicts.get('dropped', 0)} dropped)"
     )
@@ -146,14 +147,13 @@ def show_audit(mission: Mission, contacts: str, as_json: bool, freeze_until: dat
     for figure in verdict.stale[:MOST_STALE_SHOWN]:
         printing.say(f"stale   {figure.text}")
     if len(verdict.stale) > MOST_STALE_SHOWN:
-        printing.say(f"stale   and {len(verdict.stale) - MOST_STALE_SHOWN} more figures (--json lists all)")
+        printing.say(f"stale   and {counted(len(verdict.stale) - MOST_STALE_SHOWN, 'more figure')} (--json lists all)")
     count = len(verdict.flown.sessions)
     if verdict.safe:
-        printing.say(
-            f"{count} contacts keep every limit" + (f"; {len(verdict.stale)} stale figures" if verdict.stale else "")
-        )
+        stale = f"; {counted(len(verdict.stale), 'stale figure')}" if verdict.stale else ""
+        printing.say(f"{counted(count, 'contact')} keep{'s' if count == 1 else ''} every limit{stale}")
         return DONE
-    printing.say(f"UNSAFE: {len(verdict.faults)} rules broken, {count} contacts")
+    printing.say(f"UNSAFE: {counted(len(verdict.faults), 'rule')} broken, {counted(count, 'contact')}")
     return NO
 
 

@@ -38,6 +38,11 @@ def say(text: str) -> None:
     screen().print(text)
 
 
+def counted(count: int, thing: str, things: str | None = None) -> str:
+    """A number with what it counts, as "1 contact", "2 contacts"; `things` where the plural takes more than an s."""
+    return f"{count} {thing if count == 1 else things or thing + 's'}"
+
+
 def table(columns: Sequence[Column], rows: Iterable[Sequence[str]], title: str | None = None) -> None:
     """A table of texts."""
     grid = Table(title=title, title_justify="left", box=None, pad_edge=False, header_style="bold")

@@ -11,6 +11,7 @@ from shell import command, in_a_terminal, started
 from planner import cli
 from planner.cli import main
 from planner.export.folder import claim_folder, verify_set
+from planner.printing import counted
 
 ROOT = Path(__file__).parents[1]
 K = "K high rate"
@@ -69,7 +70,7 @@ def test_what_week_wrote_is_whole_and_passes_the_audit(here, week, capsys):
 def test_check_and_passes_and_quiet_words(here, capsys):
     assert main(["check"]) == 0
     said = capsys.readouterr().out
-    assert said.endswith("3 files read, no fault found.\n")
+    assert said.endswith("\n3 files read, no fault found.\n")
     assert re.search(r"^../stations/vardholm.toml +[0-9a-f]{16}… +outside that folder", said, re.MULTILINE)
     assert re.search(
         r"^battery +4S2P LiFePO4 3 Ah, 13\.\d V half full, 3\d\.\d Wh at health 0\.97;", said, re.MULTILINE
@@ -79,6 +80,88 @@ def test_check_and_passes_and_quiet_words(here, capsys):
     assert listed[-1] == f"{len(listed) - 2} passes"
     assert main(["passes", "--csv", "passes.csv"]) == 0
     assert len((here / "passes.csv").read_text().splitlines()) == len(listed) - 1
+
+
+def checked(folder, capsys, **new) -> list[str]:
+    """Lines of `check` on the demo with some lines of its file changed, blanks alike; none is too wide to read."""
+    text = (folder / "missions" / "marshlight.toml").read_text()
+    for old, changed in new.items():
+        text, count = re.subn(rf"^{old} = .*$", changed, text, count=1, flags=re.MULTILINE)
+        assert count == 1
+    (folder / "missions" / "changed.toml").write_text(text)
+    assert main(["check", str(folder / "missions" / "changed.toml")]) == 0
+    lines = [line.rstrip() for line in capsys.readouterr().out.splitlines()]
+    assert max(map(len, lines)) <= 120
+    return [re.sub(" +", " ", line).strip() for line in lines]
+
+
+@pytest.mark.parametrize(
+    "line",
+    [
+        "Corrie Head 57.62 deg N 6.21 deg W 65 m 10 deg 2.8 m K 190 K, S 110 K 06:00-22:00, closed once",
+        "Dry Pan 30.88 deg S 21.61 deg E 1180 m 7 deg 3 m K 180 K, S 110 K always",
+        "slew 1 deg/s, 10 s to settle, 1 W more while it turns",
+        "loads bus 4.6 W: always",
+        "camera and processor 2.4 W: sunlit, duty 0.5",
+        "battery heater 1.5 W: eclipse, while the battery is below 8 °C",
+        "orbit trim thruster 12 W: 1 window, from 2026-12-10T13:05:00Z",
+        "filled by wetland camera 12 Mbit/s: sunlit, duty 0.5",
+        "at the start charge 92 % ± 4, 120000 Mbit stored, commands aboard until 2026-12-08T00:00:00Z",
+        "pessimistic charge 88.0 % at the start; battery at health 0.85, 6 K colder, resistance x 1.4",
+        "panels at end of life, x 0.98; loads x 1.04; transmitters x 1.03",
+        "spread one sigma: capacity 3 %, resistance 15 %, array 3 %, loads 3 %, transmitters 2 %; 1000 weeks",
+        "aging one sigma along the track: 1 km at epoch, + 2 km/day, + 0.5 km/day²",
+        "S low rate 2245 MHz S LHCP 1 W 6 W patch yes",
+        "K high rate 40 Mbaud 11, variable 1.5 dB 8 s",
+    ],
+)
+def test_check_tells_of_the_demo(mission_folder, capsys, line):
+    assert line in checked(mission_folder, capsys)
+
+
+def test_check_tells_what_is_left_out_or_otherwise(mission_folder, capsys):
+    ends = "2026-12-11T00:00:00Z], [2026-12-09T06:00:00Z, 2026-12-09T07:00:00Z"
+    lines = checked(
+        mission_folder,
+        capsys,
+        days="days = 1.0",
+        commands_aboard_until="",
+        health="health = 0.8",
+        array_end_of_life="array_end_of_life = false",
+        windows=f"windows = [[2026-12-10T13:05:00Z, {ends}]]\nduty = 0.25",
+        settle_s=f"settle_s = 10.0\nno_slew_windows = [[2026-12-10T13:05:00Z, {ends}]]",
+    )
+    assert lines[0] == "MARSHLIGHT-1 week 50: 1 day from 2026-12-07T00:00:00Z"
+    assert "orbit trim thruster 12 W: 2 windows, the first from 2026-12-09T06:00:00Z, duty 0.25" in lines
+    assert (
+        "slew 1 deg/s, 10 s to settle, 1 W more while it turns; none in 2 windows, the first from 2026-12-09T06:00:00Z"
+        in lines
+    )
+    [pessimistic] = [line for line in lines if line.startswith("pessimistic ")]
+    assert "battery at health 0.8, " in pessimistic  # the battery's own, which is lower
+    assert "panels x 0.98; loads x 1.04; transmitters x 1.03" in lines
+    [start] = [line for line in lines if line.startswith("at the start ")]
+    assert start.endswith("commands aboard until 2026-12-08T00:00:00Z")  # the first day
+
+
+def test_check_tells_of_commands_that_are_always_aboard(mission_folder, capsys):
+    lines = checked(mission_folder, capsys, upload_lead_h="")
+    assert "at the start charge 92 % ± 4, 120000 Mbit stored, commands always aboard" in lines
+
+
+@pytest.mark.parametrize(
+    ("longitude", "told"), [("353.79", "6.21 deg W"), ("-180.0", "180.00 deg W"), ("0", "0.00 deg E")]
+)
+def test_longitudes_all_round_have_their_side(mission_folder, capsys, longitude, told):
+    path = mission_folder / "stations" / "corrie_head.toml"
+    path.write_text(re.sub(r"longitude_deg = .*", f"longitude_deg = {longitude}", path.read_text()))
+    assert any(line.startswith(f"Corrie Head 57.62 deg N {told} ") for line in checked(mission_folder, capsys))
+
+
+def test_one_is_no_plural():
+    """As English has it: one contact, no contacts, two passes."""
+    assert [counted(n, "contact") for n in (0, 1, 2)] == ["0 contacts", "1 contact", "2 contacts"]
+    assert [counted(n, "pass", "passes") for n in (1, 2)] == ["1 pass", "2 passes"]
 
 
 def test_the_link_as_json_has_every_key(here, capsys):
