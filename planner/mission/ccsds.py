@@ -3,7 +3,7 @@
 import re
 from datetime import UTC, datetime, timedelta
 
-DATE = re.compile(r"(\d{4})-(?:(\d\d)-(\d\d)|(\d{3}))T(\d\d):(\d\d):(\d\d)(\.\d+)?Z?")
+DATE = re.compile(r"(\d{4})-(?:(\d\d)-(\d\d)|(\d{3}))T(\d\d):(\d\d):(\d\d)(\.\d+)?Z?", re.ASCII)
 
 
 def date(text: str) -> datetime:

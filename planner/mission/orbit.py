@@ -3,6 +3,7 @@
 import math
 from datetime import UTC, datetime, timedelta
 from functools import cached_property
+from itertools import pairwise
 from typing import Annotated, Literal
 
 import numpy as np
@@ -10,6 +11,7 @@ from pydantic import AwareDatetime, Field
 
 from planner.errors import InputError
 from planner.mission.base import Described, Name
+from planner.mission.interpolation import errors_km
 from planner.units import DAY_S, EARTH_GM_KM3_S2, EARTH_RATE_RAD_S
 
 EPOCH_OF_SGP4 = datetime(1949, 12, 31, tzinfo=UTC)
@@ -47,7 +49,7 @@ class ElementSet(Described):
 
         if self.mean_motion_rev_day < SLOWEST_REV_DAY:
             raise InputError(
-                f"{self.name}: mean motion of the element set of epoch {_iso(self.epoch)} must be at least"
+                f"{self.name}: mean motion of the element set of epoch {iso(self.epoch)} must be at least"
                 f" {SLOWEST_REV_DAY:g} rev/day, got {self.mean_motion_rev_day:g}"
             )
         model = Satrec()
@@ -70,7 +72,7 @@ class ElementSet(Described):
         from sgp4.api import SGP4_ERRORS
 
         own_words = SGP4_ERRORS.get(int(error), f"error {error}")
-        return InputError(f"{self.name}: SGP4 refuses the element set of epoch {_iso(self.epoch)}{when}: {own_words}")
+        return InputError(f"{self.name}: SGP4 refuses the element set of epoch {iso(self.epoch)}{when}: {own_words}")
 
 
 State = tuple[float, float, float, float, float, float]
@@ -84,8 +86,14 @@ class Segment(Described):
     degree: Annotated[int, Field(ge=1, le=25)] = 7
     usable_from: AwareDatetime
     usable_to: AwareDatetime
-    moment: Annotated[tuple[AwareDatetime, ...], Field(min_length=2)]
-    state: Annotated[tuple[State, ...], Field(min_length=2)]
+    moment: Annotated[tuple[AwareDatetime, ...], Field(min_length=3)]
+    state: Annotated[tuple[State, ...], Field(min_length=3)]
+
+    @property
+    def interval_errors_km(self) -> np.ndarray:
+        """About how far off the positions in the middle between states may be, 0 where they are of no use, (n - 1,)."""
+        useful = [later > self.usable_from and earlier < self.usable_to for earlier, later in pairwise(self.moment)]
+        return np.where(useful, errors_km(self), 0.0)
 
 
 class Ephemeris(Described):
@@ -105,6 +113,11 @@ class Ephemeris(Described):
         """Semi-major axis [km], eccentricity, inclination [deg] of the middle state of the first segment, two-body."""
         segment = self.segment[0]
         return two_body(segment.state[len(segment.state) // 2], segment.frame)
+
+    @property
+    def interpolation_error_km(self) -> float:
+        """The greatest error to expect between states [km], from states left out (see `interpolation.errors_km`)."""
+        return max(float(segment.interval_errors_km.max()) for segment in self.segment)
 
     @property
     def mean_motion_rev_day(self) -> float:
@@ -134,5 +147,5 @@ def two_body(state: State, frame: str) -> tuple[float, float, float]:
     return 1 / per_axis if per_axis else math.inf, eccentricity, inclination_deg
 
 
-def _iso(moment: datetime) -> str:
+def iso(moment: datetime) -> str:
     return moment.astimezone(UTC).strftime("%Y-%m-%dT%H:%M:%S.%fZ")

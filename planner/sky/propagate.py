@@ -4,6 +4,7 @@ import numpy as np
 
 from planner.errors import InputError
 from planner.mission.elements import ElementSet, Ephemeris
+from planner.mission.interpolation import interpolate
 from planner.sky.clock import Clock
 from planner.sky.frames import fixed_from_teme, fixed_position_km, inertial_velocity_km_s
 from planner.units import EARTH_GM_KM3_S2, dot
@@ -85,28 +86,3 @@ def _interpolated(clock: Clock, name: str, ephemeris: Ephemeris, time_s):
             f" {first:%Y-%m-%dT%H:%M:%SZ} to {last:%Y-%m-%dT%H:%M:%SZ}, and no state at {gap}"
         )
     return position_km, velocity_km_s, known
-
-
-def interpolate(segment, at_s, state, time_s):
-    """Position (m, 3) at `time_s` (m,) between states (k, 6) at `at_s` (k,), at the degree the message asks for.
-
-    Lagrange's polynomial through degree + 1 positions, or Hermite's through (degree + 1) / 2 positions and velocities,
-    around each moment (Davis, Interpolation and Approximation, from memory).
-    """
-    hermite = segment.interpolation == "HERMITE"
-    degree = 1 if segment.interpolation == "LINEAR" else segment.degree
-    points = min(max((degree + 1) // 2 if hermite else degree + 1, 2), len(at_s))
-    first = np.clip(np.searchsorted(at_s, time_s) - points // 2, 0, len(at_s) - points)
-    nodes = at_s[first[:, None] + np.arange(points)] - time_s[:, None]  # (m, points), the moment itself at 0
-    position_km = np.zeros((len(time_s), 3))
-    for j in range(points):
-        gaps = nodes[:, [j]] - np.delete(nodes, j, axis=1)
-        basis = np.prod(-np.delete(nodes, j, axis=1) / gaps, axis=1)
-        own = state[first + j]
-        if hermite:
-            lever = -nodes[:, j]
-            weight = (1 - 2 * np.sum(1 / gaps, axis=1) * lever) * basis**2
-            position_km += weight[:, None] * own[:, :3] + (lever * basis**2)[:, None] * own[:, 3:]
-        else:
-            position_km += basis[:, None] * own[:, :3]
-    return position_km
