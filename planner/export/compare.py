@@ -1,19 +1,23 @@
-"""What changed between two issues of a week: contacts gained, lost and moved, megabits, lowest charge, inputs."""
+"""What changed between two issues of a week: contacts gained, lost, moved, sent otherwise; megabits, charge, inputs."""
 
 import json
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from datetime import datetime
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 
 from planner.errors import InputError
-from planner.export.contacts import utc_text
+from planner.export.contacts import plain_number, utc_text
 from planner.export.folder import INDEX, verify_set
 from planner.mission.table import read_table
+from planner.mission.text import read_bytes, shown
 
-COMPARED = ("pass_id", "satellite", "station", "mode", "tx_on_utc", "tx_off_utc", "volume_mbit")
+CARRIER = ("frequency_mhz", "symbol_rate_mbaud", "polarisation")
+COMPARED = ("pass_id", "station", "mode", "tx_on_utc", "tx_off_utc", "volume_mbit", "modcods", *CARRIER)
+MOST_PCT = 1e6  # no charge is that high; beyond it no figure is worth printing
 HEADINGS = ("change", "pass", "station", "mode", "on air", "Mbit")
 
 
@@ -27,6 +31,8 @@ class Flight:
     tx_on: datetime
     tx_off: datetime
     volume_mbit: float
+    modcods: str  # each with the moment from which it is on air
+    carrier: str
 
     @property
     def on_air(self) -> str:
@@ -35,11 +41,17 @@ class Flight:
 
 @dataclass(frozen=True)
 class Comparison:
-    """`moved` pairs (before, after); figures as (before, after), None where a summary lacks them."""
+    """`moved` and `sent_otherwise` pair (before, after); figures as (before, after), None where a summary lacks them.
+
+    Sent otherwise is what stands at its time while the station's receiver must be set anew: MODCODs, carrier, rate or
+    polarisation. Flown is what ended before the new week starts; the volume before is without it.
+    """
 
     gained: tuple[Flight, ...]
     lost: tuple[Flight, ...]
     moved: tuple[tuple[Flight, Flight], ...]
+    sent_otherwise: tuple[tuple[Flight, Flight], ...]
+    flown: tuple[Flight, ...]
     unchanged: int
     volume_mbit: tuple[float, float]
     soc_min_pct: tuple[float | None, float | None]
@@ -48,14 +60,17 @@ class Comparison:
     @property
     def is_same(self) -> bool:
         """The operator has nothing to do anew."""
-        return not (self.gained or self.lost or self.moved)
+        return not (self.gained or self.lost or self.moved or self.sent_otherwise)
 
     def headline(self) -> str:
         """The difference in one line."""
+        flown = f"; {len(self.flown)} ended before the new start" if self.flown else ""
         if self.is_same:
-            return f"no contact changed: all {self.unchanged} stand" + self._charge()
+            return f"no contact changed: all {self.unchanged} stand" + flown + self._charge()
+        otherwise = f"{len(self.sent_otherwise)} sent otherwise, " if self.sent_otherwise else ""
         counts = (
-            f"{len(self.gained)} gained, {len(self.lost)} lost, {len(self.moved)} moved, {self.unchanged} unchanged"
+            f"{len(self.gained)} gained, {len(self.lost)} lost, {len(self.moved)} moved,"
+            f" {otherwise}{self.unchanged} unchanged{flown}"
         )
         before, after = self.volume_mbit
         return f"{counts}; {before:.0f} to {after:.0f} Mbit ({after - before:+.0f})" + self._charge()
@@ -69,8 +84,10 @@ class Comparison:
             on_s, off_s = (f"{shift.total_seconds():+.0f} s" for shift in shifts)
             by = f"both {on_s}" if on_s == off_s else f"on {on_s}, off {off_s}"
             on_air = f"{before.on_air} → {after.on_air} ({by})"
-            row = _row("moved", after, f"{after.volume_mbit - before.volume_mbit:+.0f}", on_air)
-            rows.append((after.tx_on, row))
+            rows.append((after.tx_on, _row("moved", after, _difference(before, after), on_air)))
+        for before, after in self.sent_otherwise:
+            on_air = f"{after.on_air}: {_settings(before, after)} → {_settings(after, before)}"
+            rows.append((after.tx_on, _row("sent otherwise", after, _difference(before, after), on_air)))
         return [row for _, row in sorted(rows)]
 
     def _charge(self) -> str:
@@ -83,7 +100,7 @@ def compare_sets(old_folder, new_folder) -> Comparison:
 
     Raises
     ------
-    InputError : a folder holds no whole set (each fault told), or contacts that cannot be read
+    InputError : a folder holds no whole set (each fault told), or contacts or a summary that cannot be read
     """
     folders = old_folder, new_folder
     faults = [
@@ -104,14 +121,20 @@ def compare_plans(old, new) -> Comparison:
 
 def _compare(old: Iterable[Flight], new: Iterable[Flight], old_summary: Mapping, new_summary: Mapping) -> Comparison:
     before, after = _by_key(old), _by_key(new)
+    start = datetime.fromisoformat(new_summary["start"]) if "start" in new_summary else None
+    gone = [flight for key, flight in before.items() if key not in after]
+    flown = tuple(flight for flight in gone if start is not None and flight.tx_off <= start)
     common = [(before[key], after[key]) for key in before if key in after]
-    moved = tuple((a, b) for a, b in common if (a.tx_on, a.tx_off) != (b.tx_on, b.tx_off))
+    standing = [(a, b) for a, b in common if (a.tx_on, a.tx_off) == (b.tx_on, b.tx_off)]
+    otherwise = tuple((a, b) for a, b in standing if _settings(a, b) != _settings(b, a))
     return Comparison(
         gained=tuple(flight for key, flight in after.items() if key not in before),
-        lost=tuple(flight for key, flight in before.items() if key not in after),
-        moved=moved,
-        unchanged=len(common) - len(moved),
-        volume_mbit=(_total_mbit(before.values()), _total_mbit(after.values())),
+        lost=tuple(flight for flight in gone if start is None or flight.tx_off > start),
+        moved=tuple((a, b) for a, b in common if (a.tx_on, a.tx_off) != (b.tx_on, b.tx_off)),
+        sent_otherwise=otherwise,
+        flown=flown,
+        unchanged=len(standing) - len(otherwise),
+        volume_mbit=(_total_mbit(before.values()) - _total_mbit(flown), _total_mbit(after.values())),
         soc_min_pct=(old_summary.get("soc_min_pct"), new_summary.get("soc_min_pct")),
         inputs=_changed_inputs(old_summary.get("inputs", {}), new_summary.get("inputs", {})),
     )
@@ -130,27 +153,87 @@ def _total_mbit(flights: Iterable[Flight]) -> float:
     return float(sum(flight.volume_mbit for flight in flights))
 
 
-def _changed_inputs(old, new) -> tuple[str, ...]:
-    old, new = dict(old), dict(new)
-    return tuple(sorted(name for name in {*old, *new} if old.get(name) != new.get(name)))
+def _settings(flight: Flight, other: Flight) -> str:
+    """What a receiver is set to for one flight, as far as it is not the same for the other."""
+    coding = " ".join(_coding(segment) for segment in flight.modcods.split())
+    return ", ".join(
+        text
+        for text, same in ((coding, flight.modcods == other.modcods), (flight.carrier, flight.carrier == other.carrier))
+        if not same
+    )
+
+
+def _coding(segment: str) -> str:
+    """`8PSK_3/4@2026-12-07T01:01:40.000Z` as `8PSK_3/4@01:01:40Z`; anything else as it is."""
+    name, at, since = segment.rpartition("@")
+    return f"{name}@{since[11:19]}Z" if at and len(since) == len("2026-12-07T01:01:40.000Z") else segment
+
+
+def _changed_inputs(old: Mapping, new: Mapping) -> tuple[str, ...]:
+    return tuple(sorted(_printable(name) for name in {*old, *new} if old.get(name) != new.get(name)))
 
 
 def _read_set(folder: Path) -> tuple[list[Flight], Mapping]:
-    rows = [row for _, row in read_table(folder / "contacts.csv", COMPARED)]
-    return _flights(pd.DataFrame(rows, columns=list(COMPARED))), json.loads((folder / INDEX).read_bytes())
+    path = folder / "contacts.csv"
+    rows = [row for _, row in read_table(path, COMPARED)]
+    try:
+        summary = json.loads(read_bytes(folder / INDEX))
+        faults = [f"{folder / INDEX}: {fault}" for fault in _summary_faults(summary)]
+    except RecursionError:
+        faults = [f"{folder / INDEX}: is nested too deeply"]
+    if faults:
+        raise InputError(*faults)
+    return _flights(pd.DataFrame(rows, columns=list(COMPARED)), str(path)), summary
 
 
-def _flights(contacts: pd.DataFrame) -> list[Flight]:
+def _summary_faults(summary: Mapping) -> Iterator[str]:
+    """What of a summary read from disk is not as this tool writes it, of what is compared."""
+    lowest, inputs, start = summary.get("soc_min_pct"), summary.get("inputs", {}), summary.get("start")
+    if lowest is not None and not (type(lowest) in (int, float) and abs(lowest) < MOST_PCT):
+        yield f"soc_min_pct: must be a number of percent, got {shown(lowest)}"
+    if not (isinstance(inputs, dict) and all(isinstance(digest, str) for digest in inputs.values())):
+        yield f"inputs: must be a table of file names and their SHA-256, got {shown(inputs)}"
+    if "start" in summary and not _is_moment(start):
+        yield f"start: must be a time with a zone, such as 2026-12-07T00:00:00+00:00, got {shown(start)}"
+
+
+def _is_moment(text) -> bool:
+    try:
+        return datetime.fromisoformat(text).tzinfo is not None
+    except (TypeError, ValueError):
+        return False
+
+
+def _flights(contacts: pd.DataFrame, place: str = "contacts") -> list[Flight]:
     try:
         on, off = (
             [datetime.fromisoformat(text) for text in utc_text(contacts[key])] for key in ("tx_on_utc", "tx_off_utc")
         )
-        volumes = contacts["volume_mbit"].astype(float)
-    except ValueError as fault:
-        raise InputError(f"contacts: times and volumes must be as this tool writes them: {fault}") from None
+        volumes, mhz, mbaud = (_finite(contacts[key]) for key in ("volume_mbit", "frequency_mhz", "symbol_rate_mbaud"))
+    except (ValueError, OverflowError) as fault:
+        raise InputError(f"{place}: times and figures must be as this tool writes them: {fault}") from None
+    settings = zip(mhz, mbaud, contacts["polarisation"], strict=True)
+    carriers = [f"{plain_number(f)} MHz {plain_number(rate)} Mbaud {turn}" for f, rate, turn in settings]
     columns = (contacts["pass_id"], contacts["station"], contacts["mode"], on, off, volumes)
-    return [Flight(*row) for row in zip(*columns, strict=True)]
+    return [Flight(*row) for row in zip(*columns, contacts["modcods"], carriers, strict=True)]
+
+
+def _finite(column: pd.Series) -> list[float]:
+    figures = column.astype(float)
+    if not np.isfinite(figures).all():
+        raise ValueError(f"{column.name} must be finite numbers")
+    return figures.tolist()
+
+
+def _difference(before: Flight, after: Flight) -> str:
+    return f"{after.volume_mbit - before.volume_mbit:+.0f}"
 
 
 def _row(change: str, flight: Flight, mbit: str, on_air: str = "") -> tuple[str, ...]:
-    return (change, flight.pass_id, flight.station, flight.mode, on_air or flight.on_air, mbit)
+    texts = (change, flight.pass_id, flight.station, flight.mode, on_air or flight.on_air, mbit)
+    return tuple(map(_printable, texts))
+
+
+def _printable(text: str) -> str:
+    """Names may come from a file that somebody changed: what would steer a terminal is escaped."""
+    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in text)
