@@ -23,7 +23,7 @@ HEADINGS = ("change", "pass", "station", "mode", "on air", "Mbit")
 
 @dataclass(frozen=True)
 class Flight:
-    """A planned contact, as far as a comparison needs it."""
+    """A planned contact, as far as a comparison needs it; what is sent is None where a table does not say."""
 
     pass_id: str
     station: str
@@ -31,8 +31,8 @@ class Flight:
     tx_on: datetime
     tx_off: datetime
     volume_mbit: float
-    modcods: str  # each with the moment from which it is on air
-    carrier: str
+    modcods: str | None  # each with the moment from which it is on air
+    carrier: str | None
 
     @property
     def on_air(self) -> str:
@@ -155,12 +155,12 @@ def _total_mbit(flights: Iterable[Flight]) -> float:
 
 def _settings(flight: Flight, other: Flight) -> str:
     """What a receiver is set to for one flight, as far as it is not the same for the other."""
-    coding = " ".join(_coding(segment) for segment in flight.modcods.split())
-    return ", ".join(
-        text
-        for text, same in ((coding, flight.modcods == other.modcods), (flight.carrier, flight.carrier == other.carrier))
-        if not same
-    )
+    pairs = (_codings(flight), _codings(other)), (flight.carrier, other.carrier)
+    return ", ".join(own for own, its in pairs if None not in (own, its) and own != its)
+
+
+def _codings(flight: Flight) -> str | None:
+    return None if flight.modcods is None else " ".join(map(_coding, flight.modcods.split()))
 
 
 def _coding(segment: str) -> str:
@@ -209,13 +209,21 @@ def _flights(contacts: pd.DataFrame, place: str = "contacts") -> list[Flight]:
         on, off = (
             [datetime.fromisoformat(text) for text in utc_text(contacts[key])] for key in ("tx_on_utc", "tx_off_utc")
         )
-        volumes, mhz, mbaud = (_finite(contacts[key]) for key in ("volume_mbit", "frequency_mhz", "symbol_rate_mbaud"))
+        volumes = _finite(contacts["volume_mbit"])
+        modcods, carriers = _sent(contacts)
     except (ValueError, OverflowError) as fault:
         raise InputError(f"{place}: times and figures must be as this tool writes them: {fault}") from None
-    settings = zip(mhz, mbaud, contacts["polarisation"], strict=True)
-    carriers = [f"{plain_number(f)} MHz {plain_number(rate)} Mbaud {turn}" for f, rate, turn in settings]
-    columns = (contacts["pass_id"], contacts["station"], contacts["mode"], on, off, volumes)
-    return [Flight(*row) for row in zip(*columns, contacts["modcods"], carriers, strict=True)]
+    columns = (contacts["pass_id"], contacts["station"], contacts["mode"], on, off, volumes, modcods, carriers)
+    return [Flight(*row) for row in zip(*columns, strict=True)]
+
+
+def _sent(contacts: pd.DataFrame) -> tuple[Iterable[str | None], Iterable[str | None]]:
+    """MODCODs and carrier of each contact; None for each where the table, a sketch, is without them."""
+    if not {"modcods", *CARRIER} <= set(contacts.columns):
+        return (None,) * len(contacts), (None,) * len(contacts)
+    settings = zip(*(_finite(contacts[name]) for name in CARRIER[:2]), contacts[CARRIER[2]], strict=True)
+    carriers = [f"{plain_number(mhz)} MHz {plain_number(mbaud)} Mbaud {turn}" for mhz, mbaud, turn in settings]
+    return contacts["modcods"], carriers
 
 
 def _finite(column: pd.Series) -> list[float]:

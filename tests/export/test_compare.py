@@ -73,6 +73,12 @@ def test_what_is_sent_otherwise_at_the_same_time_is_a_change(tmp_path, column, v
     assert (row[0], row[4], row[5]) == ("sent otherwise", f"07 Dec 02:00:00–02:05:00Z: {told}", "-500")
 
 
+def test_a_table_that_does_not_say_what_is_sent_is_compared_by_the_rest():
+    sketch = plan(contacts(1, 2).drop(columns=["modcods", "frequency_mhz"]))
+    assert compare_plans(sketch, plan(contacts(1, 2))).is_same
+    assert compare_plans(plan(contacts(1, 2)), sketch).unchanged == 2
+
+
 def test_what_ended_before_the_new_start_has_flown_and_is_not_lost(tmp_path):
     """A contact that ends as the new week starts has flown, one that ends a minute later is lost."""
     old = plan(contacts(1, 2, 3, 4), start="2026-12-07T00:00:00+00:00")
