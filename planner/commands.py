@@ -4,7 +4,9 @@ import json
 import os
 import platform
 import time
-from datetime import UTC, datetime
+from collections import defaultdict
+from collections.abc import Iterator
+from datetime import UTC, datetime, timedelta
 from pathlib import Path
 
 from planner import printing
@@ -15,6 +17,7 @@ from planner.printing import Tell, counted
 
 DONE, NO = 0, 1
 MOST_STALE_SHOWN = 12
+FLOWN_ALREADY = "flown already? --freeze-until UTC leaves contacts that power on before unjudged"
 
 
 def passes(mission: Mission, csv: str | None, tell: Tell) -> int:
@@ -142,7 +145,7 @@ def show_audit(mission: Mission, contacts: str, as_json: bool, freeze_until: dat
     if as_json:
         printing.say(json.dumps(verdict.as_dict(), indent=2))
         return DONE if verdict.safe else NO
-    for text in verdict.texts():
+    for text in _broken(verdict):
         printing.say(f"BROKEN  {text}")
     for figure in verdict.stale[:MOST_STALE_SHOWN]:
         printing.say(f"stale   {figure.text}")
@@ -153,8 +156,42 @@ def show_audit(mission: Mission, contacts: str, as_json: bool, freeze_until: dat
         stale = f"; {counted(len(verdict.stale), 'stale figure')}" if verdict.stale else ""
         printing.say(f"{counted(count, 'contact')} keep{'s' if count == 1 else ''} every limit{stale}")
         return DONE
+    if freeze_until is None and _judged_by_newer_elements(verdict):
+        printing.say(f"hint    {FLOWN_ALREADY}")
     printing.say(f"UNSAFE: {counted(len(verdict.faults), 'rule')} broken, {counted(count, 'contact')}")
     return NO
+
+
+def _broken(verdict) -> Iterator[str]:
+    """A line for each fault; a battery's limit that breaks outside contacts again and again gets two in all."""
+    alike = defaultdict(list)
+    for number, fault in enumerate(verdict.faults):
+        by_limit = fault.satellite and fault.session is None
+        alike[(fault.satellite, fault.rule) if by_limit else number].append(number)
+    texts = verdict.texts()
+    for first, *rest in alike.values():
+        yield texts[first]
+        if rest:
+            yield _again([verdict.faults[number] for number in rest], verdict.flown.week.sky.clock.iso)
+
+
+def _again(rest: list, iso) -> str:
+    """How often more one limit breaks, when first and where worst."""
+    worst = max(rest, key=lambda fault: abs(fault.value - fault.bound))
+    return (
+        f"{worst.satellite}: {worst.rule}: {counted(len(rest), 'more time')} (--json lists all), from"
+        f" {iso(rest[0].time_s)}; worst {worst.value:.2f} {worst.unit} from {iso(worst.time_s)}"
+    )
+
+
+def _judged_by_newer_elements(verdict) -> bool:
+    """Whether every contact at fault ended before the epoch of the elements it is judged by."""
+    mission = verdict.flown.week.mission
+    broken = [fault.session for fault in verdict.faults if fault.session is not None and not fault.satellite]
+    return bool(broken) and all(
+        mission.start + timedelta(seconds=session.tx_off_s) < mission.satellite(session.satellite).elements.epoch
+        for session in broken
+    )
 
 
 def show_affordability(

@@ -239,6 +239,46 @@ def test_tx_on_before_aos_fails_the_audit_with_the_place_and_the_figure(here, we
     assert json.loads(capsys.readouterr().out)["safe"] is False
 
 
+def test_a_limit_broken_orbit_after_orbit_is_told_twice_in_words_and_wholly_as_json(here, week, capsys):
+    text = (here / "missions" / "marshlight.toml").read_text()
+    high = text.replace("soc_floor_pct = 65.0", "soc_floor_pct = 88.0").replace(
+        "soc_end_pct = 80.0", "soc_end_pct = 88.0"
+    )
+    (here / "missions" / "high.toml").write_text(high)
+    words = ["audit", "missions/high.toml", "week/contacts.csv"]
+    assert main([*words, "--json"]) == 1
+    faults = json.loads(capsys.readouterr().out)["faults"]
+    outside = [fault for fault in faults if fault["rule"] == "SoC floor" and fault["contact_id"] is None]
+    first, *rest = outside
+    assert len(rest) > 1
+    assert main(words) == 1
+    *said, unsafe = capsys.readouterr().out.splitlines()
+    told = [line for line in said if line.startswith("BROKEN  MARSHLIGHT-1: SoC floor: ")]
+    worst = min(rest, key=lambda fault: fault["value"])
+    assert told == [
+        f"BROKEN  {first['text']}",
+        f"BROKEN  MARSHLIGHT-1: SoC floor: {len(rest)} more times (--json lists all), from {rest[0]['time_utc']};"
+        f" worst {worst['value']:.2f} % from {worst['time_utc']}",
+    ]
+    assert len([line for line in said if line.startswith("BROKEN")]) == len(faults) - len(rest) + 1
+    assert unsafe.startswith(f"UNSAFE: {len(faults)} rules broken, ")
+
+
+@pytest.mark.parametrize(("epoch", "hinted"), [("2026-12-07T12:00:00", True), ("2026-12-07T00:30:00", False)])
+def test_contacts_that_newer_elements_put_beside_their_pass_may_have_flown(here, week, capsys, epoch, hinted):
+    """All of them before the epoch, or none; they end by then or begin after it."""
+    elements = (here / "tle_samples" / "marshlight.omm.csv").read_text()
+    (here / "tle_samples" / "newer.csv").write_text(elements.replace("2026-12-06T18:00:00", epoch))
+    text = (here / "missions" / "marshlight.toml").read_text()
+    (here / "missions" / "newer.toml").write_text(text.replace("marshlight.tle", "newer.csv"))
+    words = ["audit", "missions/newer.toml", "week/contacts.csv"]
+    hint = "hint    flown already? --freeze-until UTC leaves contacts that power on before unjudged"
+    assert main(words) == 1
+    assert (hint in capsys.readouterr().out.splitlines()) == hinted
+    main([*words, "--freeze-until", "2026-12-07T12:00:00Z"])
+    assert hint not in capsys.readouterr().out
+
+
 def test_no_week_is_possible(here, capsys):
     path = here / "missions" / "marshlight.toml"
     (here / "missions" / "tired.toml").write_text(path.read_text().replace("soc_pct = 92.0", "soc_pct = 60.0"))
