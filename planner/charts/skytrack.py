@@ -6,6 +6,7 @@ import numpy as np
 from matplotlib.figure import Figure
 
 from planner.charts import style
+from planner.charts.beside import place_beside
 from planner.mission.contacts import Session
 from planner.mission.models import Mission
 from planner.sky import Sky
@@ -15,8 +16,8 @@ from planner.sky.sun import sun_position_km
 POINTS = ("N", "NE", "E", "SE", "S", "SW", "W", "NW")
 ALL_ROUND_DEG = np.linspace(0.0, 360.0, 361)
 SQUARE_IN = (6.4, 6.9)
-ASIDE_PT, LABEL_PT = 8.0, (68.0, 12.0)  # of a time beside its mark: distance, width and height
-COVERED_PT = 300.0  # how far a label may jut out of the dome rather than cover all of the track
+SIDE_PT, TOP_PT, TITLE_PT, LEGEND_PT = 28.0, 26.0, 26.0, 40.0  # around the dome: directions, title, legend
+WIDE_PT = 300.0  # where three entries of the legend stand side by side
 
 
 def skytrack_figure(
@@ -27,6 +28,7 @@ def skytrack_figure(
     session: Session | None = None,
     time_zone: tzinfo = UTC,
     size_in=SQUARE_IN,
+    titled: bool = True,
 ) -> Figure:
     """Azimuth and elevation of a pass on the sky dome, north up and east to the right as on a map.
 
@@ -35,17 +37,21 @@ def skytrack_figure(
     pass_id : of `sky.passes`
     session : the planned transmission, drawn thick, when there is one
     time_zone : of the times written along the track
+    titled : whether the finding stands over it
 
     Raises
     ------
     KeyError : no such pass in the span
     """
     with style.on_paper():
-        figure = style.new_figure(size_in, title=finding(mission, sky, pass_id))
+        figure = style.new_figure(size_in, title=finding(mission, sky, pass_id) if titled else "")
         figure.set_layout_engine(None)
-        axes = figure.add_axes((0.09, 0.12, 0.82, 0.76), projection="polar")
+        width_pt, height_pt = 72 * size_in[0], 72 * size_in[1]
+        aside, below = SIDE_PT / width_pt, (TOP_PT + LEGEND_PT) / height_pt
+        above = (TOP_PT + TITLE_PT * titled) / height_pt
+        axes = figure.add_axes((aside, below, 1 - 2 * aside, 1 - above - below), projection="polar")
         draw_skytrack(axes, mission, sky, pass_id, session, time_zone)
-        figure.legend(loc="lower center", ncols=3)
+        figure.legend(loc="lower center", ncols=3 if width_pt > WIDE_PT else 2)
     return figure
 
 
@@ -119,40 +125,21 @@ def _draw_track(axes, sky: Sky, row: int, session: Session | None) -> None:
 
 
 def _write_times(axes, sky: Sky, row: int, time_zone: tzinfo) -> None:
+    """A mark and a time where the satellite rises, is highest and sets."""
     samples, passes = sky.samples.of(row), sky.passes
     time_s = sky.samples.time_s[samples]
     azimuth, zenith = np.radians(sky.samples.azimuth_deg[samples]), 90 - sky.samples.elevation_deg[samples]
-    track_pt = (zenith / 90 * _dome_radius_pt(axes))[:, None] * np.stack([np.sin(azimuth), np.cos(azimuth)], axis=-1)
-    marks = {"AOS": passes.aos_s[row], "TCA": passes.tca_s[row], "LOS": passes.los_s[row]}
-    for name, moment_s in marks.items():
+    marks = {"AOS": (passes.aos_s[row], "^"), "TCA": (passes.tca_s[row], "s"), "LOS": (passes.los_s[row], "v")}
+    texts = []
+    for name, (moment_s, mark) in marks.items():
         k = int(np.argmin(np.abs(time_s - moment_s)))
-        mark = {"AOS": "^", "TCA": "s", "LOS": "v"}[name]
         axes.plot([azimuth[k]], [zenith[k]], marker=mark, ms=7, color=style.INK, zorder=6)
         zone = "Z" if time_zone is UTC else ""
         when = sky.clock.datetime(moment_s + 0.5).astimezone(time_zone)  # to the nearest second
-        across, up = _free_side(track_pt, k, _dome_radius_pt(axes))
-        axes.annotate(
-            f"{name} {when:%H:%M:%S}{zone}", (azimuth[k], zenith[k]), xytext=(ASIDE_PT * across, up),
-            textcoords="offset points", ha="left" if across > 0 else "right", va="center", zorder=7,
-            bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none", "alpha": 0.75},
+        text = axes.annotate(
+            f"{name} {when:%H:%M:%S}{zone}", (azimuth[k], zenith[k]), xytext=(0, 0), textcoords="offset points",
+            va="center", zorder=7, bbox={"boxstyle": "round,pad=0.15", "facecolor": "white", "edgecolor": "none",
+            "alpha": 0.75},
         )  # fmt: skip
-
-
-def _dome_radius_pt(axes) -> float:
-    width_in, height_in = axes.get_position().size * axes.figure.get_size_inches()
-    return 36.0 * float(min(width_in, height_in))
-
-
-def _free_side(track_pt: np.ndarray, k: int, radius_pt: float) -> tuple[int, float]:
-    """Where the label of point `k` covers least of the track (n, 2) and juts least out of the dome: side, points up."""
-
-    def cost(side: tuple[int, float]) -> float:
-        across, up = side
-        near, far = sorted((ASIDE_PT * across, (ASIDE_PT + LABEL_PT[0]) * across))
-        away = track_pt - track_pt[k]
-        inside = (near <= away[:, 0]) & (away[:, 0] <= far) & (np.abs(away[:, 1] - up) <= LABEL_PT[1] / 2)
-        corners = track_pt[k] + [[x, up + y] for x in (near, far) for y in (-LABEL_PT[1] / 2, LABEL_PT[1] / 2)]
-        beyond_pt = np.maximum(np.linalg.norm(corners, axis=1) - radius_pt, 0.0).max()
-        return float(np.mean(inside) * COVERED_PT + beyond_pt)
-
-    return min(((across, up) for up in (0.0, -12.0, 12.0, -22.0, 22.0) for across in (-1, 1)), key=cost)
+        texts.append(text)
+    place_beside(axes, texts, np.column_stack([azimuth, zenith]))

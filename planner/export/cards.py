@@ -38,7 +38,7 @@ CAUTIONS = (
     "The antenna moves by remote control: nobody at or in front of it; keep to the station's exposure limits.",
 )
 NO_BREAK = "\u00a0"
-PICTURE_IN, PICTURE_DPI = (4.3, 5.0), 150  # of the sky on the page for a browser
+PICTURE_IN, PICTURE_DPI = (3.1, 3.5), 220  # of the sky on the page for a browser, as large as it is printed
 Rows = tuple[tuple[str, str], ...]
 Moments = tuple[tuple[str, str, str, str], ...]
 
@@ -83,7 +83,7 @@ def card_files(
     for name, row in zip(names, shown.itertuples(), strict=True):
         card = make_card(mission, sky, row, issue)
         yield f"{name}.pdf", pdf_bytes([card_figure(card, mission, sky)], f"{card.title}, {card.subtitle}")
-        sky_dome = skytrack_figure(mission, sky, row.pass_id, session=card.session, size_in=PICTURE_IN)
+        sky_dome = skytrack_figure(mission, sky, row.pass_id, session=card.session, size_in=PICTURE_IN, titled=False)
         picture = base64.b64encode(png_bytes(sky_dome, dpi=PICTURE_DPI)).decode()
         yield f"{name}.html", card_html(card, picture).encode()
 

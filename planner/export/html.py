@@ -36,7 +36,7 @@ img { max-width: 100%; }
 h2 { break-after: avoid; } li, .caution { break-inside: avoid; }
 @media print {
   body { margin: 0; padding: 0; max-width: none; font-size: 9.5pt; line-height: 1.3; }
-  h2 { margin-top: .7em; } .side img { flex-basis: 280px; }
+  h2 { margin-top: .7em; } .side img { flex-basis: 3.1in; }
   img.week { display: block; max-height: 150mm; margin: 0 auto; } h2.list { break-before: page; }
 }
 </style>

@@ -1,5 +1,6 @@
 """One pass as the link and as the dish sees it: titles and marks against the sky they were drawn from."""
 
+from itertools import combinations
 from types import SimpleNamespace
 
 import numpy as np
@@ -7,7 +8,8 @@ import pytest
 from made_up_week import mission_and_sky
 
 from planner.charts.contact import contact_figure
-from planner.charts.skytrack import finding, skytrack_figure
+from planner.charts.skytrack import SQUARE_IN, finding, skytrack_figure
+from planner.export.cards import PICTURE_IN
 from planner.link.coding import modcods_of
 from planner.link.table import LinkOption
 from planner.mission.contacts import Session
@@ -145,15 +147,32 @@ def test_the_sun_is_drawn_only_when_it_is_up(mission, sky):
     assert shown == {True, False}
 
 
-def test_times_along_the_track_cover_neither_the_track_nor_the_directions(sky, mission):
+@pytest.mark.parametrize("size_in", [SQUARE_IN, PICTURE_IN])
+def test_times_along_the_track_cover_neither_the_track_nor_the_sun_nor_the_directions(sky, mission, size_in):
     for pass_id in sky.passes.pass_id[::9]:
-        figure = skytrack_figure(mission, sky, str(pass_id))
+        figure = skytrack_figure(mission, sky, str(pass_id), size_in=size_in, titled=False)
         figure.draw_without_rendering()
         [axes] = figure.axes
         [track] = [line for line in axes.lines if line.get_label() == "pass"]
         points = axes.transData.transform(np.column_stack([track.get_xdata(), track.get_ydata()]))
+        suns = [line.get_window_extent() for line in axes.lines if line.get_marker() == "o"]
+        others = [*suns, *(label.get_window_extent() for label in axes.get_xticklabels())]
         for text in axes.texts:
             box = text.get_window_extent()
             covered = sum(box.contains(*point) for point in points)
             assert covered <= 0.05 * len(points), text.get_text()  # a twentieth, at the mark itself
-            assert not any(box.overlaps(label.get_window_extent()) for label in axes.get_xticklabels())
+            assert not any(box.overlaps(other) for other in others), (pass_id, text.get_text())
+
+
+def test_times_of_one_pass_stand_apart_and_on_the_picture(sky, mission):
+    for pass_id in sky.passes.pass_id[::9]:
+        figure = skytrack_figure(mission, sky, str(pass_id), size_in=PICTURE_IN, titled=False)
+        figure.draw_without_rendering()
+        boxes = [text.get_window_extent() for text in figure.axes[0].texts]
+        assert not any(a.overlaps(b) for a, b in combinations(boxes, 2)), pass_id
+        assert all(figure.bbox.x0 <= box.x0 and box.x1 <= figure.bbox.x1 for box in boxes), pass_id
+
+
+def test_a_picture_beside_a_title_of_its_own_has_none(sky, mission, session):
+    assert skytrack_figure(mission, sky, session.pass_id, titled=False).get_suptitle() == ""
+    assert skytrack_figure(mission, sky, session.pass_id).get_suptitle() == finding(mission, sky, session.pass_id)
