@@ -1,5 +1,8 @@
 """Every notebook runs top to bottom, and is kept without outputs."""
 
+import ast
+import html
+
 import nbformat
 import pytest
 from bench_examples import ROOT
@@ -7,6 +10,7 @@ from nbclient import NotebookClient
 
 NOTEBOOKS = sorted((ROOT / "notebooks").glob("*.ipynb"))
 LONGEST_S = 300
+PANDAS_CUTS_AT = 50  # letters of a cell, unless told otherwise (pandas' documentation of display.max_colwidth)
 
 
 @pytest.mark.parametrize("path", NOTEBOOKS, ids=lambda path: path.stem)
@@ -29,11 +33,29 @@ def test_the_week_runs_from(folder):
     assert "application/vnd.jupyter.widget-view+json" in notebook.cells[-2].outputs[0]["data"]
 
 
-@pytest.mark.parametrize("name", ["can_we_afford_it", "which_station_next"])
-def test_runs_top_to_bottom(name):
-    notebook = nbformat.read(ROOT / "notebooks" / f"{name}.ipynb", as_version=4)
+def run(notebook) -> list[dict]:
+    """What each cell shows, in every form that it has."""
     NotebookClient(notebook, timeout=LONGEST_S, resources={"metadata": {"path": str(ROOT / "notebooks")}}).execute()
-    shown = [output["data"] for cell in notebook.cells for output in cell.get("outputs", ()) if "data" in output]
+    return [output["data"] for cell in notebook.cells for output in cell.get("outputs", ()) if "data" in output]
+
+
+def no_words_for_what_python_cannot_show(shown: list[dict]) -> bool:
     in_words_only = [data["text/plain"] for data in shown if data.keys() == {"text/plain"}]
+    return not any(words.startswith("<") for words in in_words_only)
+
+
+def test_which_station_next_runs_top_to_bottom():
+    shown = run(nbformat.read(ROOT / "notebooks" / "which_station_next.ipynb", as_version=4))
     assert shown
-    assert not any(words.startswith("<") for words in in_words_only)  # Python's words for what it cannot show
+    assert no_words_for_what_python_cannot_show(shown)
+
+
+def test_can_we_afford_it_runs_top_to_bottom_and_tells_its_reasons_whole():
+    notebook = nbformat.read(ROOT / "notebooks" / "can_we_afford_it.ipynb", as_version=4)
+    notebook.cells.append(nbformat.v4.new_code_cell('asked["reason"], answer.reason'))
+    *shown, reasons = run(notebook)
+    assert no_words_for_what_python_cannot_show(shown)
+    tables = [html.unescape(data["text/html"]) for data in shown if "text/html" in data]
+    for reason in ast.literal_eval(reasons["text/plain"]):
+        assert len(reason) > PANDAS_CUTS_AT
+        assert any(reason in table for table in tables)
