@@ -3,13 +3,15 @@
 from dataclasses import dataclass
 from datetime import datetime, timedelta
 
+from planner.errors import InputError
 from planner.mission.contacts import StatedContact, read_contacts, utc_moment
 from planner.mission.models import Mission
 from planner.schedule import frames
 from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import Flown
 from planner.schedule.result import prepared
-from planner.schedule.wishes import freeze_s, powers_on_s, read_wishes
+from planner.schedule.uplinks import aboard_at, powers_on_s
+from planner.schedule.wishes import freeze_s, read_wishes, sessions_of
 
 
 @dataclass(frozen=True)
@@ -70,7 +72,7 @@ class Audit:
         }
 
 
-def audit(mission: Mission, contacts, *, freeze_until: datetime | None = None) -> Audit:
+def audit(mission: Mission, contacts, *, freeze_until: datetime | None = None, previous=None) -> Audit:
     """Recompute everything that a set of contacts claims.
 
     Parameters
@@ -79,18 +81,24 @@ def audit(mission: Mission, contacts, *, freeze_until: datetime | None = None) -
     freeze_until : contacts that power on before have flown or are being flown: newer elements may put them seconds
         beside their pass, which is no fault of theirs; what they take from the battery is judged like all else
 
+    previous : the contacts issued before `freeze_until`: what of them is aboard by then must be there as it was, and
+        all else needs an uplink contact after it. Without them all contacts that were commanded before are believed
+
     Raises
     ------
-    InputError : the file cannot be read as contacts of this mission, or a time without a zone
+    InputError : a file cannot be read as contacts of this mission, a time without a zone, `previous` without a freeze
     """
+    if previous is not None and freeze_until is None:
+        raise InputError("previous contacts (--from) need the moment by which they were aboard (--freeze-until)")
     frozen_s = freeze_s(mission, freeze_until)
     stated = read_contacts(contacts, mission)
     week = prepared(mission)
     lines = {contact.session: contact.line for contact in stated}
-    flown = Flown(week, tuple(contact.session for contact in stated if week.reaches(contact.session)))
+    aboard = aboard_at(mission, lines if previous is None else sessions_of(previous, mission), frozen_s)
+    flown = Flown(week, tuple(contact.session for contact in stated if week.reaches(contact.session)), aboard)
     faults = [
         fault
-        for fault in (*_beyond(flown, lines), *find_faults(flown), *_wishes_broken(flown))
+        for fault in (*_beyond(flown, lines), *find_faults(flown), *_wishes_broken(flown), *_not_as_aboard(flown))
         if fault.satellite or fault.session is None or powers_on_s(mission, fault.session) >= frozen_s
     ]
     return Audit(flown, tuple(faults), tuple(_stale(flown, stated)), lines)
@@ -102,6 +110,18 @@ def _beyond(flown: Flown, sessions) -> list[Fault]:
     text = f"on air outside the mission's span, {clock.iso(0.0)} to {clock.iso(span_s)}"
     outside = [session for session in sessions if not flown.week.reaches(session)]
     return [Fault("span", session, session.tx_on_s, session.tx_on_s, span_s, "s", text) for session in outside]
+
+
+def _not_as_aboard(flown: Flown) -> list[Fault]:
+    """Contacts that the satellite flies whatever is planned, and that are not planned so."""
+    iso, nan = flown.week.sky.clock.iso, float("nan")
+    near = {(s.pass_id, s.mode, round(s.tx_on_s, 2), round(s.tx_off_s, 2)) for s in flown.sessions}
+    return [
+        Fault("aboard", None, s.tx_on_s, nan, nan, "", f"{s.pass_id}:{s.mode} is aboard and will be on air from"
+              f" {iso(s.tx_on_s)} to {iso(s.tx_off_s)}, which is not what these contacts say")
+        for s in sorted(flown.aboard.sessions)
+        if flown.week.reaches(s) and (s.pass_id, s.mode, round(s.tx_on_s, 2), round(s.tx_off_s, 2)) not in near
+    ]  # fmt: skip
 
 
 def _wishes_broken(flown: Flown) -> list[Fault]:

@@ -21,10 +21,10 @@ from planner.schedule.energy import (
 from planner.schedule.problem import Problem
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
+from planner.schedule.uplinks import commands_until_s
 from planner.schedule.week import Week
 from planner.schedule.windows import usable_windows
 from planner.schedule.wishes import Wishes
-from planner.units import DAY_S
 
 PLACES = 7  # in a window, at which a session's turn and warm-up are priced
 AT_ONCE = 200  # windows, so that memory holds the courses of all their sessions
@@ -86,7 +86,7 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
             policy=week.mission.policy,
             span_s=week.mission.span_s,
             midnight_s=midnight_s[(midnight_s > 0) & (midnight_s < week.mission.span_s)],
-            commands_until_s={s.name: commands_until_s(week, s) for s in week.mission.satellites},
+            commands_until_s={s.name: commands_until_s(week.mission, s) for s in week.mission.satellites},
             overlapping={
                 (satellite.name, a.mode): frozenset(
                     b.mode for b in satellite.spacecraft.transmitter if satellite.spacecraft.may_overlap(a.mode, b.mode)
@@ -97,6 +97,7 @@ def pose(week: Week, wishes: Wishes) -> tuple[Problem, list[Refusal]]:
             orbit_s={track.satellite: track.period_s for track in week.sky.tracks},
             keep=wishes.keep | {(session.pass_id, session.mode) for session in wishes.frozen},
             frozen=wishes.frozen,
+            aboard=wishes.aboard,
             previous=wishes.previous,
         ),
         refused,
@@ -110,12 +111,6 @@ def _tell_choice(found: list[Candidate], refused: list[Refusal]) -> None:
     for mode in sorted({*usable, *(mode for mode, _ in out)}):
         rest = "".join(f", {out[mode, verdict]} passes {verdict}" for verdict in ("unusable", "dropped"))
         _log.info("%s: %d windows to choose from%s", mode, usable[mode], rest)
-
-
-def commands_until_s(week: Week, satellite: Satellite) -> float:
-    """Until when commands are aboard at the start."""
-    until = satellite.start_state.commands_aboard_until
-    return DAY_S if until is None else (until - week.mission.start).total_seconds()
 
 
 def _windows(week: Week, wishes: Wishes, satellite: Satellite, transmitter: Transmitter, row: int, frozen):

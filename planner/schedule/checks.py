@@ -8,13 +8,10 @@ import numpy as np
 
 from planner.mission.contacts import Session
 from planner.power.limits import Breach
-from planner.schedule.candidates import commands_until_s
 from planner.schedule.flown import Flown
+from planner.schedule.uplinks import SAME_MOMENT_S, carrier_of, ends_after_first_commands
 from planner.schedule.windows import turning_s
 from planner.units import DAY_S, HOUR_S
-
-# Times in files have milliseconds: what is closer than that is the same moment
-SAME_MOMENT_S = 2e-3
 
 
 @dataclass(frozen=True)
@@ -113,34 +110,27 @@ def _covered(windows: list[tuple[float, float]], session: Session) -> bool:
 
 
 def upload_contact(flown: Flown, session: Session) -> Session | None:
-    """The latest contact that could carry a session's commands up in time."""
-    policy = flown.week.mission.policy
-    if policy.upload_lead_h is None:  # commands are always aboard
-        return None
-    found = [
-        other
-        for other in flown.of(session.satellite)
-        if flown.week.mission.satellite(other.satellite).spacecraft.mode(other.mode).uplink
-        and flown.week.mission.station(other.station).uplink
-        and other.tx_off_s <= session.tx_on_s - policy.upload_lead_h * HOUR_S
-        and other.tx_on_s >= session.tx_off_s - policy.upload_reach_h * HOUR_S
-    ]
-    return found[-1] if found else None
+    """The latest contact that could carry a session's commands up in time (or did, where they are aboard)."""
+    since_s = -np.inf if session in flown.aboard.sessions else flown.aboard.since_s
+    return carrier_of(flown.week.mission, flown.of(session.satellite), session, since_s)
 
 
 def needs_upload(flown: Flown, session: Session) -> bool:
-    """Whether the session ends after what was commanded before the span."""
-    satellite = flown.week.mission.satellite(session.satellite)
-    return (
-        flown.week.mission.policy.upload_lead_h is not None
-        and session.tx_off_s > commands_until_s(flown.week, satellite) + SAME_MOMENT_S
-    )
+    """Whether the session ends after what was commanded before the span, or is new to what is aboard."""
+    if flown.week.mission.policy.upload_lead_h is None:
+        return False
+    is_new = flown.aboard.since_s > -np.inf and session not in flown.aboard.sessions
+    return is_new or ends_after_first_commands(flown.week.mission, session)
 
 
 def _commands(flown: Flown, session: Session) -> Iterator[Fault]:
     lead_h, reach_h = flown.week.mission.policy.upload_lead_h, flown.week.mission.policy.upload_reach_h
-    if lead_h is not None and needs_upload(flown, session) and upload_contact(flown, session) is None:
-        text = f"no contact with uplink between {reach_h:g} h and {lead_h:g} h before it can carry its commands"
+    if lead_h is None or session in flown.aboard.sessions or not needs_upload(flown, session):
+        return
+    if upload_contact(flown, session) is None:
+        since_s = flown.aboard.since_s
+        since = f" and after {flown.week.sky.clock.iso(since_s)}" if since_s > -np.inf else ""
+        text = f"no contact with uplink between {reach_h:g} h and {lead_h:g} h before it{since} can carry its commands"
         yield Fault("commands aboard", session, session.tx_on_s, np.nan, lead_h, "h", text)
 
 

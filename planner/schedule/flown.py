@@ -1,6 +1,6 @@
 """A set of sessions with everything that follows from it under the full physics."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -12,6 +12,7 @@ from planner.mission.models import Satellite
 from planner.power.batch import Batch, Share, share_of
 from planner.power.limits import Breach
 from planner.power.series import BatterySeries
+from planner.schedule.uplinks import NOTHING_YET, Aboard
 from planner.schedule.week import Week
 
 RISKED_LIMITS = ("SoC floor", "end-of-span SoC")  # what policy.floor_risk_pct speaks of
@@ -24,6 +25,7 @@ class Flown:
 
     week: Week
     sessions: tuple[Session, ...]
+    aboard: Aboard = NOTHING_YET
 
     def of(self, satellite: str) -> tuple[Session, ...]:
         return tuple(session for session in self.sessions if session.satellite == satellite)
@@ -155,8 +157,8 @@ class Flown:
     def with_session(self, session: Session) -> "Flown":
         """The same sessions with this one added, in place of one on the same pass in the same mode."""
         others = [s for s in self.sessions if (s.pass_id, s.mode) != (session.pass_id, session.mode)]
-        return Flown(self.week, tuple(sorted([*others, session])))
+        return replace(self, sessions=tuple(sorted([*others, session])))
 
     def without(self, gone) -> "Flown":
         """The same sessions less those in `gone`."""
-        return Flown(self.week, tuple(session for session in self.sessions if session not in gone))
+        return replace(self, sessions=tuple(session for session in self.sessions if session not in gone))

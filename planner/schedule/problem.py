@@ -12,6 +12,7 @@ from planner.mission.models import Policy
 from planner.mission.station import Station
 from planner.schedule.sessions import Candidate
 from planner.schedule.states import SatelliteStates
+from planner.schedule.uplinks import NOTHING_YET, Aboard
 from planner.units import DAY_S, HOUR_S
 
 
@@ -20,7 +21,7 @@ class Problem:
     """Everything that constrains the choice.
 
     keep : (pass_id, mode) that must fly;  frozen : sessions that must fly just as they are
-    previous : those of the plan before this one, which should change little
+    previous : those of the plan before this one, which should change little;  aboard : what cannot be called back
     midnight_s : the UTC midnights within the span [s]
     commands_until_s : sessions that end before need no upload in the span, by satellite
     overlapping : the modes that may be on air on the same pass as a satellite's mode;  orbit_s : revolutions [s]
@@ -38,6 +39,7 @@ class Problem:
     keep: frozenset[tuple[str, str]] = frozenset()
     frozen: tuple[Session, ...] = ()
     previous: tuple[Session, ...] = ()
+    aboard: Aboard = NOTHING_YET
 
     def only(self, chosen: set[int]) -> "Problem":
         """The same problem with no other candidates: small, for mending a plan."""
@@ -72,7 +74,13 @@ class Problem:
         return [(begin_s, end_s) for begin_s, end_s in self.days() if end_s - begin_s == DAY_S]
 
     def needs_upload(self, candidate: Candidate) -> bool:
-        return self.policy.upload_lead_h is not None and candidate.closes_s > self.commands_until_s[candidate.satellite]
+        if self.policy.upload_lead_h is None or (candidate.pass_id, candidate.mode) in self._frozen_keys:
+            return False
+        return self.aboard.since_s > -np.inf or candidate.closes_s > self.commands_until_s[candidate.satellite]
+
+    @cached_property
+    def _frozen_keys(self) -> frozenset[tuple[str, str]]:
+        return frozenset((session.pass_id, session.mode) for session in self.frozen)
 
     def uploads_for(self, index: int) -> list[int]:
         """Candidates whose contact could carry this one's commands, whatever start and stop are chosen."""
@@ -80,7 +88,7 @@ class Problem:
         if policy.upload_lead_h is None:  # commands are always aboard
             return []
         latest_s = wanted.opens_s - policy.upload_lead_h * HOUR_S
-        earliest_s = wanted.closes_s - policy.upload_reach_h * HOUR_S
+        earliest_s = max(wanted.closes_s - policy.upload_reach_h * HOUR_S, self.aboard.since_s)
         return [
             i
             for i, c in enumerate(self.candidates)

@@ -1,6 +1,7 @@
 """A re-plan's contacts put back to the times they had, where that breaks nothing: a station's calendar then stays."""
 
 from collections.abc import Callable, Collection, Iterable
+from dataclasses import replace
 
 from planner.mission.contacts import Session
 from planner.schedule.flown import Flown
@@ -31,7 +32,7 @@ def _put_back(flown: Flown, moves: list[Move], is_good: Callable[[Flown], bool])
     if not moves:
         return flown
     back = dict(moves)
-    trial = Flown(flown.week, tuple(sorted(back.get(session, session) for session in flown.sessions)))
+    trial = replace(flown, sessions=tuple(sorted(back.get(session, session) for session in flown.sessions)))
     if is_good(trial):
         return trial
     if len(moves) > 1:

@@ -19,6 +19,7 @@ from planner.schedule.problem import Problem
 from planner.schedule.programme import Solution, solve
 from planner.schedule.restore import put_back
 from planner.schedule.sessions import Candidate
+from planner.schedule.uplinks import powers_on_s
 from planner.schedule.week import Progress, Week
 
 SOLVER_GAP = 1e-3  # a plan is held to 0.1 % of its programme's optimum …
@@ -214,8 +215,11 @@ class Search:
         return None
 
     def _faults(self, problem: Problem, flown: Flown) -> list[Fault]:
-        """Broken limits; frozen sessions stay as they are, whatever newer elements say of them."""
-        return [fault for fault in find_faults(flown) if fault.session not in problem.frozen]
+        """Broken limits; frozen sessions stay as they are, whatever newer elements say of them. What a battery had to
+        give to those that have begun is past; what those to come take of it counts."""
+        begun = {s for s in problem.frozen if powers_on_s(self.week.mission, s) < max(problem.aboard.since_s, 0.0)}
+        frozen = set(problem.frozen)
+        return [f for f in find_faults(flown) if f.session not in (begun if f.satellite else frozen)]
 
     def _giving_up(self, problem: Problem, faults: list[Fault]) -> Problem:
         """What breaks a limit of its own is given up; a rule of the week that breaks is told."""
@@ -243,7 +247,7 @@ class Search:
 
     def _flown(self, problem: Problem, chosen: Chosen) -> Flown:
         sessions = (on_whole_seconds(problem.candidates[i], on_s, off_s) for i, on_s, off_s in chosen)
-        return Flown(self.week, tuple(sorted(sessions)))
+        return Flown(self.week, tuple(sorted(sessions)), self.problem.aboard)
 
     def _corrected(self, problem: Problem, chosen: Chosen) -> Problem:
         """The problem with costs exact at these sessions and gains as the full physics has them."""

@@ -2,7 +2,7 @@
 
 from collections import Counter
 from collections.abc import Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import datetime
 from pathlib import Path
 
@@ -13,6 +13,7 @@ from planner.errors import InputError
 from planner.mission.contacts import Session, read_contacts
 from planner.mission.models import Mission
 from planner.mission.text import nearest
+from planner.schedule.uplinks import NOTHING_YET, Aboard, aboard_at, powers_on_s
 from planner.schedule.week import Week
 
 
@@ -22,7 +23,7 @@ class Wishes:
 
     keep : (pass_id, mode) that must fly;  drop : pass ids that must not
     previous : sessions that should stay where that costs little;  frozen : those that stay just as they are
-    freeze_until_s : no other session begins before [s after the start]
+    freeze_until_s : no other session begins before [s after the start];  aboard : what cannot be called back
     """
 
     keep: frozenset[tuple[str, str]] = frozenset()
@@ -30,6 +31,7 @@ class Wishes:
     previous: tuple[Session, ...] = ()
     frozen: tuple[Session, ...] = ()
     freeze_until_s: float = -np.inf
+    aboard: Aboard = NOTHING_YET
 
     def __str__(self) -> str:
         kept = ", ".join(f"{pass_id}:{mode}" for pass_id, mode in sorted(self.keep)) or "nothing"
@@ -58,22 +60,32 @@ def read_wishes(
     if freeze_until is not None and previous is None:
         raise InputError("freeze_until needs the previous contacts that stay frozen (--from CONTACTS.csv)")
     frozen_s = freeze_s(week.mission, freeze_until)
-    frozen = tuple(session for session in sessions if powers_on_s(week.mission, session) < max(frozen_s, 0.0))
-    _refuse_frozen(frozen, dropped)
+    aboard = aboard_at(week.mission, sessions, frozen_s)
+    frozen = tuple(s for s in sessions if s in aboard.sessions or powers_on_s(week.mission, s) < 0.0)
+    _refuse_frozen(week.mission, frozen, dropped, max(frozen_s, 0.0))
     return Wishes(
         keep=frozenset(kept),
         drop=frozenset(dropped),
         previous=tuple(sessions),
         frozen=tuple(session for session in frozen if session.pass_id in week.row_of),
         freeze_until_s=frozen_s,
+        aboard=replace(aboard, sessions=frozenset(frozen)),
     )
 
 
-def _refuse_frozen(frozen: tuple[Session, ...], drop: list[str]) -> None:
+def _refuse_frozen(mission: Mission, frozen: tuple[Session, ...], drop: list[str], freeze_s: float) -> None:
+    begun = {session.pass_id for session in frozen if powers_on_s(mission, session) < freeze_s}
+    loaded = {session.pass_id for session in frozen} - begun
     faults = [
         f"drop: {pass_id} is frozen and stays: its contact begins before freeze_until (--freeze-until) or the start"
         for pass_id in dict.fromkeys(drop)
-        if pass_id in {session.pass_id for session in frozen}
+        if pass_id in begun
+    ]
+    faults += [
+        f"drop: {pass_id} stays: its commands are aboard by freeze_until (--freeze-until), and the satellite flies it"
+        " unless an uplink contact cancels it; freeze from before that contact to plan without it"
+        for pass_id in dict.fromkeys(drop)
+        if pass_id in loaded
     ]
     twice = Counter((session.pass_id, session.mode) for session in frozen)
     faults += [
@@ -99,11 +111,6 @@ def freeze_s(mission: Mission, freeze_until: datetime | None) -> float:
     if freeze_until.tzinfo is None:
         raise InputError(f"freeze_until must carry a time zone (append Z for UTC), got {freeze_until.isoformat()}")
     return (freeze_until - mission.start).total_seconds()
-
-
-def powers_on_s(mission: Mission, session: Session) -> float:
-    """When a session's transmitter begins to warm up."""
-    return session.tx_on_s - mission.satellite(session.satellite).spacecraft.mode(session.mode).warmup_s
 
 
 def _pass_and_mode(week: Week, entry: str) -> tuple[str, str]:
