@@ -3,6 +3,9 @@
 import re
 from datetime import UTC, datetime, timedelta
 
+from planner.mission.numbers import number as number_of
+
+NO_UNIT = "n/a"  # as the standard's tables have it
 DATE = re.compile(r"(\d{4})-(?:(\d\d)-(\d\d)|(\d{3}))T(\d\d):(\d\d):(\d\d)(\.\d+)?Z?", re.ASCII)
 
 
@@ -31,16 +34,18 @@ def date(text: str) -> datetime:
 
 
 def keyword_lines(text: str):
-    """(line number, keyword, value) of each line with content; the keyword is "" where there is no equals sign.
-
-    Comments are left out, and so are units in brackets behind a value.
-    """
+    """(line number, keyword, value) of each line with content but comments; "" for a keyword without an equals sign."""
     for number, line in enumerate(text.splitlines(), 1):
         line = line.strip()
         if not line or line.split()[0] == "COMMENT":
             continue
         keyword, equals, value = line.partition("=")
-        if equals:
-            yield number, keyword.strip(), re.sub(r"\s*\[[^\]]*\]$", "", value.strip())
-        else:
-            yield number, "", line
+        yield (number, keyword.strip(), value.strip()) if equals else (number, "", line)
+
+
+def quantity(text: str, unit: str) -> float:
+    """The number of a value as "97.5544" or "97.5544 [deg]"; ValueError for another unit and for what is no number."""
+    value, bracket, stated = text.strip().removesuffix("]").partition("[")
+    if bracket and "".join(stated.split()).casefold() != unit.casefold():
+        raise ValueError("must be without a unit" if unit == NO_UNIT else f"must be in {unit}")
+    return number_of(value)

@@ -6,10 +6,15 @@ from pathlib import Path
 
 from planner.errors import InputError
 from planner.mission import oem, omm, tle
-from planner.mission.orbit import ElementSet, Ephemeris
+from planner.mission.orbit import ElementSet, Ephemeris, iso
 from planner.mission.text import read_text
 from planner.units import HOUR_S
 
+EMPTY_CELLS = ' ,;\t"'
+SEPARATOR_LINE = re.compile(r'"?sep=', re.IGNORECASE)
+CSV_HEADER = re.compile(r'MEAN_MOTION"?\s*[,;\t]|[,;\t]\s*"?MEAN_MOTION', re.IGNORECASE)
+TLE_LINE = re.compile(r"1 [ 0-9A-Z]{5}[A-Z ] [^,<]{40}")
+FOR_SGP4 = (*omm.NUMBERS.values(), "bstar")
 MOST_NESTED = 5_000_000  # a tree takes many times the memory of its text
 __all__ = ["ElementSet", "Ephemeris", "read_elements", "which_set"]
 
@@ -28,9 +33,10 @@ def read_elements(path, at: datetime) -> dict[str, ElementSet | Ephemeris]:
     if at.tzinfo is None:
         raise InputError(f"at must carry a time zone, got {at!r}; if it is UTC, write {at.isoformat()}+00:00")
     text = read_text(Path(path))
-    if text.lstrip()[:1] in ("<", "{", "[") and len(text) > MOST_NESTED:
+    parse = _parser(text)
+    if parse in (omm.parse_xml, omm.parse_json) and len(text) > MOST_NESTED:
         raise InputError(f"{path}: must be at most {MOST_NESTED} characters as XML or JSON, got {len(text)}")
-    sets, faults = _parser(text)(text, str(path))
+    sets, faults = parse(text, str(path))
     if not sets and not faults:
         faults = [f"{path}: must hold at least one element set or ephemeris, got none"]
     by_name: dict[str, list] = {}
@@ -38,8 +44,8 @@ def read_elements(path, at: datetime) -> dict[str, ElementSet | Ephemeris]:
         by_name.setdefault(one.name, []).append(one)
     faults = faults + _name_faults(by_name, path)
     chosen = {name: _newest_before(candidates, at) for name, candidates in by_name.items()}
-    for one in chosen.values():
-        faults = faults + _sgp4_faults(one, path)
+    for name, one in chosen.items():
+        faults = faults + _epoch_faults(one, by_name[name], path) + _sgp4_faults(one, path)
     if faults:
         raise InputError(*faults)
     return chosen
@@ -57,13 +63,15 @@ def which_set(elements: ElementSet | Ephemeris, at: datetime) -> str:
 
 def _parser(text: str):
     """The reader for a text, by how it begins."""
-    begin = text.lstrip()[:2000]
-    first_line = begin.partition("\n")[0]
+    begin = text.lstrip()[:4000]
+    lines = [line for line in begin.splitlines() if line.strip(EMPTY_CELLS) and not SEPARATOR_LINE.match(line)]
+    if any(TLE_LINE.match(line) for line in lines[1:2]):  # whatever the name in the line above begins with
+        return tle.parse_tle
     if begin.startswith("<"):
         return omm.parse_xml
     if begin.startswith(("{", "[")):
         return omm.parse_json
-    if re.search(r'MEAN_MOTION"?\s*[,;\t]|[,;\t]\s*"?MEAN_MOTION', first_line):
+    if lines and CSV_HEADER.search(lines[0]):
         return omm.parse_csv
     if begin.startswith("CCSDS_OEM_VERS"):
         return oem.parse_oem
@@ -87,6 +95,21 @@ def _name_faults(by_name: dict[str, list], path) -> list[str]:
         for name, found in numbers.items()
         if len(found) > 1
     ]
+
+
+def _epoch_faults(chosen, candidates: list, path) -> list[str]:
+    """One epoch must mean one orbit, where that epoch is the one taken."""
+    if isinstance(chosen, Ephemeris):
+        return []
+    for other in candidates:
+        differ = [field for field in FOR_SGP4 if getattr(other, field) != getattr(chosen, field)]
+        if (other.epoch, other.catalog_number) == (chosen.epoch, chosen.catalog_number) and differ:
+            values = " and ".join(f"{getattr(one, differ[0])!r}" for one in (other, chosen))
+            return [
+                f"{path}: {chosen.name}: element sets of one epoch must be alike, got two of {iso(chosen.epoch)} whose"
+                f" {differ[0]} are {values}; leave one of them in the file"
+            ]
+    return []
 
 
 def _sgp4_faults(one, path) -> list[str]:

@@ -7,10 +7,11 @@ import json
 from xml.etree import ElementTree
 
 from planner.mission.base import is_name
-from planner.mission.ccsds import date, keyword_lines
+from planner.mission.ccsds import NO_UNIT, date, keyword_lines, quantity
+from planner.mission.numbers import number as number_of
 from planner.mission.orbit import ElementSet
-from planner.mission.table import MAYBE_DECIMAL_COMMAS, separator_fault
-from planner.mission.text import decimals
+from planner.mission.table import MAYBE_DECIMAL_COMMAS, separator_fault, with_content
+from planner.mission.text import decimals, shown
 
 NUMBERS = {
     "MEAN_MOTION": "mean_motion_rev_day",
@@ -32,6 +33,19 @@ ONLY = {
     "TIME_SYSTEM": ("UTC",),
     "MEAN_ELEMENT_THEORY": ("SGP4", "SGP/SGP4"),
 }
+# The standard's units, table 4-3, the only ones that may stand behind a number
+UNITS = {
+    "MEAN_MOTION": "rev/day",
+    "ECCENTRICITY": NO_UNIT,
+    "INCLINATION": "deg",
+    "RA_OF_ASC_NODE": "deg",
+    "ARG_OF_PERICENTER": "deg",
+    "MEAN_ANOMALY": "deg",
+    "BSTAR": "1/ER",
+    "MEAN_MOTION_DOT": "rev/day**2",
+    "MEAN_MOTION_DDOT": "rev/day**3",
+}
+NOT_OF_THE_MESSAGE = ("COMMENT", "userDefinedParameters", "omm")  # XML elements: the user's own, or another message
 REQUIRED = ("OBJECT_NAME", "OBJECT_ID", *ONLY, "EPOCH", *NUMBERS)
 LARGEST_DEG = {"INCLINATION": 180.0, "RA_OF_ASC_NODE": 360.0, "ARG_OF_PERICENTER": 360.0, "MEAN_ANOMALY": 360.0}
 
@@ -62,50 +76,87 @@ def parse_xml(text: str, path: str) -> Parsed:
         root = ElementTree.fromstring(text.encode("utf-8"))
     except (ElementTree.ParseError, LookupError, ValueError) as error:
         return [], [f"{path}: must be well-formed XML in UTF-8, got {error}"]
-    messages = []
+    messages: list[tuple[str, dict[str, str]]] = []
+    faults: list[str] = []
     for index, message in enumerate((e for e in root.iter() if _tag(e) == "omm"), 1):
-        values = {_tag(e): (e.text or "").strip() for e in message.iter() if not len(e) and _tag(e) != "COMMENT"}
-        messages.append((f"{path}: message {index}", values))
-    return _gathered(messages, [], REQUIRED)
+        where = f"{path}: message {index}"
+        messages.append((where, _once(where, map(_keyword, _leaves(message)), faults)))
+    return _gathered(messages, faults, REQUIRED)
+
+
+def _leaves(message):
+    """The elements that hold a value of this message, in order."""
+    waiting = list(message)[::-1]
+    while waiting:
+        element = waiting.pop()
+        if _tag(element) in NOT_OF_THE_MESSAGE:
+            continue
+        if not len(element):
+            yield element
+        waiting.extend(list(element)[::-1])
+
+
+def _keyword(element) -> tuple[str, str]:
+    """An element as keyword and value, with its unit as keyword lines have it."""
+    value, unit = (element.text or "").strip(), element.get("units")
+    return _tag(element), f"{value} [{unit}]" if unit else value
+
+
+def _once(where: str, pairs, faults: list[str]) -> dict[str, str]:
+    """The pairs by keyword; a fault for each keyword that stands again."""
+    values: dict[str, str] = {}
+    for keyword, value in pairs:
+        if keyword in values:
+            again = f"{shown(values[keyword])} and {shown(value)}"
+            faults.append(f"{where}: {shown(keyword)} must stand once in a message, got {again}")
+        values.setdefault(keyword, value)
+    return values
 
 
 def _tag(element) -> str:
     return element.tag.rpartition("}")[2]
 
 
+class _Pairs(list):
+    """A JSON object as (keyword, value) pairs, in which a keyword that stands twice still does."""
+
+
 def parse_json(text: str, path: str) -> Parsed:
     """One object, or a list of objects."""
     try:
-        rows = json.loads(text)
+        rows = json.loads(text, object_pairs_hook=_Pairs)
     except (ValueError, RecursionError) as error:
         return [], [f"{path}: must be JSON, got {error}"]
-    rows = rows if isinstance(rows, list) else [rows]
-    messages, faults = [], []
+    rows = [rows] if isinstance(rows, _Pairs) or not isinstance(rows, list) else rows
+    messages: list[tuple[str, dict[str, str]]] = []
+    faults: list[str] = []
     for index, row in enumerate(rows, 1):
-        if isinstance(row, dict) and not any(isinstance(value, dict | list) for value in row.values()):
-            values = {key: str(value) for key, value in row.items() if value is not None}
-            messages.append((f"{path}: message {index}", values))
+        where = f"{path}: message {index}"
+        if isinstance(row, _Pairs) and not any(isinstance(value, list) for _, value in row):
+            pairs = ((keyword, str(value)) for keyword, value in row if value is not None)
+            messages.append((where, _once(where, pairs, faults)))
         else:
-            faults.append(
-                f"{path}: message {index}: must be an object of keywords and plain values, got {str(row)[:60]}"
-            )
+            got = dict(row) if isinstance(row, _Pairs) else row
+            faults.append(f"{where}: must be an object of keywords and plain values, got {str(got)[:60]}")
     return _gathered(messages, faults, _bare())
 
 
 def parse_csv(text: str, path: str) -> Parsed:
     """One row a message under a header of keywords."""
     try:
-        rows = list(csv.reader(io.StringIO(text, newline="")))
+        rows = list(with_content(enumerate(csv.reader(io.StringIO(text, newline="")), 1)))
     except csv.Error as error:
         return [], [f"{path}: must be CSV: {error}"]
-    header = [keyword.strip() for keyword in rows[0]]
-    if fault := separator_fault(header):
-        return [], [f"{path}: row 1: {fault}"]
+    (first, header), *rows = rows or [(1, [])]
+    header = [keyword.strip().upper() for keyword in header]
+    twice = sorted({keyword for keyword in header if keyword and header.count(keyword) > 1})
+    if fault := separator_fault(header) or (f"columns must differ, got {shown(twice)} again" if twice else ""):
+        return [], [f"{path}: row {first}: {fault}"]
     messages, faults = [], []
-    for number, row in enumerate(rows[1:], 2):
+    for number, row in rows:
         if len(row) == len(header):
             messages.append((f"{path}: row {number}", dict(zip(header, map(str.strip, row), strict=True))))
-        elif any(row):
+        else:
             faults.append(
                 f"{path}: row {number}: must have {len(header)} columns as the header, got {len(row)}"
                 + (MAYBE_DECIMAL_COMMAS if len(row) > len(header) else "")
@@ -180,12 +231,11 @@ def _number(keyword: str):
     largest_deg = LARGEST_DEG.get(keyword)
 
     def convert(text: str) -> float:
-        try:
-            value = float(text)
-        except ValueError:
-            raise ValueError("must be a number") from None
+        value = quantity(text, UNITS[keyword])
         if not abs(value) < 1e6:
-            raise ValueError("must be a finite number")
+            raise ValueError("must be below a million")
+        if keyword == "ECCENTRICITY" and not 0 <= value < 1:
+            raise ValueError("must be at least 0 and below 1")
         if largest_deg is not None and not 0 <= value <= largest_deg:
             raise ValueError(f"must be from 0 to {largest_deg:g} deg")
         return value
@@ -195,6 +245,6 @@ def _number(keyword: str):
 
 def _whole(text: str) -> int:
     try:
-        return int(float(text))
+        return int(number_of(text))
     except (ValueError, OverflowError):
         raise ValueError("must be a whole number") from None

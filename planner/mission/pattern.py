@@ -3,6 +3,7 @@
 from pathlib import Path
 
 from planner.errors import InputError
+from planner.mission.numbers import number
 from planner.mission.table import read_table
 from planner.mission.text import decimals, shown
 
@@ -15,7 +16,7 @@ def read_pattern(path: Path) -> tuple[tuple[float, float], ...]:
     faults: list[str] = []
     for line, row in read_table(path, COLUMNS):
         try:
-            angle_deg, gain_dbi = (float(row[column]) for column in COLUMNS)
+            angle_deg, gain_dbi = (number(row[column]) for column in COLUMNS)
         except ValueError:
             faults.append(
                 f"{path}: line {line}: off_axis_deg and gain_dbi must be numbers,"

@@ -3,7 +3,7 @@
 import csv
 import io
 import re
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 
 from planner.errors import InputError
@@ -50,12 +50,20 @@ def separator_fault(columns: list[str]) -> str:
     return ""
 
 
+def with_content(rows: Iterable[tuple[int, list[str]]]) -> Iterator[tuple[int, list[str]]]:
+    """The rows without those of empty cells, and without the line `sep=,` that spreadsheets put above a header."""
+    found = False
+    for number, cells in rows:
+        if any(cell.strip() for cell in cells):
+            if found or not cells[0].strip().casefold().startswith("sep="):
+                yield number, cells
+            found = True
+
+
 def _rows(path: Path, text: str) -> Iterator[tuple[int, list[str]]]:
     reader = csv.reader(io.StringIO(text, newline=""), strict=True)
     try:
-        for cells in reader:
-            if any(cell.strip() for cell in cells):
-                yield reader.line_num, cells
+        yield from with_content((reader.line_num, cells) for cells in reader)
     except csv.Error as error:
         raise InputError(f"{path}: line {reader.line_num}: must be CSV: {error}") from None
 

@@ -12,12 +12,17 @@ EXPECTED = {
     2: "2 NNNNN NNN.NNNN NNN.NNNN NNNNNNN NNN.NNNN NNN.NNNN NN.NNNNNNNNNNNNNN",
 }
 LENGTH = 69
+COMMENT = "#"
 ALPHA5 = "ABCDEFGHJKLMNPQRSTUVWXYZ"  # I and O are left out; A stands for 10
 
 
 def parse_tle(text: str, path: str) -> tuple[list[ElementSet], list[str]]:
-    """Every set of the text, and every fault, told with file, line and rule."""
-    lines = [(number, line.rstrip()) for number, line in enumerate(text.splitlines(), 1) if line.strip()]
+    """Every set of the text but for lines of comment, and every fault, told with file, line and rule."""
+    lines = [
+        (number, line.rstrip())
+        for number, line in enumerate(text.splitlines(), 1)
+        if line.strip() and not line.lstrip().startswith(COMMENT)
+    ]
     sets, faults = [], []
     k = 0
     while k < len(lines):
