@@ -11,6 +11,7 @@ from planner.mission.table import read_table
 from planner.mission.text import nearest, shown
 
 REQUIRED = ("pass_id", "satellite", "station", "mode", "tx_on_utc", "tx_off_utc")
+MOST_CONTACTS = 20_000  # as many passes as the largest mission has: what comes after compares every contact with others
 
 
 @dataclass(frozen=True, order=True)
@@ -45,7 +46,7 @@ def read_contacts(contacts, mission: Mission) -> list[StatedContact]:
 
     Raises
     ------
-    InputError : every row at fault, with line, column, rule and value
+    InputError : every row at fault, with line, column, rule and value; rows that repeat others; too many rows
     """
     if isinstance(contacts, str | Path):
         return _stated(contacts, read_table(Path(contacts), REQUIRED), mission)
@@ -56,8 +57,12 @@ def read_contacts(contacts, mission: Mission) -> list[StatedContact]:
 
 
 def _stated(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission) -> list[StatedContact]:
+    rows = list(rows)
+    if len(rows) > MOST_CONTACTS:
+        raise InputError(f"{place}: must hold at most {MOST_CONTACTS} contacts, got {len(rows)}")
     contacts: list[StatedContact] = []
     faults: list[str] = []
+    lines: dict[Session, int] = {}
     for line, row in rows:
         found = _row_faults(row, mission)
         if found:
@@ -67,10 +72,18 @@ def _stated(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission)
                 (utc_moment(row[key]) - mission.start).total_seconds() for key in ("tx_on_utc", "tx_off_utc")
             )
             session = Session(on_s, off_s, row["satellite"], row["station"], row["mode"], row["pass_id"])
+            if session in lines:
+                faults.append(f"{place}: line {line} repeats line {lines[session]}: {_told(session, row)}; delete one")
+            lines.setdefault(session, line)
             contacts.append(StatedContact(session, line, row))
     if faults:
         raise InputError(*faults)
     return sorted(contacts, key=lambda contact: contact.session)
+
+
+def _told(session: Session, row: dict[str, str]) -> str:
+    on, off = shown(row["tx_on_utc"]), shown(row["tx_off_utc"])
+    return f"each contact must stand once, got {shown(session.pass_id)}, {shown(session.mode)}, {on} to {off} again"
 
 
 def _row_faults(row: dict[str, str], mission: Mission) -> list[str]:

@@ -4,6 +4,7 @@ import pandas as pd
 import pytest
 
 from planner.errors import InputError
+from planner.mission import contacts
 from planner.mission.contacts import Session, read_contacts
 
 HEADER = "pass_id,satellite,station,mode,tx_on_utc,tx_off_utc,volume_mbit\n"
@@ -30,9 +31,9 @@ def test_a_row_is_a_session_and_what_it_states(tmp_path, marshlight):
 def test_rows_in_any_order_and_any_time_zone(tmp_path, marshlight):
     later = with_cell("tx_off_utc", "2026-12-07T03:05:00+02:00")
     later[NAMES.index("tx_on_utc")] = "2026-12-07T01:04:00Z"
-    contacts = read_contacts(written(tmp_path, later, GOOD), marshlight)
-    assert [contact.line for contact in contacts] == [3, 2]
-    assert contacts[1].session.tx_off_s == 3900.0
+    read = read_contacts(written(tmp_path, later, GOOD), marshlight)
+    assert [contact.line for contact in read] == [3, 2]
+    assert read[1].session.tx_off_s == 3900.0
 
 
 @pytest.mark.parametrize(
@@ -77,6 +78,36 @@ def test_at_most_fifty_faults_are_told(tmp_path, marshlight):
         read_contacts(written(tmp_path, *[with_cell("satellite", "X")] * 90), marshlight)
     assert len(caught.value.faults) == 51
     assert caught.value.faults[-1] == "and 40 more faults"
+
+
+def test_a_row_that_repeats_another_is_told_with_both_lines(tmp_path, marshlight):
+    other_volume = with_cell("volume_mbit", "13")
+    path = written(tmp_path, GOOD, with_cell("mode", "S low rate"), other_volume, GOOD)
+    with pytest.raises(InputError) as caught:
+        read_contacts(path, marshlight)
+    again = (
+        "each contact must stand once, got 'p-1', 'K high rate', '2026-12-07T01:00:00.000Z' to"
+        " '2026-12-07T01:05:00.000Z' again; delete one"
+    )
+    assert caught.value.faults == (
+        f"{path}: line 4 repeats line 2: {again}",
+        f"{path}: line 5 repeats line 2: {again}",
+    )
+
+
+def test_the_same_times_in_another_time_zone_repeat_as_well(tmp_path, marshlight):
+    same = with_cell("tx_on_utc", "2026-12-07T03:00:00+02:00")
+    with pytest.raises(InputError, match="line 3 repeats line 2"):
+        read_contacts(written(tmp_path, GOOD, same), marshlight)
+
+
+def test_more_contacts_than_any_mission_has(tmp_path, marshlight, monkeypatch):
+    assert contacts.MOST_CONTACTS == 20_000
+    monkeypatch.setattr(contacts, "MOST_CONTACTS", 2)
+    path = written(tmp_path, GOOD, GOOD, GOOD)
+    with pytest.raises(InputError) as caught:
+        read_contacts(path, marshlight)
+    assert caught.value.faults == (f"{path}: must hold at most 2 contacts, got 3",)
 
 
 def test_no_contacts_are_contacts(tmp_path, marshlight):
