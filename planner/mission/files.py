@@ -52,6 +52,7 @@ class MissionTables(Described):
 
 
 KINDS: dict[type[Described], str] = {MissionTables: "mission", Station: "station", Spacecraft: "spacecraft"}
+ONLY_A_MISSION_HAS = {"elements", "stations"}
 
 
 class _MissionFile(MissionTables, Spacecraft):
@@ -161,6 +162,8 @@ def _read_kind(path: Path, wanted: type[Described]) -> dict[str, Any]:
     """The file's tables; InputError where they have keys of one other kind of file and none of the wanted one's."""
     raw = read_toml(path)
     has = [kind for kind in KINDS if raw.keys() & (kind.model_fields.keys() - {"name"})]
+    if raw.keys() & ONLY_A_MISSION_HAS:  # beside which the spacecraft's tables stand
+        has = [kind for kind in has if kind is not Spacecraft]
     if len(has) == 1 and has[0] is not wanted:
         raise InputError(f"{path}: must be a {KINDS[wanted]} file, got a {KINDS[has[0]]} file")
     return raw
