@@ -156,7 +156,7 @@ def _total_mbit(flights: Iterable[Flight]) -> float:
 def _settings(flight: Flight, other: Flight) -> str:
     """What a receiver is set to for one flight, as far as it is not the same for the other."""
     pairs = (_codings(flight), _codings(other)), (flight.carrier, other.carrier)
-    return ", ".join(own for own, its in pairs if None not in (own, its) and own != its)
+    return ", ".join(own for own, its in pairs if own is not None is not its and own != its)
 
 
 def _codings(flight: Flight) -> str | None:
