@@ -234,7 +234,7 @@ def test_a_command_of_the_readme_ends_as_told(desk, two_day_plan, monkeypatch, c
 
 
 def test_the_middle_of_the_week_goes_as_told(desk, two_day_plan, monkeypatch, capsys):
-    """On the two days, of which the second is planned anew."""
+    """On the two days, of which the second is planned anew from before the contact that carries its commands up."""
     monkeypatch.chdir(desk)
     copy, *commands, cards = block(README, "cp -r ")
     folder, kept = copy.split()[2:]
@@ -242,7 +242,7 @@ def test_the_middle_of_the_week_goes_as_told(desk, two_day_plan, monkeypatch, ca
     contacts = two_day_plan.contacts
     dropped = contacts["pass_id"][contacts["tx_on_utc"] > "2026-12-08T10"].iloc[0]
     replan, comparison = (words_of(line) for line in commands)
-    replan = [{"PASS": dropped, "2026-12-09T08:00:00Z": "2026-12-08T08:00:00Z"}.get(word, word) for word in replan]
+    replan = [{"PASS": dropped, "2026-12-09T08:00:00Z": "2026-12-08T02:00:00Z"}.get(word, word) for word in replan]
     assert cli.main(["week", "missions/two_days.toml", *replan[1:]]) == cli.DONE
     assert cli.main(comparison) == cli.DONE
     said = capsys.readouterr().out
