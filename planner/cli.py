@@ -13,12 +13,21 @@ from planner.mission.models import Mission
 from planner.printing import Tell
 
 DONE, NO, WRONG_INPUT, MACHINE, INTERRUPTED = 0, 1, 2, 3, 130
+WEEK = ("contacts.csv", "passes.csv", "battery.csv", "recorder.csv", "week.ics", "week.png")  # in every week's folder
 FLOWN_HELP = "contacts that power on before have flown: newer elements do not judge them"
 KEEP_HELP = "fly this pass in this mode, as PASS:MODE (may be repeated)"
 
 
 def main(argv: list[str] | None = None) -> int:
     """Run one command; its exit status."""
+    printing.open_streams()
+    try:
+        return _status(argv)
+    finally:
+        printing.settle_streams()
+
+
+def _status(argv: list[str] | None) -> int:
     parser = _parser()
     completion.offer(parser)
     arguments = parser.parse_args(argv)
@@ -38,9 +47,6 @@ def main(argv: list[str] | None = None) -> int:
         printing.fault(["the machine's memory does not hold this mission; plan fewer days, stations or satellites"])
         return MACHINE
     except OSError as error:
-        if isinstance(error, BrokenPipeError):
-            printing.close_quietly()
-            return DONE
         printing.fault([f"{error.filename or 'the machine'}: {error.strerror or error}"])
         return MACHINE
     except KeyboardInterrupt:
@@ -156,15 +162,31 @@ def _mission(path: str) -> Mission:
     return mission
 
 
-def _mission_apart(arguments) -> Mission:
-    """The mission of a command that fills a folder, which must not be one that the mission is read from."""
+def _mission_apart(arguments, index: str, files: tuple[str, ...] = ()) -> Mission:
+    """The mission of a command that fills a folder: none that it is read from, and none that holds something else.
+
+    `index` tells the set that is replaced, `files` what of the new one is known.
+    """
+    from planner.export.folder import check_ours
+
+    _named("--out", "a folder", arguments.out)
     mission, folder = _mission(arguments.mission), Path(arguments.out).resolve()
-    read = [Path(arguments.mission).parent / name for name, _ in mission.inputs]
-    inside = next((path for path in read if path.resolve().parent == folder), None)
+    inside = next((path for path in _read_for(mission, arguments) if path.resolve().parent == folder), None)
     if inside is not None or folder.parent == folder:
         why = "is the root of the disk" if inside is None else f"holds {inside}, which the mission is read from"
         raise InputError(f"--out must be a folder of its own, got {arguments.out}, which {why}")
+    check_ours(arguments.out, index, files)
     return mission
+
+
+def _named(option: str, what: str, given: str) -> None:
+    if not given.strip():
+        raise InputError(f"{option} must be the name of {what}, got nothing; is a variable of the shell not set?")
+
+
+def _read_for(mission: Mission, arguments) -> list[Path]:
+    """Every file that the mission is read from."""
+    return [Path(arguments.mission).parent / name for name, _ in mission.inputs]
 
 
 def _check(arguments, tell: Tell) -> int:
@@ -176,7 +198,13 @@ def _check(arguments, tell: Tell) -> int:
 def _passes(arguments, tell: Tell) -> int:
     from planner.commands import passes
 
-    return passes(_mission(arguments.mission), arguments.csv, tell)
+    if arguments.csv is None:
+        return passes(_mission(arguments.mission), None, tell)
+    _named("--csv", "a file", arguments.csv)
+    mission, csv = _mission(arguments.mission), Path(arguments.csv)
+    if any(csv.exists() and csv.samefile(path) for path in _read_for(mission, arguments)):
+        raise InputError(f"--csv must be a file of its own, got {csv}, which the mission is read from")
+    return passes(mission, arguments.csv, tell)
 
 
 def _link(arguments, tell: Tell) -> int:
@@ -199,11 +227,12 @@ def _link(arguments, tell: Tell) -> int:
 
 def _week(arguments, tell: Tell) -> int:
     from planner.commands import week
+    from planner.export.folder import INDEX
 
     freeze = _freeze(arguments)
     if arguments.time_limit is not None and not 0 < arguments.time_limit < 1e6:
         raise InputError(f"--time-limit must be above 0 s and below 1e6 s, got {arguments.time_limit:g}")
-    return week(_mission_apart(arguments), arguments, freeze, tell)
+    return week(_mission_apart(arguments, INDEX, WEEK), arguments, freeze, tell)
 
 
 def _freeze(arguments) -> datetime | None:
@@ -247,14 +276,14 @@ def _compare(arguments, tell: Tell) -> int:
 def _pointing(arguments, tell: Tell) -> int:
     from planner.hand_over import write_pointing
 
-    return write_pointing(_mission_apart(arguments), arguments, tell)
+    return write_pointing(_mission_apart(arguments, "pointing.json"), arguments, tell)
 
 
 def _cards(arguments, tell: Tell) -> int:
     from planner.hand_over import write_cards
 
     return write_cards(
-        _mission_apart(arguments), Path(arguments.contacts), Path(arguments.out), _freeze(arguments), tell
+        _mission_apart(arguments, "cards.json"), Path(arguments.contacts), Path(arguments.out), _freeze(arguments), tell
     )
 
 

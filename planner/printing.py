@@ -1,35 +1,59 @@
 """What the commands say: tables and one-line findings, plain when piped."""
 
+import io
 import logging
 import os
 import sys
+import textwrap
 from collections.abc import Callable, Iterable, Iterator, Sequence
-from contextlib import contextmanager
-from typing import Literal
+from contextlib import contextmanager, suppress
+from typing import IO, Literal
 
+from rich.cells import cell_len
 from rich.console import Console
 from rich.progress import Progress, SpinnerColumn, TextColumn, TimeElapsedColumn
-from rich.table import Table
 
 Column = tuple[str, Literal["left", "right"]]  # heading, and where its texts stand
 Tell = Callable[[str], None]
 _log = logging.getLogger(__name__)
 _moving: list[Progress] = []  # the line that tells the stage; it ends where there is something to say
-PLAIN_WIDTH = 200  # columns when nobody's terminal says otherwise
+GAP, NO_BREAK = "  ", "\N{NO-BREAK SPACE}"
+LONGEST_WHOLE = 45  # cells; what is longer in a table is a sentence
+PLAIN_WIDTH = 100_000  # columns where there is no terminal: as wide as it takes
 
 
 class _Screen(Console):
-    """A console that leaves it to the command line what a closed pipe means."""
+    """A console whose reader may go away: the command goes on unheard, for its exit status is an answer too."""
 
     def on_broken_pipe(self) -> None:
-        raise BrokenPipeError
+        close_quietly(self.file)
+
+
+def open_streams() -> None:
+    """Make both output streams fit to say anything: what they cannot encode is escaped, a closed one hears nothing."""
+    for handle, name in ((1, "stdout"), (2, "stderr")):
+        stream = getattr(sys, name)
+        if stream is None:  # else the next file that is opened would get its number, and what others say there
+            os.dup2(os.open(os.devnull, os.O_WRONLY), handle)
+            setattr(sys, name, os.fdopen(handle, "w"))
+        elif isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")
+
+
+def settle_streams() -> None:
+    """What could not be said must not be tried again by Python as it ends: that would change the exit status."""
+    for stream in (sys.stdout, sys.stderr):
+        try:
+            stream.flush()
+        except OSError:
+            close_quietly(stream)
 
 
 def screen(stderr: bool = False) -> Console:
     """A console that follows NO_COLOR and is plain when piped."""
     _stop_moving()
     stream = sys.stderr if stderr else sys.stdout
-    plain = stream is None or not stream.isatty()  # None: the stream was closed before we began
+    plain = stream is None or not stream.isatty()  # None: the stream was closed before we began, and nobody opened it
     width = PLAIN_WIDTH if plain else None
     return _Screen(stderr=stderr, width=width, highlight=False, soft_wrap=plain, emoji=False, markup=False)
 
@@ -43,14 +67,36 @@ def counted(count: int, thing: str, things: str | None = None) -> str:
     return f"{count} {thing if count == 1 else things or thing + 's'}"
 
 
-def table(columns: Sequence[Column], rows: Iterable[Sequence[str]], title: str | None = None) -> None:
-    """A table of texts."""
-    grid = Table(title=title, title_justify="left", box=None, pad_edge=False, header_style="bold")
-    for heading, justify in columns:
-        grid.add_column(heading, justify=justify, no_wrap=True)
-    for row in rows:
-        grid.add_row(*row)
-    screen().print(grid)
+def table(columns: Sequence[Column], rows: Iterable[Sequence[str]]) -> None:
+    """A table of texts, none of them cut short: a row too wide for a terminal goes on in the next line.
+
+    It breaks between columns, so that an id stays in one piece to be copied; long cells also break between words.
+    """
+    console = screen()
+    texts = [tuple(heading for heading, _ in columns), *rows]
+    widths = [max(map(cell_len, column)) for column in zip(*texts, strict=True)]
+    justified = [justify for _, justify in columns]
+    head, *body = ("\n".join(_lines(row, widths, justified, console.width)) for row in texts)
+    console.print(head, style="bold", soft_wrap=True)
+    if body:
+        console.print("\n".join(body), soft_wrap=True)
+
+
+def _lines(texts: Sequence[str], widths: Sequence[int], justified: Sequence[str], most: int) -> list[str]:
+    cells = [
+        " " * (width - cell_len(text)) + text if justify == "right" else text + " " * (width - cell_len(text))
+        for text, width, justify in zip(texts, widths, justified, strict=True)
+    ]
+    if sum(widths) + len(GAP) * (len(widths) - 1) <= most:
+        return [GAP.join(cells).rstrip()]
+    whole = [
+        cell.replace(" ", NO_BREAK) if width <= LONGEST_WHOLE else cell.strip()
+        for cell, width in zip(cells, widths, strict=True)
+    ]
+    before_last = sum(widths[:-1]) + len(GAP) * (len(widths) - 1)
+    indent = " " * (before_last if before_last <= most // 2 else 4)
+    folded = textwrap.wrap(GAP.join(whole), most, subsequent_indent=indent, break_on_hyphens=False)
+    return [line.replace(NO_BREAK, " ").rstrip() for line in folded]
 
 
 @contextmanager
@@ -113,12 +159,16 @@ def _silent(stage: str) -> None:
 
 
 def fault(lines: Iterable[str]) -> None:
-    """What went wrong, on standard error, one line each."""
+    """What went wrong, on standard error, one line each; where nobody hears it the exit status must do."""
     _stop_moving()
-    for line in lines:
-        print(line, file=sys.stderr)
+    try:
+        for line in lines:
+            print(line, file=sys.stderr)
+    except OSError:
+        close_quietly(sys.stderr)
 
 
-def close_quietly() -> None:
-    """After a closed pipe nothing more can be said, and Python must not try at exit."""
-    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+def close_quietly(stream: IO[str]) -> None:
+    """From here on nobody hears this stream."""
+    with suppress(OSError):
+        os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
