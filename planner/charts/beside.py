@@ -33,10 +33,10 @@ def place_beside(axes, texts: Sequence[Annotation], line: np.ndarray) -> None:
     room = Bbox.union([axes.bbox, *ticks])
     taken = [*ticks, *_markers(axes, per_pt)]
     for text in texts:
-        anchor = axes.transData.transform(text.xy)
-        size = text.get_window_extent().size
+        anchor = np.array(axes.transData.transform(text.xy))
+        size = np.array(text.get_window_extent().size)
 
-        def cost(place: tuple[float, int], anchor=anchor, size=size) -> float:
+        def cost(place: tuple[float, int], anchor: np.ndarray = anchor, size: np.ndarray = size) -> float:
             box = _box(anchor, size, *place, per_pt)
             inside = np.all((box.min <= points) & (points <= box.max), axis=1).mean()
             return (
@@ -80,4 +80,4 @@ def _shared(box: Bbox, other: Bbox) -> float:
 
 def _beyond(box: Bbox, room: Bbox) -> float:
     """By how much a box juts out."""
-    return float(max(*(room.min - box.min), *(box.max - room.max), 0.0))
+    return float(max(*np.subtract(room.min, box.min), *np.subtract(box.max, room.max), 0.0))

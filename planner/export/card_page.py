@@ -8,6 +8,7 @@ from matplotlib.patches import Rectangle
 
 from planner.charts import style
 from planner.charts.skytrack import draw_skytrack
+from planner.export.commands import radio_and_commands
 from planner.export.fold import fold, shortened
 from planner.mission.models import Mission
 from planner.sky import Sky
@@ -17,23 +18,13 @@ LINE = 0.0158  # of the page's height, for text of 9.5 points
 LETTERS, FIGURES_BESIDE = 100, 72  # of 9.5 points that fit across the page, and beside a label
 BELOW_THE_SKY = 0.58
 DIRECTION_ENDS = (0.37, 0.515)  # of the page, where azimuth and elevation end
-SCALES = (
-    1.2,
-    1.1,
-    1.05,
-    1.0,
-    0.9,
-    0.8,
-    0.7,
-    0.6,
-    0.5,
-)  # tried in this order until all fits on the page
+SCALES = (1.2, 1.1, 1.05, 1.0, 0.95, 0.9, 0.85, 0.8, 0.75, 0.7, 0.6, 0.5)  # tried in turn until all fits
+LEGIBLE = 0.8  # the least that is taken to name more contacts
 
 
 def card_figure(card, mission: Mission, sky: Sky) -> Figure:
     """The page of one `Card`: times and sky side by side, then radio, cautions, what to do without lock."""
-    columns = (_column(card, scale) for scale in SCALES)
-    column = next((column for column in columns if column.y + column.line > FOOT), None) or _column(card, SCALES[-1])
+    column = _fitting_column(card)
     with style.on_paper():
         figure = style.new_figure(style.A4_PORTRAIT_IN)
         figure.set_layout_engine(None)
@@ -47,12 +38,22 @@ def card_figure(card, mission: Mission, sky: Sky) -> Figure:
     return figure
 
 
-def _column(card, scale: float) -> "_Column":
-    """What stands under the heading, laid out at one scale."""
+def _fitting_column(card) -> "_Column":
+    """At the largest scale that fits; rather than in letters less than `LEGIBLE`, with fewer contacts named."""
+    every = len(card.carried)
+    ways = [(every, scale) for scale in SCALES if scale >= LEGIBLE]
+    ways += [(named, LEGIBLE) for named in range(every - 1, 0, -1)]
+    ways += [(min(every, 1), scale) for scale in SCALES if scale < LEGIBLE]
+    columns = (_column(card, *way) for way in ways)
+    return next((column for column in columns if column.y + column.line > FOOT), None) or _column(card, *ways[-1])
+
+
+def _column(card, named: int, scale: float) -> "_Column":
+    """What stands under the heading, laid out at one scale, so many of the carried contacts named."""
     column = _Column(0.866, scale)
     column.moments(card.times)
     column.y = min(column.y, BELOW_THE_SKY)
-    column.rows("Radio and data", card.radio)
+    column.rows("Radio and data", radio_and_commands(card, named))
     column.framed("Cautions", [f"! {caution}" for caution in card.cautions])
     column.lines(card.search_after, [f"{n}. {step}" for n, step in enumerate(card.steps, 1)])
     return column

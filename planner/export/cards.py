@@ -1,7 +1,7 @@
 """Pass cards: one A4 page per contact for the person at the station, as PDF and as HTML."""
 
 import base64
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 from typing import Any
@@ -12,6 +12,7 @@ import pandas as pd
 from planner.charts.skytrack import skytrack_figure
 from planner.errors import InputError
 from planner.export.card_page import card_figure
+from planner.export.commands import carried_by
 from planner.export.contacts import (
     as_written,
     azimuth_text,
@@ -48,7 +49,8 @@ class Card:
     """What a card says, in words.
 
     `times` are (moment, time, azimuth, elevation), `radio` (label, text) rows, `steps` and `cautions` lines;
-    `reference` says which pass it is and in which issue of the schedule.
+    `reference` says which pass it is and in which issue of the schedule; `carried` are the contacts whose commands go
+    up in this one.
     """
 
     title: str
@@ -60,6 +62,7 @@ class Card:
     steps: tuple[str, ...]
     cautions: tuple[str, ...]
     footer: str
+    carried: tuple[str, ...]
     session: Session
 
 
@@ -81,15 +84,18 @@ def card_files(
     names = distinct(file_name("card", *key) for key in zip(shown["pass_id"], shown["mode"], strict=True))
     row: Any  # its columns are attributes
     for name, row in zip(names, shown.itertuples(), strict=True):
-        card = make_card(mission, sky, row, issue)
+        card = make_card(mission, sky, row, issue, carried_by(shown, row))
         yield f"{name}.pdf", pdf_bytes([card_figure(card, mission, sky)], f"{card.title}, {card.subtitle}")
         sky_dome = skytrack_figure(mission, sky, row.pass_id, session=card.session, size_in=PICTURE_IN, titled=False)
         picture = base64.b64encode(png_bytes(sky_dome, dpi=PICTURE_DPI)).decode()
         yield f"{name}.html", card_html(card, picture).encode()
 
 
-def make_card(mission: Mission, sky: Sky, row, issue: str = "") -> Card:
-    """The words of one card; `row` is a row of the contacts' table as a named tuple, `issue` names the schedule."""
+def make_card(mission: Mission, sky: Sky, row, issue: str = "", carried: Sequence[str] = ()) -> Card:
+    """The words of one card.
+
+    `row` is a row of the contacts' table as a named tuple, `issue` names the schedule, `carried` are from `carried_by`.
+    """
     session = _session(mission, sky, row)
     on = mission.start + timedelta(seconds=session.tx_on_s)
     epoch = mission.satellite(session.satellite).elements.epoch
@@ -107,14 +113,25 @@ def make_card(mission: Mission, sky: Sky, row, issue: str = "") -> Card:
         cautions=(*_own_cautions(sky, row, session, until), *CAUTIONS),
         footer="All times UTC, to the nearest second. Azimuths from true north over east; elevations geometric, without"
         " refraction. Margin, data and battery as planned.",
+        carried=tuple(carried),
         session=session,
     )
+
+
+def needs_newer_elements(mission: Mission, sky: Sky, row) -> bool:
+    """Whether the present elements no longer point the dish by the end of the contact in this row of its table."""
+    session = _session(mission, sky, row)
+    return _outlived(sky, session, useful_until(mission, sky, session))
+
+
+def _outlived(sky: Sky, session: Session, until: datetime | None) -> bool:
+    return until is not None and sky.clock.datetime(session.tx_off_s) > until
 
 
 def _own_cautions(sky: Sky, row, session: Session, until: datetime | None) -> list[str]:
     """What this contact's row warns of, and elements that will be too old by then."""
     said = [] if pd.isna(row.cautions) or not row.cautions else str(row.cautions).split("; ")
-    if until is not None and sky.clock.datetime(session.tx_off_s) > until:
+    if until is not None and _outlived(sky, session, until):
         said.append(f"Take newer elements before this pass: the present ones point this dish only until {_iso(until)}.")
     return said
 
@@ -190,7 +207,7 @@ def _preparation(row, epoch: datetime, until: datetime | None) -> Rows:
     commands = (
         ()
         if carrier is None
-        else (("Its own commands", f"go up in contact {carrier}" if carrier else "aboard before"),)
+        else (("Its own commands", f"go up in contact {carrier}" if carrier else "aboard at the start of the span"),)
     )
     return (("Element epoch", f"{_iso(epoch)}; {serve}"), *commands)
 
@@ -251,8 +268,8 @@ def _steps(mission: Mission, sky: Sky, row, session: Session, wait_s: float, lat
         f"Receiver: {mode.frequency_mhz * 1000 + khz:,.1f} kHz now ({khz:+.1f} kHz Doppler), {mode.polarisation},"
         f" {plain_number(mode.symbol_rate_mbaud)} Mbaud, {modcod}.",
         "Antenna: compare azimuth and elevation with the pointing table; refraction on or off as the table says.",
-        f"Time: search along the track, {late_s:.1f} s either way with elements {age_days:g} d old, {own_late_s:.1f} s"
-        f" with those of the epoch above ({own_days:.1f} d).",
+        f"Time: search along the track, {late_s:.1f} s either way (two sigma) with elements {age_days:g} d old,"
+        f" {own_late_s:.1f} s with those of the epoch above ({own_days:.1f} d).",
         "Elements: take the newest set and make the pointing table anew if the epoch above is older than that.",
         f"Still nothing: keep on the track until {off}, when the satellite switches off by itself; then tell"
         " the flight team, so that this contact's data are planned again.",

@@ -3,7 +3,10 @@
 from html import escape
 from string import Template
 
+from planner.export.commands import named_in, radio_and_commands
+
 MOMENT = ("moment", "time", "azimuth", "elevation")
+CARD_ROOM = (35, 94, 80)  # of a printed card: lines under the times, letters across and beside a label
 HELD_LETTERS = 20  # shorter texts of a table stay on one line
 PAGE = Template("""<!DOCTYPE html>
 <html lang="en">
@@ -28,15 +31,17 @@ table.list :is(td, th):nth-last-child(2) { text-align: right; }
 table.list tr { break-inside: avoid; }
 table.list td { border-bottom: 1px solid #ddd; vertical-align: top; padding-right: .6em; }
 table.moments { font-size: 11pt; }
-table.moments td + td { font-weight: bold; }
+table.moments td + td { font-weight: bold; } table.moments :last-child { padding-right: 0; }
 .caution { border: 2px solid #D55E00; padding: 0 1em; margin: .8em 0; } .caution h2 { margin-top: .5em; }
 ul, ol { margin: .4em 0; }
 .foot { font-size: 8.5pt; border-top: 1px solid #888; padding-top: .3em; }
 img { max-width: 100%; }
 h2 { break-after: avoid; } li, .caution { break-inside: avoid; }
 @media print {
-  body { margin: 0; padding: 0; max-width: none; font-size: 9.5pt; line-height: 1.3; }
-  h2 { margin-top: .7em; } .side img { flex-basis: 3.1in; }
+  body { margin: 0; padding: 0; max-width: none; font-size: 9.5pt; line-height: 1.2; }
+  th, td { padding-top: .05em; padding-bottom: .05em; }
+  h2 { margin-top: .6em; } ul, ol { margin: .2em 0; } p.under { margin-bottom: .5em; }
+  .caution { margin: .5em 0; } .caution h2 { margin-top: .2em; } .side img { flex-basis: 3.1in; }
   img.week { display: block; max-height: 150mm; margin: 0 auto; } h2.list { break-before: page; }
 }
 </style>
@@ -61,7 +66,7 @@ def card_html(card, picture_base64: str) -> str:
         f'<p class="under">{escape(card.subtitle)}<br>{escape(card.reference)}</p>',
         f'<div class="side"><div><h2>Times (UTC)</h2>{table_html(MOMENT, card.times, "moments")}</div>',
         f'<img src="data:image/png;base64,{picture_base64}" alt="track over the sky" width="330"></div>',
-        f"<h2>Radio and data</h2>{rows_html(card.radio)}",
+        f"<h2>Radio and data</h2>{rows_html(radio_and_commands(card, named_in(card, *CARD_ROOM)))}",
         f'<div class="caution"><h2>Cautions</h2><ul>{items_html(card.cautions)}</ul></div>',
         f"<h2>{escape(card.search_after)}</h2><ol>{items_html(card.steps)}</ol>",
         f'<p class="foot">{escape(card.footer)}</p>',

@@ -12,8 +12,10 @@ from made_up_contacts import contact
 
 from planner.errors import InputError
 from planner.export.card_page import FOOT, card_figure
-from planner.export.cards import card_files, make_card
+from planner.export.cards import PICTURE_IN, card_files, make_card
+from planner.export.commands import carried_by
 from planner.export.contacts import schedule_issue
+from planner.export.html import card_html
 
 # MediaBox of ISO 216 A4 in points: 210 x 297 mm.
 A4_POINTS = (595, 842)
@@ -58,7 +60,7 @@ def test_a_card_says_what_to_do_without_lock_and_warns(mission, sky, session, ro
     acquisition_s = mission.satellites[0].spacecraft.mode("K high rate").acquisition_s
     wait_s = int(re.match(r"No lock (\d+) s after", card.search_after)[1])
     assert acquisition_s < wait_s < acquisition_s + 10  # a day-old set is late by a second or so
-    assert any("search along the track" in step for step in card.steps)
+    assert any(re.search(r"search along the track, \d\.\d s either way \(two sigma\)", step) for step in card.steps)
     assert card.cautions[0] == "Sun within 0.4 deg of the dish axis"
     assert any("licence" in caution for caution in card.cautions)
     assert any("nobody at or in front of it" in caution for caution in card.cautions)
@@ -84,19 +86,78 @@ def test_files_are_one_a4_page_and_the_same_bytes_each_time(mission, sky, row):
     assert "size: A4;" in html.decode()
 
 
+def printed_pages(page: bytes, folder) -> list[bytes]:
+    """The media box of every page that a browser makes of it."""
+    (folder / "card.html").write_bytes(page)
+    browser = [require_chromium(), "--headless", "--no-sandbox", "--disable-gpu", "--no-pdf-header-footer"]
+    printed = folder / "card.pdf"
+    subprocess.run(
+        [*browser, f"--print-to-pdf={printed}", (folder / "card.html").as_uri()], check=True, capture_output=True
+    )
+    pages = re.findall(rb"/Type\s*/Page\b", printed.read_bytes())
+    boxes = re.findall(rb"/MediaBox\s*\[0 0 ([\d.]+) ([\d.]+)\]", printed.read_bytes())
+    assert tuple(round(float(points)) for points in boxes[0]) == pytest.approx(A4_POINTS, abs=1)
+    return pages
+
+
 def test_a_card_with_many_modcods_and_cautions_prints_from_a_browser_on_one_a4_page(mission, sky, row, tmp_path):
     on = datetime.fromisoformat(row["tx_on_utc"])
     coding = " ".join(f"16APSK_8/9@{(on + timedelta(seconds=20 * k)).isoformat()}" for k in range(9))
     frame = pd.DataFrame(
         [row | {"modcods": coding, "cautions": "; ".join(["flux 2.3 dB above the RR 21-4 limit"] * 3)}]
     )
-    page, printed = tmp_path / "card.html", tmp_path / "card.pdf"
-    page.write_bytes(dict(card_files(mission, sky, frame)).popitem()[1])
-    browser = [require_chromium(), "--headless", "--no-sandbox", "--disable-gpu", "--no-pdf-header-footer"]
-    subprocess.run([*browser, f"--print-to-pdf={printed}", page.as_uri()], check=True, capture_output=True)
-    assert len(re.findall(rb"/Type\s*/Page\b", printed.read_bytes())) == 1
-    boxes = re.findall(rb"/MediaBox\s*\[0 0 ([\d.]+) ([\d.]+)\]", printed.read_bytes())
-    assert tuple(round(float(points)) for points in boxes[0]) == pytest.approx(A4_POINTS, abs=1)
+    assert len(printed_pages(dict(card_files(mission, sky, frame)).popitem()[1], tmp_path)) == 1
+
+
+def uploading(row, count: int) -> pd.DataFrame:
+    """The contact of `row`, which carries up the commands of so many others."""
+    served = [contact(10 + n, commands_from=row["contact_id"]) for n in range(count)]
+    return pd.DataFrame([row | {"commands_from": ""}, *served])
+
+
+def upload_card(mission, sky, row, count: int):
+    table = uploading(row, count)
+    first = next(table.itertuples())
+    return make_card(mission, sky, first, carried=carried_by(table, first))
+
+
+def test_an_upload_contact_says_whose_commands_to_send(mission, sky, row):
+    card = upload_card(mission, sky, row, 2)
+    rows = [
+        ("Commands to send", "marshlight-1.vardholm.0010.k-high-rate 07 Dec 10:00:00 to 10:05:00"),
+        ("", "marshlight-1.vardholm.0011.k-high-rate 07 Dec 11:00:00 to 11:05:00"),
+    ]
+    html = card_html(card, "")
+    written = [text.get_text() for text in card_figure(card, mission, sky).texts]
+    for label, text in rows:
+        assert f"<th>{label}</th><td>{text}</td>" in html
+        assert {label, text} - {""} <= set(written)
+    served = uploading(row, 2).iloc[1:]
+    assert not any(carried_by(uploading(row, 2), other) for other in served.itertuples())
+    assert "Commands to send" not in card_html(card_of(mission, sky, row), "")
+
+
+@pytest.mark.parametrize("count", [9, 14, 60])
+def test_as_many_commands_are_named_as_an_a4_page_holds(mission, sky, row, count, tmp_path):
+    card = upload_card(mission, sky, row | {"cautions": "flux 2.3 dB above the RR 21-4 limit"}, count)
+    html, figure = card_html(card, ""), card_figure(card, mission, sky)
+    written = [text for text in figure.texts if text.get_position()[1] > FOOT]
+    for shown in (html, "\n".join(text.get_text() for text in written)):
+        named = len(re.findall(r"high-rate \d\d Dec", shown))
+        more = re.search(r"and (\d+) more: contacts\.csv, commands_from", shown)
+        assert named + (int(more[1]) if more else 0) == count
+        assert named >= min(count, 5)
+    assert min(text.get_fontsize() for text in written) > 7  # points, as in small print
+    frame = uploading(row | {"cautions": "flux 2.3 dB above the RR 21-4 limit"}, count)
+    _, page = next(pair for pair in card_files(mission, sky, frame.iloc[:1]) if pair[0].endswith("html"))
+    picture = re.search(rb"base64,([^\"]*)", page)[1].decode()
+    assert len(printed_pages(card_html(card, picture).encode(), tmp_path)) == 1
+
+
+def test_the_sky_is_printed_as_large_as_it_is_drawn(mission, sky, row):
+    """So that its letters are those of the page."""
+    html = dict(card_files(mission, sky, pd.DataFrame([row]))).popitem()[1].decode()
+    assert f"flex-basis: {PICTURE_IN[0]}in" in html
 
 
 def test_which_schedule_a_card_is_from_stands_on_it(mission, sky, row):
@@ -115,7 +176,7 @@ def test_a_card_says_where_its_commands_go_up(mission, sky, row):
     carriers = [
         dict(card_of(mission, sky, row, commands_from=text).radio)["Its own commands"] for text in ("a.b.s", "")
     ]
-    assert carriers == ["go up in contact a.b.s", "aboard before"]
+    assert carriers == ["go up in contact a.b.s", "aboard at the start of the span"]
     assert "Its own commands" not in dict(card_of(mission, sky, row).radio)
 
 
