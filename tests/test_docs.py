@@ -48,7 +48,8 @@ COLUMNS = {
 SUMMARY = (
     "satellites", "stations", "passes", "contacts", "volume_mbit", "expected_volume_mbit", "upper_bound_mbit",
     "gap_pct", "objective", "objective_bound", "solver_gap_pct", "status", "soc_min_pct", "soc_floor_pct",
-    "soc_end_pct", "stored_end_mbit", "lost_mbit", "elements_age_days_max", "cautions", "versions", "inputs", "files",
+    "soc_end_pct", "station_cost", "stored_end_mbit", "lost_mbit", "elements_age_days_max", "cautions", "versions",
+    "inputs", "files",
 )  # fmt: skip
 
 

@@ -6,6 +6,7 @@ from datetime import datetime, timedelta
 from planner.errors import InputError
 from planner.mission.contacts import StatedContact, read_contacts, utc_moment
 from planner.mission.models import Mission
+from planner.mission.numbers import number
 from planner.schedule import frames
 from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import Flown
@@ -164,11 +165,11 @@ def _agrees(stated: str, now) -> bool:
     if isinstance(now, str):
         return stated.strip() == now.strip()
     try:
-        number = float(stated)
+        value = number(stated)
     except ValueError:
         return False
     decimals = len(stated.partition(".")[2])
-    return abs(number - float(now)) <= 0.75 * 10.0**-decimals
+    return abs(value - float(now)) <= 0.75 * 10.0**-decimals
 
 
 def _shown(value) -> str:

@@ -9,6 +9,9 @@ from planner.mission.transmitter import Transmitter
 from planner.power.battery import describe_cell
 
 
+FAR_OFF_KM = 1.0  # a tenth of a degree, overhead in low orbit
+
+
 def input_cautions(mission: Mission) -> list[str]:
     """One sentence for each; satellites that share a spacecraft are warned of once."""
     every = [caution for satellite in mission.satellites for caution in _cautions(mission, satellite)]
@@ -21,6 +24,12 @@ def _cautions(mission: Mission, satellite: Satellite) -> Iterator[str]:
         yield (
             f"{satellite.name}: elements of {_iso(elements.epoch)} are used; those of {_iso(elements.newer_epoch)} in"
             " the same file are newer than the start: leave only them in the file to plan with them."
+        )
+    off_km = getattr(elements, "interpolation_error_km", 0.0)
+    if off_km > FAR_OFF_KM:
+        yield (
+            f"{satellite.name}: the ephemeris' states are so far apart that positions between them may be off by"
+            f" {off_km:.1f} km: take one with a smaller step."
         )
     if mission.policy.upload_lead_h is not None and until is not None and until <= mission.start:
         yield (
@@ -36,10 +45,10 @@ def _cautions(mission: Mission, satellite: Satellite) -> Iterator[str]:
             )
     battery = satellite.spacecraft.battery
     full_pct = describe_cell(battery, health=battery.health).full_soc_pct
-    if full_pct < mission.policy.soc_end_pct:
+    if full_pct < mission.policy.soc_end_pct - 0.05:
         yield (
             f"battery.cell_max_v = {battery.cell_max_v:g} ends the charge of this {battery.chemistry} cell at"
-            f" {full_pct:.0f} %, below policy.soc_end_pct = {mission.policy.soc_end_pct:g}."
+            f" {full_pct:.1f} %, below policy.soc_end_pct = {mission.policy.soc_end_pct:g}."
         )
 
 

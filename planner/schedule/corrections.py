@@ -12,7 +12,6 @@ from planner.schedule.checks import Fault
 from planner.schedule.flown import CHARGE_LIMITS, Flown
 from planner.schedule.problem import Problem
 from planner.schedule.states import EnergyStates, SatelliteStates
-from planner.units import DAY_S
 
 MARGIN_WH = 0.004  # asked for beyond a floor that broke, so that rounding to whole seconds does not break it again
 
@@ -41,6 +40,17 @@ def followed(problem: Problem, states: SatelliteStates, chosen: Chosen, flown: F
     _log.info("%s: the programme follows the simulated battery, by up to %.3f Wh", states.satellite, off_wh)
     followed_wh = replace(states.likely, gain_wh=gain_wh)
     return replace(states, likely=_for_risk(followed_wh, flown, states.satellite))
+
+
+def granted(problem: Problem, flown: Flown) -> Problem:
+    """Floors no higher than what these sessions, which fly whatever is chosen, leave: none could be asked for."""
+    states = []
+    for one in problem.states:
+        series = flown.worst[one.satellite]
+        left_wh = np.interp(one.events_s, series.time_s, series.stored_wh) - MARGIN_WH
+        energy = replace(one.likely, floor_wh=np.minimum(one.likely.floor_wh, left_wh))
+        states.append(replace(one, likely=energy))
+    return replace(problem, states=tuple(states))
 
 
 def _for_risk(energy: EnergyStates, flown: Flown, satellite: str) -> EnergyStates:
@@ -126,7 +136,11 @@ def _lowest_s(series: BatterySeries, fault: Fault) -> float:
     if is_sag(fault):
         later = np.flatnonzero(series.time_s[:-1] >= fault.time_s - 1e-3)
         return float(series.time_s[later[np.argmin(np.abs(series.lowest_cell_v[later] - fault.value))]])
-    if fault.rule == "depth of discharge":
-        return series.lowest(fault.time_s, fault.time_s + DAY_S)[0]
     later = np.flatnonzero(series.time_s >= fault.time_s - 1e-3)
-    return float(series.time_s[later[np.argmin(np.abs(series.soc_pct[later] - fault.value))]])
+    lowest_pct = fault.value
+    if fault.rule == "depth of discharge":  # a cycle may end days after the peak that it began with, or begin low
+        peak_pct = float(series.soc_at_pct(fault.time_s))
+        lowest_pct = (
+            peak_pct - fault.value if peak_pct - fault.value >= series.soc_pct[later].min() - 1e-6 else peak_pct
+        )
+    return float(series.time_s[later[np.argmin(np.abs(series.soc_pct[later] - lowest_pct))]])

@@ -16,6 +16,7 @@ from planner.sky.samples import doppler_hz
 from planner.sky.sites import look, station_position_km
 from planner.units import DAY_S
 
+NEAR_S = 30.0  # a session that ends this near to where the mount is too slow ends because of it
 CONTACT_COLUMNS = (
     "contact_id", "pass_id", "satellite", "station", "mode", "aos_utc", "tx_on_utc", "tx_off_utc", "los_utc",
     "duration_s", "aos_azimuth_deg", "los_azimuth_deg", "max_elevation_deg", "min_margin_db", "volume_mbit",
@@ -117,7 +118,7 @@ def cautions(flown: Flown, session: Session, row: int) -> list[str]:
     )
     if np.nanmax(excess_db, initial=-np.inf) > 0:
         said.append(
-            f"flux {np.nanmax(excess_db):.1f} dB above the RR 21-4 limit"
+            f"flux {np.nanmax(excess_db):.2f} dB above the RR 21-4 limit"
             " (check the current Radio Regulations and your licence)"
         )
     samples = week.sky.samples.of(row)
@@ -126,8 +127,10 @@ def cautions(flown: Flown, session: Session, row: int) -> list[str]:
     beam_deg = _ground_beam_deg(flown, session)
     if np.any(sun_deg[on_air] < beam_deg):
         said.append(f"Sun within {np.min(sun_deg[on_air]):.1f} deg of the dish axis")
-    if not np.all(week.sky.samples.trackable[samples]):
-        said.append("mount too slow near the zenith")
+    lost = time_s[~week.sky.samples.trackable[samples]]
+    if len(lost) and lost[0] <= span[1] + NEAR_S and lost[-1] >= span[0] - NEAR_S:
+        begin, end = (week.sky.clock.iso(float(moment_s))[11:19] for moment_s in (lost[0], lost[-1]))
+        said.append(f"mount too slow from {begin} to {end}, near the zenith")
     if week.sky.passes.truncated[row]:
         said.append(f"pass cut by the span's {week.sky.passes.truncated[row]}")
     return said

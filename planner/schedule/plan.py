@@ -9,7 +9,7 @@ import numpy as np
 from planner.errors import NoWeekError
 from planner.schedule.candidates import Refusal, pose
 from planner.schedule.cautions import input_cautions
-from planner.schedule.checks import breach_text
+from planner.schedule.checks import breach_text, find_faults
 from planner.schedule.flown import Flown
 from planner.schedule.optimise import bound_programme
 from planner.schedule.problem import Problem
@@ -65,6 +65,7 @@ def make_plan(
     """
     stopwatch = Stopwatch(time_limit_s)
     _check_idle(week)
+    _check_aboard(week, wishes)
     problem, refusals = pose(week, wishes)
     _check_wishes(problem, refusals, week)
     stopwatch.lap("posing")
@@ -99,6 +100,20 @@ def _check_idle(week: Week) -> None:
     ]
     if lines:
         raise NoWeekError("\n".join([*lines[:10], *input_cautions(week.mission)]))
+
+
+def _check_aboard(week: Week, wishes: Wishes) -> None:
+    """With what flies whatever is chosen, and nothing else, no battery may break a limit from the freeze on."""
+    flown = Flown(week, wishes.frozen, wishes.aboard)
+    begun_s = max(wishes.freeze_until_s, 0.0)
+    lines = [
+        f"what is aboard already, and flies whatever is planned, breaks a limit: {fault.text}"
+        for fault in find_faults(flown)
+        if fault.satellite and fault.time_s >= begun_s
+    ]
+    if lines:
+        mend = "cancel contacts by an uplink before them, then plan from a file without these"
+        raise NoWeekError("\n".join([*lines[:10], mend]))
 
 
 def _check_wishes(problem: Problem, refusals: list[Refusal], week: Week) -> None:

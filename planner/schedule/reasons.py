@@ -4,6 +4,7 @@ import numpy as np
 
 from planner.mission.contacts import Session
 from planner.schedule.candidates import Refusal
+from planner.schedule.checks import cost_of
 from planner.schedule.flown import Flown
 from planner.schedule.frames import contact_id
 from planner.schedule.problem import Problem
@@ -114,6 +115,14 @@ def _policy(flown: Flown, problem: Problem, candidate: Candidate) -> str:
         today = sum(s.satellite == candidate.satellite and problem.day_of(s.tx_on_s) == day for s in flown.sessions)
         if today >= most:
             return f"policy: {today} sessions that day already, {most} allowed"
+    budget, cost = problem.policy.cost_budget, problem.stations[candidate.station].cost
+    if budget is not None:
+        left = budget - cost_of(flown)
+        least = cost.per_pass + cost.per_minute * candidate.shortest_s / 60
+        if least > left:
+            return (
+                f"station budget: even {candidate.shortest_s:.0f} s cost {least:.2f}, {left:.2f} of {budget:g} are left"
+            )
     return ""
 
 

@@ -17,6 +17,7 @@ from planner.mission.models import Mission, Policy, Satellite
 from planner.schedule import frames
 from planner.schedule.account import data_classes
 from planner.schedule.cautions import input_cautions
+from planner.schedule.checks import cost_of
 from planner.schedule.flown import Flown
 from planner.schedule.plan import Plan, make_plan
 from planner.schedule.reasons import verdicts
@@ -27,6 +28,7 @@ from planner.units import DAY_S
 _log = logging.getLogger(__name__)
 
 PACKAGES = ("downlink-planner", "itur", "numpy", "pandas", "scipy", "sgp4", "skyfield", "skyfield-data")
+MUCH = 0.02  # of the recorded data lost: more is worth a caution
 CAUTIONS = (
     "Planning aid: flight rules, the operator's licence and licensed practice come first.",
     "Power flux-density is compared with ITU Radio Regulations Table 21-4 as copied second-hand; check the current"
@@ -92,6 +94,7 @@ class GivenWeek:
             "soc_floor_pct": mission.policy.soc_floor_pct,
             "soc_end_pct": _rounded(min(float(series.soc_pct[-1]) for series in worst), 3),
             "floor_risk_pct": {name: _risk(flown, name) for name in flown.week.powers},
+            "station_cost": _rounded(cost_of(flown), 3),
             "stored_end_mbit": _rounded(sum(float(series.stored_mbit[-1]) for series in stored), 3),
             "lost_mbit": _rounded(sum(float(series.lost_mbit[-1]) for series in stored), 3),
             "data_classes": [row for satellite in mission.satellites for row in _data_classes(flown, satellite)],
@@ -110,10 +113,20 @@ class GivenWeek:
         ]
         if policy.floor_risk_pct is not None:
             own += [self._risk_caution(name, policy) for name in self.flown.week.powers]
+        own += [self._loss_caution(name) for name, series in self.flown.recorder.items() if _lost_share(series) > MUCH]
         over = int(self.contacts["cautions"].str.contains("flux").sum())
         if over:
-            own.append(f"{over} contacts exceed that flux limit at some moment; see their cautions.")
+            which = "contact exceeds" if over == 1 else "contacts exceed"
+            own.append(f"{over} {which} that flux limit at some moment; see the cautions beside it.")
         return [*CAUTIONS, *own, *input_cautions(self.flown.week.mission)]
+
+    def _loss_caution(self, satellite: str) -> str:
+        series = self.flown.recorder[satellite]
+        full = self.flown.week.sky.clock.iso(float(series.time_s[int(np.argmax(series.lost_mbit > 0))]))
+        return (
+            f"{satellite}: {100 * _lost_share(series):.0f} % of what the payloads record,"
+            f" {series.lost_mbit[-1]:.0f} Mbit, is lost: the recorder is full from {full[:16]}Z."
+        )
 
     def _risk_caution(self, satellite: str, policy: Policy) -> str:
         lowest_pct, risk_pct = self.flown.worst[satellite].soc_pct.min(), 100 * self.flown.risk(satellite).high
@@ -172,6 +185,11 @@ class WeekPlan(GivenWeek):
             "status": plan.solution.status,
             "solutions": plan.solutions,
         }
+
+
+def _lost_share(series) -> float:
+    """Of what is recorded through the span, how much finds no room."""
+    return float(series.lost_mbit[-1]) / max(float(series.produced_mbit[-1]), 1e-9)
 
 
 def _risk(flown: Flown, satellite: str) -> dict:

@@ -12,7 +12,7 @@ from planner.mission.contacts import Session
 from planner.schedule.account import worth_mbit
 from planner.schedule.cautions import input_cautions
 from planner.schedule.checks import Fault, find_faults
-from planner.schedule.corrections import Chosen, followed, is_sag, tightened
+from planner.schedule.corrections import Chosen, followed, granted, is_sag, tightened
 from planner.schedule.flown import CHARGE_LIMITS, Flown
 from planner.schedule.optimise import WeekProgramme, plan_programme, staying_programme
 from planner.schedule.problem import Problem
@@ -79,6 +79,8 @@ class Search:
 
         When time ran out before a full solution, that bound is the coarse programme's, and the status says so.
         """
+        if self.problem.frozen:
+            self._take_frozen()
         if self.week.mission.policy.floor_risk_pct is not None:
             self._settle_risk()
         few, coarse_bound = self._approach()
@@ -87,6 +89,8 @@ class Search:
             problem, whole = self.problem, True
             week, full = self._solve(problem, RELATIVE_GAP, must=False)
             if full.values is None:
+                if best is not None:
+                    break
                 if full.status != "time limit":
                     raise NoWeekError(no_solution(self.week, problem, full))
                 at_hand = {i for i, c in enumerate(problem.candidates) if candidate_key(c) in few}
@@ -175,6 +179,14 @@ class Search:
             chosen = [(few[i], on_s, off_s) for i, on_s, off_s in week.sessions(solution.values)]
         self.problem = self._corrected(self.problem, chosen)
         return {candidate_key(self.problem.candidates[i]) for i, *_ in chosen}, coarse.bound
+
+    def _take_frozen(self) -> None:
+        """Correct the problem by the sessions that fly whatever is chosen, which may touch a floor as they are."""
+        frozen = set(self.problem.frozen)
+        own = [(i, c.opens_s, c.closes_s) for i, c in enumerate(self.problem.candidates)
+               if c.session(c.opens_s, c.closes_s) in frozen]  # fmt: skip
+        self.problem = self._corrected(self.problem, own)
+        self.problem = granted(self.problem, self._flown(self.problem, own))
 
     def _settle_risk(self) -> None:
         """Correct the problem until the floors that stand for the allowed risk move no more: the deeper weeks go, the

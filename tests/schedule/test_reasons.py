@@ -54,6 +54,17 @@ def test_too_short(marshlight):
     assert all(match and int(match[1]) < 250 for match in short)
 
 
+def test_a_budget_that_is_spent(marshlight):
+    free = planner.plan_week(smaller(marshlight, 0.5, "Vardholm", modes=(K,)))
+    spent = free.summary["station_cost"]
+    assert spent > 0
+    plan = planner.plan_week(smaller(marshlight, 0.5, "Vardholm", modes=(K,), policy={"cost_budget": spent / 2}))
+    assert plan.summary["station_cost"] <= spent / 2
+    why = [reason for verdict, reason in reasons(plan).values() if verdict == "left out"]
+    pattern = rf"{K}: station budget: even 90 s cost \d+\.\d\d, \d+\.\d\d of {spent / 2:g} are left"
+    assert any(re.fullmatch(pattern, reason) for reason in why)
+
+
 def test_a_day_that_has_its_sessions(marshlight):
     plan = planner.plan_week(smaller(marshlight, 0.5, "Vardholm", modes=(K,), policy={"max_sessions_per_day": 1}))
     assert ("left out", f"{K}: policy: 1 sessions that day already, 1 allowed") in reasons(plan).values()
