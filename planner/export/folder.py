@@ -19,25 +19,16 @@ import shutil
 import stat
 from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager, suppress
-from errno import EACCES, EDQUOT, EFBIG, EINVAL, ENOSPC, EPERM, EROFS
-from io import BufferedReader
 from pathlib import Path
 
 from planner.errors import InputError, MachineError
+from planner.export.plain_files import digest_of, machine_faults, read_plain, sync_folder, write_new
 
 INDEX = "summary.json"
 RUN_LOG = "run_log.json"
 LOCK, COMING, KEEPING, KEPT, DONE = ".lock", ".coming", ".keeping", ".kept", ".done"
 JOURNAL = ".journal"
 SHA256 = re.compile("[0-9a-f]{64}")
-REASONS = {
-    ENOSPC: "the disk is full",
-    EDQUOT: "the disk quota is used up",
-    EFBIG: "the file-size limit is reached",
-    EACCES: "no permission to write here",
-    EPERM: "no permission to write here",
-    EROFS: "the file system is read-only",
-}
 _claimed_here: set[tuple[int, int]] = set()  # a record lock does not hold off a second claim of the same process
 
 
@@ -88,13 +79,13 @@ def claim_folder(folder):
     """
     folder = Path(folder)
     with _tidied(folder):
-        with _machine_faults(folder, "nothing was written"):
+        with machine_faults(folder, "nothing was written"):
             if folder.is_symlink() or (folder.exists() and not folder.is_dir()):
                 raise InputError(f"{folder}: must be a folder of its own (links are not followed for output)")
             folder.mkdir(parents=True, exist_ok=True)
             lock = _lock(folder)
         try:
-            with _machine_faults(folder, "an interrupted run could not be mended"):
+            with machine_faults(folder, "an interrupted run could not be mended"):
                 mended = _mend(folder)
             yield ClaimedFolder(folder, mended)
         finally:
@@ -120,9 +111,9 @@ def write_file(path, content: bytes) -> None:
     if not path.name or path.is_symlink() or (path.exists() and not path.is_file()):
         raise InputError(f"{path}: must be a plain file or a new name (links are not followed for output)")
     coming = path.with_name(f".{path.name}.{os.getpid()}")
-    with _machine_faults(path, "nothing was written"):
+    with machine_faults(path, "nothing was written"):
         try:
-            _write(coming, content)
+            write_new(coming, content)
             os.replace(coming, path)
         finally:
             coming.unlink(missing_ok=True)
@@ -152,7 +143,7 @@ class ClaimedFolder:
             _check_target(self.path, name)
         if faults := tuple(_not_ours(self.path, index, coming)):
             raise InputError(*faults)
-        with _machine_faults(self.path, "the set that was there is kept"):
+        with machine_faults(self.path, "the set that was there is kept"):
             try:
                 _replace(self.path, coming, index)
             except BaseException:  # Ctrl-C too
@@ -166,14 +157,14 @@ class ClaimedFolder:
 def _replace(folder: Path, coming: Mapping[str, bytes], index: str) -> None:
     (folder / COMING).mkdir()
     for name, content in coming.items():
-        _write(folder / COMING / name, content)
+        write_new(folder / COMING / name, content)
     listed = _listed(folder, index) if os.path.lexists(folder / index) else {}
     old = [name for name in sorted({*coming, *listed}) if os.path.lexists(folder / name)]
     _keep_aside(folder, old, coming, index)
     for name in coming:  # the index is the last of them
         os.replace(folder / COMING / name, folder / name)
     _remove_all(folder, set(old) - set(coming))
-    _sync(folder)
+    sync_folder(folder)
 
 
 def _keep_aside(folder: Path, old: list[str], coming: Mapping[str, bytes], index: str) -> None:
@@ -185,12 +176,12 @@ def _keep_aside(folder: Path, old: list[str], coming: Mapping[str, bytes], index
         try:
             os.link(folder / name, keeping / name)
         except OSError:  # the file system knows no hard links
-            _write(keeping / name, _read(folder / name))
+            write_new(keeping / name, read_plain(folder / name))
     digest = hashlib.sha256(coming[index]).hexdigest()
-    _write(keeping / JOURNAL, json_bytes({"index": index, "sha256": digest, "old": old, "new": list(coming)}))
-    _sync(keeping)
+    write_new(keeping / JOURNAL, json_bytes({"index": index, "sha256": digest, "old": old, "new": list(coming)}))
+    sync_folder(keeping)
     os.rename(keeping, folder / KEPT)
-    _sync(folder)
+    sync_folder(folder)
 
 
 def _mend(folder: Path) -> tuple[str, ...]:
@@ -198,7 +189,7 @@ def _mend(folder: Path) -> tuple[str, ...]:
     told: tuple[str, ...] = ()
     if (folder / KEPT).is_dir():
         index, digest, old, new = _journal(folder / KEPT / JOURNAL)
-        if not verify_set(folder, index) and _digest(folder / index) == digest:
+        if not verify_set(folder, index) and digest_of(folder / index) == digest:
             _remove_all(folder, set(old) - set(new))
             told = (
                 f"{folder}: an earlier run ended just after it replaced the set; the new set is whole and in place",
@@ -211,7 +202,7 @@ def _mend(folder: Path) -> tuple[str, ...]:
             told = (
                 f"{folder}: an earlier run was interrupted while it replaced the set; the set before is back in place",
             )
-        _sync(folder)
+        sync_folder(folder)
         os.rename(folder / KEPT, folder / DONE)
     elif (folder / COMING).exists() or (folder / KEEPING).exists():
         told = (
@@ -225,7 +216,7 @@ def _journal(path: Path) -> tuple[str, str, list[str], list[str]]:
     try:
         if path.parent.is_symlink():
             raise ValueError("a link to somewhere else")
-        journal = json.loads(_read(path))
+        journal = json.loads(read_plain(path))
         index, digest, old, new = (journal[key] for key in ("index", "sha256", "old", "new"))
         if all(_is_plain(name) for name in [index, *old, *new]):
             return index, digest, old, new
@@ -250,7 +241,7 @@ def _remove_all(folder: Path, names) -> None:
 def _listed(folder: Path, index: str) -> dict[str, str]:
     """The SHA-256 of each file of the set that is there. ValueError with the rule where the index is none of ours."""
     try:
-        content = json.loads(_read(folder / index))
+        content = json.loads(read_plain(folder / index))
         listed = content["files"]
         if (listed or "mission" in content) and all(_is_plain(n) and SHA256.fullmatch(d) for n, d in listed.items()):
             return listed
@@ -296,45 +287,11 @@ def _check_target(folder: Path, name: str) -> None:
 
 def _fault(path: Path, digest: str) -> str | None:
     try:
-        return None if _digest(path) == digest else "differs from the hash in the index"
+        return None if digest_of(path) == digest else "differs from the hash in the index"
     except FileNotFoundError:
         return "is missing"
     except OSError as fault:
         return f"cannot be read: {fault.strerror}"
-
-
-def _digest(path: Path) -> str:
-    with _opened(path) as file:
-        return hashlib.file_digest(file, "sha256").hexdigest()
-
-
-def _read(path: Path) -> bytes:
-    with _opened(path) as file:
-        return file.read()
-
-
-def _opened(path: Path) -> BufferedReader:
-    """A plain file to read. OSError for a link, and for a pipe or device, which could keep us waiting for ever."""
-    handle = os.open(path, os.O_RDONLY | os.O_NOFOLLOW | os.O_NONBLOCK)
-    if stat.S_ISREG(os.fstat(handle).st_mode):
-        return open(handle, "rb")
-    os.close(handle)
-    raise OSError(EINVAL, "must be a plain file")
-
-
-def _write(path: Path, content: bytes) -> None:
-    with open(os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL | os.O_NOFOLLOW, 0o666), "wb") as file:
-        file.write(content)
-        file.flush()
-        os.fsync(file.fileno())
-
-
-def _sync(folder: Path) -> None:
-    handle = os.open(folder, os.O_RDONLY | os.O_DIRECTORY)
-    try:
-        os.fsync(handle)
-    finally:
-        os.close(handle)
 
 
 def _lock(folder: Path) -> int:
@@ -388,16 +345,6 @@ def _tidied(folder: Path) -> Iterator[None]:
         for path in missing:
             with suppress(OSError):  # not empty: a set was written
                 path.rmdir()
-
-
-@contextmanager
-def _machine_faults(folder: Path, consequence: str):
-    """What the operating system refuses, told as a MachineError."""
-    try:
-        yield
-    except OSError as fault:
-        reason = REASONS.get(fault.errno or 0, fault.strerror or str(fault))
-        raise MachineError(f"{folder}: {reason}; {consequence}") from fault
 
 
 def _plain_number(value):
