@@ -70,7 +70,7 @@ def write_pointing(mission: Mission, arguments, tell: Tell) -> int:
 
 def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datetime | None, tell: Tell) -> int:
     """A card for every contact of a file, and the week sheet; contacts before the freeze are not judged."""
-    from planner.export.cards import card_files
+    from planner.export.cards import card_files, outdated_contacts
     from planner.export.contacts import file_issue
     from planner.export.folder import claim_folder
     from planner.export.sheet import sheet_files
@@ -85,10 +85,11 @@ def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datet
         given = week_shown(verdict.flown, contacts, freeze_until)
         count = len(given.contacts)
         issue = file_issue(contacts.read_bytes())
-        cards = card_files(mission, verdict.flown.week.sky, given.contacts, issue)
+        sky = verdict.flown.week.sky
+        cards = card_files(mission, sky, given.contacts, issue)
         files = dict(_counted(cards, tell, "file of cards", 2 * count))
         tell("the week sheet")
-        files |= sheet_files(mission, given, issue)
+        files |= sheet_files(mission, given, issue, outdated_contacts(mission, sky, given.contacts))
         folder.write(files, {"mission": mission.name, "cards": count}, index="cards.json")
     printing.say(f"{count} cards and the week sheet written to {out}")
     _say_cautions(mission)

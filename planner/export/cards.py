@@ -118,10 +118,12 @@ def make_card(mission: Mission, sky: Sky, row, issue: str = "", carried: Sequenc
     )
 
 
-def needs_newer_elements(mission: Mission, sky: Sky, row) -> bool:
-    """Whether the present elements no longer point the dish by the end of the contact in this row of its table."""
-    session = _session(mission, sky, row)
-    return _outlived(sky, session, useful_until(mission, sky, session))
+def outdated_contacts(mission: Mission, sky: Sky, contacts: pd.DataFrame) -> frozenset[str]:
+    """Ids of the contacts by whose end the present elements no longer point the dish."""
+    sessions = {str(row.contact_id): _session(mission, sky, row) for row in contacts.itertuples()}
+    return frozenset(
+        name for name, session in sessions.items() if _outlived(sky, session, useful_until(mission, sky, session))
+    )
 
 
 def _outlived(sky: Sky, session: Session, until: datetime | None) -> bool:

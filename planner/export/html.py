@@ -27,9 +27,10 @@ th { text-align: left; vertical-align: top; white-space: nowrap; font-weight: no
 td { vertical-align: top; padding: .15em 1em .15em 0; font-variant-numeric: tabular-nums; }
 table.list { width: 100%; font-size: 8.5pt; } table.list th { border-bottom: 1px solid #888; vertical-align: bottom; }
 td.held { white-space: nowrap; }
-table.list :is(td, th):nth-last-child(2) { text-align: right; }
-table.list tr { break-inside: avoid; }
-table.list td { border-bottom: 1px solid #ddd; vertical-align: top; padding-right: .6em; }
+table.list :is(td, th):nth-child(n + 7):nth-child(-n + 9), table.list :is(td, th):nth-child(n + 13) {
+  text-align: right; }
+table.list tbody { break-inside: avoid; border-bottom: 1px solid #ddd; }
+table.list td { padding-right: .6em; }
 table.moments { font-size: 11pt; }
 table.moments td + td { font-weight: bold; } table.moments :last-child { padding-right: 0; }
 .caution { border: 2px solid #D55E00; padding: 0 1em; margin: .8em 0; } .caution h2 { margin-top: .5em; }
@@ -84,11 +85,21 @@ def items_html(lines) -> str:
     return "".join(f"<li>{escape(line)}</li>" for line in lines)
 
 
-def table_html(headings, rows, kind: str = "list") -> str:
+def table_html(headings, rows, kind: str) -> str:
     """Rows of texts under headings; `kind` is the table's class."""
     head = "".join(f"<th>{escape(text)}</th>" for text in headings)
     body = "".join("<tr>" + "".join(map(_cell, row)) + "</tr>\n" for row in rows)
     return f'<table class="{kind}"><thead><tr>{head}</tr></thead>\n<tbody>\n{body}</tbody></table>'
+
+
+def noted_table_html(headings, rows) -> str:
+    """The same for rows with one text more than there are headings: a note, across and under its row."""
+    head = "".join(f"<th>{escape(text)}</th>" for text in headings)
+    groups = []
+    for *texts, note in rows:
+        under = f'<tr class="note"><td></td><td colspan="{len(texts) - 1}">! {escape(note)}</td></tr>\n' if note else ""
+        groups.append(f"<tbody>\n<tr>{''.join(map(_cell, texts))}</tr>\n{under}</tbody>\n")
+    return f'<table class="list"><thead><tr>{head}</tr></thead>\n{"".join(groups)}</table>'
 
 
 def _cell(text: str) -> str:

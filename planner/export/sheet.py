@@ -1,8 +1,9 @@
 """The week sheet: the week's picture and the list of its contacts, as PDF and as HTML."""
 
 import base64
-from collections.abc import Iterator
+from collections.abc import Container, Iterator
 from datetime import UTC
+from typing import Any
 
 import pandas as pd
 from matplotlib.figure import Figure
@@ -11,19 +12,20 @@ from planner.charts import style
 from planner.charts.week import finding, week_figure
 from planner.export.contacts import as_written, azimuth_text, clock_text, schedule_issue, utc_text
 from planner.export.fold import fold, shortened
-from planner.export.html import escape, items_html, page, table_html
+from planner.export.html import escape, items_html, noted_table_html, page
 from planner.export.render import pdf_bytes, png_bytes
 from planner.mission.models import Mission
 
 COLUMNS = {  # heading: (place across the table, letters that fit)
-    "day": (0.0, 11), "AOS": (0.084, 9), "on": (0.145, 9), "off": (0.206, 9), "LOS": (0.267, 9),
-    "az. AOS": (0.379, 7), "az. LOS": (0.435, 7), "max el.": (0.488, 7), "satellite": (0.504, 15),
-    "station": (0.616, 18), "mode": (0.747, 15), "margin": (0.915, 9), "Mbit": (0.988, 9),
+    "day": (0.0, 11), "warm-up": (0.076, 9), "AOS": (0.137, 9), "on": (0.195, 9), "off": (0.253, 9), "LOS": (0.311, 9),
+    "az. AOS": (0.417, 7), "az. LOS": (0.469, 7), "max el.": (0.519, 7), "satellite": (0.530, 15),
+    "station": (0.640, 18), "mode": (0.764, 15), "margin": (0.923, 9), "Mbit": (0.991, 9),
 }  # fmt: skip
+EVENTS = ("power_on", "aos", "tx_on", "tx_off", "los")  # whose times are told, in the order of their columns
 TO_THE_RIGHT = ("az. AOS", "az. LOS", "max el.", "margin", "Mbit")
-HEADINGS = (*COLUMNS, "cautions")
 TEXT_PT = 9.0
-LINES_A_PAGE, NOTE_LETTERS = 34, 120
+LINES_A_PAGE, NOTE_LETTERS = 34, 145
+TOO_OLD = "take newer elements before this pass: the present ones no longer point this dish by then"
 CAUTIONS = (
     "Planning aid: the flight rules, the licences of transmitter and stations, and licensed practice come first.",
     "Check power flux-density against the current Radio Regulations and your licence.",
@@ -31,27 +33,34 @@ CAUTIONS = (
 )
 
 
-def sheet_files(mission: Mission, plan, issue: str | None = None) -> dict[str, bytes]:
+def sheet_files(
+    mission: Mission, plan, issue: str | None = None, outdated: Container[str] = frozenset()
+) -> dict[str, bytes]:
     """`week_sheet.pdf` and `week_sheet.html` of a plan (its four tables and its summary).
 
-    `issue` says which schedule it is, the contacts' own `schedule_issue` when None.
+    Parameters
+    ----------
+    issue : which schedule it is, the contacts' own `schedule_issue` when None
+    outdated : ids of contacts whose dish needs newer elements by then, which is said beside each
     """
     return {
-        "week_sheet.pdf": pdf_bytes(sheet_pages(mission, plan, issue), mission.name),
-        "week_sheet.html": sheet_html(mission, plan, issue).encode(),
+        "week_sheet.pdf": pdf_bytes(sheet_pages(mission, plan, issue, outdated), mission.name),
+        "week_sheet.html": sheet_html(mission, plan, issue, outdated).encode(),
     }
 
 
-def sheet_pages(mission: Mission, plan, issue: str | None = None) -> Iterator[Figure]:
+def sheet_pages(
+    mission: Mission, plan, issue: str | None = None, outdated: Container[str] = frozenset()
+) -> Iterator[Figure]:
     """A4 landscape: the week's picture, then as many pages of contacts as it takes."""
     yield week_figure(mission, plan)
-    pages = _paginated(sheet_rows(plan.contacts))
+    pages = _paginated(sheet_rows(plan.contacts, outdated))
     under = _provenance(mission, issue or schedule_issue(plan.contacts))
     for number, rows in enumerate(pages, 1):
         yield _list_page(mission, rows, under, f"{number} of {len(pages)}")
 
 
-def sheet_html(mission: Mission, plan, issue: str | None = None) -> str:
+def sheet_html(mission: Mission, plan, issue: str | None = None, outdated: Container[str] = frozenset()) -> str:
     """The same as one page for a browser."""
     picture = base64.b64encode(png_bytes(week_figure(mission, plan), dpi=110)).decode()
     under = _provenance(mission, issue or schedule_issue(plan.contacts))
@@ -59,25 +68,26 @@ def sheet_html(mission: Mission, plan, issue: str | None = None) -> str:
         f"<h1>{escape(mission.name)}</h1>",
         f'<p class="under">{escape(finding(mission, plan))}. {escape(under)}</p>',
         f'<img class="week" src="data:image/png;base64,{picture}" alt="{escape(finding(mission, plan))}">',
-        '<h2 class="list">Contacts</h2>' + table_html(HEADINGS, sheet_rows(plan.contacts)),
+        '<h2 class="list">Contacts</h2>' + noted_table_html(list(COLUMNS), sheet_rows(plan.contacts, outdated)),
         f'<div class="caution"><h2>Cautions</h2><ul>{items_html(CAUTIONS)}</ul></div>',
     ]
     return page(mission.name, "\n".join(body), landscape=True)
 
 
-def sheet_rows(contacts: pd.DataFrame) -> list[tuple[str, ...]]:
-    """A row of texts under `HEADINGS` for every contact, in the table's order."""
-    return [_row(contact) for contact in as_written(contacts).itertuples()]
+def sheet_rows(contacts: pd.DataFrame, outdated: Container[str] = frozenset()) -> list[tuple[str, ...]]:
+    """A row of texts under `COLUMNS` for every contact, in the table's order, its cautions behind them."""
+    return [_row(contact, contact.contact_id in outdated) for contact in as_written(contacts).itertuples()]
 
 
-def _row(contact) -> tuple[str, ...]:
-    events = utc_text([getattr(contact, f"{event}_utc") for event in ("aos", "tx_on", "tx_off", "los")]).tolist()
+def _row(contact: Any, outdated: bool) -> tuple[str, ...]:
+    events = utc_text([getattr(contact, f"{event}_utc") for event in EVENTS]).tolist()
+    cautions = [] if pd.isna(contact.cautions) or not contact.cautions else [str(contact.cautions)]
     azimuths = (contact.aos_azimuth_deg, contact.los_azimuth_deg)
     return (
-        f"{pd.Timestamp(events[1]).round('s'):%a %d %b}", *map(clock_text, events),
+        f"{pd.Timestamp(contact.tx_on_utc).round('s'):%a %d %b}", *map(clock_text, events),
         *(f"{azimuth_text(azimuth, 0)}°" for azimuth in azimuths), f"{contact.max_elevation_deg:.0f}°",
         contact.satellite, contact.station, contact.mode, f"{contact.min_margin_db:.2f} dB",
-        f"{contact.volume_mbit:,.0f}", "" if pd.isna(contact.cautions) else str(contact.cautions),
+        f"{contact.volume_mbit:,.0f}", "; ".join([*cautions, *([TOO_OLD] if outdated else [])]),
     )  # fmt: skip
 
 
@@ -137,7 +147,7 @@ def _list_page(mission: Mission, rows: list[list[list[str]]], under: str, number
 def _write_line(axes, y: float, texts: list[str], **options) -> None:
     """A text for each column, or one across from the second."""
     if len(texts) == 1:
-        axes.text(COLUMNS["AOS"][0], y, texts[0], va="center", fontsize=TEXT_PT, **options)
+        axes.text(COLUMNS["warm-up"][0], y, texts[0], va="center", fontsize=TEXT_PT, **options)
         return
     for (heading, (x, _)), text in zip(COLUMNS.items(), texts, strict=True):
         side = "right" if heading in TO_THE_RIGHT else "left"

@@ -6,8 +6,9 @@ import pandas as pd
 import pytest
 
 import planner
-from planner.export.contacts import passes_csv
-from planner.hand_over import week_shown
+from planner.export.cards import outdated_contacts
+from planner.export.contacts import contacts_csv, file_issue, passes_csv
+from planner.hand_over import week_shown, write_cards
 from planner.schedule.flown import Flown
 
 
@@ -62,3 +63,15 @@ def test_nothing_is_sent_before_the_freeze(plan, contacts):
 def test_another_table_of_that_name_drops_nothing(plan, contacts, text):
     (contacts.parent / "passes.csv").write_bytes(text)
     assert "dropped" not in set(week_shown(plan.flown, contacts).passes["verdict"])
+
+
+def test_the_sheet_is_made_of_that_week(plan, contacts, monkeypatch):
+    handed = []
+    monkeypatch.setattr("planner.export.cards.card_files", lambda *given: [])
+    monkeypatch.setattr("planner.export.sheet.sheet_files", lambda *given: handed.append(given) or {"sheet": b""})
+    contacts.write_bytes(contacts_csv(plan.contacts))
+    assert write_cards(plan.flown.week.mission, contacts, contacts.parent / "cards", None, lambda stage: None) == 0
+    [(mission, week, issue, outdated)] = handed
+    assert verdicts(week.passes) == verdicts(plan.passes)
+    assert issue == file_issue(contacts.read_bytes())
+    assert outdated == outdated_contacts(mission, plan.flown.week.sky, plan.contacts)
