@@ -59,7 +59,7 @@ def week(mission: Mission, arguments, freeze_until: datetime | None, tell: Tell)
             mission,
             keep=arguments.keep,
             drop=arguments.drop,
-            previous=previous,
+            previous=given,
             freeze_until=freeze_until,
             time_limit_s=arguments.time_limit,
             progress=tell,

@@ -1,6 +1,6 @@
 """A plan as a file of contacts: ids, mode and transmit times are read; everything else is derived anew."""
 
-from collections.abc import Iterable
+from collections.abc import Collection, Iterable
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -54,6 +54,11 @@ def read_contacts(contacts, mission: Mission) -> list[StatedContact]:
     if missing:
         raise InputError(*missing)
     return _stated("contacts", enumerate(contacts.astype(str).to_dict("records"), 2), mission)
+
+
+def commands_of(contacts: Iterable[StatedContact], aboard: Collection[Session]) -> dict[Session, str]:
+    """The MODCOD commands that a file states for those of its sessions that are aboard."""
+    return {c.session: c.stated["modcods"] for c in contacts if c.session in aboard and c.stated.get("modcods")}
 
 
 def _stated(place, rows: Iterable[tuple[int, dict[str, str]]], mission: Mission) -> list[StatedContact]:

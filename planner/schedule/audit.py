@@ -4,7 +4,7 @@ from dataclasses import dataclass
 from datetime import datetime, timedelta
 
 from planner.errors import InputError
-from planner.mission.contacts import StatedContact, read_contacts, utc_moment
+from planner.mission.contacts import Session, StatedContact, commands_of, read_contacts, utc_moment
 from planner.mission.models import Mission
 from planner.mission.numbers import number
 from planner.schedule import frames
@@ -32,12 +32,16 @@ class Stale:
 
 @dataclass(frozen=True, eq=False)
 class Audit:
-    """The verdict on a set of contacts: every broken rule, and every stale figure (which breaks nothing)."""
+    """The verdict on a set of contacts: every broken rule, and every stale figure (which breaks nothing).
+
+    `commanded` : the MODCOD commands that the file states of those that are aboard.
+    """
 
     flown: Flown
     faults: tuple[Fault, ...]
     stale: tuple[Stale, ...]
     lines: dict
+    commanded: dict[Session, str]
 
     @property
     def safe(self) -> bool:
@@ -102,7 +106,7 @@ def audit(mission: Mission, contacts, *, freeze_until: datetime | None = None, p
         for fault in (*_beyond(flown, lines), *find_faults(flown), *_wishes_broken(flown), *_not_as_aboard(flown))
         if fault.satellite or fault.session is None or powers_on_s(mission, fault.session) >= frozen_s
     ]
-    return Audit(flown, tuple(faults), tuple(_stale(flown, stated)), lines)
+    return Audit(flown, tuple(faults), tuple(_stale(flown, stated)), lines, commands_of(stated, aboard.sessions))
 
 
 def _beyond(flown: Flown, sessions) -> list[Fault]:

@@ -8,7 +8,6 @@ from planner.mission.models import Mission, Satellite
 from planner.mission.transmitter import Transmitter
 from planner.power.battery import describe_cell
 
-
 FAR_OFF_KM = 1.0  # a tenth of a degree, overhead in low orbit
 
 

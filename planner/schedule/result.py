@@ -2,17 +2,19 @@
 
 import logging
 import platform
-from collections.abc import Callable, Iterable
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass, field, replace
 from datetime import datetime
 from functools import cached_property, lru_cache
 from importlib.metadata import version
+from pathlib import Path
 
 import numpy as np
 import pandas as pd
 
 from planner.errors import InputError
 from planner.link import check_modes
+from planner.mission.contacts import Session, commands_of, read_contacts
 from planner.mission.models import Mission, Policy, Satellite
 from planner.schedule import frames
 from planner.schedule.account import data_classes
@@ -40,9 +42,13 @@ CAUTIONS = (
 
 @dataclass(frozen=True, eq=False, repr=False)
 class GivenWeek:
-    """A set of sessions, whoever chose them, as public tables. Columns are those of the files of the same names."""
+    """A set of sessions, whoever chose them, as public tables. Columns are those of the files of the same names.
+
+    `commanded` : the MODCOD commands of sessions that are aboard, as they went up: newer elements do not change them.
+    """
 
     flown: Flown
+    commanded: Mapping[Session, str] = field(default_factory=dict, kw_only=True)
 
     def __repr__(self) -> str:
         """In a line: the whole of it fills pages."""
@@ -54,7 +60,9 @@ class GivenWeek:
 
     @cached_property
     def contacts(self) -> pd.DataFrame:
-        return frames.contacts_frame(self.flown)
+        table = frames.contacts_frame(self.flown)
+        modcods = [self.commanded.get(s, now) for s, now in zip(self.flown.sessions, table["modcods"], strict=True)]
+        return table.assign(modcods=modcods)
 
     @cached_property
     def passes(self) -> pd.DataFrame:
@@ -146,8 +154,8 @@ class WeekPlan(GivenWeek):
     prices: pd.DataFrame | None = None  # from `priced`
 
     @classmethod
-    def of(cls, plan: Plan) -> "WeekPlan":
-        return cls(plan.flown, plan)
+    def of(cls, plan: Plan, commanded: Mapping[Session, str] | None = None) -> "WeekPlan":
+        return cls(plan.flown, plan, commanded=commanded or {})
 
     def explained(self, progress: Progress = lambda stage: None, cancelled=lambda: False) -> "WeekPlan":
         """The same plan, `passes` telling too what keeping each left-out pass would cost. A solution for each pass."""
@@ -258,6 +266,8 @@ def plan_week(
     tell = progress or (lambda stage: None)
     tell("passes, links and power")
     week = prepared(mission)
-    wishes = read_wishes(week, keep, drop, previous, freeze_until)
+    stated = read_contacts(previous, mission) if isinstance(previous, str | Path | pd.DataFrame) else None
+    wishes = read_wishes(week, keep, drop, previous if stated is None else [c.session for c in stated], freeze_until)
     _log.info("by hand: %s", wishes)
-    return WeekPlan.of(make_plan(week, wishes, time_limit_s=time_limit_s, progress=tell, cancelled=cancelled))
+    plan = make_plan(week, wishes, time_limit_s=time_limit_s, progress=tell, cancelled=cancelled)
+    return WeekPlan.of(plan, commands_of(stated or (), wishes.aboard.sessions))

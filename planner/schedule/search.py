@@ -27,6 +27,7 @@ RELATIVE_GAP = 8.5e-4  # … of which rounding and mending may take a little
 COARSE_GAP = 2.5e-2  # coarse enough to end with the first good heuristic
 APPROACHES = 1  # more hardly move the corrections
 MOST_FULL_SOLVES, MOST_MENDS = 4, 8
+NEXT_TO_NOTHING = 1e-4  # of a week's worth
 OVERDONE = 1.5  # by this much more with each mend of an allowed risk
 MOST_SETTLING, SETTLED_WH = 8, 0.2  # of the floors that stand for an allowed risk, before the search
 SHORTEST_SOLVE_S = 3.0  # even when the limit is used up: a mending must come to an end
@@ -111,7 +112,25 @@ class Search:
                 break
         if best is None:
             raise NoWeekError(f"no plan kept every limit in {self.solutions} solutions; the last broke: {self.broke}")
-        return self._staying(*best) if any(c.stays for c in self.problem.candidates) else best
+        best = self._staying(*best) if any(c.stays for c in self.problem.candidates) else best
+        return self._uplinks_high(*best)
+
+    def _uplinks_high(self, flown: Flown, solution: Solution) -> tuple[Flown, Solution]:
+        """Contacts that carry commands up moved to the middle of their pass, where that breaks no limit and costs next
+        to nothing: a lock that comes late there loses no commands."""
+        windows = {(c.pass_id, c.mode, c.opens_s): c for c in self.problem.candidates if c.carries_commands}
+        tca_s = self.week.sky.passes.tca_s
+        wished = []
+        for session in sorted({*flown.sessions} - {*self.problem.frozen, *self.problem.previous}):
+            for c in windows.values():
+                inside = c.opens_s <= session.tx_on_s + 1e-6 and session.tx_off_s <= c.closes_s + 1e-6
+                if (c.pass_id, c.mode) == (session.pass_id, session.mode) and inside:
+                    on_s = np.clip(tca_s[c.row] - session.duration_s / 2, c.opens_s, c.closes_s - session.duration_s)
+                    wished.append(on_whole_seconds(c, float(on_s), float(on_s) + session.duration_s))
+        least_mbit = worth_mbit(flown) * (1 - NEXT_TO_NOTHING)
+        high = put_back(flown, wished, lambda f: self._may_stay(f, least_mbit), self.problem.frozen)
+        _log.info("%d contacts with uplink put to the middle of their pass", len({*high.sessions} - {*flown.sessions}))
+        return high, replace(solution, objective=solution.objective + worth_mbit(high) - worth_mbit(flown))
 
     def _staying(self, flown: Flown, solution: Solution) -> tuple[Flown, Solution]:
         """Among this plan's contacts and the previous one's: those that change least for policy.replan_loss_pct, at the

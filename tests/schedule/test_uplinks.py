@@ -80,6 +80,28 @@ def test_an_audit_beside_the_issue_before_finds_what_would_not_be_commanded(two_
         planner.audit(two_day_mission, plan.contacts, previous=two_day_plan.contacts)
 
 
+def test_what_went_up_is_told_as_it_went_up(two_day_mission, two_day_plan):
+    freeze = two_day_mission.start + timedelta(hours=12)
+    before = two_day_plan.contacts.assign(modcods="as_commanded@2026-12-07T00:00:00.000Z")
+    plan = planner.plan_week(two_day_mission, previous=before, freeze_until=freeze)
+    aboard = aboard_at(two_day_mission, two_day_plan.flown.sessions, 12 * 3600.0).sessions
+    told = dict(zip(plan.flown.sessions, plan.contacts["modcods"], strict=True))
+    assert {session for session, modcods in told.items() if modcods.startswith("as_commanded")} == aboard
+
+
+def test_contacts_that_carry_commands_up_lie_in_the_middle_of_their_pass(two_day_mission, two_day_plan):
+    """A session that ends a second before LOS loses a day's commands when the lock comes late."""
+    mission = two_day_mission.with_changes(policy={"soc_floor_pct": 50.0, "soc_end_pct": 50.0})
+    plan = planner.plan_week(mission)
+    week = plan.flown.week
+    uplinks = [s for s in plan.flown.sessions if s.mode != K]
+    assert uplinks
+    for session in uplinks:
+        middle_s = (session.tx_on_s + session.tx_off_s) / 2
+        tca_s = week.sky.passes.tca_s[week.row_of[session.pass_id]]
+        assert abs(middle_s - tca_s) <= max(60.0, session.duration_s / 2)
+
+
 def test_what_is_aboard_cannot_be_dropped(two_day_mission, two_day_plan):
     freeze = two_day_mission.start + timedelta(hours=12)
     later = two_day_plan.contacts[two_day_plan.contacts["power_on_utc"] > f"{freeze:%Y-%m-%dT%H:%M:%S}"]
