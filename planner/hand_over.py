@@ -1,6 +1,6 @@
 """The commands that make files for stations and operators from contacts, and the one that compares two issues."""
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from datetime import datetime
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -12,6 +12,7 @@ from planner.mission.table import read_table
 from planner.printing import Tell
 
 if TYPE_CHECKING:
+    from planner.mission.contacts import Session
     from planner.schedule.flown import Flown
     from planner.schedule.trial import TrialWeek
 
@@ -82,7 +83,7 @@ def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datet
         verdict = audit(mission, contacts, freeze_until=freeze_until)
         if not verdict.safe:
             raise InputError(f"{contacts}: cards are made only of contacts that keep every limit", *verdict.texts())
-        given = week_shown(verdict.flown, contacts, freeze_until)
+        given = week_shown(verdict.flown, contacts, freeze_until, verdict.commanded)
         count = len(given.contacts)
         issue = file_issue(contacts.read_bytes())
         sky = verdict.flown.week.sky
@@ -97,10 +98,16 @@ def write_cards(mission: Mission, contacts: Path, out: Path, freeze_until: datet
     return DONE
 
 
-def week_shown(flown: "Flown", contacts: Path, freeze_until: datetime | None = None) -> "TrialWeek":
+def week_shown(
+    flown: "Flown",
+    contacts: Path,
+    freeze_until: datetime | None = None,
+    commanded: Mapping["Session", str] | None = None,
+) -> "TrialWeek":
     """The week of a contacts file; its passes tell those that no mode can use and those dropped, as `week` tells them.
 
-    Dropped are the passes of the mission's own list, and those of the passes.csv beside the contacts.
+    Dropped are the passes of the mission's own list, and those of the passes.csv beside the contacts; `commanded` are
+    the MODCOD commands of contacts that are aboard.
     """
     import pandas as pd
 
@@ -116,7 +123,8 @@ def week_shown(flown: "Flown", contacts: Path, freeze_until: datetime | None = N
     for candidate in found:
         why.pop(candidate.pass_id, None)
     rows = [(pass_id, *verdict) for pass_id, verdict in why.items()]
-    return TrialWeek(flown, pd.DataFrame(rows, columns=["pass_id", "verdict", "reason"]), dropped)
+    told = pd.DataFrame(rows, columns=["pass_id", "verdict", "reason"])
+    return TrialWeek(flown, told, dropped, commanded=commanded or {})
 
 
 def _dropped_beside(contacts: Path) -> frozenset[str]:

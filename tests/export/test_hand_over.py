@@ -59,19 +59,48 @@ def test_nothing_is_sent_before_the_freeze(plan, contacts):
     assert set(passes["verdict"][early]) == {"planned", "unusable"}
 
 
+def test_commands_that_are_aboard_stay_as_they_went_up(plan, contacts):
+    first = plan.flown.sessions[0]
+    told = week_shown(plan.flown, contacts, None, {first: "QPSK_1/4@2026-12-07T05:00:00.000Z"}).contacts
+    assert list(told["modcods"]) == ["QPSK_1/4@2026-12-07T05:00:00.000Z", *plan.contacts["modcods"][1:]]
+
+
 @pytest.mark.parametrize("text", [b"pass_id,max_elevation_deg\na,12\n", b"\xff\xfe", b""])
 def test_another_table_of_that_name_drops_nothing(plan, contacts, text):
     (contacts.parent / "passes.csv").write_bytes(text)
     assert "dropped" not in set(week_shown(plan.flown, contacts).passes["verdict"])
 
 
-def test_the_sheet_is_made_of_that_week(plan, contacts, monkeypatch):
-    handed = []
-    monkeypatch.setattr("planner.export.cards.card_files", lambda *given: [])
-    monkeypatch.setattr("planner.export.sheet.sheet_files", lambda *given: handed.append(given) or {"sheet": b""})
-    contacts.write_bytes(contacts_csv(plan.contacts))
-    assert write_cards(plan.flown.week.mission, contacts, contacts.parent / "cards", None, lambda stage: None) == 0
-    [(mission, week, issue, outdated)] = handed
+@pytest.fixture
+def handed(plan, contacts, monkeypatch):
+    """Calls `write_cards`, and returns the contacts that cards are made of and all that the sheet is made of."""
+    cards, sheets = [], []
+    monkeypatch.setattr("planner.export.cards.card_files", lambda *given: cards.append(given) or [])
+    monkeypatch.setattr("planner.export.sheet.sheet_files", lambda *given: sheets.append(given) or {"sheet": b""})
+
+    def hand_over(table, freeze_until=None):
+        contacts.write_bytes(contacts_csv(table))
+        folder = contacts.parent / "cards"
+        assert write_cards(plan.flown.week.mission, contacts, folder, freeze_until, lambda stage: None) == 0
+        return cards[-1][2], sheets[-1]
+
+    return hand_over
+
+
+def test_the_sheet_is_made_of_that_week(plan, contacts, handed):
+    _, (mission, week, issue, outdated) = handed(plan.contacts)
     assert verdicts(week.passes) == verdicts(plan.passes)
     assert issue == file_issue(contacts.read_bytes())
     assert outdated == outdated_contacts(mission, plan.flown.week.sky, plan.contacts)
+
+
+def test_cards_tell_the_commands_that_are_aboard(plan, handed):
+    """What went up stays up; commands after the freeze are made anew."""
+    noon = plan.flown.week.sky.clock.datetime(43_200.0)
+    up = [f"QPSK_1/4@{on}" for on in plan.contacts["tx_on_utc"]]
+    begun = pd.to_datetime(plan.contacts["power_on_utc"]) < noon
+    assert begun.any()
+    shown, _ = handed(plan.contacts.assign(modcods=up), noon)
+    assert list(shown["modcods"][begun]) == list(pd.Series(up)[begun])
+    shown, _ = handed(plan.contacts.assign(modcods=up))
+    assert list(shown["modcods"]) == list(plan.contacts["modcods"])
