@@ -15,6 +15,7 @@ from planner.printing import Tell
 DONE, NO, WRONG_INPUT, MACHINE, INTERRUPTED = 0, 1, 2, 3, 130
 WEEK = ("contacts.csv", "passes.csv", "battery.csv", "recorder.csv", "week.ics", "week.png")  # in every week's folder
 FLOWN_HELP = "contacts that power on before have flown: newer elements do not judge them"
+BEFORE_HELP = "contacts issued before --freeze-until: those aboard by then must stand, others need an uplink later"
 KEEP_HELP = "fly this pass in this mode, as PASS:MODE (may be repeated)"
 
 
@@ -72,6 +73,7 @@ def _parser() -> argparse.ArgumentParser:
         "audit", _audit, "check any contacts file against every limit", "audit week/contacts.csv", contacts=True
     )
     audit.add_argument("--freeze-until", metavar="UTC", help=FLOWN_HELP)
+    audit.add_argument("--from", dest="previous", metavar="FILE", help=BEFORE_HELP)
     audit.add_argument("--json", action="store_true", help="print the verdict as JSON")
     afford = add("afford", _afford, "can the battery pay for this one session?",
                  'afford --pass PASS_ID --mode "K high rate" --contacts week/contacts.csv')  # fmt: skip
@@ -256,7 +258,7 @@ def _audit(arguments, tell: Tell) -> int:
     mission, contacts = [str(DEFAULT_MISSION), *arguments.files][-2:]
     if contacts.endswith(".toml"):
         raise InputError(f"audit takes the mission file first, then the contacts, got {contacts} last")
-    return show_audit(_mission(mission), contacts, arguments.json, _freeze(arguments), tell)
+    return show_audit(_mission(mission), contacts, arguments.json, (_freeze(arguments), arguments.previous), tell)
 
 
 def _afford(arguments, tell: Tell) -> int:

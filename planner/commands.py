@@ -136,12 +136,15 @@ def _days(contacts):
                f"{group['soc_min_pct'].min():.1f} %")  # fmt: skip
 
 
-def show_audit(mission: Mission, contacts: str, as_json: bool, freeze_until: datetime | None, tell: Tell) -> int:
-    """Print every broken rule and stale figure; the exit status is the verdict."""
+def show_audit(
+    mission: Mission, contacts: str, as_json: bool, before: tuple[datetime | None, str | None], tell: Tell
+) -> int:
+    """Print every broken rule and stale figure; the exit status is the verdict. `before`: the freeze, the old issue."""
     from planner.schedule.audit import audit
 
     tell("passes, links and power")
-    verdict = audit(mission, contacts, freeze_until=freeze_until)
+    freeze_until, previous = before
+    verdict = audit(mission, contacts, freeze_until=freeze_until, previous=previous)
     if as_json:
         printing.say(json.dumps(verdict.as_dict(), indent=2))
         return DONE if verdict.safe else NO

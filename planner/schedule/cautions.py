@@ -33,7 +33,8 @@ def _cautions(mission: Mission, satellite: Satellite) -> Iterator[str]:
     if mission.policy.upload_lead_h is not None and until is not None and until <= mission.start:
         yield (
             f"{satellite.name}: start_state.commands_aboard_until = {_iso(until)} is not after the start: no contact"
-            " can be commanded, not even the first that could carry commands (policy.upload_lead_h)."
+            " can be commanded, not even the first that could carry commands (policy.upload_lead_h), but what a re-plan"
+            " finds aboard in the contacts of --from."
         )
     yield from _fractions(mission, satellite)
     for transmitter in satellite.spacecraft.transmitter:
