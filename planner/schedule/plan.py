@@ -79,7 +79,7 @@ def make_plan(
         _log.info("no week brings more than %.1f Mbit", bound.bound)
         stopwatch.lap("waiting for the bound")
     bound_mbit = min(most_there_is_mbit(problem), bound.bound if np.isfinite(bound.bound) else np.inf)
-    bound_mbit = max(bound_mbit, flown.total_mbit)  # the solver's rounding
+    bound_mbit = max(flown.total_mbit, bound_mbit)  # the solver's rounding
     return Plan(flown, problem, search.problem, refusals, solution, bound_mbit, search.solutions, stopwatch.laps)
 
 
