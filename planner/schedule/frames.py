@@ -130,7 +130,8 @@ def cautions(flown: Flown, session: Session, row: int) -> list[str]:
     lost = time_s[~week.sky.samples.trackable[samples]]
     if len(lost) and lost[0] <= span[1] + NEAR_S and lost[-1] >= span[0] - NEAR_S:
         begin, end = (week.sky.clock.iso(float(moment_s))[11:19] for moment_s in (lost[0], lost[-1]))
-        said.append(f"mount too slow from {begin} to {end}, near the zenith")
+        when = f"at {begin}" if begin == end else f"from {begin} to {end}"
+        said.append(f"mount too slow {when}, near the zenith")
     if week.sky.passes.truncated[row]:
         said.append(f"pass cut by the span's {week.sky.passes.truncated[row]}")
     return said

@@ -163,9 +163,11 @@ def test_turnaround_between_two_contacts(two_day_mission, plan):
     )
 
 
-def test_the_same_contact_twice_is_in_its_own_way(two_day_mission, plan):
-    twice = pd.concat([plan.contacts, plan.contacts.iloc[[0]]])
+def test_nearly_the_same_contact_twice_is_in_its_own_way_and_the_very_same_is_refused(two_day_mission, plan):
+    twice = pd.concat([plan.contacts, moved(plan.contacts, 0, tx_on=1.0).iloc[[0]]])
     assert any(fault.rule == "turnaround" for fault in planner.audit(two_day_mission, twice).faults)
+    with pytest.raises(InputError, match="line 22 repeats line 2"):
+        planner.audit(two_day_mission, pd.concat([plan.contacts, plan.contacts.iloc[[0]]]))
 
 
 def test_a_floor_and_an_end_that_the_contacts_do_not_hold(two_day_mission, plan):

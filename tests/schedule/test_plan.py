@@ -69,7 +69,7 @@ def test_the_small_week_agrees_with_a_second_opinion(written_week, two_day_missi
 @pytest.mark.parametrize(
     ("file", "old", "new", "fault"),
     [
-        ("contacts.csv", "T03:15:14.000Z,2026", "T03:15:04.000Z,2026", "windows"),
+        ("contacts.csv", "T03:15:15.000Z,2026", "T03:15:05.000Z,2026", "windows"),
         ("contacts.csv", ",Cape Tern,S low", ",Vardholm,S low", "windows"),
         ("battery.csv", ",yes,station", ",yes, station", "totals"),
         ("passes.csv", ",left out,", ",planned,", "windows"),
