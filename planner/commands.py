@@ -213,7 +213,7 @@ def show_affordability(
     )
     printing.say(answer.reason)
     if answer.duration_s is not None:
-        printing.table([("", "left"), ("", "left")], list(_answer_rows(answer)))
+        printing.table([("", "left"), ("", "left")], list(_answer_rows(answer, mission.policy.floor_words)))
     return DONE if answer.affordable else NO
 
 
@@ -225,7 +225,7 @@ def _verdict(answer, shortest_s: float) -> str:
     return f"NO for the whole window of {answer.duration_s:.0f} s, YES for up to {answer.longest_s:.0f} s"
 
 
-def _answer_rows(answer):
+def _answer_rows(answer, floor: str):
     if answer.replaces:
         planned = f"{', '.join(answer.replaces)}, {answer.replaced_s:.0f} s on air"
         yield "in place of, already planned", planned + ("" if answer.affordable else ", which stand as planned")
@@ -236,15 +236,17 @@ def _answer_rows(answer):
         f"{answer.energy_wh:.2f} Wh" + (f", {answer.joule_per_mbit:.3f} J/Mbit" if answer.joule_per_mbit else ""),
     )
     yield "charge before, after", f"{answer.soc_before_pct:.1f} %, {answer.soc_after_pct:.1f} % (pessimistic corner)"
-    yield "lowest charge from then on", f"{answer.soc_lowest_pct:.1f} % at {answer.soc_lowest_utc}"
+    yield "lowest charge from then on", f"{answer.soc_lowest_pct:.1f} % at {answer.soc_lowest_utc}, {floor}"
     yield "lowest cell voltage", f"{answer.lowest_cell_v:.3f} V"
     yield "charge is back", answer.recovered_utc or "not within the span"
     yield (
         "longest affordable",
         (f"{answer.longest_s:.0f} s, best from {answer.longest_tx_on_utc}" if answer.longest_s else "none"),
     )
-    if answer.binding_limit:
-        yield "binding limit", f"{answer.binding_limit}, missing {answer.missing:.2f} {answer.missing_unit}"
-        yield "would have to give way", ", ".join(answer.give_way) or "giving up contacts does not help"
+    if answer.only_by_rules:
+        yield "the battery alone", "could pay for the whole window"
+    elif answer.binding_limit:
+        yield "binding limit", answer.binding
+        yield "would have to give way", ", ".join(answer.give_way) or "none would do"
     for conflict in answer.conflicts:
         yield "also in conflict", conflict

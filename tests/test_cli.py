@@ -23,6 +23,8 @@ LINK_KEYS = (
     "required_db", "margin_db", "flux_dbw_m2", "flux_limit_dbw_m2", "flux_bandwidth_hz", "lines",
 )  # fmt: skip
 
+LEAD = "upload_lead_h = 6.0"
+
 
 @pytest.fixture
 def here(quick_folder, monkeypatch):
@@ -185,6 +187,22 @@ def test_afford_as_words_and_as_json(here, week, capsys):
     assert re.search(r"in place of, already planned +\S+, \d+ s on air", said)
     assert main([*words, "--json"]) == status
     assert json.loads(capsys.readouterr().out)["affordable"] == (status == 0)
+
+
+def test_afford_says_where_only_a_rule_of_the_week_is_in_the_way(here, week, capsys):
+    """A rule without a figure, as that of a contact which would carry the commands up."""
+    text = (here / "missions" / "marshlight.toml").read_text()
+    text = text.replace("aboard_until = 2026-12-08", "aboard_until = 2026-12-07").replace(
+        "[policy]", "[policy]\n" + LEAD
+    )
+    (here / "other").mkdir()
+    (here / "other" / "unled.toml").write_text(text)
+    (here / "other" / "none.csv").write_text((week / "contacts.csv").read_text().splitlines()[0] + "\n")
+    words = ["afford", "other/unled.toml", "--pass", pass_of(week), "--mode", K, "--contacts", "other/none.csv"]
+    assert main(words) == 1
+    said = capsys.readouterr().out
+    assert re.search(r"the battery alone +could pay for the whole window", said)
+    assert re.search(r"also in conflict +no contact with uplink between 48 h and 6 h before it can carry its", said)
 
 
 def test_two_equal_weeks_compare_as_equal(here, week, capsys):

@@ -181,8 +181,10 @@ def _answer_rows(answer):
     yield "charge is back", answer.recovered_utc or "not within the span"
     longest = f"{answer.longest_s:.0f} s, best from {answer.longest_tx_on_utc}" if answer.longest_s else "none"
     yield "longest affordable transmission", longest
-    if answer.binding_limit:
-        yield "binding limit", f"{answer.binding_limit}, missing {answer.missing:.2f} {answer.missing_unit}"
-        yield "would have to give way", ", ".join(answer.give_way) or "giving up contacts does not help"
+    if answer.only_by_rules:
+        yield "the battery alone", "could pay for the whole window"
+    elif answer.binding_limit:
+        yield "binding limit", answer.binding
+        yield "would have to give way", ", ".join(answer.give_way) or "none would do"
     for conflict in answer.conflicts:
         yield "also in conflict", conflict

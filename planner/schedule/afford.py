@@ -64,6 +64,17 @@ class Affordability:
     replaced_s: float | None = None
     gained_mbit: float | None = None
 
+    @property
+    def only_by_rules(self) -> bool:
+        """Whether the battery could pay, and only rules of the week say no."""
+        return not self.affordable and self.reason in self.conflicts
+
+    @property
+    def binding(self) -> str:
+        """The binding limit with what is missing, where that is a figure."""
+        missing = "" if self.missing is None else f", missing {self.missing:.2f} {self.missing_unit}".rstrip()
+        return f"{self.binding_limit}{missing}"
+
     def as_dict(self) -> dict:
         return asdict(self) | {name: list(getattr(self, name)) for name in ("give_way", "conflicts", "replaces")}
 

@@ -199,6 +199,7 @@ def test_a_session_that_the_station_budget_does_not_pay_for_is_a_no(two_day_miss
     assert not answer.affordable
     assert (answer.binding_limit, answer.longest_s) == ("station budget", 0.0)
     assert answer.conflicts == (answer.reason,)
+    assert answer.only_by_rules
 
 
 def test_other_rules_that_would_break_are_told_as_conflicts(two_day_mission, plan):
