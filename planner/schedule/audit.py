@@ -10,6 +10,7 @@ from planner.mission.numbers import number
 from planner.schedule import frames
 from planner.schedule.checks import Fault, find_faults
 from planner.schedule.flown import Flown
+from planner.schedule.restore import has_moved
 from planner.schedule.result import prepared
 from planner.schedule.uplinks import aboard_at, powers_on_s
 from planner.schedule.wishes import freeze_s, read_wishes, sessions_of
@@ -85,7 +86,6 @@ def audit(mission: Mission, contacts, *, freeze_until: datetime | None = None, p
     contacts : path of a contacts CSV, or its table
     freeze_until : contacts that power on before have flown or are being flown: newer elements may put them seconds
         beside their pass, which is no fault of theirs; what they take from the battery is judged like all else
-
     previous : the contacts issued before `freeze_until`: what of them is aboard by then must be there as it was, and
         all else needs an uplink contact after it. Without them all contacts that were commanded before are believed
 
@@ -120,13 +120,17 @@ def _beyond(flown: Flown, sessions) -> list[Fault]:
 def _not_as_aboard(flown: Flown) -> list[Fault]:
     """Contacts that the satellite flies whatever is planned, and that are not planned so."""
     iso, nan = flown.week.sky.clock.iso, float("nan")
-    near = {(s.pass_id, s.mode, round(s.tx_on_s, 2), round(s.tx_off_s, 2)) for s in flown.sessions}
-    return [
-        Fault("aboard", None, s.tx_on_s, nan, nan, "", f"{s.pass_id}:{s.mode} is aboard and will be on air from"
-              f" {iso(s.tx_on_s)} to {iso(s.tx_off_s)}, which is not what these contacts say")
-        for s in sorted(flown.aboard.sessions)
-        if flown.week.reaches(s) and (s.pass_id, s.mode, round(s.tx_on_s, 2), round(s.tx_off_s, 2)) not in near
-    ]  # fmt: skip
+    planned = {(session.pass_id, session.mode): session for session in flown.sessions}
+    faults = []
+    for session in sorted(filter(flown.week.reaches, flown.aboard.sessions)):
+        now = planned.get((session.pass_id, session.mode))
+        if now is None or has_moved(now, session):
+            text = (
+                f"{session.pass_id}:{session.mode} is aboard and will be on air from {iso(session.tx_on_s)} to"
+                f" {iso(session.tx_off_s)}, which is not what these contacts say"
+            )
+            faults.append(Fault("aboard", None, session.tx_on_s, nan, nan, "", text))
+    return faults
 
 
 def _wishes_broken(flown: Flown) -> list[Fault]:

@@ -20,11 +20,12 @@ def put_back(
     """
     old = {(session.pass_id, session.mode): session for session in previous}
     pairs = [(session, old.get((session.pass_id, session.mode), session)) for session in flown.sessions]
-    moves = [pair for pair in pairs if _has_moved(*pair) and pair[0] not in fixed]
+    moves = [pair for pair in pairs if has_moved(*pair) and pair[0] not in fixed]
     return _put_back(flown, sorted(moves, key=lambda pair: pair[0].duration_s - pair[1].duration_s), is_good)
 
 
-def _has_moved(new: Session, before: Session) -> bool:
+def has_moved(new: Session, before: Session) -> bool:
+    """Whether a contact's times differ by more than how files state them."""
     return max(abs(new.tx_on_s - before.tx_on_s), abs(new.tx_off_s - before.tx_off_s)) > SAME_S
 
 
